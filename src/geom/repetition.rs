@@ -1,0 +1,83 @@
+//! The same thing at many places, counted and not copied.
+
+use super::{Point, Transform};
+
+/// Displacements at which one thing stands, its own place (0, 0) included.
+///
+/// Units are those of the owner: database units in a layout, picometres in a mask.
+#[derive(Clone, Debug, Default, PartialEq, Eq, PartialOrd, Ord, Hash)]
+pub enum Repetition {
+    /// At its own place only.
+    #[default]
+    Once,
+    /// A lattice: `i·a + j·b` for `0 ≤ i < columns`, `0 ≤ j < rows`; both counts at least 1.
+    Lattice {
+        /// Count along `a`.
+        columns: u64,
+        /// Count along `b`.
+        rows: u64,
+        /// Step from column to column.
+        a: Point,
+        /// Step from row to row.
+        b: Point,
+    },
+    /// Explicit displacements; not empty, the first usually (0, 0).
+    List(Vec<Point>),
+}
+
+impl Repetition {
+    /// At how many places.
+    #[must_use]
+    pub fn count(&self) -> u128 {
+        match self {
+            Self::Once => 1,
+            Self::Lattice { columns, rows, .. } => u128::from(*columns) * u128::from(*rows),
+            Self::List(list) => list.len() as u128,
+        }
+    }
+
+    /// All displacements, row by row. May be astronomically many: check [`Repetition::count`] first.
+    pub fn displacements(&self) -> Box<dyn Iterator<Item = Point> + '_> {
+        match self {
+            Self::Once => Box::new(std::iter::once(Point::default())),
+            Self::Lattice {
+                columns,
+                rows,
+                a,
+                b,
+            } => Box::new((0..*rows).flat_map(move |j| {
+                (0..*columns).map(move |i| {
+                    let (i, j) = (
+                        i64::try_from(i).unwrap_or(i64::MAX),
+                        i64::try_from(j).unwrap_or(i64::MAX),
+                    );
+                    Point::new(
+                        a.x.saturating_mul(i).saturating_add(b.x.saturating_mul(j)),
+                        a.y.saturating_mul(i).saturating_add(b.y.saturating_mul(j)),
+                    )
+                })
+            })),
+            Self::List(list) => Box::new(list.iter().copied()),
+        }
+    }
+
+    /// The same displacements turned by the orientation of `t` (its shift does not matter).
+    #[must_use]
+    pub fn turned(&self, t: Transform) -> Self {
+        match self {
+            Self::Once => Self::Once,
+            Self::Lattice {
+                columns,
+                rows,
+                a,
+                b,
+            } => Self::Lattice {
+                columns: *columns,
+                rows: *rows,
+                a: t.orientation.apply(*a),
+                b: t.orientation.apply(*b),
+            },
+            Self::List(list) => Self::List(list.iter().map(|&p| t.orientation.apply(p)).collect()),
+        }
+    }
+}

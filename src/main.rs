@@ -1,0 +1,3 @@
+//! `shotwright` on the command line: parse, run, map to an exit code.
+
+fn main() {}
