@@ -90,7 +90,7 @@ const TABLE_LEN: usize = 769;
 /// Φ and φ from a table of cubics: Φ within 2e-10, φ within 2e-7 (its own derivative, so that the two belong together).
 ///
 /// Hermite cubics on steps of 1/64: the error of Φ is at most `h⁴/384·max|φ'''|` = 2e-10. Beyond ±6 it is 0 or 1 (error 1e-9).
-#[derive(Clone, Copy)]
+#[derive(Clone, Copy, Debug)]
 pub struct PhiTable {
     cubics: &'static [[f64; 4]],
 }

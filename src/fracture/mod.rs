@@ -1,7 +1,13 @@
 //! The contract of every fracturer: one figure with its context in, shots that print it out.
 
+mod fit;
+pub mod overlap;
+pub mod tile;
+
+use crate::blur::{Blur, NARROWEST_LINE};
 use crate::geom::{Figure, Point};
 use crate::shot::{ShotLimits, ShotList};
+use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
 
 /// All a fracturer may know.
@@ -11,12 +17,24 @@ pub struct Job<'a> {
     pub figure: &'a Figure,
     /// Other figures near enough to matter, same frame.
     pub context: &'a [Figure],
-    /// Standard deviation of the blur.
-    pub sigma: Nm,
+    /// The short-range blur.
+    pub blur: Blur,
     /// How far the contour may stray from the outline.
     pub tolerance: Nm,
     /// What the writer can flash.
     pub limits: ShotLimits,
+}
+
+/// How hard a fracturer searches.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Effort {
+    /// One start, few trials.
+    Quick,
+    /// What a quote uses.
+    #[default]
+    Normal,
+    /// All starts, wide windows: several times the work of normal for a shot less now and then.
+    Thorough,
 }
 
 /// Turns a figure into shots.
@@ -54,6 +72,32 @@ pub struct Miss {
     pub must_print: bool,
     /// Why, as far as known.
     pub reason: MissReason,
+}
+
+impl Miss {
+    /// A broken rule as a miss, with the reason as far as the outline tells it.
+    fn of(violation: &Violation, target: &Target, blur: Blur) -> Self {
+        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
+        let sigma = blur.sigma().0;
+        let must_print = violation.need == Need::Print;
+        let near = |limit: f64| target.outline_within(violation.place, limit);
+        let reason = if target.in_corner_zone(violation.place) {
+            MissReason::TooSharp
+        } else if must_print && near(0.5 * NARROWEST_LINE * sigma) && narrow(target, violation.place, NARROWEST_LINE * sigma) {
+            MissReason::TooNarrow
+        } else {
+            MissReason::NotFound
+        };
+        Self { place: Point::new(pm(violation.place[0]), pm(violation.place[1])), dose: Dose(violation.dose), must_print, reason }
+    }
+}
+
+/// Whether a place of the figure lies in a part narrower than `width` along some of four directions.
+fn narrow(target: &Target, p: [f64; 2], width: f64) -> bool {
+    [[1.0, 0.0], [0.0, 1.0], [0.7071, 0.7071], [0.7071, -0.7071]].iter().any(|d| {
+        let leaves = |sign: f64| (1..=20).find(|&k| !target.inside([p[0] + sign * f64::from(k) * width / 20.0 * d[0], p[1] + sign * f64::from(k) * width / 20.0 * d[1]]));
+        matches!((leaves(1.0), leaves(-1.0)), (Some(a), Some(b)) if f64::from(a + b) * width / 20.0 <= width)
+    })
 }
 
 /// Why a place cannot be printed within tolerance.

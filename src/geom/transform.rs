@@ -16,6 +16,9 @@ impl Orientation {
         quarter_turns: 0,
     };
 
+    /// Mirror about the diagonal `x = y`: exchanges x and y.
+    pub const DIAGONAL: Self = Self { mirror_x: true, quarter_turns: 3 };
+
     /// Mirror `x → −x` first if asked, then turn counter-clockwise by `quarter_turns` × 90°.
     #[must_use]
     pub const fn new(mirror_x: bool, quarter_turns: u8) -> Self {
@@ -127,6 +130,11 @@ impl Transform {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn the_diagonal_exchanges_x_and_y() {
+        assert_eq!(Orientation::DIAGONAL.apply(Point::new(3, 11)), Point::new(11, 3));
+    }
 
     #[test]
     fn composition_and_inverse_agree_with_application() {

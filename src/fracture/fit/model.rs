@@ -1,0 +1,269 @@
+//! Shots with sides anywhere, the samples they are held to, and the dose at these; all indexed by place.
+
+use crate::blur::{PhiTable, THRESHOLD};
+use crate::target::DoseField;
+
+use super::samples::{ContextDose, Sample};
+
+/// A shot before it is brought to the address grid: sides in nm as `[x0, y0, x1, y1]`.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(in crate::fracture) struct Flash {
+    pub(in crate::fracture) side: [f64; 4],
+    pub(in crate::fracture) dose: f64,
+}
+
+impl Flash {
+    /// Dose 1 on the rectangle.
+    pub(in crate::fracture) fn new(side: [f64; 4]) -> Self {
+        Self { side, dose: 1.0 }
+    }
+
+    /// Mirrored about the diagonal `x = y`.
+    pub(super) fn flipped(&self) -> Self {
+        let [x0, y0, x1, y1] = self.side;
+        Self { side: [y0, x0, y1, x1], dose: self.dose }
+    }
+
+    pub(super) fn length(&self, axis: usize) -> f64 {
+        self.side[axis + 2] - self.side[axis]
+    }
+
+    /// How far apart two are along one axis; negative when they overlap there.
+    pub(super) fn gap_along(&self, other: &Self, axis: usize) -> f64 {
+        (self.side[axis] - other.side[axis + 2]).max(other.side[axis] - self.side[axis + 2])
+    }
+
+    /// How far apart two are along the axis on which they are furthest apart; negative when they overlap.
+    pub(super) fn gap(&self, other: &Self) -> f64 {
+        self.gap_along(other, 0).max(self.gap_along(other, 1))
+    }
+
+    /// The least rectangle around both.
+    pub(super) fn hull(&self, other: &Self) -> Self {
+        let (a, b) = (self.side, other.side);
+        Self { side: [a[0].min(b[0]), a[1].min(b[1]), a[2].max(b[2]), a[3].max(b[3])], dose: self.dose }
+    }
+
+    /// Moved outward by `d` nm on all sides.
+    pub(super) fn grown(&self, d: f64) -> Self {
+        let s = self.side;
+        Self { side: [s[0] - d, s[1] - d, s[2] + d, s[3] + d], dose: self.dose }
+    }
+
+    /// Dose at a place, nm.
+    #[inline]
+    pub(super) fn dose_at(&self, phi: PhiTable, inverse_sigma: f64, p: [f64; 2]) -> f64 {
+        let share = |axis: usize| phi.cdf((p[axis] - self.side[axis]) * inverse_sigma) - phi.cdf((p[axis] - self.side[axis + 2]) * inverse_sigma);
+        let gx = share(0);
+        if gx == 0.0 { 0.0 } else { self.dose * gx * share(1) }
+    }
+}
+
+/// Buckets over the plane: which items touch which square cell.
+#[derive(Clone, Debug)]
+struct Bins {
+    origin: [f64; 2],
+    size: f64,
+    columns: usize,
+    rows: usize,
+    cells: Vec<Vec<u32>>,
+}
+
+impl Bins {
+    fn new(bounds: [f64; 4], size: f64) -> Self {
+        let (w, h) = (bounds[2] - bounds[0], bounds[3] - bounds[1]);
+        let size = size.max((w * h / 4e6).sqrt()).max(w.max(h) / 4e6);
+        let (columns, rows) = (cell_index(w / size) + 1, cell_index(h / size) + 1);
+        Self { origin: [bounds[0], bounds[1]], size, columns, rows, cells: vec![Vec::new(); columns * rows] }
+    }
+
+    fn span(&self, low: f64, high: f64, axis: usize) -> (usize, usize) {
+        let last = if axis == 0 { self.columns } else { self.rows } - 1;
+        let at = |v: f64| cell_index((v - self.origin[axis]) / self.size).min(last);
+        (at(low), at(high))
+    }
+
+    /// Indices of the cells that a box touches.
+    fn touched(&self, side: [f64; 4]) -> impl Iterator<Item = usize> + use<> {
+        let (i0, i1) = self.span(side[0], side[2], 0);
+        let (j0, j1) = self.span(side[1], side[3], 1);
+        let columns = self.columns;
+        (j0..=j1).flat_map(move |j| (i0..=i1).map(move |i| j * columns + i))
+    }
+}
+
+fn cell_index(x: f64) -> usize {
+    #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "clamped to 0..2^31 just before")]
+    let i = x.clamp(0.0, 2_147_483_647.0) as usize;
+    i
+}
+
+fn narrow(i: usize) -> u32 {
+    u32::try_from(i).unwrap_or(u32::MAX)
+}
+
+/// Shots in numbered slots, and the dose they and the context give at every sample.
+#[derive(Clone, Debug)]
+pub(in crate::fracture) struct Model {
+    slots: Vec<Option<Flash>>,
+    by_place: Bins,
+    samples: Vec<Sample>,
+    samples_by_place: Bins,
+    dose: Vec<f32>,
+    pub(super) sigma: f64,
+}
+
+impl Model {
+    /// No shot yet: the context's dose at the samples of a figure with these bounds.
+    pub(in crate::fracture) fn new(bounds: [f64; 4], sigma: f64, samples: Vec<Sample>) -> Self {
+        let margin = 3.0 * sigma;
+        let around = [bounds[0] - margin, bounds[1] - margin, bounds[2] + margin, bounds[3] + margin];
+        let mut model = Self {
+            slots: Vec::new(),
+            by_place: Bins::new(around, 8.0 * sigma),
+            samples: Vec::new(),
+            samples_by_place: Bins::new(around, 2.0 * sigma),
+            dose: Vec::new(),
+            sigma,
+        };
+        for sample in samples {
+            model.add_sample(sample);
+        }
+        model
+    }
+
+    /// Holds the shots to one more place.
+    pub(in crate::fracture) fn add_sample(&mut self, sample: Sample) {
+        let [x, y] = sample.place;
+        let id = narrow(self.samples.len());
+        for cell in self.samples_by_place.touched([x, y, x, y]) {
+            self.samples_by_place.cells[cell].push(id);
+        }
+        let reach = 5.0 * self.sigma;
+        let phi = PhiTable::get();
+        let shots: f64 = self
+            .near([x - reach, y - reach, x + reach, y + reach])
+            .into_iter()
+            .filter_map(|slot| self.slots[slot])
+            .map(|f| f.dose_at(phi, 1.0 / self.sigma, sample.place))
+            .sum();
+        #[allow(clippy::cast_possible_truncation, reason = "a dose needs no more than single precision here")]
+        self.dose.push(sample.context + shots as f32);
+        self.samples.push(sample);
+    }
+
+    /// All samples.
+    pub(super) fn samples(&self) -> &[Sample] {
+        &self.samples
+    }
+
+    /// The dose at every sample.
+    pub(super) fn doses(&self) -> &[f32] {
+        &self.dose
+    }
+
+    pub(super) fn doses_mut(&mut self) -> &mut [f32] {
+        &mut self.dose
+    }
+
+    /// Samples in cells that any of the boxes touches, ascending.
+    pub(super) fn samples_near(&self, boxes: impl Iterator<Item = [f64; 4]>, out: &mut Vec<u32>, cells: &mut Vec<usize>) {
+        cells.clear();
+        for side in boxes {
+            cells.extend(self.samples_by_place.touched(side));
+        }
+        cells.sort_unstable();
+        cells.dedup();
+        out.clear();
+        for &cell in cells.iter() {
+            out.extend_from_slice(&self.samples_by_place.cells[cell]);
+        }
+    }
+
+    /// The shots, in slot order.
+    pub(in crate::fracture) fn flashes(&self) -> impl Iterator<Item = (usize, Flash)> + '_ {
+        self.slots.iter().enumerate().filter_map(|(i, f)| f.map(|f| (i, f)))
+    }
+
+    /// Slots ever used.
+    pub(super) fn slots(&self) -> usize {
+        self.slots.len()
+    }
+
+    pub(super) fn get(&self, slot: usize) -> Option<Flash> {
+        self.slots.get(slot).copied().flatten()
+    }
+
+    /// Slots of shots in cells that the box touches, ascending.
+    pub(super) fn near(&self, side: [f64; 4]) -> Vec<usize> {
+        let mut slots: Vec<usize> = self.by_place.touched(side).flat_map(|c| &self.by_place.cells[c]).map(|&s| s as usize).collect();
+        slots.sort_unstable();
+        slots.dedup();
+        slots
+    }
+
+    /// Puts a shot in a slot, or takes it out, without touching the doses at the samples.
+    pub(super) fn place(&mut self, slot: usize, flash: Option<Flash>) {
+        if slot >= self.slots.len() {
+            self.slots.resize(slot + 1, None);
+        }
+        let id = narrow(slot);
+        if let Some(old) = self.slots[slot] {
+            for cell in self.by_place.touched(old.side) {
+                self.by_place.cells[cell].retain(|&s| s != id);
+            }
+        }
+        if let Some(new) = flash {
+            for cell in self.by_place.touched(new.side) {
+                self.by_place.cells[cell].push(id);
+            }
+        }
+        self.slots[slot] = flash;
+    }
+
+    /// The worst miss of the rule over all samples, in dose; at most 0 where the rule holds.
+    pub(in crate::fracture) fn worst(&self) -> f64 {
+        self.samples.iter().zip(&self.dose).map(|(s, d)| f64::from(s.sign) * (THRESHOLD - f64::from(*d))).fold(f64::NEG_INFINITY, f64::max)
+    }
+}
+
+/// The dose of the model's shots with the context, anywhere.
+pub(super) struct Field<'a> {
+    pub(super) model: &'a Model,
+    pub(super) context: &'a ContextDose,
+    pub(super) phi: PhiTable,
+}
+
+impl DoseField for Field<'_> {
+    fn dose(&self, p: [f64; 2]) -> f64 {
+        let sigma = self.model.sigma;
+        let reach = 5.0 * sigma;
+        let near = self.model.near([p[0] - reach, p[1] - reach, p[0] + reach, p[1] + reach]);
+        let shots: f64 = near.into_iter().filter_map(|s| self.model.get(s)).map(|f| f.dose_at(self.phi, 1.0 / sigma, p)).sum();
+        self.context.dose(p) + shots
+    }
+
+    fn row(&self, y: f64, x0: f64, step: f64, out: &mut [f64]) {
+        let sigma = self.model.sigma;
+        let reach = 5.0 * sigma;
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        let x_of = |i: usize| x0 + i as f64 * step;
+        for (i, value) in out.iter_mut().enumerate() {
+            *value = if self.context.is_empty() { 0.0 } else { self.context.dose([x_of(i), y]) };
+        }
+        let end = x_of(out.len());
+        for slot in self.model.near([x0 - reach, y - reach, end + reach, y + reach]) {
+            let Some(f) = self.model.get(slot) else { continue };
+            let gy = f.dose * (self.phi.cdf((y - f.side[1]) / sigma) - self.phi.cdf((y - f.side[3]) / sigma));
+            if gy.abs() < 1e-9 {
+                continue;
+            }
+            let from = cell_index((f.side[0] - reach - x0) / step);
+            let to = (cell_index((f.side[2] + reach - x0) / step) + 1).min(out.len());
+            for i in from..to {
+                let x = x_of(i);
+                out[i] += gy * (self.phi.cdf((x - f.side[0]) / sigma) - self.phi.cdf((x - f.side[2]) / sigma));
+            }
+        }
+    }
+}

@@ -1,0 +1,121 @@
+//! The places at which a fit is held to the print rule.
+
+use crate::blur::{Blur, PhiTable};
+use crate::geom::Figure;
+use crate::target::{Need, Target};
+use crate::units::Nm;
+
+/// A place with what the rule asks there.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(in crate::fracture) struct Sample {
+    /// Where, nm.
+    pub(super) place: [f64; 2],
+    /// +1 where it must print, −1 where it must not.
+    pub(super) sign: f32,
+    /// Dose that the context gives.
+    pub(super) context: f32,
+}
+
+/// Distance between samples along the rim, in σ. At a third the dose between two samples exceeds neither by more than
+/// `h²/8·max|F''| = 0.0034`, which the fit's guard covers.
+const RIM_STEP: f64 = 0.36;
+
+/// Lattice step inside and outside, in σ: half a σ as the densest structure a sum of blurred shots can have.
+const LATTICE_STEP: f64 = 0.7;
+
+/// How far outside the outline the lattice goes, in σ.
+const LATTICE_REACH: f64 = 2.5;
+
+/// Pairs along the outline and a lattice inside and around the figure.
+pub(in crate::fracture) fn samples_of(target: &Target, blur: Blur, context: &ContextDose) -> Vec<Sample> {
+    let sigma = blur.sigma().0;
+    let mut samples = Vec::new();
+    // The rim comes edge by edge; on finely drawn curves that is denser than asked for, so it is thinned by distance.
+    let mut last: [Option<[f64; 2]>; 2] = [None, None];
+    let least = (0.6 * RIM_STEP * sigma).powi(2);
+    target.rim(RIM_STEP * sigma, 0.0, |p, need| {
+        let side = &mut last[usize::from(need == Need::Print)];
+        if side.is_none_or(|q| (q[0] - p[0]).powi(2) + (q[1] - p[1]).powi(2) >= least) {
+            *side = Some(p);
+            samples.push(Sample::new(p, need, context));
+        }
+    });
+    let step = LATTICE_STEP * sigma;
+    let reach = LATTICE_REACH * sigma;
+    let [x0, y0, x1, y1] = target.bounds();
+    let mut crossings = Vec::new();
+    let mut y = y0 - reach;
+    while y <= y1 + reach {
+        target.crossings(y, &mut crossings);
+        let mut x = x0 - reach;
+        let mut passed = 0;
+        while x <= x1 + reach {
+            while passed < crossings.len() && crossings[passed] <= x {
+                passed += 1;
+            }
+            let inside = passed % 2 == 1;
+            let wanted = !target.outline_within([x, y], 0.5 * sigma) && (inside || target.outline_within([x, y], reach));
+            if wanted {
+                samples.push(Sample::new([x, y], if inside { Need::Print } else { Need::Clear }, context));
+            }
+            x += step;
+        }
+        y += step;
+    }
+    samples
+}
+
+impl Sample {
+    /// A place with its need and the context's dose there.
+    pub(in crate::fracture) fn new(place: [f64; 2], need: Need, context: &ContextDose) -> Self {
+        #[allow(clippy::cast_possible_truncation, reason = "a dose needs no more than single precision here")]
+        let context = context.dose(place) as f32;
+        Self { place, sign: if need == Need::Print { 1.0 } else { -1.0 }, context }
+    }
+}
+
+/// The dose that other figures give, as if they printed ideally: each in bands of exact width.
+#[derive(Clone, Debug)]
+pub(in crate::fracture) struct ContextDose {
+    bands: Vec<[f64; 4]>,
+    sigma: f64,
+    phi: PhiTable,
+}
+
+/// Height of a context band, in σ: a slanted edge in steps of σ/8 has the dose of the straight one to 1e-3.
+const BAND: f64 = 0.125;
+
+impl ContextDose {
+    /// From the context figures of a job.
+    pub(in crate::fracture) fn of(context: &[Figure], blur: Blur) -> Self {
+        let sigma = blur.sigma().0;
+        let mut bands = Vec::new();
+        let mut crossings = Vec::new();
+        for figure in context {
+            let target = Target::new(figure, blur, Nm(1.0));
+            let [_, y0, _, y1] = target.bounds();
+            #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "positive and clamped")]
+            let n = ((y1 - y0) / (BAND * sigma)).ceil().clamp(1.0, 1e5) as usize;
+            #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
+            let h = (y1 - y0) / n as f64;
+            for i in 0..n {
+                #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
+                let low = y0 + i as f64 * h;
+                target.crossings(low + 0.5 * h, &mut crossings);
+                bands.extend(crossings.chunks_exact(2).map(|c| [c[0], low, c[1], low + h]));
+            }
+        }
+        Self { bands, sigma, phi: PhiTable::get() }
+    }
+
+    /// Whether there is no context.
+    pub(in crate::fracture) fn is_empty(&self) -> bool {
+        self.bands.is_empty()
+    }
+
+    /// The dose at a place.
+    pub(in crate::fracture) fn dose(&self, p: [f64; 2]) -> f64 {
+        let share = |at: f64, from: f64, to: f64| self.phi.cdf((at - from) / self.sigma) - self.phi.cdf((at - to) / self.sigma);
+        self.bands.iter().map(|b| share(p[0], b[0], b[2]) * share(p[1], b[1], b[3])).sum()
+    }
+}

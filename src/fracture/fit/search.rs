@@ -1,0 +1,157 @@
+//! From a first guess to shots that print: relax, reduce, check, repair, snap.
+
+use crate::fracture::Job;
+use crate::shot::ShotList;
+use crate::target::{Target, Violation};
+
+use super::model::{Flash, Model};
+use super::reduce::{Budget, reduce};
+use super::relax::{mend, relax};
+use super::samples::{ContextDose, Sample, samples_of};
+use super::snap::{check, shots, snap};
+use super::solve::{Rules, Solver};
+
+/// A job with all that its fits share.
+pub(in crate::fracture) struct Setting<'a> {
+    pub(in crate::fracture) job: &'a Job<'a>,
+    pub(in crate::fracture) target: Target,
+    pub(in crate::fracture) context: ContextDose,
+    pub(in crate::fracture) samples: Vec<Sample>,
+}
+
+/// Shots on the address grid and the places where they break the rule.
+#[derive(Clone, Debug)]
+pub(in crate::fracture) struct Fit {
+    pub(in crate::fracture) shots: ShotList,
+    pub(in crate::fracture) violations: Vec<Violation>,
+}
+
+/// Dose to spare at every sample. Rounding three sides to a tenth of a nanometre moves the dose by up to
+/// `3·0.05·0.4/σ = 0.005` at σ = 12; what lies between samples is caught by the check.
+const GUARD: f32 = 0.004;
+
+/// Rounds of check and repair.
+const REPAIRS: usize = 6;
+
+impl<'a> Setting<'a> {
+    pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
+        let target = Target::new(job.figure, job.blur, job.tolerance);
+        let context = ContextDose::of(job.context, job.blur);
+        let samples = samples_of(&target, job.blur, &context);
+        Self { job, target, context, samples }
+    }
+
+    pub(in crate::fracture) fn sigma(&self) -> f64 {
+        self.job.blur.sigma().0
+    }
+
+    /// Shots that start as `start`, moved to where the rule holds if moving them can bring that about.
+    pub(in crate::fracture) fn attempt(&self, start: &[Flash], disjoint: bool, budget: Budget) -> Attempt<'_> {
+        let limits = &self.job.limits;
+        let unit = limits.address.nm().0;
+        // One address off both limits, so that rounding cannot overstep them.
+        let rules = Rules {
+            least_side: limits.least_side.0.max(limits.sliver.0) + unit,
+            greatest_side: limits.greatest_side.0 - unit,
+            disjoint,
+            guard: GUARD,
+        };
+        let mut solver = Solver::new(self.sigma(), rules);
+        let mut model = Model::new(self.target.bounds(), self.sigma(), self.samples.clone());
+        solver.score(&model, &[], start);
+        solver.commit(&mut model, &[], start);
+        let holds = relax(&mut model, &mut solver, budget.window);
+        Attempt { setting: self, model, solver, budget, holds }
+    }
+}
+
+/// Shots on their way from a first guess to a fit.
+pub(in crate::fracture) struct Attempt<'s> {
+    setting: &'s Setting<'s>,
+    model: Model,
+    solver: Solver,
+    budget: Budget,
+    /// The rule holds at every sample.
+    pub(in crate::fracture) holds: bool,
+}
+
+impl Attempt<'_> {
+    /// How many shots there are.
+    pub(in crate::fracture) fn count(&self) -> usize {
+        self.model.flashes().count()
+    }
+
+    /// The worst miss of the rule at the samples, in dose.
+    pub(in crate::fracture) fn worst(&self) -> f64 {
+        self.model.worst()
+    }
+
+    /// The shots as they are.
+    pub(in crate::fracture) fn flashes(&self) -> Vec<Flash> {
+        self.model.flashes().map(|(_, f)| f).collect()
+    }
+
+    /// Adds shots until the rule holds at the samples, as far as a few can bring that about.
+    pub(in crate::fracture) fn mend(&mut self) {
+        let most = 4 + self.count() / 4;
+        self.holds = mend(&mut self.model, &mut self.solver, self.budget.window, most);
+    }
+
+    /// Takes shots away as long as the rule holds.
+    pub(in crate::fracture) fn reduce(&mut self) {
+        if self.holds {
+            reduce(&mut self.model, &mut self.solver, self.budget);
+        }
+    }
+
+    /// Check, repair what the samples did not see, snap, and check again what is then really flashed.
+    pub(in crate::fracture) fn finish(mut self) -> Fit {
+        let address = self.setting.job.limits.address;
+        let mut best: Option<Fit> = None;
+        for _ in 0..REPAIRS {
+            let mut snapped = self.model.clone();
+            snap(&mut snapped, &mut self.solver, address);
+            let violations = check(&self.setting.target, &snapped, &self.setting.context);
+            for v in &violations {
+                self.model.add_sample(Sample::new(v.place, v.need, &self.setting.context));
+            }
+            let holds = violations.is_empty();
+            if best.as_ref().is_none_or(|b| violations.len() < b.violations.len()) {
+                best = Some(Fit { shots: shots(&snapped, address), violations });
+            }
+            if holds {
+                break;
+            }
+            if !relax(&mut self.model, &mut self.solver, self.budget.window.max(10)) {
+                mend(&mut self.model, &mut self.solver, self.budget.window, 2);
+            }
+        }
+        best.unwrap_or_else(|| unreachable!("at least one round was made"))
+    }
+}
+
+/// The best of several attempts: reduced, and the one with fewest shots that really prints; else the one that misses least.
+///
+/// Those that do not hold are mended only when none does.
+pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>) -> Option<Fit> {
+    if !attempts.iter().any(|a| a.holds) {
+        let least = attempts.iter_mut().reduce(|a, b| if b.worst() < a.worst() { b } else { a })?;
+        least.mend();
+    }
+    if attempts.iter().any(|a| a.holds) {
+        attempts.retain(|a| a.holds);
+        attempts.iter_mut().for_each(Attempt::reduce);
+    }
+    attempts.sort_by_key(Attempt::count);
+    let mut best: Option<Fit> = None;
+    for attempt in attempts {
+        let fit = attempt.finish();
+        if fit.violations.is_empty() {
+            return Some(fit);
+        }
+        if best.as_ref().is_none_or(|b| fit.violations.len() < b.violations.len()) {
+            best = Some(fit);
+        }
+    }
+    best
+}

@@ -1,0 +1,54 @@
+//! Shots that may overlap, their doses adding.
+//!
+//! Minimising their number is NP-hard. Propose: slabs of both directions, each grown across as far as the figure allows,
+//! chosen greedily until they cover it. Refine and reduce: [`super::fit`]. Background: Kagalwalla and Gupta, DAC 2015; Chan et
+//! al., ICCAD 2014; Jiang and Zakhor, Proc. SPIE 8166 (2011); greedy cover with rectangles: Heinrich-Litan and Lübbecke, ACM JEA
+//! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
+
+use super::fit::{Budget, Setting, Slabs, best_of, cover};
+use super::{Effort, Fracture, Fracturer, Job, Miss};
+use crate::shot::ShotList;
+
+/// The overlap fracture.
+#[derive(Clone, Copy, Debug, Default)]
+pub struct Overlap {
+    /// How hard to search.
+    pub effort: Effort,
+}
+
+/// How far the outline may wander within a first slab, σ; as for tiles.
+const SLACK: f64 = 0.6;
+
+/// How much of both ends of a slab may stick out when it is grown, σ: a shot's corner prints rounded by about as much. Two values
+/// give two starts; neither wins on all kinds of figures.
+const INSETS: [f64; 2] = [0.3, 0.6];
+
+impl Fracturer for Overlap {
+    fn name(&self) -> &'static str {
+        "overlap"
+    }
+
+    fn fracture(&self, job: &Job<'_>) -> Fracture {
+        let setting = Setting::new(job);
+        let (budget, starts) = match self.effort {
+            Effort::Quick => (Budget { window: 8, apart: 3.0, steps: 15, hopeless: 0.5 }, 1),
+            Effort::Normal => (Budget { window: 12, apart: 3.0, steps: 20, hopeless: 2.0 }, 2),
+            Effort::Thorough => (Budget { window: 12, apart: 8.0, steps: 40, hopeless: 6.0 }, 2),
+        };
+        let slabs = Slabs::of(job, &setting.target);
+        let attempts = INSETS[..starts]
+            .iter()
+            .map(|inset| {
+                let candidates = slabs.grown(SLACK, inset * setting.sigma());
+                setting.attempt(&cover(&candidates, &setting.samples), false, budget)
+            })
+            .collect();
+        match best_of(attempts) {
+            Some(fit) => {
+                let misses = fit.violations.iter().map(|v| Miss::of(v, &setting.target, job.blur)).collect();
+                Fracture { shots: fit.shots, misses, lower_bound: None, notes: Vec::new() }
+            }
+            None => Fracture { shots: ShotList::new(job.limits.address, Vec::new()), misses: Vec::new(), lower_bound: None, notes: Vec::new() },
+        }
+    }
+}
