@@ -6,7 +6,7 @@ pub mod geom;
 pub mod layout;
 pub mod mask;
 pub mod quote;
-
+pub mod report;
 pub mod shot;
 pub mod target;
 pub mod units;
