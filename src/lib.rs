@@ -5,6 +5,8 @@ pub mod fracture;
 pub mod geom;
 pub mod layout;
 pub mod mask;
+pub mod quote;
+pub mod report;
 pub mod shot;
 pub mod target;
 pub mod units;

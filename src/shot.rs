@@ -16,6 +16,9 @@ pub struct AddressUnitError {
 }
 
 impl AddressUnit {
+    /// 1 pm: every coordinate of the crate lies on it.
+    pub const FINEST: Self = Self(1);
+
     /// From nanometres.
     ///
     /// # Errors

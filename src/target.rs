@@ -179,10 +179,16 @@ impl Target {
         self.tolerance + CORNER_PULL_BACK * self.sigma
     }
 
+    /// Radius of a corner zone, 2 σ, nm.
+    #[must_use]
+    pub fn corner_reach(&self) -> f64 {
+        2.0 * self.sigma
+    }
+
     /// Whether a place lies within 2 σ of a drawn corner.
     #[must_use]
     pub fn in_corner_zone(&self, p: [f64; 2]) -> bool {
-        let reach = 2.0 * self.sigma;
+        let reach = self.corner_reach();
         self.corners
             .iter()
             .any(|c| (c[0] - p[0]).powi(2) + (c[1] - p[1]).powi(2) <= reach * reach)

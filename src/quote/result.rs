@@ -1,0 +1,358 @@
+//! The result of a quote: plain data, the same in memory, in `quote.json` and in every report.
+//!
+//! Units are in the names (`_nm`, `_h`, `_s`, `_nm_per_pct`). What was not measured is `None` (`null` in JSON), never 0.
+
+use std::collections::BTreeMap;
+use std::fmt;
+
+use serde::de::{self, Deserializer, Visitor};
+use serde::{Deserialize, Serialize, Serializer};
+
+/// Said in every report, word for word.
+pub const CAUTION: &str =
+    "This is an estimate. The mask shop's own calibrated model and its written acceptance decide.";
+
+/// A count that may exceed 64 bits: in JSON a number if it fits 64 bits, else a string of digits.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, PartialOrd, Ord, Hash)]
+pub struct Count(pub u128);
+
+impl fmt::Display for Count {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        self.0.fmt(f)
+    }
+}
+
+impl From<u64> for Count {
+    fn from(n: u64) -> Self {
+        Self(n.into())
+    }
+}
+
+impl Serialize for Count {
+    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        match u64::try_from(self.0) {
+            Ok(n) => serializer.serialize_u64(n),
+            Err(_) => serializer.collect_str(self),
+        }
+    }
+}
+
+impl<'de> Deserialize<'de> for Count {
+    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
+        struct Digits;
+        impl Visitor<'_> for Digits {
+            type Value = Count;
+            fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+                f.write_str("a count, as a whole number or a string of digits")
+            }
+            fn visit_u64<E: de::Error>(self, n: u64) -> Result<Count, E> {
+                Ok(n.into())
+            }
+            fn visit_str<E: de::Error>(self, s: &str) -> Result<Count, E> {
+                s.parse()
+                    .map(Count)
+                    .map_err(|_| E::invalid_value(de::Unexpected::Str(s), &self))
+            }
+        }
+        deserializer.deserialize_any(Digits)
+    }
+}
+
+/// A whole quote.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Quote {
+    /// The layout read.
+    pub source: Source,
+    /// The profile, with the numbers used.
+    pub profile: ProfileUsed,
+    /// Tolerance on the edge error away from corners.
+    pub tolerance_nm: f64,
+    /// Standard deviation of the blur.
+    pub sigma_nm: f64,
+    /// The field that the clip stands for; `None` for the clip alone.
+    pub scaled_to_field: Option<ScaledToField>,
+    /// Every fracture side by side.
+    pub fractures: Fractures,
+    /// Whether the slot suffices.
+    pub verdict: Verdict,
+    /// The fracture to order; `None` if none is fit to be ordered.
+    pub recommended: Option<Method>,
+    /// Why, in one sentence.
+    pub reason: String,
+    /// Figures to look at or to send back, worst first.
+    pub flags: Vec<Flag>,
+    /// [`CAUTION`].
+    pub caution: String,
+}
+
+/// The layout a quote is about.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Source {
+    /// File name as given.
+    pub name: String,
+    /// Layers united, each as `L/D`.
+    pub layers: Vec<String>,
+    /// Mask length per layout length.
+    pub scale: f64,
+    /// Width and height around all figures at mask scale; `None` for an empty mask.
+    pub extent_nm: Option<[f64; 2]>,
+    /// Figures that differ, each counted once.
+    pub figures_distinct: u64,
+    /// Figures at all their places.
+    pub figures_placed: Count,
+}
+
+/// The profile of a quote.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct ProfileUsed {
+    /// Its name.
+    pub name: String,
+    /// Every number used, overrides included, by its key (which carries the unit).
+    pub numbers: BTreeMap<String, f64>,
+}
+
+/// The field that a clip stands for.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct ScaledToField {
+    /// Width of the field.
+    pub width_mm: f64,
+    /// Height of the field.
+    pub height_mm: f64,
+    /// Share of the field filled with copies of the clip, 0 to 1.
+    pub coverage: f64,
+}
+
+/// The three fractures that a quote compares.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Method {
+    /// The plain geometric staircase in tiles: the baseline.
+    Staircase,
+    /// Shots that do not overlap.
+    Tile,
+    /// Shots that may overlap.
+    Overlap,
+}
+
+impl Method {
+    /// All, in the order of every report.
+    pub const ALL: [Self; 3] = [Self::Staircase, Self::Tile, Self::Overlap];
+
+    /// One word for tables and file names.
+    #[must_use]
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::Staircase => "staircase",
+            Self::Tile => "tile",
+            Self::Overlap => "overlap",
+        }
+    }
+}
+
+/// One value per fracture; `None` where that fracture was not made.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct ByMethod<T> {
+    /// For [`Method::Staircase`].
+    pub staircase: Option<T>,
+    /// For [`Method::Tile`].
+    pub tile: Option<T>,
+    /// For [`Method::Overlap`].
+    pub overlap: Option<T>,
+}
+
+/// What the whole mask costs and how it prints, by fracture.
+pub type Fractures = ByMethod<FractureSummary>;
+
+impl<T> ByMethod<T> {
+    /// The value for one fracture.
+    #[must_use]
+    pub fn get(&self, method: Method) -> Option<&T> {
+        match method {
+            Method::Staircase => self.staircase.as_ref(),
+            Method::Tile => self.tile.as_ref(),
+            Method::Overlap => self.overlap.as_ref(),
+        }
+    }
+
+    /// All three in the order of every report.
+    pub fn iter(&self) -> impl Iterator<Item = (Method, Option<&T>)> {
+        Method::ALL.into_iter().map(|m| (m, self.get(m)))
+    }
+}
+
+/// One fracture of the whole mask.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct FractureSummary {
+    /// Shots at all places.
+    pub shots: Count,
+    /// Shots of the distinct figures, each figure counted once.
+    pub shots_distinct: u64,
+    /// Least side of any shot; `None` without shots.
+    pub smallest_side_nm: Option<f64>,
+    /// Shots at all places whose short side is under the sliver limit.
+    pub slivers: Count,
+    /// Edge error over all outlines, corner zones apart.
+    pub edge_error_nm: EdgeError,
+    /// Share of the outline out of its tolerance, 0 to 1.
+    pub out_of_tolerance_share: Option<f64>,
+    /// Whether every figure prints within tolerance; `None` if not checked.
+    pub prints_within_tolerance: Option<bool>,
+    /// Distinct figures that do not print within tolerance; `None` if not checked.
+    pub figures_out_of_tolerance: Option<u64>,
+    /// How far the contour moves for 1 % of dose.
+    pub margin_nm_per_pct: Margin,
+    /// Greatest dose anywhere, multiples of dose-to-size.
+    pub peak_dose: Option<f64>,
+    /// Hours to write the mask; `None` if they could not be computed.
+    pub hours: Option<Hours>,
+}
+
+/// Edge error: the mean is signed (+ prints too large), the other two are magnitudes.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct EdgeError {
+    /// Signed mean.
+    pub mean: Option<f64>,
+    /// Not exceeded on 95 % of the outline.
+    pub p95: Option<f64>,
+    /// Greatest.
+    pub worst: Option<f64>,
+}
+
+/// How far the contour moves for 1 % of dose (small is good).
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct Margin {
+    /// Median over the contour.
+    pub median: Option<f64>,
+    /// Greatest.
+    pub worst: Option<f64>,
+}
+
+/// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Hours {
+    /// All together.
+    pub total_h: f64,
+    /// Beam on.
+    pub flash_h: f64,
+    /// Waiting for the beam to settle between shots.
+    pub settle_h: f64,
+    /// Moving between sub-fields.
+    pub subfield_h: f64,
+    /// Stage travel that the beam waits for, and turns.
+    pub stage_h: f64,
+    /// Calibrations, load, soak, align, unload.
+    pub overhead_h: f64,
+    /// Lower end of the interval of the total; `total_h` if exact.
+    pub low_h: f64,
+    /// Upper end of the interval of the total; `total_h` if exact.
+    pub high_h: f64,
+}
+
+/// Whether the mask can be written in the slot.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Fits {
+    /// The upper end of the interval is within the slot.
+    Yes,
+    /// The lower end is beyond it.
+    No,
+    /// The slot lies inside the interval, or none was given.
+    CannotSay,
+}
+
+/// The answer to "does it fit".
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Verdict {
+    /// Yes, no, cannot say.
+    pub fits: Fits,
+    /// Hours the writer is booked for; `None` if not given.
+    pub slot_h: Option<f64>,
+    /// In one sentence, with the numbers.
+    pub sentence: String,
+}
+
+/// What is wrong with a figure.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum FlagKind {
+    /// Takes a greater share of the hours than of the outline.
+    CostsMoreThanItsShare,
+    /// Narrower than this blur can print.
+    NotPrintableAtThisBlur,
+    /// No fracture was found that prints within tolerance.
+    ToleranceNotReached,
+    /// A shot is beyond what the writer can flash.
+    ShotLimitsNotMet,
+    /// The dose piles up above the limit.
+    PeakDoseOverLimit,
+    /// The outline crosses itself, or was repaired.
+    BrokenOutline,
+}
+
+impl FlagKind {
+    /// As written in files.
+    #[must_use]
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::CostsMoreThanItsShare => "costs_more_than_its_share",
+            Self::NotPrintableAtThisBlur => "not_printable_at_this_blur",
+            Self::ToleranceNotReached => "tolerance_not_reached",
+            Self::ShotLimitsNotMet => "shot_limits_not_met",
+            Self::PeakDoseOverLimit => "peak_dose_over_limit",
+            Self::BrokenOutline => "broken_outline",
+        }
+    }
+}
+
+/// A figure to look at or to send back.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Flag {
+    /// Number of the distinct figure.
+    pub figure: u64,
+    /// Where it shows, mask coordinates.
+    pub place_nm: [f64; 2],
+    /// What is wrong.
+    pub kind: FlagKind,
+    /// How much, in `unit`; `None` where there is nothing to measure.
+    pub number: Option<f64>,
+    /// Unit of `number`, with what it counts: "nm edge error", "% of the hours".
+    pub unit: String,
+    /// What would help, in one sentence.
+    pub remedy: String,
+    /// Picture of the figure, a file beside the report.
+    pub picture: Option<String>,
+}
+
+/// One distinct figure: a line of `figures.csv`.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct FigureResult {
+    /// Its number.
+    pub figure: u64,
+    /// Lower-left corner of its bounds at its first place, mask coordinates.
+    pub place_nm: [f64; 2],
+    /// At how many places it stands.
+    pub places: Count,
+    /// Length of all its rings.
+    pub outline_nm: f64,
+    /// Vertices of all its rings.
+    pub vertices: u64,
+    /// Whether every edge is axis-parallel.
+    pub rectilinear: bool,
+    /// Its fractures.
+    pub fractures: ByMethod<FigureFracture>,
+    /// What is wrong with it.
+    pub flags: Vec<FlagKind>,
+}
+
+/// One fracture of one distinct figure.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct FigureFracture {
+    /// Shots at one place.
+    pub shots: u64,
+    /// Edge error along its outline.
+    pub edge_error_nm: EdgeError,
+    /// Whether it prints within tolerance; `None` if not checked.
+    pub prints_within_tolerance: Option<bool>,
+    /// Seconds to flash and settle it at all its places; `None` if not computed.
+    pub seconds: Option<f64>,
+}
