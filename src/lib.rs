@@ -4,5 +4,6 @@ pub mod fracture;
 pub mod geom;
 pub mod layout;
 pub mod mask;
+pub mod profile;
 pub mod shot;
 pub mod units;
