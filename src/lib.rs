@@ -7,3 +7,4 @@ pub mod mask;
 pub mod profile;
 pub mod shot;
 pub mod units;
+pub mod write_time;
