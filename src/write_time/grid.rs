@@ -108,6 +108,10 @@ impl Grid {
         };
         let from = rect.min.x + run.start.x - self.left;
         let to = rect.max.x + run.start.x - self.left - 1;
+        if run.count == 1 {
+            let borders = to.div_euclid(side) - from.div_euclid(side);
+            return u128::from(borders.unsigned_abs()) + 1;
+        }
         let cells = |x: i64| floor_sum(run.count, side, run.step, x);
         (cells(to) - cells(from)).unsigned_abs() + u128::from(run.count)
     }
