@@ -4,6 +4,7 @@
 //! do). [`Key`] lists every number with its unit in its name. A number may state how uncertain it is:
 //! `settle_ns = { value = 60, plus_minus = 5 }`. The built-in profiles are illustrative: no machine's data.
 
+mod error;
 mod key;
 mod read;
 
@@ -13,6 +14,7 @@ use std::f64::consts::SQRT_2;
 use serde::ser::SerializeStruct;
 use serde::{Serialize, Serializer};
 
+pub use error::{ProfileError, ProfileErrors};
 pub use key::{Key, KeyInfo, Need, Section};
 
 use crate::shot::{AddressUnit, ShotLimits};
@@ -104,76 +106,6 @@ pub struct Profile {
     numbers: BTreeMap<Key, Number>,
     backscatter: Vec<Backscatter>,
 }
-
-/// What is wrong with a profile; `place` is `file:line`, or what the caller named.
-#[derive(Clone, Debug, PartialEq, thiserror::Error)]
-pub enum ProfileError {
-    /// Not TOML at all.
-    #[error("{place}: {message}")]
-    Syntax {
-        /// Where.
-        place: String,
-        /// What the TOML reader says.
-        message: String,
-    },
-    /// A key nobody reads.
-    #[error("{place}: unknown key `{key}`, expected {expected}")]
-    UnknownKey {
-        /// Where.
-        place: String,
-        /// The key.
-        key: String,
-        /// The keys there are, or the one that states this quantity.
-        expected: String,
-    },
-    /// A value of the wrong type, not finite, or out of bounds.
-    #[error("{place}: `{key}` is {found}, expected {expected}")]
-    Value {
-        /// Where.
-        place: String,
-        /// The key.
-        key: String,
-        /// As found.
-        found: String,
-        /// What it accepts.
-        expected: String,
-    },
-    /// A key that must be stated is not.
-    #[error("{place}: `{key}` is missing from {section}, expected {expected}")]
-    Missing {
-        /// Where.
-        place: String,
-        /// The key.
-        key: &'static str,
-        /// Its table, as `[writer]`.
-        section: &'static str,
-        /// What it accepts.
-        expected: String,
-    },
-    /// Values that cannot hold together.
-    #[error("{place}: `{key}` is {found}, which contradicts {other}")]
-    Contradiction {
-        /// Where.
-        place: String,
-        /// The key.
-        key: &'static str,
-        /// As found.
-        found: String,
-        /// The other value, in words.
-        other: String,
-    },
-    /// No built-in profile of this name.
-    #[error("no built-in profile `{found}`, expected one of {}", Profile::builtins().collect::<Vec<_>>().join(", "))]
-    NoBuiltin {
-        /// The name asked for.
-        found: String,
-    },
-}
-
-/// All that is wrong with a profile, in the order of the file; one line each.
-#[derive(Clone, Debug, PartialEq, thiserror::Error)]
-#[error("{}", .0.iter().map(ToString::to_string).collect::<Vec<_>>().join("\n"))]
-pub struct ProfileErrors(pub Vec<ProfileError>);
 
 const BUILTINS: &[(&str, &str)] = &[
     ("shaped-70", include_str!("profile/shaped-70.toml")),

@@ -9,8 +9,10 @@
 //! with relative dose d, base dose Q, P passes that share it and current density J. A raster multi-beam writer of
 //! current I takes `max(Q·A/(P·I), stage)` per stripe of area A and pass, whatever the pattern.
 
+mod flash;
 mod grid;
 mod load;
+mod pattern;
 mod study;
 
 use serde::Serialize;
@@ -19,7 +21,8 @@ use crate::geom::Point;
 use crate::profile::{Key, Kind, Profile};
 use crate::units::{Amperes, BaseDose, CurrentDensity, Dose, Hours, Nm, Seconds};
 
-pub use load::{Counts, Cuts, Field, Pattern, Placed};
+pub use flash::Cuts;
+pub use pattern::{Counts, Field, Pattern, Placed};
 pub use study::{Interval, Sensitivity, interval, sensitivity, tie};
 
 use load::{Load, StripeLoad};

@@ -5,7 +5,8 @@ use serde::{Serialize, Serializer};
 use crate::profile::{Key, Profile};
 use crate::units::Hours;
 
-use super::load::{Counts, Field, Load, Pattern};
+use super::load::Load;
+use super::pattern::{Counts, Field, Pattern};
 use super::{WriteTime, WriteTimeError};
 
 /// Hours with their bounds.
