@@ -154,7 +154,7 @@ pub struct WriteTime {
     pub cuts: Cuts,
     /// Calibrations.
     pub calibrations: u64,
-    /// Upward, alike ones together.
+    /// Upward, alike ones together; each grid that passes are shifted to starts anew at stripe 0.
     pub stripes: Vec<StripeTime>,
 }
 
