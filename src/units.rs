@@ -10,6 +10,12 @@ use serde::{Deserialize, Serialize};
 /// Picometres in a nanometre: [`crate::geom`] counts in whole picometres.
 pub const PM_PER_NM: i64 = 1000;
 
+/// Nanometres in a micrometre.
+pub const NM_PER_UM: f64 = 1e3;
+
+/// Nanometres in a millimetre.
+pub const NM_PER_MM: f64 = 1e6;
+
 /// Square nanometres in a square centimetre (1 cm = 10⁷ nm).
 pub const NM2_PER_CM2: f64 = 1e14;
 
@@ -96,7 +102,44 @@ quantity!(
     CurrentDensity, "A/cm²"
 );
 
+quantity!(
+    /// A time, hours.
+    Hours, "h"
+);
+quantity!(
+    /// A beam current, A.
+    Amperes, "A"
+);
+quantity!(
+    /// An area at mask scale, cm².
+    Area, "cm²"
+);
+
 impl Nm {
+    /// From micrometres.
+    #[must_use]
+    pub fn from_um(um: f64) -> Self {
+        Self(um * NM_PER_UM)
+    }
+
+    /// From millimetres.
+    #[must_use]
+    pub fn from_mm(mm: f64) -> Self {
+        Self(mm * NM_PER_MM)
+    }
+
+    /// As micrometres.
+    #[must_use]
+    pub fn um(self) -> f64 {
+        self.0 / NM_PER_UM
+    }
+
+    /// Area of a rectangle of these two sides.
+    #[must_use]
+    pub fn by(self, other: Self) -> Area {
+        Area(self.0 * other.0 / NM2_PER_CM2)
+    }
+
     /// The nearest whole number of picometres; `None` when not finite or beyond ±2⁵² pm (4.5 km).
     #[must_use]
     pub fn to_pm(self) -> Option<i64> {
@@ -123,6 +166,24 @@ impl Seconds {
         self.0 / 3600.0
     }
 
+    /// From minutes.
+    #[must_use]
+    pub fn from_minutes(minutes: f64) -> Self {
+        Self(minutes * 60.0)
+    }
+
+    /// From microseconds.
+    #[must_use]
+    pub fn from_us(us: f64) -> Self {
+        Self(us * 1e-6)
+    }
+
+    /// From nanoseconds.
+    #[must_use]
+    pub fn from_ns(ns: f64) -> Self {
+        Self(ns * 1e-9)
+    }
+
     /// From hours.
     #[must_use]
     pub fn from_hours(hours: f64) -> Self {
@@ -130,7 +191,33 @@ impl Seconds {
     }
 }
 
+impl From<Seconds> for Hours {
+    fn from(time: Seconds) -> Self {
+        Self(time.hours())
+    }
+}
+
+impl CurrentDensity {
+    /// The dose that this density gives in a time: `A/cm² · µs = µC/cm²`.
+    #[must_use]
+    pub fn dose_in(self, time: Seconds) -> BaseDose {
+        BaseDose(self.0 * time.0 * 1e6)
+    }
+
+    /// The largest area that a beam of `current` fills at this density.
+    #[must_use]
+    pub fn area_of(self, current: Amperes) -> Area {
+        Area(current.0 / self.0)
+    }
+}
+
 impl BaseDose {
+    /// Time to deposit this dose over an area with a beam of the given current: `t = D·A/I`.
+    #[must_use]
+    pub fn exposure_time(self, area: Area, current: Amperes) -> Seconds {
+        Seconds(self.0 * 1e-6 * area.0 / current.0)
+    }
+
     /// Time to deposit this dose at a current density: `µC/cm² ÷ A/cm² = µs`.
     #[must_use]
     pub fn flash_time(self, density: CurrentDensity) -> Seconds {

@@ -1,0 +1,210 @@
+//! Stripes and sub-fields as a grid over the frame, and counts of cells by arithmetic.
+
+use crate::geom::{Point, Rect, Repetition};
+use crate::profile::{Key, Profile};
+use crate::units::{Area, Nm};
+
+/// The stripes of one pass, stacked upward from `bottom`, each cut into rows and columns of sub-fields.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) struct Grid {
+    frame: Rect,
+    left: i64,
+    bottom: i64,
+    stripe: i64,
+    rows_per_stripe: i64,
+    column: Option<i64>,
+    /// How many stripes touch the frame.
+    pub(super) stripes: i64,
+}
+
+/// Copies at equal height: the first at `start`, the others `step` further right, `count` in all.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) struct Run {
+    pub(super) start: Point,
+    pub(super) step: i64,
+    pub(super) count: u64,
+}
+
+impl Grid {
+    /// The grid of each pass; equal ones once, with their number. `frame` is not empty and within ±1 m.
+    pub(super) fn of_passes(profile: &Profile, frame: Rect) -> Vec<(u32, Self)> {
+        let mut grids: Vec<(u32, Self)> = Vec::new();
+        for pass in 0..profile.passes() {
+            let shift = (f64::from(pass) * profile.plain(Key::PassShift)).fract();
+            let grid = Self::new(profile, frame, shift);
+            match grids.iter_mut().find(|(_, g)| *g == grid) {
+                Some((times, _)) => *times += 1,
+                None => grids.push((1, grid)),
+            }
+        }
+        grids
+    }
+
+    /// `shift`: how far the grid starts outside the frame, as a part of a cell.
+    fn new(profile: &Profile, frame: Rect, shift: f64) -> Self {
+        let pm_of = |key| {
+            let um = profile.value(key)?;
+            Nm::from_um(um).to_pm()
+        };
+        let before = |cell: i64| (Nm::from_pm(cell) * shift).to_pm().unwrap_or(0);
+        let stated = pm_of(Key::Stripe);
+        let stripe = stated.unwrap_or(frame.height());
+        let column = pm_of(Key::Subfield);
+        let bottom = frame.min.y - stated.map_or(0, before);
+        Self {
+            frame,
+            left: frame.min.x - column.map_or(0, before),
+            bottom,
+            stripe,
+            // Sub-fields share the stripe evenly, so that stripe borders are sub-field borders too.
+            rows_per_stripe: column.map_or(1, |side| ceil_div(stripe, side)),
+            column,
+            stripes: ceil_div(frame.max.y - bottom, stripe),
+        }
+    }
+
+    /// Height of the part of a stripe that lies in the frame, pm.
+    pub(super) fn height_of(&self, stripe: i64) -> i64 {
+        let bottom = self.bottom + stripe * self.stripe;
+        (bottom + self.stripe).min(self.frame.max.y) - bottom.max(self.frame.min.y)
+    }
+
+    /// Area of that part.
+    pub(super) fn area_of(&self, stripe: i64) -> Area {
+        Nm::from_pm(self.frame.width()).by(Nm::from_pm(self.height_of(stripe)))
+    }
+
+    /// Sub-fields of a stripe within the frame; 0 where the profile states none.
+    pub(super) fn subfields_of(&self, stripe: i64) -> u128 {
+        let Some(side) = self.column else { return 0 };
+        let rows = ceil_div(self.height_of(stripe) * self.rows_per_stripe, self.stripe);
+        let columns = ceil_div(self.frame.max.x - self.left, side);
+        u128::from(rows.unsigned_abs()) * u128::from(columns.unsigned_abs())
+    }
+
+    /// Stripes that `rect` lies in, with its rows of sub-fields in each. What overhangs the frame is written in
+    /// the nearest stripe.
+    pub(super) fn rows(&self, rect: Rect) -> impl Iterator<Item = (i64, u128)> + use<> {
+        let per = self.rows_per_stripe;
+        let last_row = self.stripes * per - 1;
+        let row = |y: i64| {
+            ((y - self.bottom) * per)
+                .div_euclid(self.stripe)
+                .clamp(0, last_row)
+        };
+        // The upper side belongs to the row under it.
+        let above = ceil_div((rect.max.y - self.bottom) * per, self.stripe) - 1;
+        let (first, last) = (row(rect.min.y), above.clamp(0, last_row));
+        (first / per..=last / per).map(move |stripe| {
+            let rows = last.min(stripe * per + per - 1) - first.max(stripe * per) + 1;
+            (stripe, u128::from(rows.unsigned_abs()))
+        })
+    }
+
+    /// Columns of sub-fields over which all copies of `rect` in a run are cut, summed.
+    pub(super) fn columns(&self, rect: Rect, run: Run) -> u128 {
+        let Some(side) = self.column else {
+            return u128::from(run.count);
+        };
+        let from = rect.min.x + run.start.x - self.left;
+        let to = rect.max.x + run.start.x - self.left - 1;
+        if run.count == 1 {
+            let borders = to.div_euclid(side) - from.div_euclid(side);
+            return u128::from(borders.unsigned_abs()) + 1;
+        }
+        let cells = |x: i64| floor_sum(run.count, side, run.step, x);
+        (cells(to) - cells(from)).unsigned_abs() + u128::from(run.count)
+    }
+
+    /// Cells that a rectangle of this size is cut into on average over all its positions.
+    pub(super) fn expected_cells(&self, rect: Rect) -> f64 {
+        let crossings = |length: i64, cell: f64| Nm::from_pm(length).0 / cell;
+        let height = Nm::from_pm(self.stripe).0 / self.rows_per_stripe as f64;
+        let rows = 1.0
+            + if self.stripes > 1 || self.rows_per_stripe > 1 {
+                crossings(rect.height(), height)
+            } else {
+                0.0
+            };
+        let columns = 1.0
+            + self
+                .column
+                .map_or(0.0, |side| crossings(rect.width(), Nm::from_pm(side).0));
+        rows * columns
+    }
+}
+
+/// The copies of a repetition by rows of equal height. A lattice with neither side along x is taken copy by copy.
+pub(super) fn runs(repetition: &Repetition) -> Box<dyn Iterator<Item = Run> + '_> {
+    let alone = |start| Run {
+        start,
+        step: 0,
+        count: 1,
+    };
+    let rows = |along: Point, count: u64, across: Point, rows: u64| {
+        (0..rows).map(move |row| {
+            let row = i64::try_from(row).unwrap_or(i64::MAX);
+            Run {
+                start: Point::new(across.x.saturating_mul(row), across.y.saturating_mul(row)),
+                step: along.x,
+                count,
+            }
+        })
+    };
+    match *repetition {
+        Repetition::Lattice {
+            columns,
+            rows: count,
+            a,
+            b,
+        } if a.y == 0 || columns == 1 => Box::new(rows(a, columns, b, count)),
+        Repetition::Lattice {
+            columns,
+            rows: count,
+            a,
+            b,
+        } if b.y == 0 || count == 1 => Box::new(rows(b, count, a, columns)),
+        _ => Box::new(repetition.displacements().map(alone)),
+    }
+}
+
+/// `⌈a / b⌉` for positive `b`.
+fn ceil_div(a: i64, b: i64) -> i64 {
+    -(-a).div_euclid(b)
+}
+
+/// `Σ ⌊(step·i + start) / cell⌋` over `0 ≤ i < count`, exactly and in logarithmic time.
+///
+/// The Euclid-like reduction of lattice points under a line (Graham, Knuth, Patashnik, *Concrete Mathematics*,
+/// section 3.5). `cell` is positive; `count · |step|` and `|start|` below 2⁶².
+fn floor_sum(count: u64, cell: i64, step: i64, start: i64) -> i128 {
+    let (mut n, mut m) = (i128::from(count), i128::from(cell));
+    let (mut a, mut b) = (i128::from(step), i128::from(start));
+    let mut sum = 0;
+    while n > 0 && m > 0 {
+        sum += n * (n - 1) / 2 * a.div_euclid(m) + n * b.div_euclid(m);
+        (a, b) = (a.rem_euclid(m), b.rem_euclid(m));
+        // Points (i, j) with i < n and 1 ≤ j ≤ (a·i + b)/m, counted by rows j instead of columns i.
+        let top = a * n + b;
+        (n, b) = (top / m, top % m);
+        (m, a) = (a, m);
+    }
+    sum
+}
+
+#[cfg(test)]
+mod tests {
+    use proptest::prelude::*;
+
+    use super::*;
+
+    proptest! {
+        #[test]
+        fn floor_sum_equals_the_sum_of_floors(count in 0u64..60, cell in 1i64..50, step in -120i64..120, start in -500i64..500) {
+            let one_by_one: i128 = (0..i64::try_from(count).unwrap())
+                .map(|i| i128::from((step * i + start).div_euclid(cell)))
+                .sum();
+            prop_assert_eq!(floor_sum(count, cell, step, start), one_by_one);
+        }
+    }
+}

@@ -1,0 +1,316 @@
+//! A pattern over the stripes of every pass: what each gets.
+
+use crate::geom::{Rect, Repetition};
+use crate::profile::{Key, Kind, Profile};
+use crate::units::{Area, Nm};
+
+use super::WriteTimeError;
+use super::flash::{Cuts, FlashLimits, Flashing, count};
+use super::grid::{Grid, runs};
+use super::pattern::{Counts, Field, Pattern, Placed, check_frame, spacing};
+
+/// Most shots and flashes: beyond any mask, and exact in `u128` when multiplied by heights.
+const MOST_SHOTS: u128 = 1_000_000_000_000_000_000_000_000;
+
+/// What one stripe gets in one pass. Sums over its flashes.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub(super) struct StripeLoad {
+    pub(super) flashes: u128,
+    /// Σ dose over cut shots; repeated flashes share it.
+    pub(super) dose: f64,
+    pub(super) jump: Nm,
+    pub(super) side: Nm,
+    pub(super) subfields: u128,
+    pub(super) area: Area,
+}
+
+/// The stripes of passes that write alike.
+#[derive(Clone, Debug)]
+pub(super) struct PassLoad {
+    pub(super) times: u32,
+    /// Upward.
+    pub(super) stripes: Vec<StripeLoad>,
+}
+
+/// All that time follows from, once a profile's rates are known.
+#[derive(Clone, Debug)]
+pub(super) struct Load {
+    pub(super) passes: Vec<PassLoad>,
+    /// Stage travel per stripe; `None` without a field.
+    pub(super) length: Option<Nm>,
+    pub(super) shots: u128,
+    /// Over all passes.
+    pub(super) cuts: Cuts,
+}
+
+impl StripeLoad {
+    /// Adds so many cut shots, each flashed in this way.
+    fn add(&mut self, pieces: u128, flashing: &Flashing) {
+        let (parts, flashes) = flashing.of(pieces);
+        self.flashes = self.flashes.saturating_add(flashes);
+        self.dose += parts as f64 * flashing.dose;
+        self.jump += flashing.jump * flashes as f64;
+        self.side += flashing.side * flashes as f64;
+    }
+
+    /// The share of `flashes` in a whole that is evenly spread.
+    fn share(&self, flashes: u128) -> Self {
+        let share = if self.flashes == 0 {
+            0.0
+        } else {
+            flashes as f64 / self.flashes as f64
+        };
+        Self {
+            flashes,
+            dose: self.dose * share,
+            jump: self.jump * share,
+            side: self.side * share,
+            ..Self::default()
+        }
+    }
+}
+
+impl Load {
+    pub(super) fn new(profile: &Profile, pattern: &Pattern<'_>) -> Result<Self, WriteTimeError> {
+        if profile.kind() == Kind::Raster {
+            return Whole::default().spread(profile, Some(pattern.frame()?));
+        }
+        let limits = FlashLimits::new(profile);
+        match *pattern {
+            Pattern::Counts { counts, field } => Self::of_counts(profile, &limits, counts, field),
+            Pattern::Placed { placed, frame } => Self::of_placed(profile, &limits, placed, frame),
+            Pattern::Sample {
+                placed,
+                clip,
+                field,
+                coverage,
+            } => Self::of_sample(profile, &limits, placed, clip, field, coverage),
+        }
+    }
+
+    /// Whether a change of the number changes the load, and not only the time it takes.
+    pub(super) fn depends_on(profile: &Profile, key: Key) -> bool {
+        let limited = [Key::GreatestFlash, Key::GreatestBeam, Key::ShortestFlash]
+            .into_iter()
+            .any(|limit| profile.value(limit).is_some());
+        match key {
+            Key::Passes | Key::PassShift | Key::Stripe | Key::Subfield => true,
+            Key::GreatestFlash | Key::GreatestBeam | Key::ShortestFlash => true,
+            Key::Current | Key::BaseDose => limited,
+            _ => false,
+        }
+    }
+
+    /// Flashes over all passes.
+    pub(super) fn flashes(&self) -> u128 {
+        let stripes = |pass: &PassLoad| {
+            let flashes = pass.stripes.iter().map(|s| s.flashes);
+            flashes.fold(0, u128::saturating_add)
+        };
+        self.passes
+            .iter()
+            .map(|pass| stripes(pass).saturating_mul(pass.times.into()))
+            .fold(0, u128::saturating_add)
+    }
+
+    fn checked(self) -> Result<Self, WriteTimeError> {
+        let found = self.flashes().max(self.shots);
+        if found > MOST_SHOTS {
+            return Err(WriteTimeError::TooMany { found });
+        }
+        Ok(self)
+    }
+
+    fn of_counts(
+        profile: &Profile,
+        limits: &FlashLimits,
+        counts: Counts,
+        field: Option<Field>,
+    ) -> Result<Self, WriteTimeError> {
+        let mean = counts.mean_dose;
+        if !(mean.0.is_finite() && mean.0 > 0.0) {
+            return Err(WriteTimeError::Dose { found: mean });
+        }
+        for length in [counts.mean_jump, counts.mean_side] {
+            if !(length.0.is_finite() && length.0 >= 0.0) {
+                return Err(WriteTimeError::Side { found: length });
+            }
+        }
+        let flashing = limits.flashing(mean.0, Area(0.0), counts.mean_jump, counts.mean_side);
+        let mut whole = Whole::default();
+        whole.add(profile.passes(), counts.shots, counts.shots, &flashing);
+        whole.spread(profile, field.map(Field::frame).transpose()?)
+    }
+
+    fn of_sample(
+        profile: &Profile,
+        limits: &FlashLimits,
+        placed: &[Placed<'_>],
+        clip: Rect,
+        field: Field,
+        coverage: f64,
+    ) -> Result<Self, WriteTimeError> {
+        check_frame(clip)?;
+        if !(coverage > 0.0 && coverage <= 1.0) {
+            return Err(WriteTimeError::Coverage { found: coverage });
+        }
+        let frame = field.frame()?;
+        let area = |r: Rect| Nm::from_pm(r.width()).by(Nm::from_pm(r.height()));
+        let copies = coverage * (area(frame) / area(clip));
+        let grid = Grid::of_passes(profile, frame)
+            .first()
+            .map(|(_, grid)| *grid);
+        let spacing = spacing(placed, clip);
+        let mut whole = Whole::default();
+        for placed in placed {
+            placed.check()?;
+            let n = placed.repetition.count() as f64 * copies;
+            for (rect, flashing) in placed.flashings(limits, spacing) {
+                let cells = grid.map_or(1.0, |grid| grid.expected_cells(rect));
+                let (shots, pieces) = (count(n.round()), count((n * cells).round()));
+                whole.add(profile.passes(), shots, pieces, &flashing);
+            }
+        }
+        whole.spread(profile, Some(frame))
+    }
+
+    fn of_placed(
+        profile: &Profile,
+        limits: &FlashLimits,
+        placed: &[Placed<'_>],
+        frame: Rect,
+    ) -> Result<Self, WriteTimeError> {
+        check_frame(frame)?;
+        let spacing = spacing(placed, frame);
+        let mut load = Self {
+            passes: Vec::new(),
+            length: Some(Nm::from_pm(frame.width())),
+            shots: 0,
+            cuts: Cuts::default(),
+        };
+        for placed in placed {
+            placed.check()?;
+            let shots = placed
+                .repetition
+                .count()
+                .saturating_mul(placed.shots.len() as u128);
+            load.shots = load.shots.saturating_add(shots);
+        }
+        for (times, grid) in Grid::of_passes(profile, frame) {
+            let mut stripes = empty_stripes(&grid);
+            for placed in placed {
+                for (rect, flashing) in placed.flashings(limits, spacing) {
+                    let pieces = spread(&grid, rect, placed.repetition, &flashing, &mut stripes);
+                    load.cuts
+                        .add(times, placed.repetition.count(), pieces, &flashing);
+                }
+            }
+            for (stripe, index) in stripes.iter_mut().zip(0..) {
+                stripe.subfields = grid.subfields_of(index).min(stripe.flashes);
+            }
+            load.passes.push(PassLoad { times, stripes });
+        }
+        load.checked()
+    }
+}
+
+/// A pattern known only as a whole.
+#[derive(Default)]
+struct Whole {
+    shots: u128,
+    load: StripeLoad,
+    cuts: Cuts,
+}
+
+impl Whole {
+    fn add(&mut self, passes: u32, shots: u128, pieces: u128, flashing: &Flashing) {
+        self.shots = self.shots.saturating_add(shots);
+        self.load.add(pieces, flashing);
+        self.cuts.add(passes, shots, pieces, flashing);
+    }
+
+    /// Every stripe gets its share by area; without a frame all is one stripe.
+    fn spread(self, profile: &Profile, frame: Option<Rect>) -> Result<Load, WriteTimeError> {
+        if self.load.flashes > MOST_SHOTS {
+            let found = self.load.flashes;
+            return Err(WriteTimeError::TooMany { found });
+        }
+        let passes = match frame {
+            None => vec![PassLoad {
+                times: profile.passes(),
+                stripes: vec![self.load],
+            }],
+            Some(frame) => Grid::of_passes(profile, frame)
+                .into_iter()
+                .map(|(times, grid)| PassLoad {
+                    times,
+                    stripes: self.stripes(&grid, frame.height()),
+                })
+                .collect(),
+        };
+        Load {
+            passes,
+            length: frame.map(|frame| Nm::from_pm(frame.width())),
+            shots: self.shots,
+            cuts: self.cuts,
+        }
+        .checked()
+    }
+
+    fn stripes(&self, grid: &Grid, height: i64) -> Vec<StripeLoad> {
+        let (mut below, mut given) = (0, 0);
+        (0..grid.stripes)
+            .map(|index| {
+                below += grid.height_of(index);
+                let upto = self.load.flashes * u128::from(below.unsigned_abs())
+                    / u128::from(height.unsigned_abs());
+                let load = self.load.share(upto - given);
+                given = upto;
+                StripeLoad {
+                    subfields: grid.subfields_of(index).min(load.flashes),
+                    area: grid.area_of(index),
+                    ..load
+                }
+            })
+            .collect()
+    }
+}
+
+fn empty_stripes(grid: &Grid) -> Vec<StripeLoad> {
+    (0..grid.stripes)
+        .map(|index| StripeLoad {
+            area: grid.area_of(index),
+            ..StripeLoad::default()
+        })
+        .collect()
+}
+
+/// Gives every copy of a shot to the stripes it lies in, cut at sub-field borders; returns the number of pieces.
+fn spread(
+    grid: &Grid,
+    rect: Rect,
+    repetition: &Repetition,
+    flashing: &Flashing,
+    stripes: &mut [StripeLoad],
+) -> u128 {
+    let mut pieces = 0;
+    // Rows of an upright lattice start at the same x, so their cuts are counted once.
+    let mut counted = None;
+    for run in runs(repetition) {
+        let columns = match counted {
+            Some((x, columns)) if x == run.start.x => columns,
+            _ => grid.columns(rect, run),
+        };
+        counted = Some((run.start.x, columns));
+        for (stripe, rows) in grid.rows(rect.translated(run.start)) {
+            if let Some(stripe) = usize::try_from(stripe)
+                .ok()
+                .and_then(|i| stripes.get_mut(i))
+            {
+                stripe.add(rows * columns, flashing);
+                pieces += rows * columns;
+            }
+        }
+    }
+    pieces
+}
