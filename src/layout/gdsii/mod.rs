@@ -1,0 +1,321 @@
+//! GDSII stream files.
+//!
+//! Read in stretches cut between elements, as many at a time as there are threads, so that memory holds the layout and a few stretches and
+//! never the file. An element needs nothing from its neighbours; only the stitching of stretches into cells is sequential.
+//!
+//! Accepted beyond the letter of the format: outlines continued in further XY records, unclosed outlines, 16-bit layers and counts read as unsigned,
+//! names of any bytes, anything after ENDLIB.
+
+mod element;
+mod record;
+
+use std::io::{self, Read};
+
+use rayon::prelude::*;
+
+use self::element::{Context, Element};
+use self::record::{Records, tag};
+use super::error::{Fault, Parsed, Place, Remarks};
+use super::hierarchy::{Interner, RawCell, link};
+use super::{CellId, Layout, LayoutError, Placement, Shape, unit_from_nm};
+use crate::units::Nm;
+
+/// First bytes of every file: a HEADER record of six bytes.
+pub(super) const MAGIC: [u8; 4] = [0x00, 0x06, 0x00, 0x02];
+
+/// Bytes in a stretch; longer only where one element is. Larger ones brought no speed, smaller ones lost some.
+const STRETCH: usize = 1 << 21;
+
+/// Reads a whole library.
+pub(super) fn read(source: impl Read + Send, file: &str) -> Result<Layout, LayoutError> {
+    let fault = |fault: Box<Fault>| fault.in_file(file);
+    let unreadable = |cause| LayoutError::Unreadable {
+        file: file.to_owned(),
+        cause,
+    };
+    let mut stretches = Stretches::new(source);
+    let threads = rayon::current_num_threads();
+    let mut group = stretches.next_group(threads).map_err(unreadable)?;
+    let unit = match group.first_mut() {
+        Some(first) => read_library_head(first).map_err(fault)?,
+        None => return Err(fault(Fault::ends(Place::Byte(0), "HEADER"))),
+    };
+    let mut library = Library::default();
+    while !group.is_empty() {
+        let (parts, next) = rayon::join(
+            || group.par_iter().map(parse).collect::<Vec<_>>(),
+            || stretches.next_group(threads),
+        );
+        for part in parts {
+            library.stitch(part.map_err(fault)?).map_err(fault)?;
+        }
+        if library.ended {
+            break;
+        }
+        group = next.map_err(unreadable)?;
+    }
+    if !library.ended {
+        let end = Place::Byte(stretches.base);
+        return Err(fault(Fault::ends(end, "ENDLIB")));
+    }
+    let cells = link(library.cells, &library.names.into_keys(), file)?;
+    Ok(Layout {
+        unit,
+        cells,
+        notes: library.remarks.sentences(),
+    })
+}
+
+/// Consecutive bytes of the file that start and end between elements.
+struct Stretch {
+    bytes: Vec<u8>,
+    base: u64,
+}
+
+/// Cuts a stream into stretches.
+struct Stretches<R> {
+    source: R,
+    /// Read but not yet given out: the start of an element.
+    tail: Vec<u8>,
+    /// Offset of `tail` in the file.
+    base: u64,
+    ended: bool,
+}
+
+impl<R: Read> Stretches<R> {
+    fn new(source: R) -> Self {
+        Self {
+            source,
+            tail: Vec::new(),
+            base: 0,
+            ended: false,
+        }
+    }
+
+    fn next_group(&mut self, size: usize) -> io::Result<Vec<Stretch>> {
+        let mut group = Vec::with_capacity(size);
+        while group.len() < size {
+            match self.next()? {
+                Some(stretch) => group.push(stretch),
+                None => break,
+            }
+        }
+        Ok(group)
+    }
+
+    fn next(&mut self) -> io::Result<Option<Stretch>> {
+        let mut bytes = std::mem::take(&mut self.tail);
+        let mut cut = 0;
+        while cut == 0 && !self.ended {
+            let wanted = STRETCH.max(bytes.len());
+            bytes.reserve_exact(wanted);
+            let got = (&mut self.source)
+                .take(wanted as u64)
+                .read_to_end(&mut bytes)?;
+            self.ended = got < wanted;
+            cut = last_cut(&bytes);
+        }
+        // What follows the last cut of the file is its end, or broken: the parser says which.
+        if self.ended {
+            cut = bytes.len();
+        }
+        self.tail = bytes.split_off(cut);
+        let base = self.base;
+        self.base += cut as u64;
+        Ok((cut > 0).then_some(Stretch { bytes, base }))
+    }
+}
+
+/// End of the last element in `bytes`; all of them if a record is broken, so that the parser meets it.
+fn last_cut(bytes: &[u8]) -> usize {
+    let (mut at, mut cut) = (0, 0);
+    while let Some(&[l0, l1, t0, t1]) = bytes.get(at..at + 4) {
+        let length = usize::from(u16::from_be_bytes([l0, l1]));
+        if length < 4 {
+            return bytes.len();
+        }
+        at += length;
+        if u16::from_be_bytes([t0, t1]) == tag::ENDEL && at <= bytes.len() {
+            cut = at;
+        }
+    }
+    cut
+}
+
+/// Reads and removes everything up to UNITS; gives the length of a database unit.
+fn read_library_head(first: &mut Stretch) -> Parsed<Nm> {
+    let mut records = Records::new(&first.bytes, first.base);
+    let header = records.expect("HEADER")?;
+    if header.tag != tag::HEADER {
+        return Err(header.unexpected("HEADER"));
+    }
+    let unit = loop {
+        let record = records.expect("UNITS")?;
+        match record.tag {
+            tag::UNITS => {
+                let [_, metres] = record.real_pair()?;
+                break unit_from_nm(metres * 1e9).ok_or_else(|| {
+                    let found = format!("a database unit of {metres} m");
+                    Fault::new(record.place(), found, super::UNIT_RANGE)
+                })?;
+            }
+            tag::BGNLIB
+            | tag::LIBNAME
+            | tag::REFLIBS
+            | tag::FONTS
+            | tag::GENERATIONS
+            | tag::ATTRTABLE
+            | tag::FORMAT
+            | tag::MASK
+            | tag::ENDMASKS
+            | tag::LIBDIRSIZE
+            | tag::SRFNAME
+            | tag::LIBSECUR => {}
+            _ => return Err(record.unexpected("a record of the library's head, or UNITS")),
+        }
+    };
+    let consumed = records.consumed();
+    first.bytes.drain(..consumed);
+    first.base += consumed as u64;
+    Ok(unit)
+}
+
+/// What one stretch holds. The first run of contents belongs to the cell left open by the stretch before.
+struct Part {
+    base: u64,
+    runs: Vec<Run>,
+    names: Vec<Vec<u8>>,
+    remarks: Remarks,
+    /// ENDLIB was met.
+    ended: bool,
+}
+
+/// Contents of one cell, or of a part of it.
+#[derive(Default)]
+struct Run {
+    /// Name and place of the cell that starts with this run.
+    starts: Option<(Vec<u8>, Place)>,
+    shapes: Vec<Shape>,
+    placements: Vec<Placement>,
+    /// The cell ends with this run.
+    ends: Option<Place>,
+}
+
+impl Run {
+    fn is_empty(&self) -> bool {
+        self.starts.is_none()
+            && self.ends.is_none()
+            && self.shapes.is_empty()
+            && self.placements.is_empty()
+    }
+}
+
+fn parse(stretch: &Stretch) -> Parsed<Part> {
+    let mut records = Records::new(&stretch.bytes, stretch.base);
+    let mut context = Context::default();
+    let (mut runs, mut run) = (Vec::new(), Run::default());
+    let mut ended = false;
+    while let Some(record) = records.next()? {
+        match record.tag {
+            tag::BGNSTR => {
+                let name = records.expect("STRNAME")?;
+                if name.tag != tag::STRNAME {
+                    return Err(name.unexpected("STRNAME"));
+                }
+                if !run.is_empty() {
+                    runs.push(std::mem::take(&mut run));
+                }
+                run.starts = Some((name.name()?.to_vec(), record.place()));
+            }
+            tag::STRCLASS => {}
+            tag::ENDSTR => {
+                run.ends = Some(record.place());
+                runs.push(std::mem::take(&mut run));
+            }
+            tag::ENDLIB => {
+                if records.rest().iter().any(|&b| b != 0) {
+                    context.remarks.add("stretch of data after ENDLIB ignored");
+                }
+                ended = true;
+                break;
+            }
+            _ => match element::read(&record, &mut records, &mut context)? {
+                Element::Shape(shape) => run.shapes.push(shape),
+                Element::Placement(placement) => run.placements.push(placement),
+                Element::Nothing => {}
+            },
+        }
+    }
+    if !run.is_empty() {
+        runs.push(run);
+    }
+    Ok(Part {
+        base: stretch.base,
+        runs,
+        names: context.names.into_keys(),
+        remarks: context.remarks,
+        ended,
+    })
+}
+
+/// The cells so far.
+#[derive(Default)]
+struct Library {
+    cells: Vec<RawCell>,
+    /// The last cell is not closed yet.
+    open: bool,
+    names: Interner<Vec<u8>>,
+    remarks: Remarks,
+    ended: bool,
+}
+
+impl Library {
+    fn stitch(&mut self, part: Part) -> Parsed<()> {
+        if self.ended {
+            return Ok(());
+        }
+        let numbers: Vec<usize> = part.names.iter().map(|n| self.names.number(n)).collect();
+        for mut run in part.runs {
+            if let Some((name, place)) = run.starts {
+                if self.open {
+                    return Err(Fault::new(place, "BGNSTR within a cell", "ENDSTR first"));
+                }
+                self.open = true;
+                self.cells.push(RawCell {
+                    name,
+                    ..RawCell::default()
+                });
+            }
+            let cell = match self.cells.last_mut() {
+                Some(cell) if self.open => cell,
+                _ => {
+                    let place = run.ends.unwrap_or(Place::Byte(part.base));
+                    let found = "contents of a cell outside any";
+                    return Err(Fault::new(place, found, "BGNSTR first"));
+                }
+            };
+            for placement in &mut run.placements {
+                placement.cell = CellId(numbers[placement.cell.0]);
+            }
+            append(&mut cell.shapes, run.shapes);
+            append(&mut cell.placements, run.placements);
+            self.open = run.ends.is_none();
+        }
+        if part.ended && self.open {
+            let found = "ENDLIB within a cell";
+            return Err(Fault::new(Place::Byte(part.base), found, "ENDSTR first"));
+        }
+        self.ended = part.ended;
+        self.remarks.merge(part.remarks);
+        Ok(())
+    }
+}
+
+/// Moves instead of copying where it can.
+fn append<T>(to: &mut Vec<T>, mut from: Vec<T>) {
+    if to.is_empty() {
+        *to = from;
+    } else {
+        to.append(&mut from);
+    }
+}
