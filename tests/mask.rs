@@ -735,7 +735,7 @@ fn the_same_figure_in_other_surroundings_is_another_figure() {
 
 #[test]
 fn a_mirrored_neighbourhood_of_slanted_figures_is_the_same_job() {
-    let neighbour: [(i64, i64); 4] = [(120, -301), (173, -299), (404, 507), (349, 511)];
+    let neighbour: [(i64, i64); 4] = [(60, -301), (113, -299), (353, 507), (300, 511)];
     let mirrored = |xy: &[(i64, i64)]| xy.iter().map(|&(x, y)| (-x - 5_000, y)).collect::<Vec<_>>();
     let l = flat(vec![
         shape(&HOOK),
@@ -910,17 +910,37 @@ fn the_sample_clips_have_the_figures_and_holes_their_maker_counted() {
 
 // ---- laws
 
-/// A layout with two levels of hierarchy, overlaps, arrays and all orientations, within a few µm.
+/// A layout with two levels of hierarchy, overlaps and arrays, within a few µm. Rectilinear ones have all
+/// orientations; slanted ones none, for where slanted edges cross the place is rounded, and a turned cell rounds another way.
 fn any_layout() -> impl Strategy<Value = Layout> {
+    prop_oneof![layouts(true), layouts(false)]
+}
+
+fn layouts(slanted: bool) -> impl Strategy<Value = Layout> {
     let coordinate = || -400i64..400;
-    let polygon = || {
-        prop_oneof![
-            (coordinate(), coordinate(), 1i64..200, 1i64..200)
-                .prop_map(|(x, y, w, h)| rect(x, y, w, h)),
-            (coordinate(), coordinate())
-                .prop_map(|(x, y)| shape(&HOOK.map(|(u, v)| (x + u, y + v)))),
-            prop::collection::vec((coordinate(), coordinate()), 3..7).prop_map(|xy| shape(&xy)),
-        ]
+    let corners = |n| prop::collection::vec((coordinate(), coordinate()), n);
+    let polygon = move || {
+        let any = if slanted {
+            prop_oneof![
+                corners(3..7).prop_map(|xy| shape(&xy)),
+                (coordinate(), coordinate())
+                    .prop_map(|(x, y)| shape(&HOOK.map(|(u, v)| (x + u, y + v)))),
+            ]
+            .boxed()
+        } else {
+            // Steps through the corners, crossing themselves more often than not.
+            let stepped = |xy: Vec<(i64, i64)>| {
+                let next = |k: usize| xy[(k + 1) % xy.len()];
+                (0..xy.len())
+                    .flat_map(|k| [xy[k], (next(k).0, xy[k].1)])
+                    .collect::<Vec<_>>()
+            };
+            corners(2..5)
+                .prop_map(move |xy| shape(&stepped(xy)))
+                .boxed()
+        };
+        let bar = (coordinate(), coordinate(), 1i64..200, 1i64..200);
+        prop_oneof![bar.prop_map(|(x, y, w, h)| rect(x, y, w, h)), any]
     };
     let repetition = || {
         prop_oneof![
@@ -941,8 +961,12 @@ fn any_layout() -> impl Strategy<Value = Layout> {
         (
             -3_000i64..3_000,
             -3_000i64..3_000,
-            any::<bool>(),
-            0i32..4,
+            if slanted {
+                Just(false).boxed()
+            } else {
+                any::<bool>().boxed()
+            },
+            if slanted { 0..1 } else { 0..4 },
             repetition(),
         )
             .prop_map(move |(x, y, mirror, quarters, repetition)| Placement {

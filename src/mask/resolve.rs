@@ -108,13 +108,16 @@ impl Resolver {
             );
             return figures || !(self.apart(x, y) || self.apart(y, x));
         }
-        if x.repetitions == y.repetitions || same_steps(x, y) {
-            return self.interact_in_step(x, y);
+        // An element of each must come near the extent of the other; this is also what makes a cut take something off.
+        if self.apart(x, y)
+            || self.apart(y, x)
+            || !self.hits(x, y.extent())
+            || !self.hits(y, x.extent())
+        {
+            return false;
         }
-        !self.apart(x, y)
-            && !self.apart(y, x)
-            && self.hits(x, y.extent())
-            && self.hits(y, x.extent())
+        let in_step = x.repetitions == y.repetitions || same_steps(x, y);
+        !in_step || self.interact_in_step(x, y)
     }
 
     /// The same for items repeated with the same steps: only the differences of their displacements count.
