@@ -24,6 +24,12 @@ pub fn merge<'a>(rings: impl IntoIterator<Item = &'a Ring>) -> Vec<Figure> {
     run(&paths, &[], OverlayRule::Subject)
 }
 
+/// The union of figures, holes kept where nothing covers them; normalized and sorted.
+#[must_use]
+pub fn unite(figures: &[Figure]) -> Vec<Figure> {
+    run(&paths_of(figures), &[], OverlayRule::Subject)
+}
+
 /// What `subject` covers and `clip` does not.
 #[must_use]
 pub fn subtract(subject: &[Figure], clip: &[Figure]) -> Vec<Figure> {

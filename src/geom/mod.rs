@@ -11,7 +11,7 @@ mod repetition;
 mod ring;
 mod transform;
 
-pub use boolean::{intersect, merge, subtract};
+pub use boolean::{intersect, merge, subtract, unite};
 pub use figure::Figure;
 pub use point::Point;
 pub use rect::Rect;

@@ -23,16 +23,32 @@ pub enum Repetition {
     },
     /// Explicit displacements; not empty, the first usually (0, 0).
     List(Vec<Point>),
+    /// Sums of one displacement of each, innermost first: arrays of arrays, counted and not copied.
+    Nested(Vec<Repetition>),
 }
 
 impl Repetition {
-    /// At how many places.
+    /// Sums of one displacement of each part, written the shortest way.
+    #[must_use]
+    pub fn nested(parts: Vec<Self>) -> Self {
+        let mut parts: Vec<Self> = parts.into_iter().filter(|p| *p != Self::Once).collect();
+        match parts.len() {
+            0 => Self::Once,
+            1 => parts.remove(0),
+            _ => Self::Nested(parts),
+        }
+    }
+
+    /// At how many places; `u128::MAX` stands for that many or more.
     #[must_use]
     pub fn count(&self) -> u128 {
         match self {
             Self::Once => 1,
             Self::Lattice { columns, rows, .. } => u128::from(*columns) * u128::from(*rows),
             Self::List(list) => list.len() as u128,
+            Self::Nested(parts) => parts
+                .iter()
+                .fold(1, |product, part| product.saturating_mul(part.count())),
         }
     }
 
@@ -58,6 +74,12 @@ impl Repetition {
                 })
             })),
             Self::List(list) => Box::new(list.iter().copied()),
+            Self::Nested(parts) => parts.iter().rfold(
+                Box::new(std::iter::once(Point::default())) as Box<dyn Iterator<Item = Point>>,
+                |outer, part| {
+                    Box::new(outer.flat_map(move |d| part.displacements().map(move |e| d + e)))
+                },
+            ),
         }
     }
 
@@ -78,6 +100,7 @@ impl Repetition {
                 b: t.orientation.apply(*b),
             },
             Self::List(list) => Self::List(list.iter().map(|&p| t.orientation.apply(p)).collect()),
+            Self::Nested(parts) => Self::Nested(parts.iter().map(|p| p.turned(t)).collect()),
         }
     }
 }

@@ -76,13 +76,21 @@ impl Ring {
         self
     }
 
-    /// The same loop starting at its least point.
+    /// The same loop starting at its least point; where the loop passes there more than once, the least sequence wins.
     #[must_use]
     pub fn from_least_point(mut self) -> Self {
-        let least = (0..self.points.len())
-            .min_by_key(|&i| self.points[i])
-            .unwrap_or(0);
-        self.points.rotate_left(least);
+        let n = self.points.len();
+        let sequence = |start: usize| (0..n).map(move |k| (start + k) % n);
+        let Some(&least) = self.points.iter().min() else {
+            return self;
+        };
+        let start = (0..n)
+            .filter(|&i| self.points[i] == least)
+            .min_by(|&i, &j| {
+                let points = |start| sequence(start).map(|k| self.points[k]);
+                points(i).cmp(points(j))
+            });
+        self.points.rotate_left(start.unwrap_or(0));
         self
     }
 

@@ -1,0 +1,297 @@
+//! Layout → mask: chosen layers at mask scale, merged, as distinct figures with their contexts and places.
+//!
+//! The steps, each in its file: `cells` brings the cells to picometres and makes every polygon sound; `resolve` finds what
+//! interacts within reach and loosens only that; `distinct` merges, finds contexts and writes each figure one way;
+//! `places` joins the hierarchy from the top. Cost follows what the file holds, not how often it is repeated.
+
+mod cells;
+mod distinct;
+mod error;
+mod index;
+mod places;
+mod repeat;
+mod resolve;
+mod summary;
+
+use std::collections::{BTreeMap, HashMap};
+
+use rayon::prelude::*;
+
+use crate::geom::{Figure, Point, Rect, Repetition, Transform};
+use crate::layout::{Layer, Layout};
+use crate::shot::AddressUnit;
+use crate::units::Nm;
+
+use distinct::Canonical;
+use places::Standing;
+use resolve::{Cluster, Resolved, Resolver};
+
+pub use error::{LayerCounts, MaskError};
+pub use summary::Summary;
+
+/// Most parts that are looked at one by one, checked before memory is taken: about 200 bytes each.
+pub const MAX_PARTS: u128 = 50_000_000;
+
+/// What to take from a layout.
+#[derive(Clone, Debug)]
+pub struct MaskOptions {
+    /// Layers united; empty means the only one there is.
+    pub layers: Vec<Layer>,
+    /// Mask length per layout length (4 for wafer-scale data at 4:1).
+    pub scale: f64,
+    /// Other figures nearer than this are context (5 σ).
+    pub reach: Nm,
+    /// Distinct figures are kept apart by their position within the address grid.
+    pub address: AddressUnit,
+}
+
+/// The figures of the chosen layers, each distinct one once.
+#[derive(Clone, Debug)]
+pub struct Mask {
+    /// Sorted by first place (y, then x), so numbering does not depend on how the layout was built.
+    pub figures: Vec<DistinctFigure>,
+    /// Around all figures at all places; `None` for an empty mask.
+    pub extent: Option<Rect>,
+    /// What was repaired, as sentences.
+    pub notes: Vec<String>,
+}
+
+/// One figure with its context, equal up to the eight orientations and shifts by whole address units, and where it stands.
+#[derive(Clone, Debug)]
+pub struct DistinctFigure {
+    /// In its own frame: the least of the eight orientations, lower-left corner of the bounds within one address unit of (0, 0).
+    pub figure: Figure,
+    /// Other figures within reach in the same frame, cut to the figure's bounds grown by the reach, sorted.
+    pub context: Vec<Figure>,
+    /// Where it stands; not empty.
+    pub places: Vec<Place>,
+}
+
+/// Places of a distinct figure: own frame → mask, perhaps repeated (displacements in mask axes, pm).
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub struct Place {
+    /// Own frame to mask.
+    pub transform: Transform,
+    /// Displacements in mask axes.
+    pub repetition: Repetition,
+}
+
+impl DistinctFigure {
+    /// How often it stands on the mask.
+    #[must_use]
+    pub fn place_count(&self) -> u128 {
+        self.places
+            .iter()
+            .fold(0, |sum, place| sum.saturating_add(place.repetition.count()))
+    }
+}
+
+impl Mask {
+    /// Figures over all places; `u128::MAX` stands for that many or more.
+    #[must_use]
+    pub fn place_count(&self) -> u128 {
+        self.figures
+            .iter()
+            .fold(0, |sum, figure| sum.saturating_add(figure.place_count()))
+    }
+
+    /// Area of all figures at all places, nm².
+    #[must_use]
+    pub fn area_nm2(&self) -> f64 {
+        self.figures
+            .iter()
+            .map(|f| f.figure.area_nm2() * summary::real(f.place_count()))
+            .sum()
+    }
+}
+
+/// Polygons of each layer as the layout holds them: repetitions counted, each cell once.
+#[must_use]
+pub fn layer_counts(layout: &Layout) -> LayerCounts {
+    cells::layer_counts(layout)
+}
+
+/// Makes the mask of a layout.
+///
+/// Figures nearer to each other than the reach are each other's context; equal figures with equal contexts are one
+/// [`DistinctFigure`]. Rounding and repair follow the rules at the top of `cells`: nearest picometre, halves up; non-zero fill.
+///
+/// # Errors
+/// A layer not chosen or not there, numbers out of range, a broken hierarchy, or more than [`MAX_PARTS`] repeated parts that
+/// come within reach of each other.
+pub fn build(layout: &Layout, options: &MaskOptions) -> Result<Mask, MaskError> {
+    let reach = options
+        .reach
+        .to_pm()
+        .filter(|pm| (0..=1_000_000_000).contains(pm))
+        .ok_or(MaskError::Reach {
+            found: options.reach,
+        })?;
+    let cells::Cells { cells, tops, notes } = cells::convert(layout, options)?;
+    let mut resolver = Resolver { cells, reach };
+    let mut resolved: Vec<Option<Resolved>> = Vec::new();
+    let top = resolver.cells.len();
+    let whole = tops.iter().map(|item| item.bounds).reduce(Rect::hull);
+    let Some(bounds) = whole else {
+        return Ok(Mask {
+            figures: Vec::new(),
+            extent: None,
+            notes,
+        });
+    };
+    let name = match &tops[..] {
+        [single] => resolver.name_of(single),
+        _ => "all top cells".to_owned(),
+    };
+    resolver.cells.push(cells::PmCell {
+        name,
+        items: tops,
+        bounds,
+    });
+    let mut needed = vec![top];
+    while let Some(cell) = needed.pop() {
+        resolved.resize_with(resolver.cells.len().max(resolved.len()), || None);
+        if resolved[cell].is_some() {
+            continue;
+        }
+        let (name, items) = (
+            resolver.cells[cell].name.clone(),
+            resolver.cells[cell].items.clone(),
+        );
+        let taken_apart = resolver.resolve(&name, items)?;
+        needed.extend(taken_apart.children.iter().map(|c| c.cell));
+        resolved[cell] = Some(taken_apart);
+    }
+    resolved.resize_with(resolver.cells.len(), || None);
+    let name = |cell: usize| resolver.cells[cell].name.clone();
+    let standings = places::standings(&resolved, top, name)?;
+    let found = resolved
+        .par_iter()
+        .zip(&standings)
+        .enumerate()
+        .filter_map(|(cell, (resolved, standings))| Some((cell, resolved.as_ref()?, standings)))
+        .flat_map(|(cell, resolved, standings)| {
+            let name = &resolver.cells[cell].name;
+            resolved
+                .clusters
+                .par_iter()
+                .map(move |c| placed(c, standings, name, options.address, reach))
+        })
+        .collect::<Result<Vec<_>, _>>()?;
+    Ok(Mask {
+        figures: numbered(found.into_iter().flatten()),
+        extent: Some(bounds),
+        notes,
+    })
+}
+
+/// The figures of one cluster, each with where it stands.
+fn placed(
+    cluster: &Cluster,
+    standings: &[Standing],
+    cell: &str,
+    address: AddressUnit,
+    reach: i64,
+) -> Result<Vec<(Canonical, Vec<Standing>)>, MaskError> {
+    let figures = distinct::merged(&cluster.figures);
+    let near = distinct::neighbours(&figures, reach);
+    // Standings by position of the cell's own axes on the address grid: each such position is a different figure.
+    let mut by_phase: BTreeMap<Point, Vec<Standing>> = BTreeMap::new();
+    for standing in standings {
+        let inner = cluster
+            .repetitions
+            .iter()
+            .map(|r| r.turned(standing.transform));
+        let repetitions = inner.chain(standing.repetitions.iter().cloned()).collect();
+        for piece in places::on_grid(
+            Standing {
+                repetitions,
+                ..*standing
+            },
+            address.pm(),
+            cell,
+        )? {
+            let back = piece
+                .transform
+                .orientation
+                .inverse()
+                .apply(piece.transform.shift);
+            by_phase
+                .entry(places::phase(back, address.pm()))
+                .or_default()
+                .push(piece);
+        }
+    }
+    let mut found = Vec::new();
+    for (phase, pieces) in by_phase {
+        let figure = |i: usize| -> (Canonical, Vec<Standing>) {
+            let onto_grid = |f: &Figure| f.translated(phase);
+            let near: Vec<Figure> = near[i].iter().map(|&j| onto_grid(&figures[j])).collect();
+            let near: Vec<&Figure> = near.iter().collect();
+            let (canonical, ways) =
+                distinct::canonical(&onto_grid(&figures[i]), &near, address.pm(), reach);
+            let off_grid = Transform {
+                shift: -phase,
+                ..Transform::IDENTITY
+            };
+            let stand = |piece: &Standing| {
+                let all = ways
+                    .iter()
+                    .map(|way| way.then(off_grid).then(piece.transform));
+                let transform = all.min().unwrap_or(piece.transform);
+                Standing {
+                    transform,
+                    repetitions: piece.repetitions.clone(),
+                }
+            };
+            (canonical, pieces.iter().map(stand).collect())
+        };
+        found.par_extend((0..figures.len()).into_par_iter().map(figure));
+    }
+    Ok(found)
+}
+
+/// Equal figures joined, sorted by where they first stand (y, then x).
+fn numbered(found: impl Iterator<Item = (Canonical, Vec<Standing>)>) -> Vec<DistinctFigure> {
+    let mut slots: HashMap<Canonical, usize> = HashMap::new();
+    let mut standings: Vec<Vec<Standing>> = Vec::new();
+    for (canonical, mut more) in found {
+        let slot = *slots.entry(canonical).or_insert(standings.len());
+        match standings.get_mut(slot) {
+            Some(known) => known.append(&mut more),
+            None => standings.push(more),
+        }
+    }
+    let mut by_slot: Vec<(usize, Canonical)> = slots
+        .into_iter()
+        .map(|(canonical, slot)| (slot, canonical))
+        .collect();
+    by_slot.sort_unstable_by_key(|(slot, _)| *slot);
+    let mut figures: Vec<(Point, DistinctFigure)> = by_slot
+        .into_par_iter()
+        .zip(standings)
+        .map(|((_, Canonical { figure, context }), standings)| {
+            let bounds = figure.bounds();
+            let first = |place: &Place| {
+                let corner = place.transform.apply_rect(bounds).min
+                    + places::first_displacement(&place.repetition);
+                (corner.y, corner.x)
+            };
+            let mut places = places::places(standings);
+            places.sort_by(|p, q| first(p).cmp(&first(q)).then_with(|| p.cmp(q)));
+            let (y, x) = places.first().map(first).unwrap_or_default();
+            (
+                Point::new(x, y),
+                DistinctFigure {
+                    figure,
+                    context,
+                    places,
+                },
+            )
+        })
+        .collect();
+    figures.par_sort_by(|(p, f), (q, g)| {
+        (p.y, p.x, &f.figure, &f.context).cmp(&(q.y, q.x, &g.figure, &g.context))
+    });
+    figures.into_iter().map(|(_, figure)| figure).collect()
+}
