@@ -1,5 +1,7 @@
 //! The contract of every fracturer: one figure with its context in, shots that print it out.
 
+pub mod tile;
+
 use crate::geom::{Figure, Point};
 use crate::shot::{ShotLimits, ShotList};
 use crate::units::{Dose, Nm};
