@@ -8,7 +8,9 @@
 
 use geo::{Distance, Euclidean, InterpolatePoint, LineString, Point as GeoPoint};
 use proptest::prelude::*;
-use shotwright::fracture::tile::{StaircaseError, fracture_staircase, is_pixel_curve, staircase};
+use shotwright::fracture::tile::{
+    Prefer, StaircaseError, fracture_staircase, is_pixel_curve, partition, staircase,
+};
 use shotwright::geom::{Figure, Orientation, Point, Rect, Ring, Transform, merge, subtract};
 use shotwright::shot::{AddressUnit, ShotLimits};
 use shotwright::units::Nm;
@@ -119,6 +121,22 @@ fn a_long_slanted_edge_takes_steps_of_the_greatest_size_that_fits() {
     assert_within(&figure, &stairs, 4.0, 100);
     let steps = stairs.vertices() / 4;
     assert!((89..=91).contains(&steps), "{steps} steps");
+}
+
+#[test]
+fn a_disc_takes_as_many_slabs_as_its_slopes_ask_for() {
+    // Derived: where the edge slopes by θ a step may be 2E/(sin θ cos θ) long, so a quadrant of radius R takes
+    // ∫ R sin θ cos θ / 2E dθ = R/4E slabs, and the disc R/2E; each is one tile.
+    for (radius, within) in [(200.0, 2.0), (400.0, 2.0), (400.0, 4.0)] {
+        let figure = Figure::new(blob(radius, 0.0, 1, 0.0), vec![]);
+        let stairs = staircase(&figure, Nm(within), address(0.05)).unwrap();
+        let tiles = partition(&stairs, Nm(0.0), Prefer::FewTiles).unwrap().least as f64;
+        let slabs = radius / (2.0 * within);
+        assert!(
+            (tiles / slabs - 1.0).abs() < 0.05,
+            "{tiles} tiles, {slabs} slabs"
+        );
+    }
 }
 
 #[test]

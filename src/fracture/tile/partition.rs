@@ -5,10 +5,10 @@
 //! Sklansky, CVGIP 28 (1984)). Steps:
 //!
 //! 1. a sweep per axis finds where the cut of every reflex corner ends; a cut that ends at a reflex corner is a chord;
-//! 2. the largest independent set of chords ([`super::matching`]) is cut;
+//! 2. the largest independent set of chords (`matching.rs`) is cut;
 //! 3. every reflex corner that is left gets one more cut, to the first wall or cut in its way;
-//! 4. a sweep reads off the rectangles ([`super::assemble`]);
-//! 5. slivers are removed by cutting small groups of neighbours anew ([`super::slivers`]).
+//! 4. a sweep reads off the rectangles (`assemble.rs`);
+//! 5. slivers are removed by cutting small groups of neighbours anew (`slivers.rs`).
 //!
 //! Where the interior touches itself in a point only, the point is split first and needs no cut.
 
@@ -89,7 +89,7 @@ impl Partition {
 ///
 /// The number is exact: with [`Prefer::FewTiles`] no partition has fewer tiles. Among those the fewest slivers (short
 /// side under `sliver`), then the fewest external ones, then the largest smallest side is *sought*, not guaranteed: the
-/// result cannot be bettered by cutting a group of up to [`super::slivers::GROUP`] neighbours around one sliver
+/// result cannot be bettered by cutting a group of up to [`GROUP`](super::GROUP) neighbours around one sliver
 /// anew. A `sliver` of zero or less skips that search. Time `O(c √c log² c + n log n)` for n vertices and c chords.
 ///
 /// # Errors
