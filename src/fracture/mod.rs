@@ -45,7 +45,21 @@ pub trait Fracturer: Sync {
     fn name(&self) -> &'static str;
 
     /// The shots, with every place that they do not print within tolerance.
-    fn fracture(&self, job: &Job<'_>) -> Fracture;
+    ///
+    /// # Errors
+    /// When the figure cannot be cut at all: its rings are broken or beyond what the method can count.
+    fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError>;
+}
+
+/// Why a figure got no shots.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum FractureError {
+    /// The exact partition refused the figure.
+    #[error(transparent)]
+    Partition(#[from] tile::PartitionError),
+    /// The plain staircase refused the figure.
+    #[error(transparent)]
+    Staircase(#[from] tile::StaircaseError),
 }
 
 /// Shots of one figure and what they fail at.
@@ -83,12 +97,20 @@ impl Miss {
         let near = |limit: f64| target.outline_within(violation.place, limit);
         let reason = if target.in_corner_zone(violation.place) {
             MissReason::TooSharp
-        } else if must_print && near(0.5 * NARROWEST_LINE * sigma) && narrow(target, violation.place, NARROWEST_LINE * sigma) {
+        } else if must_print
+            && near(0.5 * NARROWEST_LINE * sigma)
+            && narrow(target, violation.place, NARROWEST_LINE * sigma)
+        {
             MissReason::TooNarrow
         } else {
             MissReason::NotFound
         };
-        Self { place: Point::new(pm(violation.place[0]), pm(violation.place[1])), dose: Dose(violation.dose), must_print, reason }
+        Self {
+            place: Point::new(pm(violation.place[0]), pm(violation.place[1])),
+            dose: Dose(violation.dose),
+            must_print,
+            reason,
+        }
     }
 }
 

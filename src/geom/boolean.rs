@@ -9,7 +9,7 @@ use i_overlay::i_float::int::point::IntPoint;
 
 use super::{Figure, Point, Ring};
 
-type Path = Vec<IntPoint<i64>>;
+pub(super) type Path = Vec<IntPoint<i64>>;
 
 /// The union of rings of either sense (each counts as filled by the non-zero rule), as figures with real holes.
 ///
@@ -42,7 +42,7 @@ pub fn intersect(subject: &[Figure], clip: &[Figure]) -> Vec<Figure> {
     run(&paths_of(subject), &paths_of(clip), OverlayRule::Intersect)
 }
 
-fn paths_of(figures: &[Figure]) -> Vec<Path> {
+pub(super) fn paths_of(figures: &[Figure]) -> Vec<Path> {
     figures
         .iter()
         .flat_map(Figure::rings)
@@ -67,8 +67,12 @@ fn run(subject: &[Path], clip: &[Path], rule: OverlayRule) -> Vec<Figure> {
     let mut overlay = Overlay::<i64>::new(edges);
     overlay.add_source(subject, ShapeType::Subject);
     overlay.add_source(clip, ShapeType::Clip);
-    let mut figures: Vec<Figure> = overlay
-        .overlay(rule, FillRule::NonZero)
+    figures_of(overlay.overlay(rule, FillRule::NonZero))
+}
+
+/// Shapes of the library as figures, normalized and sorted.
+pub(super) fn figures_of(shapes: Vec<Vec<Path>>) -> Vec<Figure> {
+    let mut figures: Vec<Figure> = shapes
         .into_iter()
         .filter_map(|shape| {
             let mut rings = shape.into_iter().filter_map(|contour| {

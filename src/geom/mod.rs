@@ -5,6 +5,7 @@
 
 mod boolean;
 mod figure;
+mod offset;
 mod point;
 mod rect;
 mod repetition;
@@ -13,6 +14,7 @@ mod transform;
 
 pub use boolean::{intersect, merge, subtract, unite};
 pub use figure::Figure;
+pub use offset::offset;
 pub use point::Point;
 pub use rect::Rect;
 pub use repetition::Repetition;

@@ -17,7 +17,10 @@ impl Orientation {
     };
 
     /// Mirror about the diagonal `x = y`: exchanges x and y.
-    pub const DIAGONAL: Self = Self { mirror_x: true, quarter_turns: 3 };
+    pub const DIAGONAL: Self = Self {
+        mirror_x: true,
+        quarter_turns: 3,
+    };
 
     /// Mirror `x → −x` first if asked, then turn counter-clockwise by `quarter_turns` × 90°.
     #[must_use]
@@ -133,7 +136,10 @@ mod tests {
 
     #[test]
     fn the_diagonal_exchanges_x_and_y() {
-        assert_eq!(Orientation::DIAGONAL.apply(Point::new(3, 11)), Point::new(11, 3));
+        assert_eq!(
+            Orientation::DIAGONAL.apply(Point::new(3, 11)),
+            Point::new(11, 3)
+        );
     }
 
     #[test]

@@ -7,7 +7,14 @@
 use pulp::{Simd, WithSimd};
 
 /// Coefficients of Abramowitz & Stegun 7.1.28: `erf z = 1 − (1 + a1·z + … + a6·z⁶)⁻¹⁶`, error at most 3e-7.
-const A: [f32; 6] = [0.070_523_078_4, 0.042_282_012_3, 0.009_270_527_2, 0.000_152_014_3, 0.000_276_567_2, 0.000_043_063_8];
+const A: [f32; 6] = [
+    0.070_523_078_4,
+    0.042_282_012_3,
+    0.009_270_527_2,
+    0.000_152_014_3,
+    0.000_276_567_2,
+    0.000_043_063_8,
+];
 
 /// Φ by [`A`]; within 1e-6 in single precision.
 #[inline(always)]
@@ -26,7 +33,9 @@ fn cdf(u: f32) -> f32 {
 fn both(u: f32) -> (f32, f32) {
     let z = u.abs() * std::f32::consts::FRAC_1_SQRT_2;
     let t = 1.0 + z * (A[0] + z * (A[1] + z * (A[2] + z * (A[3] + z * (A[4] + z * A[5])))));
-    let slope = A[0] + z * (2.0 * A[1] + z * (3.0 * A[2] + z * (4.0 * A[3] + z * (5.0 * A[4] + z * 6.0 * A[5]))));
+    let slope = A[0]
+        + z * (2.0 * A[1]
+            + z * (3.0 * A[2] + z * (4.0 * A[3] + z * (5.0 * A[4] + z * 6.0 * A[5]))));
     let t2 = t * t;
     let t4 = t2 * t2;
     let t8 = t4 * t4;
@@ -49,7 +58,13 @@ impl WithSimd for AddDose<'_> {
 
     #[inline(always)]
     fn with_simd<S: Simd>(self, _: S) {
-        let Self { x, y, side, dose, out } = self;
+        let Self {
+            x,
+            y,
+            side,
+            dose,
+            out,
+        } = self;
         let n = out.len();
         let (x, y) = (&x[..n], &y[..n]);
         for i in 0..n {
@@ -75,7 +90,14 @@ impl WithSimd for Slopes<'_> {
 
     #[inline(always)]
     fn with_simd<S: Simd>(self, _: S) {
-        let Self { x, y, factor, side, dose, out: [left, low, right, high] } = self;
+        let Self {
+            x,
+            y,
+            factor,
+            side,
+            dose,
+            out: [left, low, right, high],
+        } = self;
         let n = left.len();
         let (x, y, factor) = (&x[..n], &y[..n], &factor[..n]);
         let (low, right, high) = (&mut low[..n], &mut right[..n], &mut high[..n]);

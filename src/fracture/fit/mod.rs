@@ -16,7 +16,6 @@ mod snap;
 mod solve;
 mod start;
 
-pub(super) use model::Flash;
 pub(super) use reduce::Budget;
-pub(super) use search::{Fit, Setting, best_of};
+pub(super) use search::{Setting, best_of};
 pub(super) use start::{Slabs, cover};

@@ -21,7 +21,10 @@ impl Flash {
     /// Mirrored about the diagonal `x = y`.
     pub(super) fn flipped(&self) -> Self {
         let [x0, y0, x1, y1] = self.side;
-        Self { side: [y0, x0, y1, x1], dose: self.dose }
+        Self {
+            side: [y0, x0, y1, x1],
+            dose: self.dose,
+        }
     }
 
     pub(super) fn length(&self, axis: usize) -> f64 {
@@ -41,21 +44,39 @@ impl Flash {
     /// The least rectangle around both.
     pub(super) fn hull(&self, other: &Self) -> Self {
         let (a, b) = (self.side, other.side);
-        Self { side: [a[0].min(b[0]), a[1].min(b[1]), a[2].max(b[2]), a[3].max(b[3])], dose: self.dose }
+        Self {
+            side: [
+                a[0].min(b[0]),
+                a[1].min(b[1]),
+                a[2].max(b[2]),
+                a[3].max(b[3]),
+            ],
+            dose: self.dose,
+        }
     }
 
     /// Moved outward by `d` nm on all sides.
     pub(super) fn grown(&self, d: f64) -> Self {
         let s = self.side;
-        Self { side: [s[0] - d, s[1] - d, s[2] + d, s[3] + d], dose: self.dose }
+        Self {
+            side: [s[0] - d, s[1] - d, s[2] + d, s[3] + d],
+            dose: self.dose,
+        }
     }
 
     /// Dose at a place, nm.
     #[inline]
     pub(super) fn dose_at(&self, phi: PhiTable, inverse_sigma: f64, p: [f64; 2]) -> f64 {
-        let share = |axis: usize| phi.cdf((p[axis] - self.side[axis]) * inverse_sigma) - phi.cdf((p[axis] - self.side[axis + 2]) * inverse_sigma);
+        let share = |axis: usize| {
+            phi.cdf((p[axis] - self.side[axis]) * inverse_sigma)
+                - phi.cdf((p[axis] - self.side[axis + 2]) * inverse_sigma)
+        };
         let gx = share(0);
-        if gx == 0.0 { 0.0 } else { self.dose * gx * share(1) }
+        if gx == 0.0 {
+            0.0
+        } else {
+            self.dose * gx * share(1)
+        }
     }
 }
 
@@ -74,7 +95,13 @@ impl Bins {
         let (w, h) = (bounds[2] - bounds[0], bounds[3] - bounds[1]);
         let size = size.max((w * h / 4e6).sqrt()).max(w.max(h) / 4e6);
         let (columns, rows) = (cell_index(w / size) + 1, cell_index(h / size) + 1);
-        Self { origin: [bounds[0], bounds[1]], size, columns, rows, cells: vec![Vec::new(); columns * rows] }
+        Self {
+            origin: [bounds[0], bounds[1]],
+            size,
+            columns,
+            rows,
+            cells: vec![Vec::new(); columns * rows],
+        }
     }
 
     fn span(&self, low: f64, high: f64, axis: usize) -> (usize, usize) {
@@ -93,7 +120,11 @@ impl Bins {
 }
 
 fn cell_index(x: f64) -> usize {
-    #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "clamped to 0..2^31 just before")]
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "clamped to 0..2^31 just before"
+    )]
     let i = x.clamp(0.0, 2_147_483_647.0) as usize;
     i
 }
@@ -117,7 +148,12 @@ impl Model {
     /// No shot yet: the context's dose at the samples of a figure with these bounds.
     pub(in crate::fracture) fn new(bounds: [f64; 4], sigma: f64, samples: Vec<Sample>) -> Self {
         let margin = 3.0 * sigma;
-        let around = [bounds[0] - margin, bounds[1] - margin, bounds[2] + margin, bounds[3] + margin];
+        let around = [
+            bounds[0] - margin,
+            bounds[1] - margin,
+            bounds[2] + margin,
+            bounds[3] + margin,
+        ];
         let mut model = Self {
             slots: Vec::new(),
             by_place: Bins::new(around, 8.0 * sigma),
@@ -147,7 +183,10 @@ impl Model {
             .filter_map(|slot| self.slots[slot])
             .map(|f| f.dose_at(phi, 1.0 / self.sigma, sample.place))
             .sum();
-        #[allow(clippy::cast_possible_truncation, reason = "a dose needs no more than single precision here")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a dose needs no more than single precision here"
+        )]
         self.dose.push(sample.context + shots as f32);
         self.samples.push(sample);
     }
@@ -167,7 +206,12 @@ impl Model {
     }
 
     /// Samples in cells that any of the boxes touches, ascending.
-    pub(super) fn samples_near(&self, boxes: impl Iterator<Item = [f64; 4]>, out: &mut Vec<u32>, cells: &mut Vec<usize>) {
+    pub(super) fn samples_near(
+        &self,
+        boxes: impl Iterator<Item = [f64; 4]>,
+        out: &mut Vec<u32>,
+        cells: &mut Vec<usize>,
+    ) {
         cells.clear();
         for side in boxes {
             cells.extend(self.samples_by_place.touched(side));
@@ -182,7 +226,10 @@ impl Model {
 
     /// The shots, in slot order.
     pub(in crate::fracture) fn flashes(&self) -> impl Iterator<Item = (usize, Flash)> + '_ {
-        self.slots.iter().enumerate().filter_map(|(i, f)| f.map(|f| (i, f)))
+        self.slots
+            .iter()
+            .enumerate()
+            .filter_map(|(i, f)| f.map(|f| (i, f)))
     }
 
     /// Slots ever used.
@@ -196,7 +243,12 @@ impl Model {
 
     /// Slots of shots in cells that the box touches, ascending.
     pub(super) fn near(&self, side: [f64; 4]) -> Vec<usize> {
-        let mut slots: Vec<usize> = self.by_place.touched(side).flat_map(|c| &self.by_place.cells[c]).map(|&s| s as usize).collect();
+        let mut slots: Vec<usize> = self
+            .by_place
+            .touched(side)
+            .flat_map(|c| &self.by_place.cells[c])
+            .map(|&s| s as usize)
+            .collect();
         slots.sort_unstable();
         slots.dedup();
         slots
@@ -223,7 +275,11 @@ impl Model {
 
     /// The worst miss of the rule over all samples, in dose; at most 0 where the rule holds.
     pub(in crate::fracture) fn worst(&self) -> f64 {
-        self.samples.iter().zip(&self.dose).map(|(s, d)| f64::from(s.sign) * (THRESHOLD - f64::from(*d))).fold(f64::NEG_INFINITY, f64::max)
+        self.samples
+            .iter()
+            .zip(&self.dose)
+            .map(|(s, d)| f64::from(s.sign) * (THRESHOLD - f64::from(*d)))
+            .fold(f64::NEG_INFINITY, f64::max)
     }
 }
 
@@ -238,8 +294,14 @@ impl DoseField for Field<'_> {
     fn dose(&self, p: [f64; 2]) -> f64 {
         let sigma = self.model.sigma;
         let reach = 5.0 * sigma;
-        let near = self.model.near([p[0] - reach, p[1] - reach, p[0] + reach, p[1] + reach]);
-        let shots: f64 = near.into_iter().filter_map(|s| self.model.get(s)).map(|f| f.dose_at(self.phi, 1.0 / sigma, p)).sum();
+        let near = self
+            .model
+            .near([p[0] - reach, p[1] - reach, p[0] + reach, p[1] + reach]);
+        let shots: f64 = near
+            .into_iter()
+            .filter_map(|s| self.model.get(s))
+            .map(|f| f.dose_at(self.phi, 1.0 / sigma, p))
+            .sum();
         self.context.dose(p) + shots
     }
 
@@ -249,12 +311,22 @@ impl DoseField for Field<'_> {
         #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
         let x_of = |i: usize| x0 + i as f64 * step;
         for (i, value) in out.iter_mut().enumerate() {
-            *value = if self.context.is_empty() { 0.0 } else { self.context.dose([x_of(i), y]) };
+            *value = if self.context.is_empty() {
+                0.0
+            } else {
+                self.context.dose([x_of(i), y])
+            };
         }
         let end = x_of(out.len());
-        for slot in self.model.near([x0 - reach, y - reach, end + reach, y + reach]) {
-            let Some(f) = self.model.get(slot) else { continue };
-            let gy = f.dose * (self.phi.cdf((y - f.side[1]) / sigma) - self.phi.cdf((y - f.side[3]) / sigma));
+        for slot in self
+            .model
+            .near([x0 - reach, y - reach, end + reach, y + reach])
+        {
+            let Some(f) = self.model.get(slot) else {
+                continue;
+            };
+            let gy = f.dose
+                * (self.phi.cdf((y - f.side[1]) / sigma) - self.phi.cdf((y - f.side[3]) / sigma));
             if gy.abs() < 1e-9 {
                 continue;
             }
@@ -262,7 +334,9 @@ impl DoseField for Field<'_> {
             let to = (cell_index((f.side[2] + reach - x0) / step) + 1).min(out.len());
             for i in from..to {
                 let x = x_of(i);
-                out[i] += gy * (self.phi.cdf((x - f.side[0]) / sigma) - self.phi.cdf((x - f.side[2]) / sigma));
+                out[i] += gy
+                    * (self.phi.cdf((x - f.side[0]) / sigma)
+                        - self.phi.cdf((x - f.side[2]) / sigma));
             }
         }
     }

@@ -44,7 +44,10 @@ impl PartialOrd for Move {
 impl Ord for Move {
     /// The cheapest first out of a max-heap; the older first among equals.
     fn cmp(&self, other: &Self) -> Ordering {
-        other.score.total_cmp(&self.score).then(other.number.cmp(&self.number))
+        other
+            .score
+            .total_cmp(&self.score)
+            .then(other.number.cmp(&self.number))
     }
 }
 
@@ -63,10 +66,20 @@ struct Reduction<'a> {
 pub(in crate::fracture) fn reduce(model: &mut Model, solver: &mut Solver, budget: Budget) {
     let slots: Vec<usize> = model.flashes().map(|(i, _)| i).collect();
     let version = vec![0; model.slots()];
-    let mut reduction = Reduction { model, solver, budget, moves: BinaryHeap::new(), offered: 0, version };
+    let mut reduction = Reduction {
+        model,
+        solver,
+        budget,
+        moves: BinaryHeap::new(),
+        offered: 0,
+        version,
+    };
     reduction.offer(&slots);
     while let Some(m) = reduction.moves.pop() {
-        let current = m.removed.iter().all(|&(slot, version)| reduction.version[slot] == version);
+        let current = m
+            .removed
+            .iter()
+            .all(|&(slot, version)| reduction.version[slot] == version);
         if current && let Some(changed) = reduction.attempt(&m) {
             reduction.offer(&changed);
         }
@@ -80,13 +93,19 @@ impl Reduction<'_> {
         for (at, &i) in slots.iter().enumerate() {
             let Some(f) = self.model.get(i) else { continue };
             self.queue(&[i], Vec::new());
-            let apart = if self.solver.rules.disjoint { 0.5 * sigma } else { self.budget.apart * sigma };
+            let apart = if self.solver.rules.disjoint {
+                0.5 * sigma
+            } else {
+                self.budget.apart * sigma
+            };
             for j in self.model.near(f.grown(apart).side) {
                 // A pair with a shot offered before is queued already.
                 if j == i || slots[..at].contains(&j) {
                     continue;
                 }
-                let Some(g) = self.model.get(j).filter(|g| f.gap(g) < apart) else { continue };
+                let Some(g) = self.model.get(j).filter(|g| f.gap(g) < apart) else {
+                    continue;
+                };
                 self.queue(&[i, j], vec![merged(&f, &g)]);
                 if !self.solver.rules.disjoint {
                     self.queue(&[i, j], vec![f.hull(&g)]);
@@ -101,8 +120,16 @@ impl Reduction<'_> {
             return;
         }
         self.offered += 1;
-        let removed = removed.iter().map(|&slot| (slot, self.version[slot])).collect();
-        self.moves.push(Move { score, number: self.offered, removed, added });
+        let removed = removed
+            .iter()
+            .map(|&slot| (slot, self.version[slot]))
+            .collect();
+        self.moves.push(Move {
+            score,
+            number: self.offered,
+            removed,
+            added,
+        });
     }
 
     /// Makes the move if the neighbours can mend it; the slots whose shots changed.
@@ -115,7 +142,11 @@ impl Reduction<'_> {
                 window.push(flash);
             }
         }
-        if !self.solver.solve(self.model, &removed, &mut window, self.budget.steps).solved {
+        if !self
+            .solver
+            .solve(self.model, &removed, &mut window, self.budget.steps)
+            .solved
+        {
             return None;
         }
         let slots = self.solver.commit(self.model, &removed, &window);
@@ -140,14 +171,32 @@ fn merged(f: &Flash, g: &Flash) -> Flash {
 }
 
 /// Slots of the shots nearest to some that go or come, nearest first, so that there are at most `most` in all.
-pub(super) fn neighbours(model: &Model, removed: &[usize], added: &[Flash], most: usize) -> Vec<usize> {
-    let core: Vec<Flash> = removed.iter().filter_map(|&s| model.get(s)).chain(added.iter().copied()).collect();
-    let Some(hull) = core.iter().copied().reduce(|a, b| a.hull(&b)) else { return Vec::new() };
+pub(super) fn neighbours(
+    model: &Model,
+    removed: &[usize],
+    added: &[Flash],
+    most: usize,
+) -> Vec<usize> {
+    let core: Vec<Flash> = removed
+        .iter()
+        .filter_map(|&s| model.get(s))
+        .chain(added.iter().copied())
+        .collect();
+    let Some(hull) = core.iter().copied().reduce(|a, b| a.hull(&b)) else {
+        return Vec::new();
+    };
     let mut near: Vec<(f64, usize)> = model
         .near(hull.grown(6.0 * model.sigma).side)
         .into_iter()
         .filter(|s| !removed.contains(s))
-        .filter_map(|s| model.get(s).map(|f| (core.iter().map(|c| f.gap(c)).fold(f64::INFINITY, f64::min), s)))
+        .filter_map(|s| {
+            model.get(s).map(|f| {
+                (
+                    core.iter().map(|c| f.gap(c)).fold(f64::INFINITY, f64::min),
+                    s,
+                )
+            })
+        })
         .collect();
     near.sort_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
     near.truncate(most.saturating_sub(added.len()));

@@ -37,12 +37,19 @@ pub(in crate::fracture) fn relax(model: &mut Model, solver: &mut Solver, window:
 }
 
 /// Adds or splits shots where moving them does not do, at most `most` times; whether the rule holds in the end.
-pub(in crate::fracture) fn mend(model: &mut Model, solver: &mut Solver, window: usize, most: usize) -> bool {
+pub(in crate::fracture) fn mend(
+    model: &mut Model,
+    solver: &mut Solver,
+    window: usize,
+    most: usize,
+) -> bool {
     for _ in 0..most {
         if relax(model, solver, window) {
             return true;
         }
-        let Some((place, must_print)) = worst(model) else { return false };
+        let Some((place, must_print)) = worst(model) else {
+            return false;
+        };
         let options = options(model, place, must_print);
         let tried = options.into_iter().map(|(removed, added)| {
             let mut copy = model.clone();
@@ -50,7 +57,9 @@ pub(in crate::fracture) fn mend(model: &mut Model, solver: &mut Solver, window: 
             (outcome.cost, copy)
         });
         // The first of equals wins, so the result does not hang on the order of a float sort.
-        let Some((_, best)) = tried.reduce(|a, b| if b.0 < a.0 { b } else { a }) else { return false };
+        let Some((_, best)) = tried.reduce(|a, b| if b.0 < a.0 { b } else { a }) else {
+            return false;
+        };
         *model = best;
     }
     relax(model, solver, window)
@@ -59,10 +68,20 @@ pub(in crate::fracture) fn mend(model: &mut Model, solver: &mut Solver, window: 
 /// Fits the neighbourhood of `removed` with `added` in their place (themselves when that is empty) and keeps what is better.
 ///
 /// Gives the cost before, the outcome, and the slots that were moved.
-fn settle(model: &mut Model, solver: &mut Solver, removed: &[usize], added: Vec<Flash>, window: usize) -> (f64, super::solve::Outcome, Vec<usize>) {
+fn settle(
+    model: &mut Model,
+    solver: &mut Solver,
+    removed: &[usize],
+    added: Vec<Flash>,
+    window: usize,
+) -> (f64, super::solve::Outcome, Vec<usize>) {
     let fresh = !added.is_empty();
     let mut removed = removed.to_vec();
-    let mut flashes = if fresh { added } else { removed.iter().filter_map(|&s| model.get(s)).collect() };
+    let mut flashes = if fresh {
+        added
+    } else {
+        removed.iter().filter_map(|&s| model.get(s)).collect()
+    };
     for slot in neighbours(model, &removed, &flashes, window) {
         removed.push(slot);
         flashes.extend(model.get(slot));
@@ -113,7 +132,10 @@ fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
         }
         let [x, y] = sample.place;
         let here = Flash::new([x, y, x, y]);
-        let near = model.near(here.grown(reach).side).into_iter().filter_map(|s| model.get(s).map(|f| (f.gap(&here), s)));
+        let near = model
+            .near(here.grown(reach).side)
+            .into_iter()
+            .filter_map(|s| model.get(s).map(|f| (f.gap(&here), s)));
         if let Some((_, slot)) = near.min_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1))) {
             slots.push(slot);
         } else if sample.sign > 0.0 {
@@ -128,7 +150,13 @@ fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
 
 /// The sample that misses the rule by most, and whether it must print.
 fn worst(model: &Model) -> Option<([f64; 2], bool)> {
-    let missed = |(s, d): (&super::samples::Sample, &f32)| (s.sign * (0.5 - d), s.place, s.sign > 0.0);
-    let worst = model.samples().iter().zip(model.doses()).map(missed).reduce(|a, b| if b.0 > a.0 { b } else { a })?;
+    let missed =
+        |(s, d): (&super::samples::Sample, &f32)| (s.sign * (0.5 - d), s.place, s.sign > 0.0);
+    let worst = model
+        .samples()
+        .iter()
+        .zip(model.doses())
+        .map(missed)
+        .reduce(|a, b| if b.0 > a.0 { b } else { a })?;
     Some((worst.1, worst.2))
 }

@@ -2,7 +2,7 @@
 
 use crate::blur::{Blur, PhiTable};
 use crate::geom::Figure;
-use crate::target::{Need, Target};
+use crate::target::{Need, Target, Violation};
 use crate::units::Nm;
 
 /// A place with what the rule asks there.
@@ -27,7 +27,11 @@ const LATTICE_STEP: f64 = 0.7;
 const LATTICE_REACH: f64 = 2.5;
 
 /// Pairs along the outline and a lattice inside and around the figure.
-pub(in crate::fracture) fn samples_of(target: &Target, blur: Blur, context: &ContextDose) -> Vec<Sample> {
+pub(in crate::fracture) fn samples_of(
+    target: &Target,
+    blur: Blur,
+    context: &ContextDose,
+) -> Vec<Sample> {
     let sigma = blur.sigma().0;
     let mut samples = Vec::new();
     // The rim comes edge by edge; on finely drawn curves that is denser than asked for, so it is thinned by distance.
@@ -54,9 +58,14 @@ pub(in crate::fracture) fn samples_of(target: &Target, blur: Blur, context: &Con
                 passed += 1;
             }
             let inside = passed % 2 == 1;
-            let wanted = !target.outline_within([x, y], 0.5 * sigma) && (inside || target.outline_within([x, y], reach));
+            let wanted = !target.outline_within([x, y], 0.5 * sigma)
+                && (inside || target.outline_within([x, y], reach));
             if wanted {
-                samples.push(Sample::new([x, y], if inside { Need::Print } else { Need::Clear }, context));
+                samples.push(Sample::new(
+                    [x, y],
+                    if inside { Need::Print } else { Need::Clear },
+                    context,
+                ));
             }
             x += step;
         }
@@ -68,9 +77,27 @@ pub(in crate::fracture) fn samples_of(target: &Target, blur: Blur, context: &Con
 impl Sample {
     /// A place with its need and the context's dose there.
     pub(in crate::fracture) fn new(place: [f64; 2], need: Need, context: &ContextDose) -> Self {
-        #[allow(clippy::cast_possible_truncation, reason = "a dose needs no more than single precision here")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a dose needs no more than single precision here"
+        )]
         let context = context.dose(place) as f32;
-        Self { place, sign: if need == Need::Print { 1.0 } else { -1.0 }, context }
+        Self {
+            place,
+            sign: if need == Need::Print { 1.0 } else { -1.0 },
+            context,
+        }
+    }
+}
+
+impl Sample {
+    /// The violation that it is when no shot is flashed.
+    pub(super) fn unprinted(&self) -> Option<Violation> {
+        (self.sign > 0.0).then(|| Violation {
+            place: self.place,
+            need: Need::Print,
+            dose: f64::from(self.context),
+        })
     }
 }
 
@@ -94,7 +121,11 @@ impl ContextDose {
         for figure in context {
             let target = Target::new(figure, blur, Nm(1.0));
             let [_, y0, _, y1] = target.bounds();
-            #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "positive and clamped")]
+            #[allow(
+                clippy::cast_possible_truncation,
+                clippy::cast_sign_loss,
+                reason = "positive and clamped"
+            )]
             let n = ((y1 - y0) / (BAND * sigma)).ceil().clamp(1.0, 1e5) as usize;
             #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
             let h = (y1 - y0) / n as f64;
@@ -102,10 +133,18 @@ impl ContextDose {
                 #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
                 let low = y0 + i as f64 * h;
                 target.crossings(low + 0.5 * h, &mut crossings);
-                bands.extend(crossings.chunks_exact(2).map(|c| [c[0], low, c[1], low + h]));
+                bands.extend(
+                    crossings
+                        .chunks_exact(2)
+                        .map(|c| [c[0], low, c[1], low + h]),
+                );
             }
         }
-        Self { bands, sigma, phi: PhiTable::get() }
+        Self {
+            bands,
+            sigma,
+            phi: PhiTable::get(),
+        }
     }
 
     /// Whether there is no context.
@@ -115,7 +154,12 @@ impl ContextDose {
 
     /// The dose at a place.
     pub(in crate::fracture) fn dose(&self, p: [f64; 2]) -> f64 {
-        let share = |at: f64, from: f64, to: f64| self.phi.cdf((at - from) / self.sigma) - self.phi.cdf((at - to) / self.sigma);
-        self.bands.iter().map(|b| share(p[0], b[0], b[2]) * share(p[1], b[1], b[3])).sum()
+        let share = |at: f64, from: f64, to: f64| {
+            self.phi.cdf((at - from) / self.sigma) - self.phi.cdf((at - to) / self.sigma)
+        };
+        self.bands
+            .iter()
+            .map(|b| share(p[0], b[0], b[2]) * share(p[1], b[1], b[3]))
+            .sum()
     }
 }

@@ -1,6 +1,6 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
-use crate::fracture::Job;
+use crate::fracture::{Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
 
@@ -38,15 +38,61 @@ impl<'a> Setting<'a> {
         let target = Target::new(job.figure, job.blur, job.tolerance);
         let context = ContextDose::of(job.context, job.blur);
         let samples = samples_of(&target, job.blur, &context);
-        Self { job, target, context, samples }
+        Self {
+            job,
+            target,
+            context,
+            samples,
+        }
     }
 
     pub(in crate::fracture) fn sigma(&self) -> f64 {
         self.job.blur.sigma().0
     }
 
+    /// Shots made elsewhere, with the places where they break the rule.
+    pub(in crate::fracture) fn judged(&self, shots: ShotList) -> Fracture {
+        let mut model = Model::new(self.target.bounds(), self.sigma(), Vec::new());
+        for (slot, (rect, dose)) in shots.rects().enumerate() {
+            let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
+            model.place(
+                slot,
+                Some(Flash {
+                    side: [x0, y0, x1, y1],
+                    dose: dose.0,
+                }),
+            );
+        }
+        let violations = check(&self.target, &model, &self.context);
+        self.reported(Some(Fit { shots, violations }))
+    }
+
+    /// A fit as the result of a fracture; without one, no shots and every sample that must print as a miss.
+    pub(in crate::fracture) fn reported(&self, fit: Option<Fit>) -> Fracture {
+        let fit = fit.unwrap_or_else(|| Fit {
+            shots: ShotList::new(self.job.limits.address, Vec::new()),
+            violations: self.samples.iter().filter_map(Sample::unprinted).collect(),
+        });
+        let misses = fit
+            .violations
+            .iter()
+            .map(|v| Miss::of(v, &self.target, self.job.blur))
+            .collect();
+        Fracture {
+            shots: fit.shots,
+            misses,
+            lower_bound: None,
+            notes: Vec::new(),
+        }
+    }
+
     /// Shots that start as `start`, moved to where the rule holds if moving them can bring that about.
-    pub(in crate::fracture) fn attempt(&self, start: &[Flash], disjoint: bool, budget: Budget) -> Attempt<'_> {
+    pub(in crate::fracture) fn attempt(
+        &self,
+        start: &[Flash],
+        disjoint: bool,
+        budget: Budget,
+    ) -> Attempt<'_> {
         let limits = &self.job.limits;
         let unit = limits.address.nm().0;
         // One address off both limits, so that rounding cannot overstep them.
@@ -61,7 +107,13 @@ impl<'a> Setting<'a> {
         solver.score(&model, &[], start);
         solver.commit(&mut model, &[], start);
         let holds = relax(&mut model, &mut solver, budget.window);
-        Attempt { setting: self, model, solver, budget, holds }
+        Attempt {
+            setting: self,
+            model,
+            solver,
+            budget,
+            holds,
+        }
     }
 }
 
@@ -86,11 +138,6 @@ impl Attempt<'_> {
         self.model.worst()
     }
 
-    /// The shots as they are.
-    pub(in crate::fracture) fn flashes(&self) -> Vec<Flash> {
-        self.model.flashes().map(|(_, f)| f).collect()
-    }
-
     /// Adds shots until the rule holds at the samples, as far as a few can bring that about.
     pub(in crate::fracture) fn mend(&mut self) {
         let most = 4 + self.count() / 4;
@@ -113,16 +160,27 @@ impl Attempt<'_> {
             snap(&mut snapped, &mut self.solver, address);
             let violations = check(&self.setting.target, &snapped, &self.setting.context);
             for v in &violations {
-                self.model.add_sample(Sample::new(v.place, v.need, &self.setting.context));
+                self.model
+                    .add_sample(Sample::new(v.place, v.need, &self.setting.context));
             }
             let holds = violations.is_empty();
-            if best.as_ref().is_none_or(|b| violations.len() < b.violations.len()) {
-                best = Some(Fit { shots: shots(&snapped, address), violations });
+            if best
+                .as_ref()
+                .is_none_or(|b| violations.len() < b.violations.len())
+            {
+                best = Some(Fit {
+                    shots: shots(&snapped, address),
+                    violations,
+                });
             }
             if holds {
                 break;
             }
-            if !relax(&mut self.model, &mut self.solver, self.budget.window.max(10)) {
+            if !relax(
+                &mut self.model,
+                &mut self.solver,
+                self.budget.window.max(10),
+            ) {
                 mend(&mut self.model, &mut self.solver, self.budget.window, 2);
             }
         }
@@ -135,7 +193,9 @@ impl Attempt<'_> {
 /// Those that do not hold are mended only when none does.
 pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>) -> Option<Fit> {
     if !attempts.iter().any(|a| a.holds) {
-        let least = attempts.iter_mut().reduce(|a, b| if b.worst() < a.worst() { b } else { a })?;
+        let least = attempts
+            .iter_mut()
+            .reduce(|a, b| if b.worst() < a.worst() { b } else { a })?;
         least.mend();
     }
     if attempts.iter().any(|a| a.holds) {
@@ -149,7 +209,10 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>) -> Option<Fit
         if fit.violations.is_empty() {
             return Some(fit);
         }
-        if best.as_ref().is_none_or(|b| fit.violations.len() < b.violations.len()) {
+        if best
+            .as_ref()
+            .is_none_or(|b| fit.violations.len() < b.violations.len())
+        {
             best = Some(fit);
         }
     }

@@ -10,8 +10,16 @@ use super::samples::ContextDose;
 use super::solve::Solver;
 
 /// Every place found where the shots break the rule.
-pub(in crate::fracture) fn check(target: &Target, model: &Model, context: &ContextDose) -> Vec<Violation> {
-    let field = Field { model, context, phi: PhiTable::get() };
+pub(in crate::fracture) fn check(
+    target: &Target,
+    model: &Model,
+    context: &ContextDose,
+) -> Vec<Violation> {
+    let field = Field {
+        model,
+        context,
+        phi: PhiTable::get(),
+    };
     target.violations(&field, 1.0, model.sigma / 4.0, 3.0 * model.sigma)
 }
 
@@ -20,9 +28,13 @@ pub(in crate::fracture) fn snap(model: &mut Model, solver: &mut Solver, address:
     let unit = address.nm().0;
     let slots: Vec<usize> = model.flashes().map(|(s, _)| s).collect();
     for &slot in &slots {
-        let Some(flash) = model.get(slot) else { continue };
+        let Some(flash) = model.get(slot) else {
+            continue;
+        };
         let mut snapped = flash;
-        snapped.side = flash.side.map(|v| address.coordinate(address.nearest(Nm(v))).0);
+        snapped.side = flash
+            .side
+            .map(|v| address.coordinate(address.nearest(Nm(v))).0);
         keep_apart(model, solver, slot, &mut snapped, unit);
         if snapped != flash {
             replace(model, solver, slot, snapped);
@@ -49,7 +61,9 @@ fn keep_apart(model: &Model, solver: &Solver, slot: usize, tile: &mut Flash, uni
         return;
     }
     for other in model.near(tile.side) {
-        let Some(g) = model.get(other).filter(|_| other != slot) else { continue };
+        let Some(g) = model.get(other).filter(|_| other != slot) else {
+            continue;
+        };
         // What is yet to be rounded may come one unit nearer; it will then give way itself.
         let axis = usize::from(tile.gap_along(&g, 1) > tile.gap_along(&g, 0));
         if tile.gap(&g) < 0.0 && other < slot && tile.gap(&g) > -3.0 * unit {
@@ -64,7 +78,9 @@ fn keep_apart(model: &Model, solver: &Solver, slot: usize, tile: &mut Flash, uni
 
 /// Moves one side of a shot by one address if that lowers the cost; whether it did.
 fn nudge(model: &mut Model, solver: &mut Solver, slot: usize, unit: f64) -> bool {
-    let Some(flash) = model.get(slot) else { return false };
+    let Some(flash) = model.get(slot) else {
+        return false;
+    };
     let now = solver.score(model, &[slot], &[flash]);
     if now == 0.0 {
         return false;
@@ -76,10 +92,16 @@ fn nudge(model: &mut Model, solver: &mut Solver, slot: usize, unit: f64) -> bool
             moved.side[side] += by;
             let fits = (0..2).all(|axis| {
                 let length = moved.length(axis);
-                length >= solver.rules.least_side - 1e-6 && length <= solver.rules.greatest_side + 1e-6
+                length >= solver.rules.least_side - 1e-6
+                    && length <= solver.rules.greatest_side + 1e-6
             });
             let apart = !solver.rules.disjoint
-                || model.near(moved.side).into_iter().filter(|&s| s != slot).filter_map(|s| model.get(s)).all(|g| moved.gap(&g) > -1e-6);
+                || model
+                    .near(moved.side)
+                    .into_iter()
+                    .filter(|&s| s != slot)
+                    .filter_map(|s| model.get(s))
+                    .all(|g| moved.gap(&g) > -1e-6);
             if fits && apart {
                 let cost = solver.score(model, &[slot], &[moved]);
                 if cost < best.0 {
@@ -104,7 +126,13 @@ fn replace(model: &mut Model, solver: &mut Solver, slot: usize, flash: Flash) {
 pub(in crate::fracture) fn shots(model: &Model, address: AddressUnit) -> ShotList {
     let shots = model.flashes().map(|(_, f)| {
         let [x0, y0, x1, y1] = f.side.map(|v| address.nearest(Nm(v)));
-        Shot { x0, y0, x1, y1, dose: Dose(f.dose) }
+        Shot {
+            x0,
+            y0,
+            x1,
+            y1,
+            dose: Dose(f.dose),
+        }
     });
     ShotList::new(address, shots.collect())
 }

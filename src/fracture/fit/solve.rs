@@ -135,7 +135,13 @@ impl Solver {
     ///
     /// Gives up after `most` steps, or when the cost no longer falls fast enough. The model is not changed:
     /// [`Solver::commit`] does that.
-    pub(in crate::fracture) fn solve(&mut self, model: &Model, removed: &[usize], window: &mut [Flash], most: usize) -> Outcome {
+    pub(in crate::fracture) fn solve(
+        &mut self,
+        model: &Model,
+        removed: &[usize],
+        window: &mut [Flash],
+        most: usize,
+    ) -> Outcome {
         self.begin(model, removed, window);
         self.link();
         let mut cost = self.evaluate(false);
@@ -151,12 +157,25 @@ impl Solver {
             for _ in 0..4 {
                 self.find_step(damping);
                 self.trial.clear();
-                self.trial.extend(self.local.iter().zip(self.step.chunks_exact(4)).map(|(f, s)| Local {
-                    side: std::array::from_fn(|i| f.side[i] + s[i]),
-                    dose: f.dose,
-                }));
-                let upright = self.trial.iter().all(|f| f.side[0] < f.side[2] && f.side[1] < f.side[3]);
-                let next = if upright { self.evaluate(true) } else { f64::INFINITY };
+                self.trial
+                    .extend(
+                        self.local
+                            .iter()
+                            .zip(self.step.chunks_exact(4))
+                            .map(|(f, s)| Local {
+                                side: std::array::from_fn(|i| f.side[i] + s[i]),
+                                dose: f.dose,
+                            }),
+                    );
+                let upright = self
+                    .trial
+                    .iter()
+                    .all(|f| f.side[0] < f.side[2] && f.side[1] < f.side[3]);
+                let next = if upright {
+                    self.evaluate(true)
+                } else {
+                    f64::INFINITY
+                };
                 if next < cost {
                     std::mem::swap(&mut self.local, &mut self.trial);
                     cost = next;
@@ -175,7 +194,10 @@ impl Solver {
         for (flash, local) in window.iter_mut().zip(&self.local) {
             flash.side = std::array::from_fn(|i| local.side[i] * self.sigma + self.origin[i % 2]);
         }
-        Outcome { solved: self.holds(), cost }
+        Outcome {
+            solved: self.holds(),
+            cost,
+        }
     }
 
     /// Cost of `window` in place of `removed`, without moving anything.
@@ -186,7 +208,12 @@ impl Solver {
     }
 
     /// Makes `window` replace `removed` in the model, after [`Solver::solve`] on the same; gives the slots now used.
-    pub(in crate::fracture) fn commit(&mut self, model: &mut Model, removed: &[usize], window: &[Flash]) -> Vec<usize> {
+    pub(in crate::fracture) fn commit(
+        &mut self,
+        model: &mut Model,
+        removed: &[usize],
+        window: &[Flash],
+    ) -> Vec<usize> {
         self.evaluate(false);
         for (&id, &value) in self.ids.iter().zip(&self.value) {
             model.doses_mut()[id as usize] = value;
@@ -195,7 +222,12 @@ impl Solver {
             model.place(slot, None);
         }
         let fresh = model.slots()..;
-        let slots: Vec<usize> = removed.iter().copied().chain(fresh).take(window.len()).collect();
+        let slots: Vec<usize> = removed
+            .iter()
+            .copied()
+            .chain(fresh)
+            .take(window.len())
+            .collect();
         for (&slot, &flash) in slots.iter().zip(window) {
             model.place(slot, Some(flash));
         }
@@ -212,22 +244,37 @@ impl Solver {
             return;
         };
         self.origin = [hull.side[0], hull.side[1]];
-        model.samples_near(all().map(|f| f.grown(reach).side), &mut self.ids, &mut self.cells);
+        model.samples_near(
+            all().map(|f| f.grown(reach).side),
+            &mut self.ids,
+            &mut self.cells,
+        );
         let (samples, doses) = (model.samples(), model.doses());
         for list in [&mut self.x, &mut self.y, &mut self.sign, &mut self.base] {
             list.clear();
         }
-        #[allow(clippy::cast_possible_truncation, reason = "a place in σ about a near origin needs no more than single precision")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a place in σ about a near origin needs no more than single precision"
+        )]
         for &id in &self.ids {
             let sample = &samples[id as usize];
-            self.x.push(((sample.place[0] - self.origin[0]) / self.sigma) as f32);
-            self.y.push(((sample.place[1] - self.origin[1]) / self.sigma) as f32);
+            self.x
+                .push(((sample.place[0] - self.origin[0]) / self.sigma) as f32);
+            self.y
+                .push(((sample.place[1] - self.origin[1]) / self.sigma) as f32);
             self.sign.push(sample.sign);
             self.base.push(doses[id as usize]);
         }
         for flash in &gone {
             let local = self.localise(flash);
-            self.arch.dispatch(AddDose { x: &self.x, y: &self.y, side: single(local.side), dose: -local.dose, out: &mut self.base });
+            self.arch.dispatch(AddDose {
+                x: &self.x,
+                y: &self.y,
+                side: single(local.side),
+                dose: -local.dose,
+                out: &mut self.base,
+            });
         }
         self.local.clear();
         for flash in window {
@@ -237,15 +284,25 @@ impl Solver {
         self.fixed.clear();
         if self.rules.disjoint {
             let around = hull.grown(self.sigma);
-            let near = model.near(around.side).into_iter().filter(|s| !removed.contains(s)).filter_map(|s| model.get(s));
+            let near = model
+                .near(around.side)
+                .into_iter()
+                .filter(|s| !removed.contains(s))
+                .filter_map(|s| model.get(s));
             let fixed: Vec<[f64; 4]> = near.map(|f| self.localise(&f).side).collect();
             self.fixed.extend(fixed);
         }
     }
 
     fn localise(&self, flash: &Flash) -> Local {
-        #[allow(clippy::cast_possible_truncation, reason = "a dose needs no more than single precision here")]
-        Local { side: std::array::from_fn(|i| (flash.side[i] - self.origin[i % 2]) / self.sigma), dose: flash.dose as f32 }
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a dose needs no more than single precision here"
+        )]
+        Local {
+            side: std::array::from_fn(|i| (flash.side[i] - self.origin[i % 2]) / self.sigma),
+            dose: flash.dose as f32,
+        }
     }
 
     /// Dose of the window (or of the trial step) on top of the base, and the cost of what is missed.
@@ -255,7 +312,13 @@ impl Solver {
         self.value.clear();
         self.value.extend_from_slice(&self.base);
         for flash in window {
-            self.arch.dispatch(AddDose { x: &self.x, y: &self.y, side: single(flash.side), dose: flash.dose, out: &mut self.value });
+            self.arch.dispatch(AddDose {
+                x: &self.x,
+                y: &self.y,
+                side: single(flash.side),
+                dose: flash.dose,
+                out: &mut self.value,
+            });
         }
         let aim = self.rules.guard + AIM;
         let mut cost = 0.0;
@@ -263,25 +326,48 @@ impl Solver {
             let r = f64::from((aim - sign * (value - 0.5)).max(0.0));
             cost += r * r;
         }
-        cost + self.links.iter().map(|l| (l.excess(window) * LINK_WEIGHT).max(0.0).powi(2)).sum::<f64>()
+        cost + self
+            .links
+            .iter()
+            .map(|l| (l.excess(window) * LINK_WEIGHT).max(0.0).powi(2))
+            .sum::<f64>()
     }
 
     /// Whether everything holds with the guard, at the values last computed.
     fn holds(&self) -> bool {
-        let prints = self.value.iter().zip(&self.sign).all(|(&v, &s)| s * (v - 0.5) >= self.rules.guard);
-        prints && self.links.iter().all(|l| l.excess(&self.local) <= LINK_SLACK)
+        let prints = self
+            .value
+            .iter()
+            .zip(&self.sign)
+            .all(|(&v, &s)| s * (v - 0.5) >= self.rules.guard);
+        prints
+            && self
+                .links
+                .iter()
+                .all(|l| l.excess(&self.local) <= LINK_SLACK)
     }
 
     /// Inequalities on sides: least, greatest, and for tiles no overlap among the window or with what stays.
     fn link(&mut self) {
         self.links.clear();
-        let (least, greatest) = (self.rules.least_side / self.sigma, self.rules.greatest_side / self.sigma);
+        let (least, greatest) = (
+            self.rules.least_side / self.sigma,
+            self.rules.greatest_side / self.sigma,
+        );
         for (k, f) in self.local.iter().enumerate() {
             for axis in 0..2 {
                 let (low, high) = (4 * k + axis, 4 * k + axis + 2);
-                self.links.push(Link { plus: Some(low), minus: Some(high), limit: -least });
+                self.links.push(Link {
+                    plus: Some(low),
+                    minus: Some(high),
+                    limit: -least,
+                });
                 if f.side[axis + 2] - f.side[axis] > greatest - 1.0 {
-                    self.links.push(Link { plus: Some(high), minus: Some(low), limit: greatest });
+                    self.links.push(Link {
+                        plus: Some(high),
+                        minus: Some(low),
+                        limit: greatest,
+                    });
                 }
             }
         }
@@ -292,15 +378,27 @@ impl Solver {
             for (j, g) in self.local.iter().enumerate().skip(k + 1) {
                 if let Some((f_low, axis)) = separated(&f.side, &g.side) {
                     let (low, high) = if f_low { (k, j) } else { (j, k) };
-                    self.links.push(Link { plus: Some(4 * low + axis + 2), minus: Some(4 * high + axis), limit: 0.0 });
+                    self.links.push(Link {
+                        plus: Some(4 * low + axis + 2),
+                        minus: Some(4 * high + axis),
+                        limit: 0.0,
+                    });
                 }
             }
             for g in &self.fixed {
                 if let Some((f_low, axis)) = separated(&f.side, g) {
                     self.links.push(if f_low {
-                        Link { plus: Some(4 * k + axis + 2), minus: None, limit: g[axis] }
+                        Link {
+                            plus: Some(4 * k + axis + 2),
+                            minus: None,
+                            limit: g[axis],
+                        }
                     } else {
-                        Link { plus: None, minus: Some(4 * k + axis), limit: -g[axis + 2] }
+                        Link {
+                            plus: None,
+                            minus: Some(4 * k + axis),
+                            limit: -g[axis + 2],
+                        }
                     });
                 }
             }
@@ -327,7 +425,11 @@ impl Solver {
         let n = rows.r0.len();
         rows.slopes.clear();
         rows.slopes.resize(4 * n * self.local.len(), 0.0);
-        for (flash, out) in self.local.iter().zip(rows.slopes.chunks_exact_mut(4 * n.max(1))) {
+        for (flash, out) in self
+            .local
+            .iter()
+            .zip(rows.slopes.chunks_exact_mut(4 * n.max(1)))
+        {
             let (first, second) = out.split_at_mut(2 * n);
             let (left, low) = first.split_at_mut(n);
             let (right, high) = second.split_at_mut(n);
@@ -347,7 +449,8 @@ impl Solver {
             for k in 0..self.local.len() {
                 let a: [f32; 4] = std::array::from_fn(|side| rows.slopes[(4 * k + side) * n + i]);
                 if a.iter().any(|s| s.abs() > LEAST_SLOPE) {
-                    rows.entries.push((u32::try_from(4 * k).unwrap_or(u32::MAX), a.map(f64::from)));
+                    rows.entries
+                        .push((u32::try_from(4 * k).unwrap_or(u32::MAX), a.map(f64::from)));
                 }
             }
         }
@@ -435,7 +538,10 @@ fn separated(f: &[f64; 4], g: &[f64; 4]) -> Option<(bool, usize)> {
     (gap(axis) < 1.0).then(|| (f[axis] + f[axis + 2] <= g[axis] + g[axis + 2], axis))
 }
 
-#[allow(clippy::cast_possible_truncation, reason = "a place in σ about a near origin needs no more than single precision")]
+#[allow(
+    clippy::cast_possible_truncation,
+    reason = "a place in σ about a near origin needs no more than single precision"
+)]
 fn single(side: [f64; 4]) -> [f32; 4] {
     side.map(|s| s as f32)
 }

@@ -24,11 +24,20 @@ impl Rows {
     fn of(target: &Target, sigma: f64) -> Self {
         let [_, low, _, high] = target.bounds();
         let height = high - low;
-        #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "positive and clamped")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "positive and clamped"
+        )]
         let n = (height / (PITCH * sigma)).ceil().clamp(1.0, 1e7) as usize;
         #[allow(clippy::cast_precision_loss, reason = "n is at most 1e7")]
         let pitch = height / n as f64;
-        let mut rows = Self { low, pitch, sigma, crossings: vec![Vec::new(); n] };
+        let mut rows = Self {
+            low,
+            pitch,
+            sigma,
+            crossings: vec![Vec::new(); n],
+        };
         for i in 0..n {
             let y = rows.level(i) + 0.5 * pitch;
             target.crossings(y, &mut rows.crossings[i]);
@@ -45,7 +54,11 @@ impl Rows {
 
     /// How many lines are nearest to a length.
     fn lines(&self, length: f64) -> usize {
-        #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "clamped to be positive and small")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "clamped to be positive and small"
+        )]
         let n = (length / self.pitch).ceil().clamp(1.0, 1e7) as usize;
         n
     }
@@ -59,7 +72,9 @@ impl Rows {
         let mut from = 0;
         while from < n {
             let mut to = from + 1;
-            while to < n && (to - from < least || alike(&self.crossings[from..=to], slack * self.sigma)) {
+            while to < n
+                && (to - from < least || alike(&self.crossings[from..=to], slack * self.sigma))
+            {
                 to += 1;
             }
             // No low slab at the end.
@@ -83,10 +98,18 @@ impl Rows {
         if b <= a {
             return *flash;
         }
-        let fits = |i: usize| self.crossings[i].chunks_exact(2).any(|c| c[0] <= a && b <= c[1]);
+        let fits = |i: usize| {
+            self.crossings[i]
+                .chunks_exact(2)
+                .any(|c| c[0] <= a && b <= c[1])
+        };
         let n = self.crossings.len();
         let middle = ((0.5 * (y0 + y1) - self.low) / self.pitch).max(0.0);
-        #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "not negative; saturates")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "not negative; saturates"
+        )]
         let middle = (middle as usize).min(n - 1);
         let (mut from, mut to) = (middle, middle);
         while from > 0 && fits(from - 1) {
@@ -95,7 +118,10 @@ impl Rows {
         while to + 1 < n && fits(to + 1) {
             to += 1;
         }
-        Flash { side: [x0, self.level(from).min(y0), x1, self.level(to + 1).max(y1)], dose: flash.dose }
+        Flash {
+            side: [x0, self.level(from).min(y0), x1, self.level(to + 1).max(y1)],
+            dose: flash.dose,
+        }
     }
 }
 
@@ -109,32 +135,61 @@ impl Slabs {
     /// Of a figure.
     pub(in crate::fracture) fn of(job: &Job<'_>, target: &Target) -> Self {
         let sigma = job.blur.sigma().0;
-        let turned = job.figure.transformed(Transform { orientation: Orientation::DIAGONAL, shift: Point::default() });
+        let turned = job.figure.transformed(Transform {
+            orientation: Orientation::DIAGONAL,
+            shift: Point::default(),
+        });
         let columns = Rows::of(&Target::new(&turned, job.blur, job.tolerance), sigma);
-        Self { rows: Rows::of(target, sigma), columns }
+        Self {
+            rows: Rows::of(target, sigma),
+            columns,
+        }
     }
 
     /// The figure as horizontal and as vertical slabs; see [`Rows::slabs`].
     pub(in crate::fracture) fn both(&self, slack: f64) -> [Vec<Flash>; 2] {
-        [self.rows.slabs(slack), self.columns.slabs(slack).iter().map(Flash::flipped).collect()]
+        [
+            self.rows.slabs(slack),
+            self.columns
+                .slabs(slack)
+                .iter()
+                .map(Flash::flipped)
+                .collect(),
+        ]
     }
 
     /// The slabs of both directions, each grown across as far as the figure allows; see [`Rows::grown`].
     pub(in crate::fracture) fn grown(&self, slack: f64, inset: f64) -> Vec<Flash> {
-        let horizontal = self.rows.slabs(slack).into_iter().map(|f| self.rows.grown(&f, inset));
-        let vertical = self.columns.slabs(slack).into_iter().map(|f| self.columns.grown(&f, inset).flipped());
+        let horizontal = self
+            .rows
+            .slabs(slack)
+            .into_iter()
+            .map(|f| self.rows.grown(&f, inset));
+        let vertical = self
+            .columns
+            .slabs(slack)
+            .into_iter()
+            .map(|f| self.columns.grown(&f, inset).flipped());
         horizontal.chain(vertical).collect()
     }
 }
 
 /// Chooses from candidates so that every place that must print lies in one, the one that adds most places first.
 pub(in crate::fracture) fn cover(candidates: &[Flash], samples: &[Sample]) -> Vec<Flash> {
-    let inside = |f: &Flash, s: &Sample| (0..2).all(|axis| f.side[axis] <= s.place[axis] && s.place[axis] <= f.side[axis + 2]);
+    let inside = |f: &Flash, s: &Sample| {
+        (0..2).all(|axis| f.side[axis] <= s.place[axis] && s.place[axis] <= f.side[axis + 2])
+    };
     let mut open: Vec<&Sample> = samples.iter().filter(|s| s.sign > 0.0).collect();
     let mut chosen = Vec::new();
     loop {
         let gain = |f: &Flash| open.iter().filter(|s| inside(f, s)).count();
-        let best = candidates.iter().map(|f| (gain(f), f)).fold((0, None), |best, (g, f)| if g > best.0 { (g, Some(f)) } else { best });
+        let best = candidates
+            .iter()
+            .map(|f| (gain(f), f))
+            .fold(
+                (0, None),
+                |best, (g, f)| if g > best.0 { (g, Some(f)) } else { best },
+            );
         let Some(f) = best.1 else { return chosen };
         chosen.push(*f);
         open.retain(|s| !inside(f, s));
@@ -149,14 +204,23 @@ fn alike(rows: &[Vec<f64>], limit: f64) -> bool {
             let (low, high) = rows
                 .iter()
                 .map(|r| r.get(i).copied().unwrap_or(f64::NAN))
-                .fold((f64::INFINITY, f64::NEG_INFINITY), |(a, b), x| (a.min(x), b.max(x)));
+                .fold((f64::INFINITY, f64::NEG_INFINITY), |(a, b), x| {
+                    (a.min(x), b.max(x))
+                });
             high - low <= limit
         })
 }
 
 /// Where at least half of the rows are inside.
 fn majority(rows: &[Vec<f64>]) -> Vec<[f64; 2]> {
-    let mut events: Vec<(f64, i32)> = rows.iter().flat_map(|r| r.iter().enumerate().map(|(i, &x)| (x, if i % 2 == 0 { 1 } else { -1 }))).collect();
+    let mut events: Vec<(f64, i32)> = rows
+        .iter()
+        .flat_map(|r| {
+            r.iter()
+                .enumerate()
+                .map(|(i, &x)| (x, if i % 2 == 0 { 1 } else { -1 }))
+        })
+        .collect();
     events.sort_by(|a, b| a.0.total_cmp(&b.0).then(b.1.cmp(&a.1)));
     let half = i32::try_from(rows.len().div_ceil(2)).unwrap_or(i32::MAX);
     let (mut depth, mut start, mut found) = (0, None, Vec::new());

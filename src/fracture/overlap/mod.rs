@@ -6,8 +6,7 @@
 //! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
 
 use super::fit::{Budget, Setting, Slabs, best_of, cover};
-use super::{Effort, Fracture, Fracturer, Job, Miss};
-use crate::shot::ShotList;
+use super::{Effort, Fracture, FractureError, Fracturer, Job};
 
 /// The overlap fracture.
 #[derive(Clone, Copy, Debug, Default)]
@@ -28,12 +27,36 @@ impl Fracturer for Overlap {
         "overlap"
     }
 
-    fn fracture(&self, job: &Job<'_>) -> Fracture {
+    fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         let setting = Setting::new(job);
         let (budget, starts) = match self.effort {
-            Effort::Quick => (Budget { window: 8, apart: 3.0, steps: 15, hopeless: 0.5 }, 1),
-            Effort::Normal => (Budget { window: 12, apart: 3.0, steps: 20, hopeless: 2.0 }, 2),
-            Effort::Thorough => (Budget { window: 12, apart: 8.0, steps: 40, hopeless: 6.0 }, 2),
+            Effort::Quick => (
+                Budget {
+                    window: 8,
+                    apart: 3.0,
+                    steps: 15,
+                    hopeless: 0.5,
+                },
+                1,
+            ),
+            Effort::Normal => (
+                Budget {
+                    window: 12,
+                    apart: 3.0,
+                    steps: 20,
+                    hopeless: 2.0,
+                },
+                2,
+            ),
+            Effort::Thorough => (
+                Budget {
+                    window: 12,
+                    apart: 8.0,
+                    steps: 40,
+                    hopeless: 6.0,
+                },
+                2,
+            ),
         };
         let slabs = Slabs::of(job, &setting.target);
         let attempts = INSETS[..starts]
@@ -43,12 +66,6 @@ impl Fracturer for Overlap {
                 setting.attempt(&cover(&candidates, &setting.samples), false, budget)
             })
             .collect();
-        match best_of(attempts) {
-            Some(fit) => {
-                let misses = fit.violations.iter().map(|v| Miss::of(v, &setting.target, job.blur)).collect();
-                Fracture { shots: fit.shots, misses, lower_bound: None, notes: Vec::new() }
-            }
-            None => Fracture { shots: ShotList::new(job.limits.address, Vec::new()), misses: Vec::new(), lower_bound: None, notes: Vec::new() },
-        }
+        Ok(setting.reported(best_of(attempts)))
     }
 }
