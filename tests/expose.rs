@@ -11,6 +11,11 @@ use shotwright::geom::{Point, Rect};
 use shotwright::target::{DoseField, Printed, ShotErrors};
 use shotwright::units::{BaseDose, Dose, ELECTRONS_PER_NM2_PER_UC_CM2, Nm};
 
+/// A shot and its dose.
+type Flash = (Rect, f64);
+/// A place and the dose there.
+type Known = ([f64; 2], f64);
+
 const DIAGONAL: [f64; 2] = [std::f64::consts::FRAC_1_SQRT_2; 2];
 const FAR: f64 = 50_000.0;
 
@@ -48,7 +53,7 @@ fn near(found: f64, expected: f64, within: f64) {
 }
 
 /// Sixty overlapping shots and 400 places; see `make_dose.py` beside the data.
-fn published() -> (Vec<(Rect, f64)>, Vec<([f64; 2], f64)>) {
+fn published() -> (Vec<Flash>, Vec<Known>) {
     let (mut shots, mut places) = (Vec::new(), Vec::new());
     let text = include_str!("data/expose/dose.csv");
     for row in text

@@ -150,20 +150,18 @@ fn share_printed(dose: [f64; 4]) -> f64 {
         return 1.0;
     }
     const CORNER: [[f64; 2]; 4] = [[0.0, 0.0], [1.0, 0.0], [1.0, 1.0], [0.0, 1.0]];
-    let (mut first, mut last, mut twice) = (None, [0.0; 2], 0.0);
+    // Triangles that fan out from the first corner of the printed polygon.
+    let mut first: Option<[f64; 2]> = None;
+    let (mut last, mut twice) = ([0.0; 2], 0.0);
     let mut to = |p: [f64; 2]| {
-        if first.is_none() {
-            first = Some(p);
-        } else {
-            twice += last[0] * p[1] - p[0] * last[1];
-        }
-        last = p;
+        let o = *first.get_or_insert(p);
+        let q = [p[0] - o[0], p[1] - o[1]];
+        twice += last[0] * q[1] - q[0] * last[1];
+        last = q;
     };
     for k in 0..4 {
-        let ([p, q], [a, b]) = (
-            [CORNER[k], CORNER[(k + 1) % 4]],
-            [dose[k], dose[(k + 1) % 4]],
-        );
+        let next = (k + 1) % 4;
+        let (p, q, a, b) = (CORNER[k], CORNER[next], dose[k], dose[next]);
         if a >= THRESHOLD {
             to(p);
         }
@@ -171,9 +169,6 @@ fn share_printed(dose: [f64; 4]) -> f64 {
             let t = (THRESHOLD - a) / (b - a);
             to([p[0] + t * (q[0] - p[0]), p[1] + t * (q[1] - p[1])]);
         }
-    }
-    if let Some(p) = first {
-        to(p);
     }
     0.5 * twice
 }

@@ -10,7 +10,7 @@ use super::Settings;
 pub struct EdgeSample {
     /// Where, nm.
     pub place: [f64; 2],
-    /// Unit vector along which the contour was looked for: the outward normal, in a corner zone down the dose.
+    /// Unit vector along which the contour was looked for: the outward normal, or down the dose where that way is shorter.
     pub outward: [f64; 2],
     /// Length of outline that it stands for, pm.
     pub length_pm: u64,
@@ -26,8 +26,9 @@ pub struct EdgeSample {
 
 /// Samples along all edges in order: the middles of equal pieces of each edge, at most σ/4 long.
 ///
-/// Beside a drawn corner the normal of an edge runs along the rounded contour and meets it far off; the way down the dose
-/// is the short one, and from the corner itself it is the diagonal. So that is the way in a corner zone.
+/// The way is the outward normal. Beside a corner, or on a jog shorter than the blur, the normal runs along the rounded
+/// contour and meets it far off, where the dose falls another way and the contour is near. So in a corner zone, and where
+/// the normal finds the contour out of tolerance, the way down the dose is tried too and the shorter one counts.
 ///
 /// Margin (per 1 % of dose) = `0.01·½·(1 + 2ηU)/|∇F|` at the contour, F the forward dose and ηU the background.
 pub fn edge_samples<'a>(
@@ -58,12 +59,7 @@ pub fn edge_samples<'a>(
                 #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
                 let place = edge.at((k as f64 + 0.5) / pieces);
                 let corner = target.in_corner_zone(place);
-                let outward = if corner {
-                    down_the_dose(print.gradient(place), normal)
-                } else {
-                    normal
-                };
-                let error = print.crossing(place, outward, range);
+                let (outward, error) = way(place, normal, corner, target.tolerance(), range, print);
                 let on_contour =
                     error.map(|e| [place[0] + e * outward[0], place[1] + e * outward[1]]);
                 let slope = on_contour
@@ -86,13 +82,29 @@ pub fn edge_samples<'a>(
         })
 }
 
-/// The direction in which a dose falls, unless that is into the figure or there is no slope.
-fn down_the_dose(gradient: [f64; 2], normal: [f64; 2]) -> [f64; 2] {
-    let slope = gradient[0].hypot(gradient[1]);
-    let down = [-gradient[0] / slope, -gradient[1] / slope];
-    if down[0] * normal[0] + down[1] * normal[1] > 0.0 {
-        down
-    } else {
-        normal
+/// The way to the contour and its length.
+fn way(
+    place: [f64; 2],
+    normal: [f64; 2],
+    corner: bool,
+    tolerance: f64,
+    range: f64,
+    print: &impl Printed,
+) -> ([f64; 2], Option<f64>) {
+    let straight = print.crossing(place, normal, range);
+    if straight.map_or(!corner, |e| e.abs() <= tolerance) {
+        return (normal, straight);
+    }
+    let g = print.gradient(place);
+    let slope = g[0].hypot(g[1]);
+    let down = [-g[0] / slope, -g[1] / slope];
+    // Into the figure, or nowhere if the dose is flat: no way out of it.
+    let along = down[0] * normal[0] + down[1] * normal[1];
+    if along.is_nan() || along <= 0.0 {
+        return (normal, straight);
+    }
+    match print.crossing(place, down, range) {
+        Some(e) if straight.is_none_or(|s| e.abs() < s.abs()) => (down, Some(e)),
+        _ => (normal, straight),
     }
 }
