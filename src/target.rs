@@ -6,7 +6,7 @@
 
 use crate::blur::{Blur, CORNER_PULL_BACK, THRESHOLD};
 use crate::geom::Figure;
-use crate::units::Nm;
+use crate::units::{BaseDose, Nm};
 
 /// What the rule asks of a place.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -81,6 +81,56 @@ pub trait DoseField {
             *value = self.dose([x, y]);
             x += step;
         }
+    }
+}
+
+/// A dose that can be judged: it knows its own contour. The judge sees nothing else of the shots.
+pub trait Printed: DoseField {
+    /// Gradient of the dose at a place, per nm.
+    fn gradient(&self, p: [f64; 2]) -> [f64; 2];
+
+    /// Signed distance (nm) from `p` along the unit vector `outward` to the contour, at most `range` away.
+    ///
+    /// From a place that prints it looks outward, from one that does not inward, for the first change: so the
+    /// contour found has the print behind it. `None` where there is none in range (never 0).
+    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64>;
+
+    /// Least x, least y, greatest x, greatest y (nm) of all that is flashed; `None` where nothing is.
+    fn extent(&self) -> Option<[f64; 4]>;
+
+    /// How far the contour at `p` scatters under random errors; `None` where the dose does not know its shots or has no slope.
+    fn edge_sd(&self, _p: [f64; 2], _errors: &ShotErrors) -> Option<EdgeSd> {
+        None
+    }
+}
+
+/// Random errors of the writer, each independent from shot to shot and from edge to edge; one standard deviation.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub struct ShotErrors {
+    /// Of the position of one shot edge.
+    pub edge: Nm,
+    /// Of the dose of one shot, as a share of it.
+    pub dose: f64,
+    /// Charge per area at dose 1, for the shot noise; `None` leaves it out.
+    pub base_dose: Option<BaseDose>,
+}
+
+/// Standard deviation of the contour along its normal, by cause.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct EdgeSd {
+    /// From shot edges.
+    pub edge: Nm,
+    /// From shot doses.
+    pub dose: Nm,
+    /// From the number of electrons.
+    pub noise: Nm,
+}
+
+impl EdgeSd {
+    /// All causes together (they are independent).
+    #[must_use]
+    pub fn total(&self) -> Nm {
+        Nm(self.edge.0.hypot(self.dose.0).hypot(self.noise.0))
     }
 }
 
