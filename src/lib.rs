@@ -4,6 +4,7 @@ pub mod blur;
 pub mod expose;
 pub mod fracture;
 pub mod geom;
+pub mod judge;
 pub mod layout;
 pub mod mask;
 pub mod shot;
