@@ -327,6 +327,7 @@ fn hull(bounds: Rect, repetition: &Repetition) -> Rect {
                 .into_iter()
                 .fold(bounds, |all, by| all.hull(bounds.translated(by)))
         }
+        Repetition::Nested(parts) => parts.iter().fold(bounds, hull),
         Repetition::List(list) => list
             .iter()
             .map(|&by| bounds.translated(by))

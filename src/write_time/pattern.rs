@@ -181,6 +181,7 @@ impl Placed<'_> {
                 };
                 Point::new(span(a.x, b.x), span(a.y, b.y))
             }
+            Repetition::Nested(_) => Point::default(),
             Repetition::List(ref list) => match list.iter().find(|&&p| !within(p)) {
                 Some(&p) => return far(p),
                 None => Point::default(),
