@@ -90,7 +90,7 @@ pub(super) struct Band {
 
 /// Buckets over the plane: which items touch which square cell.
 #[derive(Clone, Debug)]
-struct Bins {
+pub(super) struct Bins {
     origin: [f64; 2],
     size: f64,
     columns: usize,
@@ -99,7 +99,7 @@ struct Bins {
 }
 
 impl Bins {
-    fn new(bounds: [f64; 4], size: f64) -> Self {
+    pub(super) fn new(bounds: [f64; 4], size: f64) -> Self {
         let (w, h) = (bounds[2] - bounds[0], bounds[3] - bounds[1]);
         let size = size.max((w * h / 4e6).sqrt()).max(w.max(h) / 4e6);
         let (columns, rows) = (cell_index(w / size) + 1, cell_index(h / size) + 1);
@@ -116,6 +116,27 @@ impl Bins {
         let last = if axis == 0 { self.columns } else { self.rows } - 1;
         let at = |v: f64| cell_index((v - self.origin[axis]) / self.size).min(last);
         (at(low), at(high))
+    }
+
+    /// The box that the cells fill.
+    fn bounds(&self) -> [f64; 4] {
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        let size = |cells: usize| cells as f64 * self.size;
+        let [x, y] = self.origin;
+        [x, y, x + size(self.columns), y + size(self.rows)]
+    }
+
+    /// Enters an item at a place.
+    pub(super) fn insert(&mut self, id: u32, p: [f64; 2]) {
+        for cell in self.touched([p[0], p[1], p[0], p[1]]) {
+            self.cells[cell].push(id);
+        }
+    }
+
+    /// Items in the cells that a box touches.
+    pub(super) fn items(&self, side: [f64; 4]) -> impl Iterator<Item = u32> + '_ {
+        self.touched(side)
+            .flat_map(|cell| self.cells[cell].iter().copied())
     }
 
     fn low_of_row(&self, j: usize) -> f64 {
@@ -192,9 +213,7 @@ impl Model {
     pub(in crate::fracture) fn add_sample(&mut self, sample: Sample) {
         let [x, y] = sample.place;
         let id = narrow(self.samples.len());
-        for cell in self.samples_by_place.touched([x, y, x, y]) {
-            self.samples_by_place.cells[cell].push(id);
-        }
+        self.samples_by_place.insert(id, [x, y]);
         let reach = 5.0 * self.sigma;
         let phi = PhiTable::get();
         let shots: f64 = self
@@ -209,6 +228,11 @@ impl Model {
         )]
         self.dose.push(sample.context + shots as f32);
         self.samples.push(sample);
+    }
+
+    /// The box that all samples lie in.
+    pub(super) fn bounds(&self) -> [f64; 4] {
+        self.by_place.bounds()
     }
 
     /// All samples.

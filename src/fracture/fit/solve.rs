@@ -29,6 +29,8 @@ pub(in crate::fracture) struct Outcome {
     pub(in crate::fracture) solved: bool,
     /// Sum of squares of what is missed.
     pub(in crate::fracture) cost: f64,
+    /// The same before, by the shots that were removed.
+    pub(in crate::fracture) before: f64,
 }
 
 /// A shot in σ about the origin of the fit.
@@ -148,6 +150,7 @@ impl Solver {
         most: usize,
     ) -> Outcome {
         self.begin(model, removed, window);
+        let standing = self.standing(model);
         self.link();
         let mut cost = self.evaluate(false);
         let mut damping = 0.3 * LINK_WEIGHT * LINK_WEIGHT;
@@ -202,6 +205,7 @@ impl Solver {
         Outcome {
             solved: self.holds(),
             cost,
+            before: standing,
         }
     }
 
@@ -312,6 +316,15 @@ impl Solver {
             side: std::array::from_fn(|i| (flash.side[i] - self.origin[i % 2]) / self.sigma),
             dose: flash.dose as f32,
         }
+    }
+
+    /// Cost of the doses that the model has now at the samples gathered, sides left out.
+    fn standing(&self, model: &Model) -> f64 {
+        let aim = self.rules.guard + AIM;
+        let missed = |(&id, &sign): (&u32, &f32)| {
+            f64::from((aim - sign * (model.doses()[id as usize] - 0.5)).max(0.0)).powi(2)
+        };
+        self.ids.iter().zip(&self.sign).map(missed).sum()
     }
 
     /// Dose of the window (or of the trial step) on top of the base, and the cost of what is missed.

@@ -64,7 +64,13 @@ impl Fracturer for Overlap {
         let [slim, wide] = &grown;
         let attempts = [&both, wide, slim][..starts]
             .iter()
-            .map(|candidates| setting.attempt(&cover(candidates, &setting.samples), false, budget))
+            .map(|candidates| {
+                setting.attempt(
+                    &cover(candidates, &setting.samples, setting.sigma()),
+                    false,
+                    budget,
+                )
+            })
             .collect();
         Ok(setting.reported(best_of(attempts)))
     }
