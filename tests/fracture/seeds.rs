@@ -55,7 +55,7 @@ fn planted_figures_take_no_more_shots_than_were_planted() {
 #[test]
 fn a_long_serpentine_prints() {
     let mut faults = Faults::default();
-    for outline in [1e4, 1e5] {
+    for outline in [1e4, 3e4] {
         let figure = meander(outline);
         assert!((figure.outline_nm() / outline - 1.0).abs() < 0.05);
         let counts =
