@@ -1,0 +1,159 @@
+//! Layout → mask: how the time grows with the number of polygons, and that arrays cost what one element costs.
+
+use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
+
+use shotwright::geom::{Point, Repetition};
+use shotwright::layout::{Cell, CellId, Layer, Layout, Placement, Shape};
+use shotwright::mask::{self, MaskOptions};
+use shotwright::shot::AddressUnit;
+use shotwright::units::Nm;
+
+fn options() -> MaskOptions {
+    MaskOptions {
+        layers: Vec::new(),
+        scale: 1.0,
+        reach: Nm(60.0),
+        address: AddressUnit::new(Nm(1.0)).expect("1 nm"),
+    }
+}
+
+fn shape(points: Vec<Point>, repetition: Repetition) -> Shape {
+    Shape {
+        layer: Layer {
+            layer: 1,
+            datatype: 0,
+        },
+        points,
+        repetition,
+    }
+}
+
+fn rect(x: i64, y: i64, w: i64, h: i64) -> Shape {
+    let points = vec![
+        Point::new(x, y),
+        Point::new(x + w, y),
+        Point::new(x + w, y + h),
+        Point::new(x, y + h),
+    ];
+    shape(points, Repetition::Once)
+}
+
+fn flat(shapes: Vec<Shape>) -> Layout {
+    let cell = Cell {
+        name: "top".to_owned(),
+        shapes,
+        placements: Vec::new(),
+    };
+    Layout {
+        unit: Nm(1.0),
+        cells: vec![cell],
+        notes: Vec::new(),
+    }
+}
+
+/// Rectangles of 40 to 140 nm at random, about a third of them overlapping another; xorshift64, seed fixed.
+fn random_rects(count: i64) -> Layout {
+    let side = (count * 30_000).isqrt();
+    let mut state = 0x2545_F491_4F6C_DD1D_u64;
+    let mut below = move |n: i64| {
+        state ^= state << 13;
+        state ^= state >> 7;
+        state ^= state << 17;
+        i64::try_from(state % n.unsigned_abs()).expect("below n")
+    };
+    flat(
+        (0..count)
+            .map(|_| rect(below(side), below(side), 40 + below(100), 40 + below(100)))
+            .collect(),
+    )
+}
+
+/// Squares of 60 nm at a pitch of 110 nm, drawn one by one: every one is context of eight others.
+fn contacts(side: i64) -> Layout {
+    flat(
+        (0..side * side)
+            .map(|k| rect(k % side * 110, k / side * 110, 60, 60))
+            .collect(),
+    )
+}
+
+fn array(columns: u64) -> Layout {
+    let lattice = Repetition::Lattice {
+        columns,
+        rows: columns,
+        a: Point::new(400, 0),
+        b: Point::new(0, 400),
+    };
+    let placement = Placement {
+        cell: CellId(1),
+        origin: Point::default(),
+        mirror: false,
+        angle_deg: 0.0,
+        magnification: 1.0,
+        repetition: lattice,
+    };
+    let top = Cell {
+        name: "top".to_owned(),
+        shapes: Vec::new(),
+        placements: vec![placement],
+    };
+    let cross = Cell {
+        name: "cross".to_owned(),
+        shapes: vec![rect(0, 100, 300, 100), rect(100, 0, 100, 300)],
+        placements: Vec::new(),
+    };
+    Layout {
+        unit: Nm(1.0),
+        cells: vec![top, cross],
+        notes: Vec::new(),
+    }
+}
+
+fn clip(name: &str) -> Layout {
+    let path = format!(
+        "{}/tests/fixtures/mask/{name}.json",
+        env!("CARGO_MANIFEST_DIR")
+    );
+    let text = std::fs::read_to_string(&path).expect("fixture");
+    let rings: Vec<Vec<(i64, i64)>> = serde_json::from_str(&text).expect("rings");
+    let points = |r: Vec<(i64, i64)>| r.into_iter().map(|(x, y)| Point::new(x, y)).collect();
+    flat(
+        rings
+            .into_iter()
+            .map(|r| shape(points(r), Repetition::Once))
+            .collect(),
+    )
+}
+
+fn bench(c: &mut Criterion) {
+    let mut run = |group: &str, parameter: String, layout: &Layout| {
+        let mut group = c.benchmark_group(group);
+        let shapes: usize = layout.cells.iter().map(|c| c.shapes.len()).sum();
+        group
+            .sample_size(10)
+            .throughput(Throughput::Elements(u64::try_from(shapes).expect("fits")));
+        group.bench_function(BenchmarkId::from_parameter(parameter), |b| {
+            b.iter(|| mask::build(layout, &options()).expect("sound"))
+        });
+        group.finish();
+    };
+    for count in [10_000, 100_000, 1_000_000] {
+        run("mask/random_rects", count.to_string(), &random_rects(count));
+    }
+    for side in [100, 300, 1_000] {
+        run(
+            "mask/contacts_in_context",
+            (side * side).to_string(),
+            &contacts(side),
+        );
+    }
+    for columns in [1, 10_000] {
+        run("mask/array_side", columns.to_string(), &array(columns));
+    }
+    for name in ["iso", "dense", "lineends", "mixed"] {
+        run("mask/clip", name.to_owned(), &clip(name));
+    }
+}
+
+criterion_group!(benches, bench);
+criterion_main!(benches);
