@@ -328,6 +328,24 @@ fn slivers_are_as_few_as_exhaustive_search_finds_nearly_always() {
 }
 
 #[test]
+fn points_on_straight_edges_and_repeated_points_do_not_matter() {
+    let l = [
+        (0, 0),
+        (15, 0),
+        (30, 0),
+        (30, 10),
+        (30, 10),
+        (10, 10),
+        (10, 20),
+        (10, 30),
+        (0, 30),
+    ];
+    let partition = least(&figure(&[&l]));
+    assert_eq!(partition.least, 2, "CHECKS 1: L 2");
+    assert_tiles_once(&figure(&[&l]), &partition.tiles);
+}
+
+#[test]
 fn a_jog_across_a_bar_leaves_no_sliver() {
     // Cutting both corners of the jog across the bar would leave a sliver 5 nm high between the cuts.
     let figure = figure(&[&[

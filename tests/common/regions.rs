@@ -123,10 +123,10 @@ impl Cells {
             while leaving[start] != 0 {
                 let mut direction = leaving[start].trailing_zeros() as usize;
                 let (mut v, first) = (start, direction);
-                let mut points = Vec::new();
+                let place = |v: usize| Point::new(self.xs[v % width], self.ys[v / width]);
+                let mut points = vec![place(start)];
                 loop {
                     leaving[v] &= !(1 << direction);
-                    points.push(Point::new(self.xs[v % width], self.ys[v / width]));
                     let (dx, dy) = STEP[direction];
                     v = (v as i64 + dx + dy * width as i64) as usize;
                     let turns = if turn_left_at_contacts {
@@ -139,7 +139,11 @@ impl Cells {
                         .into_iter()
                         .find(|&d| leaving[v] & (1 << d) != 0);
                     match next {
-                        Some(d) => direction = d,
+                        Some(d) if d == direction => {}
+                        Some(d) => {
+                            points.push(place(v));
+                            direction = d;
+                        }
                         None => break,
                     }
                 }
