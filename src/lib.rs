@@ -1,6 +1,7 @@
 //! Fractures curved mask figures into electron-beam shots and says how long they take to write and how true they print.
 
 pub mod blur;
+pub mod cli;
 pub mod expose;
 pub mod fracture;
 pub mod geom;
