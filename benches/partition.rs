@@ -55,7 +55,7 @@ fn cost_against_size(c: &mut Criterion) {
         group.bench_function(BenchmarkId::new("one_random_region", vertices), |b| {
             b.iter(|| run(Nm(0.0)))
         });
-        if side < 400 {
+        if side < 200 {
             group.bench_function(BenchmarkId::new("slivers", vertices), |b| {
                 b.iter(|| run(Nm(20.0)))
             });

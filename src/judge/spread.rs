@@ -104,3 +104,27 @@ fn whole(x: f64) -> i64 {
     let n = x.round() as i64;
     n
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn quantiles_go_by_weight_and_magnitude() {
+        let mut s = Spread::new(0.01);
+        assert_eq!((s.mean(), s.magnitude(0.5), s.worst()), (None, None, None));
+        for (value, weight) in [(0.5, 50), (-1.0, 45), (3.004, 4), (-7.0, 1)] {
+            s.add(value, weight);
+        }
+        // By hand: (25 − 45 + 12.016 − 7)/100.
+        assert!((s.mean().unwrap_or(f64::NAN) + 0.149_84).abs() < 1e-9);
+        let found = [0.5, 0.51, 0.95, 0.96, 0.995].map(|q| s.magnitude(q).unwrap_or(f64::NAN));
+        for (found, expected) in found.into_iter().zip([0.5, 1.0, 1.0, 3.0, 7.0]) {
+            assert!(
+                (found - expected).abs() < 1e-9,
+                "{found}, expected {expected}"
+            );
+        }
+        assert_eq!(s.worst(), Some(7.0));
+    }
+}

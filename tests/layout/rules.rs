@@ -179,10 +179,61 @@ fn broken_gdsii_is_refused_with_its_place() {
     assert!(text.contains("record 3F02"), "{text}");
     let text = broken(element + 6, &[0x2B, 0x02]);
     assert!(text.contains("without LAYER"), "{text}");
+    // Contents before the first cell.
+    let mut stray = good.clone();
+    let cell = element - 28 - 6;
+    stray.splice(cell..cell, boundary(&SQUARE));
+    let text = complaint(&stray);
+    let place = format!("here: byte {cell}: found contents of a cell outside any");
+    assert!(text.starts_with(&place), "{text}");
     // A cell that never ends.
     let end = good.len() - 8;
     let text = complaint(&[&good[..end], &good[end + 4..]].concat());
     assert!(text.contains("ENDLIB within a cell"), "{text}");
+}
+
+#[test]
+fn placements_are_turned_magnified_and_noted_when_absolute() {
+    // STRANS 8006 is mirrored with absolute magnification and angle; 1.5 and 90 as excess-64 reals.
+    let placement = [
+        record(0x0A00, &[]),
+        record(0x1206, b"AA"),
+        short(0x1A01, 0x8006),
+        record(0x1B05, &[0x41, 0x18, 0, 0, 0, 0, 0, 0]),
+        record(0x1C05, &[0x42, 0x5A, 0, 0, 0, 0, 0, 0]),
+        xy(&[(100, 200)]),
+        record(0x1100, &[]),
+    ]
+    .concat();
+    let cells: [(&[u8], Vec<u8>); 2] = [
+        (
+            b"AA",
+            boundary(&[(0, 0), (20, 0), (20, 10), (0, 10), (0, 0)]),
+        ),
+        (b"BB", placement),
+    ];
+    let layout = read(&library(&cells)).expect("reads");
+    let placed = &layout.cells[1].placements[0];
+    assert_eq!(
+        (placed.mirror, placed.magnification, placed.angle_deg),
+        (true, 1.5, 90.0)
+    );
+    // By hand: (20, 10) → mirrored (20, −10) → magnified (30, −15) → turned (15, 30) → shifted.
+    assert_eq!(
+        flat::measure(&layout)["1/0"].bounds.map(f64::round),
+        [100.0, 200.0, 115.0, 230.0]
+    );
+    assert!(layout.notes[0].starts_with("1 × placement with absolute magnification"));
+    // A negative magnification is none.
+    let mut negative = library(&cells);
+    let at = negative
+        .windows(4)
+        .position(|w| w == [0x41, 0x18, 0, 0])
+        .expect("is there");
+    negative[at] = 0xC1;
+    assert!(
+        complaint(&negative).contains("found a magnification of -1.5, expected a positive number")
+    );
 }
 
 #[test]
@@ -268,21 +319,26 @@ fn extension_records_are_read_past_and_noted() {
     );
 }
 
+/// A CBLOCK record around some records.
+fn block(contents: &[u8]) -> Vec<u8> {
+    use std::io::Write;
+    let level = flate2::Compression::best();
+    let mut deflate = flate2::write::DeflateEncoder::new(Vec::new(), level);
+    deflate.write_all(contents).expect("writes to memory");
+    let deflated = deflate.finish().expect("writes to memory");
+    let mut block = vec![34, 0];
+    for mut length in [contents.len(), deflated.len()] {
+        while length > 0x7F {
+            block.push(u8::try_from(length & 0x7F).expect("seven bits") | 0x80);
+            length >>= 7;
+        }
+        block.push(u8::try_from(length).expect("seven bits"));
+    }
+    [block, deflated].concat()
+}
+
 #[test]
 fn a_cblock_within_a_cblock_is_fatal() {
-    use std::io::Write;
-    let block = |contents: &[u8]| {
-        let level = flate2::Compression::best();
-        let mut deflate = flate2::write::DeflateEncoder::new(Vec::new(), level);
-        deflate.write_all(contents).expect("writes to memory");
-        let deflated = deflate.finish().expect("writes to memory");
-        let length = |n: usize| u8::try_from(n).expect("a small block");
-        [
-            &[34, 0, length(contents.len()), length(deflated.len())],
-            &deflated[..],
-        ]
-        .concat()
-    };
     let square = b"\x14\x7B\x01\x00\x09\x09\x00\x00";
     let cell = |contents: &[u8]| oasis(&[b"\x0E\x01A", contents].concat());
     let once = read(&cell(&block(square))).expect("reads");
@@ -321,6 +377,10 @@ fn a_few_bytes_cannot_ask_for_gigabytes() {
         body.extend([20, 0b0000_0100, 0]);
     }
     assert!(complaint(&oasis(&body)).contains("unfold to too many points"));
+    // 128 MiB of PAD records deflate to a thousandth of that.
+    let bomb = oasis(&block(&vec![0; 128 << 20]));
+    assert!(bomb.len() < 200_000);
+    assert!(complaint(&bomb).contains("inflate to too many bytes"));
 }
 
 #[test]

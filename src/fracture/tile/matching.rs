@@ -7,6 +7,7 @@
 //! fractional cascading, which pays only for graphs far larger than any figure.
 
 use super::outline::Wall;
+use super::sweep::order;
 
 const NONE: u32 = u32::MAX;
 
@@ -28,19 +29,29 @@ pub(super) fn independent_chords(horizontal: &[Wall], vertical: &[Wall]) -> Matc
     let mut mate_h = vec![NONE; horizontal.len()];
     let mut mate_v = vec![NONE; vertical.len()];
 
-    let mut unseen = Crossings::new(&index, vertical, &vec![0; vertical.len()]);
-    for (h, chord) in horizontal.iter().enumerate() {
-        if let Some(v) = unseen.take(index.of[h], chord, 0) {
+    let mut all = Crossings::new(&index, vertical, (0..vertical.len()).map(|v| (0, id(v))));
+    // Short chords have the least choice: matching them first leaves fewer phases to come.
+    for h in order(horizontal.len(), |h| horizontal[h].hi - horizontal[h].lo) {
+        if let Some(v) = all.take(index.of[h], &horizontal[h], 0) {
             mate_h[h] = v;
             mate_v[idx(v)] = id(h);
         }
     }
 
+    // Every other phase goes on beyond the layer of the nearest free chord. Where the graph falls into many pieces each of
+    // them then takes its own number of phases, not all the longest; the strict phases keep the bound.
+    let mut strict = true;
     loop {
-        let reach = breadth_first(&index, horizontal, vertical, &mate_h, &mate_v);
+        strict = !strict;
+        all.put_back();
+        let reach = breadth_first(&index, horizontal, &mut all, &mate_h, &mate_v, strict);
         if !reach.augmenting {
             let keep_horizontal = reach.horizontal;
-            let keep_vertical = reach.layer.iter().map(|&l| l == NONE).collect();
+            let mut keep_vertical = vec![true; vertical.len()];
+            reach
+                .vertical
+                .iter()
+                .for_each(|&(_, v)| keep_vertical[idx(v)] = false);
             return Matching {
                 keep_horizontal,
                 keep_vertical,
@@ -48,7 +59,7 @@ pub(super) fn independent_chords(horizontal: &[Wall], vertical: &[Wall]) -> Matc
                 size: mate_h.iter().filter(|&&v| v != NONE).count(),
             };
         }
-        let mut unseen = Crossings::new(&index, vertical, &reach.layer);
+        let mut unseen = Crossings::new(&index, vertical, reach.vertical.iter().copied());
         let free: Vec<usize> = (0..horizontal.len())
             .filter(|&h| mate_h[h] == NONE)
             .collect();
@@ -68,8 +79,8 @@ pub(super) fn independent_chords(horizontal: &[Wall], vertical: &[Wall]) -> Matc
 /// What alternating paths from the free horizontal chords reach.
 struct Reach {
     horizontal: Vec<bool>,
-    /// Steps to each vertical chord; `NONE` if not reached.
-    layer: Vec<u32>,
+    /// Steps to each vertical chord that is reached, and the chord.
+    vertical: Vec<(u32, u32)>,
     /// Whether a free vertical chord was reached.
     augmenting: bool,
 }
@@ -77,26 +88,29 @@ struct Reach {
 fn breadth_first(
     index: &Heights,
     horizontal: &[Wall],
-    vertical: &[Wall],
+    unseen: &mut Crossings,
     mate_h: &[u32],
     mate_v: &[u32],
+    strict: bool,
 ) -> Reach {
-    let mut unseen = Crossings::new(index, vertical, &vec![0; vertical.len()]);
     let mut reach = Reach {
         horizontal: mate_h.iter().map(|&v| v == NONE).collect(),
-        layer: vec![NONE; vertical.len()],
+        vertical: Vec::new(),
         augmenting: false,
     };
     let mut front: Vec<usize> = (0..horizontal.len())
         .filter(|&h| mate_h[h] == NONE)
         .collect();
     let mut depth = 0;
-    // Layers beyond the first free vertical chord cannot be on a shortest path.
-    while !front.is_empty() && !reach.augmenting {
+    while !front.is_empty() {
+        // Chords beyond the layer of the first free vertical one are on no shortest path.
+        if strict && reach.augmenting {
+            break;
+        }
         let mut next = Vec::new();
         for &h in &front {
             while let Some(v) = unseen.take(index.of[h], &horizontal[h], 0) {
-                reach.layer[idx(v)] = depth;
+                reach.vertical.push((depth, v));
                 match mate_v[idx(v)] {
                     NONE => reach.augmenting = true,
                     mate => {
@@ -171,30 +185,30 @@ struct Crossings {
     /// First entry at or after each one that may still be there (path-halving skip list).
     skip: Vec<usize>,
     taken: Vec<bool>,
+    /// Entries skipped and chords taken so far, for putting them back.
+    skipped: Vec<usize>,
+    took: Vec<u32>,
 }
 
 impl Crossings {
-    /// All vertical chords whose layer is not `NONE`.
-    fn new(index: &Heights, vertical: &[Wall], layer: &[u32]) -> Self {
+    /// The given vertical chords with their layers.
+    fn new(index: &Heights, vertical: &[Wall], chords: impl Iterator<Item = (u32, u32)>) -> Self {
         let leaves = index.sorted.len();
-        let mut order: Vec<(u32, i64, u32)> = vertical
-            .iter()
-            .zip(layer)
-            .enumerate()
-            .filter(|(_, (_, layer))| **layer != NONE)
-            .map(|(v, (chord, &layer))| (layer, chord.at, id(v)))
+        let mut sorted: Vec<(u32, i64, u32)> = chords
+            .map(|(layer, v)| (layer, vertical[idx(v)].at, v))
             .collect();
-        order.sort_unstable();
+        sorted.sort_unstable();
 
-        let range = |v: u32| {
+        let range = |&(_, _, v): &(u32, i64, u32)| {
             let chord = &vertical[idx(v)];
             let lo = index.sorted.partition_point(|&y| y < chord.lo);
             let hi = index.sorted.partition_point(|&y| y <= chord.hi);
             (lo, hi)
         };
+        let ranges: Vec<(usize, usize)> = sorted.iter().map(range).collect();
         let mut begin = vec![0; 2 * leaves + 1];
-        for &(_, _, v) in &order {
-            for_each_node(leaves, range(v), |node| begin[node + 1] += 1);
+        for &range in &ranges {
+            for_each_node(leaves, range, |node| begin[node + 1] += 1);
         }
         for node in 1..begin.len() {
             begin[node] += begin[node - 1];
@@ -202,8 +216,8 @@ impl Crossings {
         let total = begin.last().copied().unwrap_or(0);
         let mut fill = begin.clone();
         let mut entries = vec![(0, 0, 0); total];
-        for &entry in &order {
-            for_each_node(leaves, range(entry.2), |node| {
+        for (&entry, &range) in sorted.iter().zip(&ranges) {
+            for_each_node(leaves, range, |node| {
                 entries[fill[node]] = entry;
                 fill[node] += 1;
             });
@@ -214,6 +228,8 @@ impl Crossings {
             entries,
             skip: (0..=total).collect(),
             taken: vec![false; vertical.len()],
+            skipped: Vec::new(),
+            took: Vec::new(),
         }
     }
 
@@ -229,12 +245,19 @@ impl Crossings {
                 let (l, x, v) = self.entries[at];
                 if l == layer && x <= chord.hi {
                     self.taken[idx(v)] = true;
+                    self.took.push(v);
                     return Some(v);
                 }
             }
             node /= 2;
         }
         None
+    }
+
+    /// All chords as if none had been taken, at the cost of having taken them.
+    fn put_back(&mut self) {
+        self.skipped.drain(..).for_each(|at| self.skip[at] = at);
+        self.took.drain(..).for_each(|v| self.taken[idx(v)] = false);
     }
 
     /// The first entry at or after `at` that is not taken; may lie beyond the node.
@@ -245,6 +268,7 @@ impl Crossings {
                     return at;
                 }
                 self.skip[at] = at + 1;
+                self.skipped.push(at);
             }
             self.skip[at] = self.skip[self.skip[at]];
             at = self.skip[at];

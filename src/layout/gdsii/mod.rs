@@ -3,6 +3,8 @@
 //! Read in stretches cut between elements, as many at a time as there are threads, so that memory holds the layout and a few stretches and
 //! never the file. An element needs nothing from its neighbours; only the stitching of stretches into cells is sequential.
 //!
+//! A reader of its own: the general-purpose parser at hand wants the file in one piece, refuses names beyond ASCII, and its grammar errors name no place.
+//!
 //! Accepted beyond the letter of the format: outlines continued in further XY records, unclosed outlines, 16-bit layers and counts read as unsigned,
 //! names of any bytes, anything after ENDLIB.
 
@@ -182,39 +184,43 @@ fn read_library_head(first: &mut Stretch) -> Parsed<Nm> {
 
 /// What one stretch holds. The first run of contents belongs to the cell left open by the stretch before.
 struct Part {
-    base: u64,
     runs: Vec<Run>,
     names: Vec<Vec<u8>>,
     remarks: Remarks,
-    /// ENDLIB was met.
-    ended: bool,
+    /// Where ENDLIB was met.
+    ended: Option<Place>,
 }
 
 /// Contents of one cell, or of a part of it.
-#[derive(Default)]
 struct Run {
-    /// Name and place of the cell that starts with this run.
-    starts: Option<(Vec<u8>, Place)>,
+    /// Where its first record stands.
+    place: Place,
+    /// Name of the cell that starts with this run.
+    starts: Option<Vec<u8>>,
     shapes: Vec<Shape>,
     placements: Vec<Placement>,
     /// The cell ends with this run.
-    ends: Option<Place>,
+    ends: bool,
 }
 
 impl Run {
-    fn is_empty(&self) -> bool {
-        self.starts.is_none()
-            && self.ends.is_none()
-            && self.shapes.is_empty()
-            && self.placements.is_empty()
+    fn new(place: Place) -> Self {
+        Self {
+            place,
+            starts: None,
+            shapes: Vec::new(),
+            placements: Vec::new(),
+            ends: false,
+        }
     }
 }
 
 fn parse(stretch: &Stretch) -> Parsed<Part> {
     let mut records = Records::new(&stretch.bytes, stretch.base);
     let mut context = Context::default();
-    let (mut runs, mut run) = (Vec::new(), Run::default());
-    let mut ended = false;
+    let mut runs = Vec::new();
+    let mut open: Option<Run> = None;
+    let mut ended = None;
     while let Some(record) = records.next()? {
         match record.tag {
             tag::BGNSTR => {
@@ -222,35 +228,36 @@ fn parse(stretch: &Stretch) -> Parsed<Part> {
                 if name.tag != tag::STRNAME {
                     return Err(name.unexpected("STRNAME"));
                 }
-                if !run.is_empty() {
-                    runs.push(std::mem::take(&mut run));
-                }
-                run.starts = Some((name.name()?.to_vec(), record.place()));
+                runs.extend(open.take());
+                let mut run = Run::new(record.place());
+                run.starts = Some(name.name()?.to_vec());
+                open = Some(run);
             }
             tag::STRCLASS => {}
             tag::ENDSTR => {
-                run.ends = Some(record.place());
-                runs.push(std::mem::take(&mut run));
+                let mut run = open.take().unwrap_or_else(|| Run::new(record.place()));
+                run.ends = true;
+                runs.push(run);
             }
             tag::ENDLIB => {
                 if records.rest().iter().any(|&b| b != 0) {
                     context.remarks.add("stretch of data after ENDLIB ignored");
                 }
-                ended = true;
+                ended = Some(record.place());
                 break;
             }
-            _ => match element::read(&record, &mut records, &mut context)? {
-                Element::Shape(shape) => run.shapes.push(shape),
-                Element::Placement(placement) => run.placements.push(placement),
-                Element::Nothing => {}
-            },
+            _ => {
+                let run = open.get_or_insert_with(|| Run::new(record.place()));
+                match element::read(&record, &mut records, &mut context)? {
+                    Element::Shape(shape) => run.shapes.push(shape),
+                    Element::Placement(placement) => run.placements.push(placement),
+                    Element::Nothing => {}
+                }
+            }
         }
     }
-    if !run.is_empty() {
-        runs.push(run);
-    }
+    runs.extend(open);
     Ok(Part {
-        base: stretch.base,
         runs,
         names: context.names.into_keys(),
         remarks: context.remarks,
@@ -276,9 +283,10 @@ impl Library {
         }
         let numbers: Vec<usize> = part.names.iter().map(|n| self.names.number(n)).collect();
         for mut run in part.runs {
-            if let Some((name, place)) = run.starts {
+            if let Some(name) = run.starts {
                 if self.open {
-                    return Err(Fault::new(place, "BGNSTR within a cell", "ENDSTR first"));
+                    let found = "BGNSTR within a cell";
+                    return Err(Fault::new(run.place, found, "ENDSTR first"));
                 }
                 self.open = true;
                 self.cells.push(RawCell {
@@ -289,9 +297,8 @@ impl Library {
             let cell = match self.cells.last_mut() {
                 Some(cell) if self.open => cell,
                 _ => {
-                    let place = run.ends.unwrap_or(Place::Byte(part.base));
                     let found = "contents of a cell outside any";
-                    return Err(Fault::new(place, found, "BGNSTR first"));
+                    return Err(Fault::new(run.place, found, "BGNSTR first"));
                 }
             };
             for placement in &mut run.placements {
@@ -299,13 +306,12 @@ impl Library {
             }
             append(&mut cell.shapes, run.shapes);
             append(&mut cell.placements, run.placements);
-            self.open = run.ends.is_none();
+            self.open = !run.ends;
         }
-        if part.ended && self.open {
-            let found = "ENDLIB within a cell";
-            return Err(Fault::new(Place::Byte(part.base), found, "ENDSTR first"));
+        if let (Some(place), true) = (part.ended, self.open) {
+            return Err(Fault::new(place, "ENDLIB within a cell", "ENDSTR first"));
         }
-        self.ended = part.ended;
+        self.ended = part.ended.is_some();
         self.remarks.merge(part.remarks);
         Ok(())
     }
