@@ -194,7 +194,8 @@ impl Subject<'_> {
                 "smooth the outline there, allow more than {} nm, or search with --effort thorough",
                 number(setup.tolerance.0)
             ),
-            None => "move it away from its neighbours there, whose shots reach it".to_owned(),
+            None => "its neighbours' shots reach it there: look at them first, or move it away"
+                .to_owned(),
         };
         let remedy = printing.unwrap_or_default() + &remedy;
         let (side, rule) = if violation.need == Need::Print {

@@ -214,7 +214,7 @@ pub fn quote(
         *seconds.slot(method) = Some(by_figure);
         *made.slot(method) = Some(judged);
     }
-    let choice = verdict::choose(&fractures, terms.slot);
+    let choice = verdict::choose(&fractures, mask.figures.len(), terms.slot);
     let flags = flags::find(&flags::Evidence {
         mask,
         made: &made,

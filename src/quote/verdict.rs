@@ -4,8 +4,11 @@ use crate::units;
 
 use super::result::{Fits, FractureSummary, Fractures, Hours, Method, Verdict};
 
-/// Hours nearer than this share of each other do not decide between two fractures.
+/// Beam times nearer than this share of each other do not decide between two fractures.
 const TIE: f64 = 0.01;
+
+/// Where neither prints everywhere, failing on more figures decides only beyond this share of all: those few go back anyway.
+const FEW: f64 = 0.05;
 
 /// What to order.
 pub(super) struct Choice {
@@ -15,14 +18,15 @@ pub(super) struct Choice {
 }
 
 /// Weighs tile against overlap: one that prints everywhere comes before one that does not, then one that fits the slot, then
-/// the one of fewer hours, then, where these tie, the one of the lesser edge error.
-pub(super) fn choose(fractures: &Fractures, slot: Option<units::Hours>) -> Choice {
+/// one that fails on clearly fewer figures, then the one of less flashing and settling (the rest is the same for both), then,
+/// where these tie, the one of the lesser edge error.
+pub(super) fn choose(fractures: &Fractures, figures: usize, slot: Option<units::Hours>) -> Choice {
     let offers: Vec<Offer<'_>> = [Method::Tile, Method::Overlap]
         .into_iter()
         .filter_map(|method| Offer::new(method, fractures.get(method)?, slot))
         .collect();
     let best = match &offers[..] {
-        [tile, overlap] if overlap.beats(tile) => Some(overlap),
+        [tile, overlap] if overlap.beats(tile, FEW * figures as f64) => Some(overlap),
         [first, ..] => Some(first),
         [] => None,
     };
@@ -68,7 +72,8 @@ impl<'a> Offer<'a> {
         })
     }
 
-    fn beats(&self, other: &Self) -> bool {
+    /// `few`: so many more failing figures do not matter.
+    fn beats(&self, other: &Self, few: f64) -> bool {
         let rank = |offer: &Self| {
             let fits = match offer.fits {
                 Fits::Yes => 0,
@@ -77,15 +82,25 @@ impl<'a> Offer<'a> {
             };
             (!offer.prints(), fits)
         };
-        let (own, others) = (self.hours.total_h, other.hours.total_h);
-        let error = |offer: &Self| offer.summary.edge_error_nm.p95.unwrap_or(f64::INFINITY);
-        match rank(self).cmp(&rank(other)) {
-            std::cmp::Ordering::Equal if (own - others).abs() <= TIE * others => {
-                error(self) < error(other)
-            }
-            std::cmp::Ordering::Equal => own < others,
-            order => order.is_lt(),
+        let order = rank(self).cmp(&rank(other));
+        if order.is_ne() {
+            return order.is_lt();
         }
+        let more = self.failing() as f64 - other.failing() as f64;
+        if more.abs() > few {
+            return more < 0.0;
+        }
+        let (own, others) = (self.beam_h(), other.beam_h());
+        if (own - others).abs() > TIE * others {
+            return own < others;
+        }
+        let error = |offer: &Self| offer.summary.edge_error_nm.p95.unwrap_or(f64::INFINITY);
+        error(self) < error(other)
+    }
+
+    /// Flashing and settling.
+    fn beam_h(&self) -> f64 {
+        self.hours.flash_h + self.hours.settle_h
     }
 
     fn prints(&self) -> bool {
@@ -158,7 +173,6 @@ fn reason(best: &Offer<'_>, other: Option<&Offer<'_>>) -> String {
         (of(best), of(other))
     };
     let shots = pair(|o| Some(o.summary.shots.0 as f64));
-    let hours = pair(|o| Some(o.hours.total_h));
     let error = pair(|o| o.summary.edge_error_nm.p95);
     let margin = pair(|o| o.summary.margin_nm_per_pct.median);
     let lead = match (best.prints(), other.prints()) {
@@ -168,7 +182,7 @@ fn reason(best: &Offer<'_>, other: Option<&Offer<'_>>) -> String {
             other.failing()
         ),
         (false, false) => format!(
-            "Neither prints every figure within tolerance ({} and {} distinct figures fail, see the flags), and it is the better buy",
+            "Neither prints every figure within tolerance ({} and {} distinct figures fail, see the flags)",
             best.failing(),
             other.failing()
         ),
@@ -178,9 +192,9 @@ fn reason(best: &Offer<'_>, other: Option<&Offer<'_>>) -> String {
         _ => "Both print within tolerance".to_owned(),
     };
     format!(
-        "{lead}: {} h against {} h for {}, {} against {} shots, edge error (95 %) {} against {} nm, margin (median) {} against {} nm/%.",
-        hours.0,
-        hours.1,
+        "{lead}: {} of flashing and settling against {} for {}, {} against {} shots, edge error (95 %) {} against {} nm, margin (median) {} against {} nm/%.",
+        time(best.beam_h()),
+        time(other.beam_h()),
         name(other),
         shots.0,
         shots.1,
@@ -189,6 +203,16 @@ fn reason(best: &Offer<'_>, other: Option<&Offer<'_>>) -> String {
         margin.0,
         margin.1
     )
+}
+
+/// A time in the unit that suits it.
+fn time(hours: f64) -> String {
+    let seconds = hours * 3600.0;
+    match seconds {
+        360.0.. => format!("{} h", number(hours)),
+        1.0.. => format!("{} s", number(seconds)),
+        _ => format!("{} ms", number(seconds * 1e3)),
+    }
 }
 
 /// Three significant digits; whole numbers in full.
@@ -227,6 +251,7 @@ mod tests {
             peak_dose: None,
             hours: Some(Hours {
                 total_h,
+                flash_h: total_h,
                 low_h: 0.9 * total_h,
                 high_h: 1.1 * total_h,
                 ..Hours::default()
@@ -263,7 +288,7 @@ mod tests {
                 tile: Some(tile),
                 overlap: Some(overlap),
             };
-            assert_eq!(choose(&fractures, None).recommended, Some(expected));
+            assert_eq!(choose(&fractures, 10, None).recommended, Some(expected));
         }
     }
 
@@ -279,9 +304,9 @@ mod tests {
             (9.5, Fits::CannotSay),
             (8.9, Fits::No),
         ] {
-            let choice = choose(&fractures, Some(units::Hours(slot)));
+            let choice = choose(&fractures, 10, Some(units::Hours(slot)));
             assert_eq!(choice.verdict.fits, expected, "{}", choice.verdict.sentence);
         }
-        assert_eq!(choose(&fractures, None).verdict.fits, Fits::CannotSay);
+        assert_eq!(choose(&fractures, 10, None).verdict.fits, Fits::CannotSay);
     }
 }
