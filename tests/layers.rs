@@ -149,6 +149,12 @@ fn imports_are_found_in_every_form() {
     let code = "use crate::judge::{self, Pieces};\nuse crate::{mask, expose::{Exposure, level_at}, units::Nm};\nlet x = crate::fracture::tile::f();";
     assert_eq!(
         imports(code),
-        ["judge", "mask", "expose", "units::Nm", "fracture::tile"]
+        [
+            "judge",
+            "mask",
+            "expose::Exposure",
+            "units::Nm",
+            "fracture::tile"
+        ]
     );
 }

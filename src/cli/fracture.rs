@@ -25,8 +25,8 @@ use super::{CliError, Outcome};
 
 /// Fracture a layout into shots.
 ///
-/// The result says how the shots print, the figures that do not print within tolerance by name and place. Exit status 1
-/// if there is one. In the shot list, x and y are the lower-left corner of a shot and w and h its size, nm at mask scale.
+/// The result says how the shots print, and names the figures that do not print within tolerance with the place. Exit
+/// status 1 if there is one, or a shot is outside the limits. In the shot list, x and y are the lower-left corner of a shot and w and h its size, nm at mask scale.
 #[derive(Debug, Args)]
 #[command(after_long_help = "Examples:
   shotwright fracture sample-masks/iso.oas --method overlap --sigma-nm 12 -o shots.csv
@@ -81,6 +81,8 @@ struct Answer {
     summary: FractureSummary,
     figures_distinct: u64,
     figures_placed: Count,
+    /// Shots at all places with a side outside the limits.
+    shots_beyond_limits: Count,
     failing: Vec<Failing>,
 }
 
@@ -146,6 +148,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         write(&mask, &made, args.distinct, &mut io::stdout().lock()).map_err(CliError::Stdout)?;
     }
     let answer = Answer {
+        shots_beyond_limits: Count(beyond_limits(&mask, &made, &setup)),
         figures_distinct: mask.figures.len() as u64,
         figures_placed: Count(mask.place_count()),
         failing: failing(&mask, &made),
@@ -164,6 +167,12 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     if answer.failing.len() > MOST_TOLD {
         eprintln!("and {} more figures", answer.failing.len() - MOST_TOLD);
     }
+    if answer.shots_beyond_limits.0 > 0 {
+        eprintln!(
+            "{} shots have a side outside {} to {} nm",
+            answer.shots_beyond_limits, args.limits.min_side_nm, args.limits.max_side_nm
+        );
+    }
     if args.json {
         print_json(&answer)?;
     } else if to_stdout {
@@ -174,7 +183,8 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
             eprintln!("no file written; -o FILE writes the shots");
         }
     }
-    Ok(Outcome::over_a_limit_if(!answer.failing.is_empty()))
+    let over = !answer.failing.is_empty() || answer.shots_beyond_limits.0 > 0;
+    Ok(Outcome::over_a_limit_if(over))
 }
 
 impl FractureArgs {
@@ -215,6 +225,16 @@ pub(super) fn write(
     let lines = writer.lines();
     writer.finish()?;
     Ok(lines)
+}
+
+fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setup) -> u128 {
+    let (least, greatest) = (setup.limits.least_side, setup.limits.greatest_side);
+    let all = mask.figures.iter().zip(made);
+    all.filter_map(|(figure, made)| {
+        let beyond = summary::beyond_limits(&made.as_ref().ok()?.fracture.shots, least, greatest);
+        Some(figure.place_count().saturating_mul(beyond as u128))
+    })
+    .fold(0, u128::saturating_add)
 }
 
 fn failing(mask: &Mask, made: &[Result<Made, FractureError>]) -> Vec<Failing> {

@@ -72,7 +72,7 @@ struct Subject<'a> {
 }
 
 impl Subject<'_> {
-    /// A flag at a place of the figure's own frame.
+    /// A flag at a place of the mask.
     fn flag(
         &self,
         at: Point,
@@ -83,7 +83,7 @@ impl Subject<'_> {
     ) -> Flag {
         Flag {
             figure: self.number,
-            place_nm: first_place(self.distinct).apply(at).to_nm(),
+            place_nm: at.to_nm(),
             kind,
             number,
             unit: unit.to_owned(),
@@ -92,8 +92,10 @@ impl Subject<'_> {
         }
     }
 
+    /// Lower-left corner of its bounds at its first place.
     fn corner(&self) -> Point {
-        self.distinct.figure.bounds().min
+        let bounds = self.distinct.figure.bounds();
+        first_place(self.distinct).apply_rect(bounds).min
     }
 
     /// Tile and overlap of the figure, those that were made.
@@ -205,7 +207,8 @@ impl Subject<'_> {
         };
         let unit = format!("dose {side}, expected {rule} ({names})");
         let kind = FlagKind::ToleranceNotReached;
-        Some(self.flag(at, kind, Some(violation.dose), &unit, remedy))
+        let place = first_place(self.distinct).apply(at);
+        Some(self.flag(place, kind, Some(violation.dose), &unit, remedy))
     }
 
     fn limits(&self, evidence: &Evidence<'_>) -> Option<Flag> {
