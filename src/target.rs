@@ -185,6 +185,7 @@ impl Target {
             }));
             corners.extend(corners_of(&edges[start..], sigma));
         }
+        corners.sort_by(|a, b| a[0].total_cmp(&b[0]).then(a[1].total_cmp(&b[1])));
         let b = figure.bounds();
         let (min, max) = (b.min.to_nm(), b.max.to_nm());
         let bounds = [min[0], min[1], max[0], max[1]];
@@ -205,7 +206,7 @@ impl Target {
         &self.edges
     }
 
-    /// Drawn corners: a turn of 45° or more between two edges each at least 2 σ long.
+    /// Drawn corners, from left to right: a turn of 45° or more between two edges each at least 2 σ long.
     #[must_use]
     pub fn corners(&self) -> &[[f64; 2]] {
         &self.corners
@@ -238,9 +239,15 @@ impl Target {
     /// Whether a place lies within 2 σ of a drawn corner.
     #[must_use]
     pub fn in_corner_zone(&self, p: [f64; 2]) -> bool {
-        let reach = self.corner_reach();
-        self.corners
+        self.corner_within(p, self.corner_reach())
+    }
+
+    fn corner_within(&self, p: [f64; 2], reach: f64) -> bool {
+        let from = self.corners.partition_point(|c| c[0] < p[0] - reach);
+        let near = self.corners[from..]
             .iter()
+            .take_while(|c| c[0] <= p[0] + reach);
+        near.into_iter()
             .any(|c| (c[0] - p[0]).powi(2) + (c[1] - p[1]).powi(2) <= reach * reach)
     }
 
@@ -362,11 +369,7 @@ impl Target {
                 #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
                 let q = edge.at(k as f64 / pieces as f64);
                 offer(q, normal, self.tolerance);
-                if self
-                    .corners
-                    .iter()
-                    .any(|c| (c[0] - q[0]).hypot(c[1] - q[1]) <= zone)
-                {
+                if self.corner_within(q, zone) {
                     offer(q, normal, self.corner_tolerance());
                 }
             }

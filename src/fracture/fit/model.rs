@@ -80,9 +80,17 @@ impl Flash {
     }
 }
 
+/// A row of cells: its lower and upper border, and where its samples end in a list of samples sorted by row.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Band {
+    pub(super) low: f64,
+    pub(super) high: f64,
+    pub(super) end: usize,
+}
+
 /// Buckets over the plane: which items touch which square cell.
 #[derive(Clone, Debug)]
-struct Bins {
+pub(super) struct Bins {
     origin: [f64; 2],
     size: f64,
     columns: usize,
@@ -91,7 +99,7 @@ struct Bins {
 }
 
 impl Bins {
-    fn new(bounds: [f64; 4], size: f64) -> Self {
+    pub(super) fn new(bounds: [f64; 4], size: f64) -> Self {
         let (w, h) = (bounds[2] - bounds[0], bounds[3] - bounds[1]);
         let size = size.max((w * h / 4e6).sqrt()).max(w.max(h) / 4e6);
         let (columns, rows) = (cell_index(w / size) + 1, cell_index(h / size) + 1);
@@ -108,6 +116,33 @@ impl Bins {
         let last = if axis == 0 { self.columns } else { self.rows } - 1;
         let at = |v: f64| cell_index((v - self.origin[axis]) / self.size).min(last);
         (at(low), at(high))
+    }
+
+    /// The box that the cells fill.
+    fn bounds(&self) -> [f64; 4] {
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        let size = |cells: usize| cells as f64 * self.size;
+        let [x, y] = self.origin;
+        [x, y, x + size(self.columns), y + size(self.rows)]
+    }
+
+    /// Enters an item at a place.
+    pub(super) fn insert(&mut self, id: u32, p: [f64; 2]) {
+        for cell in self.touched([p[0], p[1], p[0], p[1]]) {
+            self.cells[cell].push(id);
+        }
+    }
+
+    /// Items in the cells that a box touches.
+    pub(super) fn items(&self, side: [f64; 4]) -> impl Iterator<Item = u32> + '_ {
+        self.touched(side)
+            .flat_map(|cell| self.cells[cell].iter().copied())
+    }
+
+    fn low_of_row(&self, j: usize) -> f64 {
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        let j = j as f64;
+        self.origin[1] + j * self.size
     }
 
     /// Indices of the cells that a box touches.
@@ -162,6 +197,12 @@ impl Model {
             dose: Vec::new(),
             sigma,
         };
+        // Those of one cell next to each other, so that gathering them reads memory in order.
+        let mut samples = samples;
+        samples.sort_by_key(|s| {
+            let [x, y] = s.place;
+            model.samples_by_place.touched([x, y, x, y]).next()
+        });
         for sample in samples {
             model.add_sample(sample);
         }
@@ -172,9 +213,7 @@ impl Model {
     pub(in crate::fracture) fn add_sample(&mut self, sample: Sample) {
         let [x, y] = sample.place;
         let id = narrow(self.samples.len());
-        for cell in self.samples_by_place.touched([x, y, x, y]) {
-            self.samples_by_place.cells[cell].push(id);
-        }
+        self.samples_by_place.insert(id, [x, y]);
         let reach = 5.0 * self.sigma;
         let phi = PhiTable::get();
         let shots: f64 = self
@@ -191,6 +230,11 @@ impl Model {
         self.samples.push(sample);
     }
 
+    /// The box that all samples lie in.
+    pub(super) fn bounds(&self) -> [f64; 4] {
+        self.by_place.bounds()
+    }
+
     /// All samples.
     pub(super) fn samples(&self) -> &[Sample] {
         &self.samples
@@ -205,23 +249,72 @@ impl Model {
         &mut self.dose
     }
 
-    /// Samples in cells that any of the boxes touches, ascending.
+    /// Samples in cells that any of the boxes touches, row of cells by row; `bands` says where each row lies and ends.
     pub(super) fn samples_near(
         &self,
-        boxes: impl Iterator<Item = [f64; 4]>,
+        boxes: &[[f64; 4]],
         out: &mut Vec<u32>,
-        cells: &mut Vec<usize>,
+        bands: &mut Vec<Band>,
     ) {
-        cells.clear();
-        for side in boxes {
-            cells.extend(self.samples_by_place.touched(side));
-        }
-        cells.sort_unstable();
-        cells.dedup();
         out.clear();
-        for &cell in cells.iter() {
-            out.extend_from_slice(&self.samples_by_place.cells[cell]);
+        bands.clear();
+        let bins = &self.samples_by_place;
+        let spans: Vec<[(usize, usize); 2]> = boxes
+            .iter()
+            .map(|s| [bins.span(s[0], s[2], 0), bins.span(s[1], s[3], 1)])
+            .collect();
+        let first = spans.iter().map(|s| s[1].0).min().unwrap_or(1);
+        let last = spans.iter().map(|s| s[1].1).max().unwrap_or(0);
+        let mut columns: Vec<(usize, usize)> = Vec::with_capacity(boxes.len());
+        for j in first..=last {
+            columns.clear();
+            columns.extend(
+                spans
+                    .iter()
+                    .filter(|s| s[1].0 <= j && j <= s[1].1)
+                    .map(|s| s[0]),
+            );
+            columns.sort_unstable();
+            let mut next = 0;
+            for &(from, to) in &columns {
+                for i in from.max(next)..=to {
+                    out.extend_from_slice(&bins.cells[j * bins.columns + i]);
+                }
+                next = next.max(to + 1);
+            }
+            // Samples beyond the border are kept in the border cells.
+            let border = |j: usize| {
+                if j == 0 {
+                    f64::NEG_INFINITY
+                } else if j == bins.rows {
+                    f64::INFINITY
+                } else {
+                    bins.low_of_row(j)
+                }
+            };
+            bands.push(Band {
+                low: border(j),
+                high: border(j + 1),
+                end: out.len(),
+            });
         }
+    }
+
+    /// How many samples that must not print lie in a box.
+    pub(super) fn clear_samples_in(&self, side: [f64; 4]) -> usize {
+        if side[0] >= side[2] || side[1] >= side[3] {
+            return 0;
+        }
+        let inside = |s: &Sample| {
+            (0..2).all(|axis| side[axis] <= s.place[axis] && s.place[axis] <= side[axis + 2])
+        };
+        self.samples_by_place
+            .touched(side)
+            .flat_map(|cell| &self.samples_by_place.cells[cell])
+            .filter(|&&id| {
+                self.samples[id as usize].sign < 0.0 && inside(&self.samples[id as usize])
+            })
+            .count()
     }
 
     /// The shots, in slot order.

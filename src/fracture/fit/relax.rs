@@ -1,8 +1,9 @@
 //! Brings a model to where the rule holds at every sample: moves shots, and where that does not do, adds some.
 
-use super::model::{Flash, Model};
+use super::model::{Bins, Flash, Model};
 use super::reduce::neighbours;
-use super::solve::Solver;
+use super::samples::Sample;
+use super::solve::{Outcome, Solver};
 
 /// Rounds over the whole figure at most.
 const ROUNDS: usize = 8;
@@ -23,10 +24,16 @@ pub(in crate::fracture) fn relax(model: &mut Model, solver: &mut Solver, window:
             if done[slot] {
                 continue;
             }
-            let (before, outcome, slots) = settle(model, solver, &[slot], Vec::new(), window);
-            moved |= outcome.cost < 0.9 * before;
-            if outcome.solved {
-                slots.into_iter().for_each(|s| done[s] = true);
+            let Some(flash) = model.get(slot) else {
+                continue;
+            };
+            let trial = Trial::run(model, solver, &[slot], vec![flash], window);
+            moved |= trial.outcome.cost < 0.9 * trial.outcome.before;
+            if trial.outcome.solved {
+                trial.removed.iter().for_each(|&s| done[s] = true);
+            }
+            if trial.gain() > 0.0 {
+                trial.keep(model, solver);
             }
         }
         if !moved {
@@ -36,62 +43,79 @@ pub(in crate::fracture) fn relax(model: &mut Model, solver: &mut Solver, window:
     offenders(model, solver).is_empty()
 }
 
-/// Adds or splits shots where moving them does not do, at most `most` times; whether the rule holds in the end.
+/// Adds or splits shots where moving them does not do, at most `most`; whether the rule holds in the end.
 pub(in crate::fracture) fn mend(
     model: &mut Model,
     solver: &mut Solver,
     window: usize,
     most: usize,
 ) -> bool {
-    for _ in 0..most {
+    let mut left = most;
+    loop {
         if relax(model, solver, window) {
             return true;
         }
-        let Some((place, must_print)) = worst(model) else {
+        // One at a time where all are near one another, since one often mends several places.
+        let places = worst(model, left.min(1 + model.flashes().count() / 16));
+        if places.is_empty() {
             return false;
-        };
-        let options = options(model, place, must_print);
-        let tried = options.into_iter().map(|(removed, added)| {
-            let mut copy = model.clone();
-            let (_, outcome, _) = settle(&mut copy, solver, &removed, added, window);
-            (outcome.cost, copy)
-        });
-        // The first of equals wins, so the result does not hang on the order of a float sort.
-        let Some((_, best)) = tried.reduce(|a, b| if b.0 < a.0 { b } else { a }) else {
-            return false;
-        };
-        *model = best;
+        }
+        left -= places.len();
+        for (place, must_print) in places {
+            let mut best: Option<Trial> = None;
+            for (removed, added) in options(model, place, must_print) {
+                let trial = Trial::run(model, solver, &removed, added, window);
+                // The first of equals stays.
+                if best.as_ref().is_none_or(|b| trial.gain() > b.gain()) {
+                    best = Some(trial);
+                }
+            }
+            if let Some(trial) = best {
+                trial.keep(model, solver);
+            }
+        }
     }
-    relax(model, solver, window)
 }
 
-/// Fits the neighbourhood of `removed` with `added` in their place (themselves when that is empty) and keeps what is better.
-///
-/// Gives the cost before, the outcome, and the slots that were moved.
-fn settle(
-    model: &mut Model,
-    solver: &mut Solver,
-    removed: &[usize],
-    added: Vec<Flash>,
-    window: usize,
-) -> (f64, super::solve::Outcome, Vec<usize>) {
-    let fresh = !added.is_empty();
-    let mut removed = removed.to_vec();
-    let mut flashes = if fresh {
-        added
-    } else {
-        removed.iter().filter_map(|&s| model.get(s)).collect()
-    };
-    for slot in neighbours(model, &removed, &flashes, window) {
-        removed.push(slot);
-        flashes.extend(model.get(slot));
+/// A fit of some shots in place of others, not yet made in the model.
+struct Trial {
+    removed: Vec<usize>,
+    flashes: Vec<Flash>,
+    outcome: Outcome,
+}
+
+impl Trial {
+    /// Fits `added` in place of `removed` together with the neighbours, `window` shots at most.
+    fn run(
+        model: &Model,
+        solver: &mut Solver,
+        removed: &[usize],
+        added: Vec<Flash>,
+        window: usize,
+    ) -> Self {
+        // Neighbours first, so that they keep their slots.
+        let mut slots = neighbours(model, removed, &added, window);
+        let mut flashes: Vec<Flash> = slots.iter().filter_map(|&s| model.get(s)).collect();
+        slots.extend(removed);
+        flashes.extend(added);
+        let outcome = solver.solve(model, &slots, &mut flashes, STEPS);
+        Self {
+            removed: slots,
+            flashes,
+            outcome,
+        }
     }
-    let before = solver.score(model, &removed, &flashes);
-    let outcome = solver.solve(model, &removed, &mut flashes, STEPS);
-    if fresh || outcome.cost < before {
-        removed = solver.commit(model, &removed, &flashes);
+
+    /// By how much the cost falls.
+    fn gain(&self) -> f64 {
+        self.outcome.before - self.outcome.cost
     }
-    (before, outcome, removed)
+
+    /// Makes it in the model.
+    fn keep(self, model: &mut Model, solver: &mut Solver) {
+        solver.score(model, &self.removed, &self.flashes);
+        solver.commit(model, &self.removed, &self.flashes);
+    }
 }
 
 /// Ways to have one shot more about a place.
@@ -148,15 +172,29 @@ fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
     slots
 }
 
-/// The sample that misses the rule by most, and whether it must print.
-fn worst(model: &Model) -> Option<([f64; 2], bool)> {
-    let missed =
-        |(s, d): (&super::samples::Sample, &f32)| (s.sign * (0.5 - d), s.place, s.sign > 0.0);
-    let worst = model
+/// Places that miss the rule by most, far enough apart to be mended one by one; each with whether it must print.
+fn worst(model: &Model, most: usize) -> Vec<([f64; 2], bool)> {
+    let missed = |(s, d): (&Sample, &f32)| (s.sign * (0.5 - d), s.place, s.sign > 0.0);
+    let mut bad: Vec<_> = model
         .samples()
         .iter()
         .zip(model.doses())
         .map(missed)
-        .reduce(|a, b| if b.0 > a.0 { b } else { a })?;
-    Some((worst.1, worst.2))
+        .filter(|m| m.0 > 0.0)
+        .collect();
+    bad.sort_by(|a, b| b.0.total_cmp(&a.0));
+    let apart = 8.0 * model.sigma;
+    let mut taken = Bins::new(model.bounds(), apart);
+    let mut places: Vec<([f64; 2], bool)> = Vec::new();
+    for (_, p, must_print) in bad {
+        if places.len() == most {
+            break;
+        }
+        let around = [p[0] - apart, p[1] - apart, p[0] + apart, p[1] + apart];
+        if taken.items(around).next().is_none() {
+            taken.insert(0, p);
+            places.push((p, must_print));
+        }
+    }
+    places
 }

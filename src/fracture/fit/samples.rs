@@ -16,12 +16,13 @@ pub(in crate::fracture) struct Sample {
     pub(super) context: f32,
 }
 
-/// Distance between samples along the rim, in σ. At a third the dose between two samples exceeds neither by more than
-/// `h²/8·max|F''| = 0.0034`, which the fit's guard covers.
-const RIM_STEP: f64 = 0.36;
+/// Distance between samples along the rim, σ. Between two samples the dose may be off by up to `h²/8·max|F''| = 0.0075`; the check
+/// at the end finds where it is, and adds samples there. Denser ones cost more than the repairs they save (measured: 0.36 takes
+/// 1.4 times as long for the same counts; 0.7 needs more shots).
+const RIM_STEP: f64 = 0.5;
 
-/// Lattice step inside and outside, in σ: half a σ as the densest structure a sum of blurred shots can have.
-const LATTICE_STEP: f64 = 0.7;
+/// Lattice step inside and outside, σ; the check at the end is four times as dense.
+const LATTICE_STEP: f64 = 0.9;
 
 /// How far outside the outline the lattice goes, in σ.
 const LATTICE_REACH: f64 = 2.5;

@@ -144,11 +144,9 @@ impl Attempt<'_> {
         self.holds = mend(&mut self.model, &mut self.solver, self.budget.window, most);
     }
 
-    /// Takes shots away as long as the rule holds.
+    /// Takes shots away where the rule holds around them.
     pub(in crate::fracture) fn reduce(&mut self) {
-        if self.holds {
-            reduce(&mut self.model, &mut self.solver, self.budget);
-        }
+        reduce(&mut self.model, &mut self.solver, self.budget);
     }
 
     /// Check, repair what the samples did not see, snap, and check again what is then really flashed.
@@ -176,12 +174,15 @@ impl Attempt<'_> {
             if holds {
                 break;
             }
-            if !relax(
-                &mut self.model,
-                &mut self.solver,
-                self.budget.window.max(10),
-            ) {
-                mend(&mut self.model, &mut self.solver, self.budget.window, 2);
+            let Self {
+                model,
+                solver,
+                budget,
+                ..
+            } = &mut self;
+            if !relax(model, solver, budget.window.max(10)) && mend(model, solver, budget.window, 2)
+            {
+                reduce(model, solver, *budget);
             }
         }
         best.unwrap_or_else(|| unreachable!("at least one round was made"))
@@ -190,29 +191,34 @@ impl Attempt<'_> {
 
 /// The best of several attempts: reduced, and the one with fewest shots that really prints; else the one that misses least.
 ///
-/// Those that do not hold are mended only when none does.
+/// Those that do not hold are mended only when none does, the nearest first and until one holds.
 pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>) -> Option<Fit> {
-    if !attempts.iter().any(|a| a.holds) {
-        let least = attempts
-            .iter_mut()
-            .reduce(|a, b| if b.worst() < a.worst() { b } else { a })?;
-        least.mend();
+    attempts.sort_by(|a, b| b.holds.cmp(&a.holds).then(a.worst().total_cmp(&b.worst())));
+    if attempts.first().is_some_and(|a| !a.holds) {
+        for attempt in &mut attempts {
+            attempt.mend();
+            if attempt.holds {
+                break;
+            }
+        }
     }
     if attempts.iter().any(|a| a.holds) {
         attempts.retain(|a| a.holds);
-        attempts.iter_mut().for_each(Attempt::reduce);
     }
+    attempts.iter_mut().for_each(Attempt::reduce);
     attempts.sort_by_key(Attempt::count);
     let mut best: Option<Fit> = None;
     for attempt in attempts {
-        let fit = attempt.finish();
-        if fit.violations.is_empty() {
-            return Some(fit);
-        }
+        // Repairs may have added shots: only an attempt with fewer can still do better.
         if best
             .as_ref()
-            .is_none_or(|b| fit.violations.len() < b.violations.len())
+            .is_some_and(|b| b.violations.is_empty() && b.shots.len() <= attempt.count())
         {
+            break;
+        }
+        let fit = attempt.finish();
+        let rank = |f: &Fit| (f.violations.len(), f.shots.len());
+        if best.as_ref().is_none_or(|b| rank(&fit) < rank(b)) {
             best = Some(fit);
         }
     }

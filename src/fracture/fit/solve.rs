@@ -7,7 +7,7 @@
 use pulp::Arch;
 
 use super::kernel::{AddDose, Slopes};
-use super::model::{Flash, Model};
+use super::model::{Band, Flash, Model};
 
 /// What shots must keep besides the print rule.
 #[derive(Clone, Copy, Debug)]
@@ -29,6 +29,8 @@ pub(in crate::fracture) struct Outcome {
     pub(in crate::fracture) solved: bool,
     /// Sum of squares of what is missed.
     pub(in crate::fracture) cost: f64,
+    /// The same before, by the shots that were removed.
+    pub(in crate::fracture) before: f64,
 }
 
 /// A shot in σ about the origin of the fit.
@@ -45,7 +47,8 @@ pub(in crate::fracture) struct Solver {
     arch: Arch,
     origin: [f64; 2],
     ids: Vec<u32>,
-    cells: Vec<usize>,
+    boxes: Vec<[f64; 4]>,
+    bands: Vec<Band>,
     x: Vec<f32>,
     y: Vec<f32>,
     sign: Vec<f32>,
@@ -99,6 +102,9 @@ const LINK_WEIGHT: f64 = 0.4;
 /// A link missed by less than this (σ) holds; rounding to the address grid removes it.
 const LINK_SLACK: f64 = 0.002;
 
+/// A fit is given up when three steps leave more of the cost than this.
+const STALL: f64 = 0.5;
+
 /// Furthest a side moves in one step, σ.
 const LONGEST_STEP: f64 = 0.8;
 
@@ -113,7 +119,8 @@ impl Solver {
             arch: Arch::new(),
             origin: [0.0; 2],
             ids: Vec::new(),
-            cells: Vec::new(),
+            boxes: Vec::new(),
+            bands: Vec::new(),
             x: Vec::new(),
             y: Vec::new(),
             sign: Vec::new(),
@@ -143,12 +150,13 @@ impl Solver {
         most: usize,
     ) -> Outcome {
         self.begin(model, removed, window);
+        let standing = self.standing(model);
         self.link();
         let mut cost = self.evaluate(false);
         let mut damping = 0.3 * LINK_WEIGHT * LINK_WEIGHT;
         let mut before = [f64::INFINITY; 3];
         for _ in 0..most {
-            if self.holds() || cost > 0.6 * before[0] {
+            if self.holds() || cost > STALL * before[0] {
                 break;
             }
             before = [before[1], before[2], cost];
@@ -197,6 +205,7 @@ impl Solver {
         Outcome {
             solved: self.holds(),
             cost,
+            before: standing,
         }
     }
 
@@ -244,12 +253,15 @@ impl Solver {
             return;
         };
         self.origin = [hull.side[0], hull.side[1]];
-        model.samples_near(
-            all().map(|f| f.grown(reach).side),
-            &mut self.ids,
-            &mut self.cells,
-        );
+        self.boxes.clear();
+        self.boxes.extend(all().map(|f| f.grown(reach).side));
+        model.samples_near(&self.boxes, &mut self.ids, &mut self.bands);
+        for band in &mut self.bands {
+            band.low = (band.low - self.origin[1]) / self.sigma;
+            band.high = (band.high - self.origin[1]) / self.sigma;
+        }
         let (samples, doses) = (model.samples(), model.doses());
+        let inverse = 1.0 / self.sigma;
         for list in [&mut self.x, &mut self.y, &mut self.sign, &mut self.base] {
             list.clear();
         }
@@ -260,20 +272,21 @@ impl Solver {
         for &id in &self.ids {
             let sample = &samples[id as usize];
             self.x
-                .push(((sample.place[0] - self.origin[0]) / self.sigma) as f32);
+                .push(((sample.place[0] - self.origin[0]) * inverse) as f32);
             self.y
-                .push(((sample.place[1] - self.origin[1]) / self.sigma) as f32);
+                .push(((sample.place[1] - self.origin[1]) * inverse) as f32);
             self.sign.push(sample.sign);
             self.base.push(doses[id as usize]);
         }
         for flash in &gone {
             let local = self.localise(flash);
+            let range = within(&self.bands, &local);
             self.arch.dispatch(AddDose {
-                x: &self.x,
-                y: &self.y,
+                x: &self.x[range.clone()],
+                y: &self.y[range.clone()],
                 side: single(local.side),
                 dose: -local.dose,
-                out: &mut self.base,
+                out: &mut self.base[range],
             });
         }
         self.local.clear();
@@ -305,6 +318,15 @@ impl Solver {
         }
     }
 
+    /// Cost of the doses that the model has now at the samples gathered, sides left out.
+    fn standing(&self, model: &Model) -> f64 {
+        let aim = self.rules.guard + AIM;
+        let missed = |(&id, &sign): (&u32, &f32)| {
+            f64::from((aim - sign * (model.doses()[id as usize] - 0.5)).max(0.0)).powi(2)
+        };
+        self.ids.iter().zip(&self.sign).map(missed).sum()
+    }
+
     /// Dose of the window (or of the trial step) on top of the base, and the cost of what is missed.
     fn evaluate(&mut self, trial: bool) -> f64 {
         self.evaluations += 1;
@@ -312,12 +334,13 @@ impl Solver {
         self.value.clear();
         self.value.extend_from_slice(&self.base);
         for flash in window {
+            let range = within(&self.bands, flash);
             self.arch.dispatch(AddDose {
-                x: &self.x,
-                y: &self.y,
+                x: &self.x[range.clone()],
+                y: &self.y[range.clone()],
                 side: single(flash.side),
                 dose: flash.dose,
-                out: &mut self.value,
+                out: &mut self.value[range],
             });
         }
         let aim = self.rules.guard + AIM;
@@ -529,6 +552,22 @@ impl Link {
         let at = |i: Option<usize>| i.map_or(0.0, |i| window[i / 4].side[i % 4]);
         at(self.plus) - at(self.minus) - self.limit
     }
+}
+
+/// The samples in rows that a shot reaches.
+fn within(bands: &[Band], flash: &Local) -> std::ops::Range<usize> {
+    let (low, high) = (flash.side[1] - TOUCH, flash.side[3] + TOUCH);
+    let from = bands
+        .iter()
+        .take_while(|b| b.high < low)
+        .last()
+        .map_or(0, |b| b.end);
+    let to = bands
+        .iter()
+        .take_while(|b| b.low <= high)
+        .last()
+        .map_or(0, |b| b.end);
+    from..to.max(from)
 }
 
 /// Along which axis two near tiles are kept apart, and whether the first is the lower one there; `None` when 1 σ apart.

@@ -4,7 +4,10 @@ use crate::fracture::Job;
 use crate::geom::{Orientation, Point, Transform};
 use crate::target::Target;
 
-use super::model::Flash;
+use std::cmp::Reverse;
+use std::collections::BinaryHeap;
+
+use super::model::{Bins, Flash};
 use super::samples::Sample;
 
 /// Horizontal scan lines through a figure, evenly spaced over its height.
@@ -15,6 +18,42 @@ struct Rows {
     /// Crossings with the outline along each line; inside is between each first and second.
     crossings: Vec<Vec<f64>>,
 }
+
+/// A part of a figure that the scan lines cross in one span each, from line `line` on.
+struct Branch {
+    line: usize,
+    spans: Vec<[f64; 2]>,
+}
+
+/// How many spans of the next line a span overlaps.
+#[derive(Clone, Copy)]
+enum Meeting {
+    None,
+    One(usize),
+    Several,
+}
+
+/// For each of the `spans`, which of the `others` it overlaps; both are sorted and disjoint.
+fn meeting(spans: &[[f64; 2]], others: &[[f64; 2]]) -> Vec<Meeting> {
+    let mut first = 0;
+    spans
+        .iter()
+        .map(|s| {
+            while first < others.len() && others[first][1] <= s[0] {
+                first += 1;
+            }
+            let overlaps = |k: usize| others.get(k).is_some_and(|o| o[0] < s[1]);
+            match (overlaps(first), overlaps(first + 1)) {
+                (false, _) => Meeting::None,
+                (true, false) => Meeting::One(first),
+                (true, true) => Meeting::Several,
+            }
+        })
+        .collect()
+}
+
+/// A slab smaller than this (σ²) prints nothing.
+const LEAST_AREA: f64 = 0.4;
 
 /// Distance of the scan lines, σ.
 const PITCH: f64 = 0.12;
@@ -63,32 +102,81 @@ impl Rows {
         n
     }
 
-    /// Cuts the figure into slabs as high as the outline wanders by at most `slack` σ within them (but no lower than about
-    /// σ), each filled where at least half of its height is figure.
+    /// Cuts every branch of the figure into slabs as high as its two sides wander by at most `slack` σ within them (but no lower
+    /// than about σ), each as wide as the branch is there on average.
     fn slabs(&self, slack: f64) -> Vec<Flash> {
-        let n = self.crossings.len();
         let least = self.lines(1.1 * self.sigma);
+        let limit = slack * self.sigma;
         let mut flashes = Vec::new();
-        let mut from = 0;
-        while from < n {
-            let mut to = from + 1;
-            while to < n
-                && (to - from < least || alike(&self.crossings[from..=to], slack * self.sigma))
-            {
-                to += 1;
-            }
-            // No low slab at the end.
-            if 10 * (n - to) < 7 * least {
-                to = n;
-            }
-            for [a, b] in majority(&self.crossings[from..to]) {
-                if b - a > 0.4 * self.sigma {
-                    flashes.push(Flash::new([a, self.level(from), b, self.level(to)]));
+        for branch in self.branches() {
+            let n = branch.spans.len();
+            let mut from = 0;
+            while from < n {
+                let (mut low, mut high) = (branch.spans[from], branch.spans[from]);
+                let mut to = from + 1;
+                while to < n {
+                    for side in 0..2 {
+                        low[side] = low[side].min(branch.spans[to][side]);
+                        high[side] = high[side].max(branch.spans[to][side]);
+                    }
+                    if to - from >= least && (0..2).any(|side| high[side] - low[side] > limit) {
+                        break;
+                    }
+                    to += 1;
                 }
+                // No low slab at the end.
+                if 10 * (n - to) < 7 * least {
+                    to = n;
+                }
+                flashes.extend(self.slab(&branch, from, to));
+                from = to;
             }
-            from = to;
         }
         flashes
+    }
+
+    /// Lines `from..to` of a branch as one shot, unless it is too small to matter.
+    fn slab(&self, branch: &Branch, from: usize, to: usize) -> Option<Flash> {
+        let spans = &branch.spans[from..to];
+        #[allow(clippy::cast_precision_loss, reason = "at most 1e7 lines")]
+        let mean = |side: usize| spans.iter().map(|s| s[side]).sum::<f64>() / spans.len() as f64;
+        let side = [
+            mean(0),
+            self.level(branch.line + from),
+            mean(1),
+            self.level(branch.line + to),
+        ];
+        let flash = Flash::new(side);
+        (flash.length(0) * flash.length(1) > LEAST_AREA * self.sigma * self.sigma).then_some(flash)
+    }
+
+    /// Runs of spans that follow one another line by line with neither a fork nor a join.
+    fn branches(&self) -> Vec<Branch> {
+        let mut done = Vec::new();
+        let mut open: Vec<Branch> = Vec::new();
+        for (line, crossings) in self.crossings.iter().enumerate() {
+            let spans: Vec<[f64; 2]> = crossings.chunks_exact(2).map(|c| [c[0], c[1]]).collect();
+            let last: Vec<[f64; 2]> = open.iter().map(|b| b.spans[b.spans.len() - 1]).collect();
+            let (up, down) = (meeting(&last, &spans), meeting(&spans, &last));
+            let mut next = Vec::with_capacity(spans.len());
+            let mut running: Vec<Option<Branch>> = open.into_iter().map(Some).collect();
+            for (i, span) in spans.into_iter().enumerate() {
+                let follows = match down[i] {
+                    Meeting::One(j) if matches!(up[j], Meeting::One(_)) => running[j].take(),
+                    _ => None,
+                };
+                let mut branch = follows.unwrap_or(Branch {
+                    line,
+                    spans: Vec::new(),
+                });
+                branch.spans.push(span);
+                next.push(branch);
+            }
+            done.extend(running.into_iter().flatten());
+            open = next;
+        }
+        done.extend(open);
+        done
     }
 
     /// The shot made as high as the figure allows at its width, `inset` nm taken off at both ends.
@@ -99,9 +187,9 @@ impl Rows {
             return *flash;
         }
         let fits = |i: usize| {
-            self.crossings[i]
-                .chunks_exact(2)
-                .any(|c| c[0] <= a && b <= c[1])
+            // The crossing after `a` must be the end of a span, and beyond `b`.
+            let after = self.crossings[i].partition_point(|&c| c <= a);
+            after % 2 == 1 && b <= self.crossings[i][after]
         };
         let n = self.crossings.len();
         let middle = ((0.5 * (y0 + y1) - self.low) / self.pitch).max(0.0);
@@ -175,67 +263,50 @@ impl Slabs {
 }
 
 /// Chooses from candidates so that every place that must print lies in one, the one that adds most places first.
-pub(in crate::fracture) fn cover(candidates: &[Flash], samples: &[Sample]) -> Vec<Flash> {
-    let inside = |f: &Flash, s: &Sample| {
-        (0..2).all(|axis| f.side[axis] <= s.place[axis] && s.place[axis] <= f.side[axis + 2])
+///
+/// The gain of a candidate only falls as others are chosen, so it is counted anew only when it comes up (Minoux 1978).
+pub(in crate::fracture) fn cover(
+    candidates: &[Flash],
+    samples: &[Sample],
+    sigma: f64,
+) -> Vec<Flash> {
+    let Some(hull) = candidates.iter().copied().reduce(|a, b| a.hull(&b)) else {
+        return Vec::new();
     };
-    let mut open: Vec<&Sample> = samples.iter().filter(|s| s.sign > 0.0).collect();
-    let mut chosen = Vec::new();
-    loop {
-        let gain = |f: &Flash| open.iter().filter(|s| inside(f, s)).count();
-        let best = candidates
-            .iter()
-            .map(|f| (gain(f), f))
-            .fold(
-                (0, None),
-                |best, (g, f)| if g > best.0 { (g, Some(f)) } else { best },
-            );
-        let Some(f) = best.1 else { return chosen };
-        chosen.push(*f);
-        open.retain(|s| !inside(f, s));
+    let mut bins = Bins::new(hull.side, 4.0 * sigma);
+    let print: Vec<&Sample> = samples.iter().filter(|s| s.sign > 0.0).collect();
+    for (id, sample) in (0_u32..).zip(&print) {
+        bins.insert(id, sample.place);
     }
-}
-
-/// Whether all rows have the same number of crossings and none wanders by more than `limit`.
-fn alike(rows: &[Vec<f64>], limit: f64) -> bool {
-    let (first, last) = (&rows[0], &rows[rows.len() - 1]);
-    first.len() == last.len()
-        && (0..first.len()).all(|i| {
-            let (low, high) = rows
-                .iter()
-                .map(|r| r.get(i).copied().unwrap_or(f64::NAN))
-                .fold((f64::INFINITY, f64::NEG_INFINITY), |(a, b), x| {
-                    (a.min(x), b.max(x))
-                });
-            high - low <= limit
-        })
-}
-
-/// Where at least half of the rows are inside.
-fn majority(rows: &[Vec<f64>]) -> Vec<[f64; 2]> {
-    let mut events: Vec<(f64, i32)> = rows
+    let mut open = vec![true; print.len()];
+    let within = |f: &Flash| {
+        let side = f.side;
+        let inside = move |p: [f64; 2]| {
+            (0..2).all(|axis| side[axis] <= p[axis] && p[axis] <= side[axis + 2])
+        };
+        bins.items(side)
+            .filter(|&id| inside(print[id as usize].place))
+            .map(|id| id as usize)
+            .collect::<Vec<_>>()
+    };
+    let gain = |open: &[bool], f: &Flash| within(f).into_iter().filter(|&id| open[id]).count();
+    // Largest gain first, the earlier candidate among equals.
+    let mut queue: BinaryHeap<(usize, Reverse<usize>)> = candidates
         .iter()
-        .flat_map(|r| {
-            r.iter()
-                .enumerate()
-                .map(|(i, &x)| (x, if i % 2 == 0 { 1 } else { -1 }))
-        })
+        .enumerate()
+        .map(|(i, f)| (gain(&open, f), Reverse(i)))
         .collect();
-    events.sort_by(|a, b| a.0.total_cmp(&b.0).then(b.1.cmp(&a.1)));
-    let half = i32::try_from(rows.len().div_ceil(2)).unwrap_or(i32::MAX);
-    let (mut depth, mut start, mut found) = (0, None, Vec::new());
-    for (x, d) in events {
-        depth += d;
-        match start {
-            None if depth >= half => start = Some(x),
-            Some(a) if depth < half => {
-                if x > a {
-                    found.push([a, x]);
-                }
-                start = None;
-            }
-            _ => {}
+    let mut chosen = Vec::new();
+    while let Some((stale, Reverse(i))) = queue.pop() {
+        let now = gain(&open, &candidates[i]);
+        if now < stale {
+            queue.push((now, Reverse(i)));
+        } else if now > 0 {
+            within(&candidates[i])
+                .into_iter()
+                .for_each(|id| open[id] = false);
+            chosen.push(candidates[i]);
         }
     }
-    found
+    chosen
 }
