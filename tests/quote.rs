@@ -59,11 +59,7 @@ const SQUARE: &str = "POLYGON ((0 0, 200 0, 200 200, 0 200, 0 0))";
 /// The square in an array of steps in nm.
 fn squares(columns: u64, rows: u64, a: [f64; 2], b: [f64; 2]) -> Layout {
     let mut layout = wkt(SQUARE);
-    let units = |nm: f64| {
-        let units = (Nm(nm) / layout.unit).round();
-        assert_eq!(units * layout.unit.0, nm);
-        units as i64
-    };
+    let units = |nm: f64| Nm(nm).to_pm().unwrap() / layout.unit.to_pm().unwrap();
     let step = |[x, y]: [f64; 2]| Point::new(units(x), units(y));
     let (a, b) = (step(a), step(b));
     layout.cells[0].shapes[0].repetition = Repetition::Lattice {

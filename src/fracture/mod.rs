@@ -4,6 +4,8 @@ mod fit;
 pub mod overlap;
 pub mod tile;
 
+use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
+
 use crate::blur::{Blur, NARROWEST_LINE};
 use crate::geom::{Figure, Point};
 use crate::shot::{ShotLimits, ShotList};
@@ -116,7 +118,7 @@ impl Miss {
 
 /// Whether a place of the figure lies in a part narrower than `width` along some of four directions.
 fn narrow(target: &Target, p: [f64; 2], width: f64) -> bool {
-    [[1.0, 0.0], [0.0, 1.0], [0.7071, 0.7071], [0.7071, -0.7071]].iter().any(|d| {
+    [[1.0, 0.0], [0.0, 1.0], [SLANT, SLANT], [SLANT, -SLANT]].iter().any(|d| {
         let leaves = |sign: f64| (1..=20).find(|&k| !target.inside([p[0] + sign * f64::from(k) * width / 20.0 * d[0], p[1] + sign * f64::from(k) * width / 20.0 * d[1]]));
         matches!((leaves(1.0), leaves(-1.0)), (Some(a), Some(b)) if f64::from(a + b) * width / 20.0 <= width)
     })
