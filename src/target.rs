@@ -334,17 +334,20 @@ impl Target {
     /// Places just beyond the tolerance on both sides of the outline, where the rule bites first.
     ///
     /// At most `step` nm apart along every edge and around every vertex; each is given with its need (never
-    /// [`Need::Free`]). `creases` adds, at every vertex, the point where the lines beside its two edges meet.
-    pub fn rim(&self, step: f64, creases: bool, mut each: impl FnMut([f64; 2], Need)) {
+    /// [`Need::Free`]). `beyond` (nm, small) pushes them that much further out than the tolerance; `creases` adds, at every
+    /// vertex, the point where the lines beside its two edges meet.
+    pub fn rim(&self, step: f64, beyond: f64, creases: bool, mut each: impl FnMut([f64; 2], Need)) {
         let mut offer = |q: [f64; 2], n: [f64; 2], tolerance: f64, sides: &[f64]| {
             for side in sides {
-                let reach = side * tolerance;
+                let reach = side * (tolerance + beyond);
                 let p = [q[0] + reach * n[0], q[1] + reach * n[1]];
                 // A hair under the tolerance, or rounding would free the very places meant here.
-                if !self.outline_within(p, self.tolerance_at(p) - 1e-7 * (1.0 + tolerance)) {
+                if !self.outline_within(p, self.tolerance_at(p) + beyond - 1e-7 * (1.0 + tolerance))
+                {
+                    // Nothing crosses the way from the outline to a place whose nearest outline that is.
                     each(
                         p,
-                        if self.inside(p) {
+                        if *side < 0.0 {
                             Need::Print
                         } else {
                             Need::Clear
@@ -422,8 +425,8 @@ impl Target {
                 );
             }
             let half = 0.5 * turn;
-            // Beyond a turn of 160° the two lines meet further off than the edges are long.
-            if creases && half.cos() > 0.17 {
+            // Up to a quarter turn; the corner of a sharper one is a corner zone or too sharp to print.
+            if creases && half.cos() > 0.7 {
                 offer(
                     edge.b,
                     toward(half),
@@ -453,7 +456,7 @@ impl Target {
                 dose >= THRESHOLD - spare
             }
         };
-        self.rim(rim_step, true, |place, need| {
+        self.rim(rim_step, 0.0, true, |place, need| {
             let dose = dose.dose(place);
             if breaks(need == Need::Print, dose) {
                 found.push(Violation { place, need, dose });
@@ -651,7 +654,7 @@ mod tests {
             2.0,
         );
         let mut seen = 0;
-        t.rim(2.0, true, |p, need| {
+        t.rim(2.0, 0.0, true, |p, need| {
             seen += 1;
             assert_ne!(need, Need::Free);
             let brute = t

@@ -56,7 +56,7 @@ pub enum WriteTimeError {
     },
     /// More shots or copies than can be counted exactly.
     #[error(
-        "{found} shots or copies, expected at most 1e24 shots and 1e12 copies along one side of an array"
+        "{found} shots or copies, expected at most 1e24 shots, 1e12 copies along one side of an array and 1e12 repetitions of an array"
     )]
     TooMany {
         /// As counted.

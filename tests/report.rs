@@ -5,8 +5,8 @@ use std::collections::BTreeMap;
 use shotwright::blur::Blur;
 use shotwright::geom::{Figure, Orientation, Point, Rect, Repetition, Ring, Transform};
 use shotwright::quote::result::{
-    ByMethod, CAUTION, Count, EdgeError, FigureFracture, FigureResult, Fits, Flag, FlagKind,
-    FractureSummary, Hours, Margin, Method, ProfileUsed, Quote, Source, Verdict,
+    ByMethod, CAUTION, Count, DoseCorrection, EdgeError, FigureFracture, FigureResult, Fits, Flag,
+    FlagKind, FractureSummary, Hours, Margin, Method, ProfileUsed, Quote, Source, Verdict,
 };
 use shotwright::report::figure_plot::{self, Contour, FigurePicture};
 use shotwright::report::figures_csv;
@@ -280,6 +280,12 @@ fn quote() -> Quote {
         tolerance_nm: 2.0,
         sigma_nm: 12.5,
         scaled_to_field: None,
+        dose_correction: DoseCorrection {
+            dose: 1.12,
+            backscatter_ratio: 0.6,
+            density: 0.36,
+        },
+        notes: vec!["1 × a zero-length path left out".to_owned()],
         fractures: ByMethod {
             staircase: Some(unmeasured),
             tile: Some(FractureSummary {

@@ -479,7 +479,7 @@ fn impossible_patterns_are_refused() {
         (refused(&negative, &once, frame), "a shot has dose -1"),
         (
             refused(&square, &lattice(3, Point::new(i64::MAX, 0)), frame),
-            "a shot stands at (9223372036854775807, 0) pm, expected within 1 m",
+            "a shot stands at (1152921504606846976, 0) pm, expected within 1 m",
         ),
         (
             refused(&square, &lattice(u64::MAX, Point::new(0, 0)), frame),
@@ -491,7 +491,15 @@ fn impossible_patterns_are_refused() {
                 &Repetition::List(vec![Point::new(i64::MIN, 0)]),
                 frame,
             ),
-            "a shot stands at (-9223372036854775808, 0) pm",
+            "a shot stands at (-1152921504606846976, 0) pm",
+        ),
+        (
+            refused(
+                &square,
+                &Repetition::nested(vec![lattice(1 << 20, Point::default()); 4]),
+                frame,
+            ),
+            "1152921504606846976 shots or copies, expected at most",
         ),
     ] {
         assert!(said.starts_with(expected), "{said}");
@@ -640,9 +648,10 @@ fn scene() -> impl Strategy<Value = Scene> {
             b,
         }
     });
+    let arrays = prop::collection::vec(lattice, 1..3).prop_map(Repetition::nested);
     (
         prop::collection::vec(rect, 1..4),
-        lattice,
+        arrays,
         0usize..8,
         0.5f64..2.0,
         1i64..8,

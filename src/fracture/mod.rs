@@ -4,8 +4,10 @@ mod fit;
 pub mod overlap;
 pub mod tile;
 
+use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
+
 use crate::blur::{Blur, NARROWEST_LINE};
-use crate::geom::{Figure, Point};
+use crate::geom::{Figure, Orientation, Point, Rect, Transform};
 use crate::shot::{ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
@@ -82,13 +84,50 @@ pub struct Miss {
     pub place: Point,
     /// Dose there, context included.
     pub dose: Dose,
-    /// Whether it must print (and does not) or must not (and does).
+    /// Whether it must print (and does not) or must not (and does); true for a shot outside the limits.
     pub must_print: bool,
     /// Why, as far as known.
     pub reason: MissReason,
 }
 
+/// Fractures a job in a frame of its own, so that equal figures at different places give equal shots to the bit: the lower-left
+/// corner of the bounds goes to within one address unit of the origin.
+fn framed(
+    job: &Job<'_>,
+    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, FractureError>,
+) -> Result<Fracture, FractureError> {
+    let unit = job.limits.address.pm();
+    let low = job.figure.bounds().min;
+    let shift = Point::new(low.x.div_euclid(unit) * unit, low.y.div_euclid(unit) * unit);
+    let figure = job.figure.translated(-shift);
+    let context: Vec<Figure> = job.context.iter().map(|f| f.translated(-shift)).collect();
+    let mut found = fracture(&Job {
+        figure: &figure,
+        context: &context,
+        ..*job
+    })?;
+    found.shots = found.shots.transformed(Transform {
+        orientation: Orientation::IDENTITY,
+        shift,
+    });
+    for miss in &mut found.misses {
+        miss.place = miss.place + shift;
+    }
+    Ok(found)
+}
+
 impl Miss {
+    /// A shot outside the limits of the writer.
+    fn unfit(rect: Rect, dose: Dose) -> Self {
+        let place = Point::new((rect.min.x + rect.max.x) / 2, (rect.min.y + rect.max.y) / 2);
+        Self {
+            place,
+            dose,
+            must_print: true,
+            reason: MissReason::Limits,
+        }
+    }
+
     /// A broken rule as a miss, with the reason as far as the outline tells it.
     fn of(violation: &Violation, target: &Target, blur: Blur) -> Self {
         let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
@@ -116,7 +155,7 @@ impl Miss {
 
 /// Whether a place of the figure lies in a part narrower than `width` along some of four directions.
 fn narrow(target: &Target, p: [f64; 2], width: f64) -> bool {
-    [[1.0, 0.0], [0.0, 1.0], [0.7071, 0.7071], [0.7071, -0.7071]].iter().any(|d| {
+    [[1.0, 0.0], [0.0, 1.0], [SLANT, SLANT], [SLANT, -SLANT]].iter().any(|d| {
         let leaves = |sign: f64| (1..=20).find(|&k| !target.inside([p[0] + sign * f64::from(k) * width / 20.0 * d[0], p[1] + sign * f64::from(k) * width / 20.0 * d[1]]));
         matches!((leaves(1.0), leaves(-1.0)), (Some(a), Some(b)) if f64::from(a + b) * width / 20.0 <= width)
     })

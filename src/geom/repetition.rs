@@ -1,6 +1,9 @@
 //! The same thing at many places, counted and not copied.
 
-use super::{Point, Transform};
+use super::{Point, Rect, Transform};
+
+/// Spans saturate here: far beyond any mask, and sums of a few stay in range.
+const FAR: i64 = 1 << 60;
 
 /// Displacements at which one thing stands, its own place (0, 0) included.
 ///
@@ -83,6 +86,37 @@ impl Repetition {
         }
     }
 
+    /// The least rectangle around all displacements; what lies beyond ±2⁶⁰ is put there.
+    #[must_use]
+    pub fn span(&self) -> Rect {
+        let far = |p: Point| Point::new(p.x.clamp(-FAR, FAR), p.y.clamp(-FAR, FAR));
+        let origin = Rect::new(Point::default(), Point::default());
+        match self {
+            Self::Once => origin,
+            Self::Lattice {
+                columns,
+                rows,
+                a,
+                b,
+            } => {
+                let times = |p: &Point, n: u64| {
+                    let n = i64::try_from(n.saturating_sub(1)).unwrap_or(i64::MAX);
+                    far(Point::new(p.x.saturating_mul(n), p.y.saturating_mul(n)))
+                };
+                let (a, b) = (times(a, *columns), times(b, *rows));
+                Rect::around([Point::default(), a, b, a + b]).unwrap_or(origin)
+            }
+            Self::List(list) => Rect::around(list.iter().map(|&p| far(p))).unwrap_or(origin),
+            Self::Nested(parts) => parts.iter().fold(origin, |sum, part| {
+                let span = part.span();
+                Rect {
+                    min: far(sum.min + span.min),
+                    max: far(sum.max + span.max),
+                }
+            }),
+        }
+    }
+
     /// The same displacements turned by the orientation of `t` (its shift does not matter).
     #[must_use]
     pub fn turned(&self, t: Transform) -> Self {
@@ -102,5 +136,45 @@ impl Repetition {
             Self::List(list) => Self::List(list.iter().map(|&p| t.orientation.apply(p)).collect()),
             Self::Nested(parts) => Self::Nested(parts.iter().map(|p| p.turned(t)).collect()),
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_span_of_arrays_in_arrays_is_that_of_all_displacements() {
+        let lattice = |columns, rows, a, b| Repetition::Lattice {
+            columns,
+            rows,
+            a,
+            b,
+        };
+        let skewed = lattice(3, 2, Point::new(-20, 1), Point::new(5, 30));
+        let list = Repetition::List(vec![Point::new(7, 7), Point::new(-100, 3)]);
+        for repetition in [
+            Repetition::Once,
+            skewed.clone(),
+            list.clone(),
+            Repetition::nested(vec![skewed, list]),
+        ] {
+            assert_eq!(
+                Some(repetition.span()),
+                Rect::around(repetition.displacements())
+            );
+        }
+    }
+
+    #[test]
+    fn a_span_beyond_any_mask_saturates() {
+        let endless = Repetition::Lattice {
+            columns: u64::MAX,
+            rows: 1,
+            a: Point::new(1 << 40, 0),
+            b: Point::default(),
+        };
+        let twice = Repetition::nested(vec![endless.clone(), endless]);
+        assert_eq!(twice.span().max, Point::new(FAR, 0));
     }
 }

@@ -8,6 +8,7 @@ mod cells;
 mod distinct;
 mod error;
 mod index;
+mod near;
 mod places;
 mod repeat;
 mod resolve;
@@ -27,6 +28,7 @@ use places::Standing;
 use resolve::{Cluster, Resolved, Resolver};
 
 pub use error::{LayerCounts, MaskError};
+pub use near::Standings;
 pub use summary::Summary;
 
 /// Most parts that are looked at one by one, checked before memory is taken: about 200 bytes each.

@@ -71,6 +71,10 @@ pub struct Quote {
     pub sigma_nm: f64,
     /// The field that the clip stands for; `None` for the clip alone.
     pub scaled_to_field: Option<ScaledToField>,
+    /// The one dose of the whole mask that keeps wide edges where they were drawn.
+    pub dose_correction: DoseCorrection,
+    /// What was assumed, repaired or left out, as sentences.
+    pub notes: Vec<String>,
     /// Every fracture side by side.
     pub fractures: Fractures,
     /// Whether the slot suffices.
@@ -122,6 +126,18 @@ pub struct ScaledToField {
     pub coverage: f64,
 }
 
+/// One dose for the whole mask, from its mean coverage. It makes flashes longer or shorter and margins worse; the forward
+/// part of the dose, and so the contour, stays as it is.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct DoseCorrection {
+    /// Multiplies the dose of every shot.
+    pub dose: f64,
+    /// Backscatter ratio η of the profile, all terms together.
+    pub backscatter_ratio: f64,
+    /// Mean coverage, 0 to 1.
+    pub density: f64,
+}
+
 /// The three fractures that a quote compares.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
 #[serde(rename_all = "snake_case")]
@@ -150,7 +166,7 @@ impl Method {
 }
 
 /// One value per fracture; `None` where that fracture was not made.
-#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct ByMethod<T> {
     /// For [`Method::Staircase`].
     pub staircase: Option<T>,
@@ -163,6 +179,16 @@ pub struct ByMethod<T> {
 /// What the whole mask costs and how it prints, by fracture.
 pub type Fractures = ByMethod<FractureSummary>;
 
+impl<T> Default for ByMethod<T> {
+    fn default() -> Self {
+        Self {
+            staircase: None,
+            tile: None,
+            overlap: None,
+        }
+    }
+}
+
 impl<T> ByMethod<T> {
     /// The value for one fracture.
     #[must_use]
@@ -171,6 +197,15 @@ impl<T> ByMethod<T> {
             Method::Staircase => self.staircase.as_ref(),
             Method::Tile => self.tile.as_ref(),
             Method::Overlap => self.overlap.as_ref(),
+        }
+    }
+
+    /// Where the value for one fracture is kept.
+    pub fn slot(&mut self, method: Method) -> &mut Option<T> {
+        match method {
+            Method::Staircase => &mut self.staircase,
+            Method::Tile => &mut self.tile,
+            Method::Overlap => &mut self.overlap,
         }
     }
 
@@ -228,7 +263,7 @@ pub struct Margin {
 }
 
 /// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Hours {
     /// All together.
     pub total_h: f64,

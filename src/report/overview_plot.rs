@@ -307,32 +307,10 @@ impl Canvas<'_, '_> {
 
 /// Around a box at all places of a repetition.
 fn hull(bounds: Rect, repetition: &Repetition) -> Rect {
-    match repetition {
-        Repetition::Once => bounds,
-        Repetition::Lattice {
-            columns,
-            rows,
-            a,
-            b,
-        } => {
-            // Far beyond any mask, and sums of it stay in range.
-            const FAR: i64 = 1 << 60;
-            let times = |p: &Point, n: u64| {
-                let n = i64::try_from(n - 1).unwrap_or(i64::MAX);
-                let far = |step: i64| step.saturating_mul(n).clamp(-FAR, FAR);
-                Point::new(far(p.x), far(p.y))
-            };
-            let (a, b) = (times(a, *columns), times(b, *rows));
-            [a, b, a + b]
-                .into_iter()
-                .fold(bounds, |all, by| all.hull(bounds.translated(by)))
-        }
-        Repetition::Nested(parts) => parts.iter().fold(bounds, hull),
-        Repetition::List(list) => list
-            .iter()
-            .map(|&by| bounds.translated(by))
-            .reduce(Rect::hull)
-            .unwrap_or(bounds),
+    let span = repetition.span();
+    Rect {
+        min: bounds.min + span.min,
+        max: bounds.max + span.max,
     }
 }
 
@@ -396,19 +374,6 @@ impl Shade {
 #[cfg(test)]
 mod tests {
     use super::*;
-
-    #[test]
-    fn a_lattice_is_boxed_whichever_way_it_runs() {
-        let bounds = Rect::new(Point::default(), Point::new(10, 10));
-        let lattice = Repetition::Lattice {
-            columns: 3,
-            rows: 2,
-            a: Point::new(-20, 0),
-            b: Point::new(5, 30),
-        };
-        let each = lattice.displacements().map(|by| bounds.translated(by));
-        assert_eq!(Some(hull(bounds, &lattice)), each.reduce(Rect::hull));
-    }
 
     #[test]
     fn a_shade_is_the_value_again() {

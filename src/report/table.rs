@@ -57,6 +57,9 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     out.paragraph(&format!("Recommended: {order}. {}", quote.reason), "");
     flags(&quote.flags, options.flags, &mut out);
     out.blank();
+    for note in &quote.notes {
+        out.line(&format!("note: {note}"));
+    }
     out.paragraph(&quote.caution, "");
     out.text
 }
@@ -88,6 +91,18 @@ fn heading(quote: &Quote, out: &mut Text) {
         ),
         "",
     );
+    let correction = quote.dose_correction;
+    if correction.backscatter_ratio > 0.0 {
+        out.paragraph(
+            &format!(
+                "Every dose times {} against backscatter ({} at a mean coverage of {}): one value for the whole mask.",
+                significant(correction.dose),
+                significant(correction.backscatter_ratio),
+                significant(correction.density)
+            ),
+            "",
+        );
+    }
     out.paragraph(
         &quote.scaled_to_field.map_or_else(
             || "Counts and hours are for the clip alone, not for a field.".to_owned(),

@@ -134,7 +134,8 @@ impl Grid {
     }
 }
 
-/// The copies of a repetition by rows of equal height. A lattice with neither side along x is taken copy by copy.
+/// The copies of a repetition by rows of equal height. A lattice with neither side along x is taken copy by copy; of arrays in
+/// arrays, the innermost is taken by rows and the others copy by copy.
 pub(super) fn runs(repetition: &Repetition) -> Box<dyn Iterator<Item = Run> + '_> {
     let alone = |start| Run {
         start,
@@ -152,6 +153,19 @@ pub(super) fn runs(repetition: &Repetition) -> Box<dyn Iterator<Item = Run> + '_
         })
     };
     match *repetition {
+        Repetition::Nested(ref parts) => {
+            let Some((innermost, outer)) = parts.split_first() else {
+                return Box::new(std::iter::once(alone(Point::default())));
+            };
+            outer.iter().fold(runs(innermost), |runs, part| {
+                Box::new(runs.flat_map(move |run| {
+                    part.displacements().map(move |by| Run {
+                        start: run.start + by,
+                        ..run
+                    })
+                }))
+            })
+        }
         Repetition::Lattice {
             columns,
             rows: count,

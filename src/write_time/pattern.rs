@@ -160,34 +160,11 @@ impl Placed<'_> {
                 .all(|c| (-FARTHEST..=FARTHEST).contains(c))
         };
         let far = |found| Err(WriteTimeError::TooFar { found });
-        let corner = match *self.repetition {
-            Repetition::Once => Point::default(),
-            Repetition::Lattice {
-                columns,
-                rows,
-                a,
-                b,
-                ..
-            } => {
-                if columns.max(rows) > MOST_COPIES {
-                    let found = self.repetition.count();
-                    return Err(WriteTimeError::TooMany { found });
-                }
-                let span = |a: i64, b: i64| {
-                    let reach =
-                        |step: i64, n: u64| i128::from(step) * i128::from(n.saturating_sub(1));
-                    i64::try_from(reach(a, columns).abs() + reach(b, rows).abs())
-                        .unwrap_or(i64::MAX)
-                };
-                Point::new(span(a.x, b.x), span(a.y, b.y))
-            }
-            Repetition::Nested(_) => Point::default(),
-            Repetition::List(ref list) => match list.iter().find(|&&p| !within(p)) {
-                Some(&p) => return far(p),
-                None => Point::default(),
-            },
-        };
-        if !within(corner) {
+        if let Some(found) = too_many(self.repetition) {
+            return Err(WriteTimeError::TooMany { found });
+        }
+        let span = self.repetition.span();
+        if let Some(&corner) = [span.min, span.max].iter().find(|&&p| !within(p)) {
             return far(corner);
         }
         if !within(self.transform.shift) {
@@ -208,9 +185,32 @@ impl Placed<'_> {
     }
 }
 
+/// The number of copies that cannot be counted along one side of an array, or by which arrays repeat an array.
+fn too_many(repetition: &Repetition) -> Option<u128> {
+    match repetition {
+        Repetition::Once | Repetition::List(_) => None,
+        Repetition::Lattice { columns, rows, .. } => {
+            (*columns.max(rows) > MOST_COPIES).then(|| repetition.count())
+        }
+        Repetition::Nested(parts) => {
+            let outer = parts
+                .iter()
+                .skip(1)
+                .fold(1, |n: u128, part| n.saturating_mul(part.count()));
+            if outer > u128::from(MOST_COPIES) {
+                Some(outer)
+            } else {
+                parts.iter().find_map(too_many)
+            }
+        }
+    }
+}
+
 /// Mean distance of figures if they stood evenly: what the deflection jumps from one to the next.
 pub(super) fn spacing(placed: &[Placed<'_>], frame: Rect) -> Nm {
-    let figures: u128 = placed.iter().map(|p| p.repetition.count()).sum();
+    let figures = placed
+        .iter()
+        .fold(0, |n: u128, p| n.saturating_add(p.repetition.count()));
     let area = Nm::from_pm(frame.width()).0 * Nm::from_pm(frame.height()).0;
     Nm((area / (figures.max(1) as f64)).sqrt())
 }

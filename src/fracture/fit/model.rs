@@ -55,6 +55,29 @@ impl Flash {
         }
     }
 
+    /// In equal parts with no side over `greatest`.
+    pub(super) fn parts(&self, greatest: f64) -> Vec<Self> {
+        let cuts = |axis: usize| {
+            #[allow(
+                clippy::cast_possible_truncation,
+                clippy::cast_sign_loss,
+                reason = "clamped to be positive and small"
+            )]
+            let n = (self.length(axis) / greatest).ceil().clamp(1.0, 1e6) as u32;
+            let at =
+                move |i: u32| self.side[axis] + self.length(axis) * f64::from(i) / f64::from(n);
+            (0..n).map(move |i| (at(i), at(i + 1)))
+        };
+        cuts(1)
+            .flat_map(|(y0, y1)| {
+                cuts(0).map(move |(x0, x1)| Self {
+                    side: [x0, y0, x1, y1],
+                    dose: self.dose,
+                })
+            })
+            .collect()
+    }
+
     /// Moved outward by `d` nm on all sides.
     pub(super) fn grown(&self, d: f64) -> Self {
         let s = self.side;
@@ -425,9 +448,9 @@ impl DoseField for Field<'_> {
             }
             let from = cell_index((f.side[0] - reach - x0) / step);
             let to = (cell_index((f.side[2] + reach - x0) / step) + 1).min(out.len());
-            for i in from..to {
+            for (i, value) in out.iter_mut().enumerate().take(to).skip(from) {
                 let x = x_of(i);
-                out[i] += gy
+                *value += gy
                     * (self.phi.cdf((x - f.side[0]) / sigma)
                         - self.phi.cdf((x - f.side[2]) / sigma));
             }

@@ -8,6 +8,9 @@ use super::solve::{Outcome, Solver};
 /// Rounds over the whole figure at most.
 const ROUNDS: usize = 8;
 
+/// A side is outside the limits by more than this, nm: what the fit leaves is less.
+const UNFIT: f64 = 0.06;
+
 /// Steps of one fit.
 const STEPS: usize = 30;
 
@@ -56,6 +59,9 @@ pub(in crate::fracture) fn mend(
             return true;
         }
         // One at a time where all are near one another, since one often mends several places.
+        if hopeless(model) {
+            return false;
+        }
         let places = worst(model, left.min(1 + model.flashes().count() / 16));
         if places.is_empty() {
             return false;
@@ -134,9 +140,9 @@ fn options(model: &Model, place: [f64; 2], must_print: bool) -> Vec<(Vec<usize>,
     }
     for &(_, slot) in near.iter().take(2) {
         let Some(f) = model.get(slot) else { continue };
-        for axis in 0..2 {
+        for (axis, at) in place.iter().enumerate() {
             let (low, high) = (f.side[axis], f.side[axis + 2]);
-            let cut = place[axis].clamp(low + 0.3 * (high - low), high - 0.3 * (high - low));
+            let cut = at.clamp(low + 0.3 * (high - low), high - 0.3 * (high - low));
             let (mut a, mut b) = (f, f);
             a.side[axis + 2] = cut;
             b.side[axis] = cut;
@@ -146,10 +152,20 @@ fn options(model: &Model, place: [f64; 2], must_print: bool) -> Vec<(Vec<usize>,
     options
 }
 
-/// Slots of shots that come nearest to a sample where the rule is broken, ascending.
+/// Slots of shots that come nearest to a sample where the rule is broken, and of those outside the limits, ascending.
 fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
     let reach = 3.0 * model.sigma;
-    let mut slots = Vec::new();
+    let unfit = |f: &Flash| {
+        (0..2).any(|axis| {
+            f.length(axis) < solver.rules.least_side - UNFIT
+                || f.length(axis) > solver.rules.greatest_side + UNFIT
+        })
+    };
+    let mut slots: Vec<usize> = model
+        .flashes()
+        .filter(|(_, f)| unfit(f))
+        .map(|(s, _)| s)
+        .collect();
     for (sample, &dose) in model.samples().iter().zip(model.doses()) {
         if sample.sign * (dose - 0.5) >= solver.rules.guard {
             continue;
@@ -170,6 +186,17 @@ fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
     slots.sort_unstable();
     slots.dedup();
     slots
+}
+
+/// Whether the rule is broken at so many samples that single shots cannot mend it.
+fn hopeless(model: &Model) -> bool {
+    let broken = model
+        .samples()
+        .iter()
+        .zip(model.doses())
+        .filter(|(s, d)| s.sign * (*d - 0.5) < 0.0)
+        .count();
+    5 * broken > model.samples().len()
 }
 
 /// Places that miss the rule by most, far enough apart to be mended one by one; each with whether it must print.

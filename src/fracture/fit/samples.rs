@@ -40,7 +40,7 @@ pub(in crate::fracture) fn samples_of(
     // The rim comes edge by edge; on finely drawn curves that is denser than asked for, so it is thinned by distance.
     let mut last: [Option<[f64; 2]>; 2] = [None, None];
     let least = (0.6 * RIM_STEP * sigma).powi(2);
-    target.rim(RIM_STEP * sigma, false, |p, need| {
+    target.rim(RIM_STEP * sigma, 0.0, false, |p, need| {
         let side = &mut last[usize::from(need == Need::Print)];
         if side.is_none_or(|q| (q[0] - p[0]).powi(2) + (q[1] - p[1]).powi(2) >= least) {
             *side = Some(p);

@@ -1,8 +1,10 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
 use crate::fracture::{Fracture, Job, Miss};
+use crate::geom::Rect;
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
+use crate::units::Nm;
 
 use super::model::{Flash, Model};
 use super::reduce::{Budget, reduce};
@@ -73,11 +75,22 @@ impl<'a> Setting<'a> {
             shots: ShotList::new(self.job.limits.address, Vec::new()),
             violations: self.samples.iter().filter_map(Sample::unprinted).collect(),
         });
-        let misses = fit
+        let limits = &self.job.limits;
+        let fits = |r: &Rect| {
+            let (short, long) = (r.width().min(r.height()), r.width().max(r.height()));
+            Nm::from_pm(short).0 > limits.least_side.0 - 1e-6
+                && Nm::from_pm(long).0 < limits.greatest_side.0 + 1e-6
+        };
+        let unfit = fit
+            .shots
+            .rects()
+            .filter(|(r, _)| !fits(r))
+            .map(|(r, dose)| Miss::unfit(r, dose));
+        let broken = fit
             .violations
             .iter()
-            .map(|v| Miss::of(v, &self.target, self.job.blur))
-            .collect();
+            .map(|v| Miss::of(v, &self.target, self.job.blur));
+        let misses = broken.chain(unfit).collect();
         Fracture {
             shots: fit.shots,
             misses,
@@ -104,8 +117,12 @@ impl<'a> Setting<'a> {
         };
         let mut solver = Solver::new(self.sigma(), rules);
         let mut model = Model::new(self.target.bounds(), self.sigma(), self.samples.clone());
-        solver.score(&model, &[], start);
-        solver.commit(&mut model, &[], start);
+        let start: Vec<Flash> = start
+            .iter()
+            .flat_map(|f| f.parts(rules.greatest_side))
+            .collect();
+        solver.score(&model, &[], &start);
+        solver.commit(&mut model, &[], &start);
         let holds = relax(&mut model, &mut solver, budget.window);
         Attempt {
             setting: self,

@@ -507,13 +507,13 @@ impl Solver {
                 }
                 for (at, (k, a)) in entries.iter().enumerate() {
                     let k = *k as usize;
-                    for i in 0..4 {
-                        self.gradient[k + i] += a[i] * r0;
+                    for (i, slope) in a.iter().enumerate() {
+                        self.gradient[k + i] += slope * r0;
                         let line = &mut self.normal[(k + i) * n..(k + i + 1) * n];
                         for (j, b) in &entries[..=at] {
                             let cells = &mut line[*j as usize..*j as usize + 4];
                             for (cell, b) in cells.iter_mut().zip(b) {
-                                *cell += a[i] * b;
+                                *cell += slope * b;
                             }
                         }
                     }

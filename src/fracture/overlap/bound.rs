@@ -109,7 +109,7 @@ fn windows(
     // The rim comes edge by edge, on finely drawn curves denser than asked for, so it is thinned by distance.
     let mut last: [Option<[f64; 2]>; 2] = [None, None];
     let beyond = 1e-4 * sigma + 1e-6 * target.tolerance();
-    target.rim(CLEAR_STEP * sigma, beyond, |p, need| {
+    target.rim(CLEAR_STEP * sigma, beyond, false, |p, need| {
         let (last, step) = match need {
             Need::Print => (&mut last[0], PRINT_STEP),
             _ => (&mut last[1], CLEAR_STEP),

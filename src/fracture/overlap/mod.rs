@@ -8,13 +8,15 @@
 mod bound;
 
 use super::fit::{Budget, Setting, Slabs, best_of, cover};
-use super::{Effort, Fracture, FractureError, Fracturer, Job};
+use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
 
 /// The overlap fracture.
 #[derive(Clone, Copy, Debug, Default)]
 pub struct Overlap {
     /// How hard to search.
     pub effort: Effort,
+    /// Whether to work out a lower bound too: about half as much work again.
+    pub bound: bool,
 }
 
 /// How far the outline may wander within a first slab, σ; as for tiles.
@@ -29,6 +31,13 @@ impl Fracturer for Overlap {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
+        framed(job, |job| Ok(self.search(job)))
+    }
+}
+
+impl Overlap {
+    /// The fewest shots found that print within tolerance, or the best found.
+    fn search(&self, job: &Job<'_>) -> Fracture {
         let setting = Setting::new(job);
         // What the efforts cost and gain is measured in benches/fracture.rs.
         let (budget, starts) = match self.effort {
@@ -74,12 +83,11 @@ impl Fracturer for Overlap {
                 )
             })
             .collect();
-        let lower_bound = bound::lower_bound(&setting.target, job.blur, &job.limits, |p| {
-            setting.context.dose(p)
+        let mut fracture = setting.reported(best_of(attempts));
+        fracture.lower_bound = self.bound.then(|| {
+            let context = |p| setting.context.dose(p);
+            bound::lower_bound(&setting.target, job.blur, &job.limits, context)
         });
-        Ok(Fracture {
-            lower_bound: Some(lower_bound),
-            ..setting.reported(best_of(attempts))
-        })
+        fracture
     }
 }

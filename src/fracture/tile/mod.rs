@@ -25,7 +25,7 @@ pub use snap::{Snapped, snap};
 pub use staircase::{StaircaseError, StaircaseFracture, fracture_staircase, staircase};
 
 use super::fit::Setting;
-use super::{Effort, Fracture, FractureError, Fracturer, Job};
+use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
 use crate::geom::Rect;
 use crate::shot::{AddressUnit, Shot, ShotList};
 use crate::units::{Dose, Nm};
@@ -47,6 +47,12 @@ impl Fracturer for Tile {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
+        framed(job, |job| self.either(job))
+    }
+}
+
+impl Tile {
+    fn either(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         let rectilinear = job.figure.is_rectilinear();
         let pixels = rectilinear && is_pixel_curve(job.figure, job.blur.sigma());
         if rectilinear && (self.exact || !pixels) {
@@ -60,9 +66,7 @@ impl Fracturer for Tile {
         }
         Ok(fracture)
     }
-}
 
-impl Tile {
     /// The exact partition of a rectilinear figure, cut to the greatest side.
     fn cut(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         let snapped = snap(job.figure, job.limits.address);
@@ -108,6 +112,12 @@ impl Fracturer for Staircase {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
+        framed(job, |job| self.walk(job))
+    }
+}
+
+impl Staircase {
+    fn walk(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         let plain = fracture_staircase(job.figure, self.within, &job.limits)?;
         let mut fracture = Setting::new(job).judged(plain.shots);
         if plain.under_least_side > 0 {

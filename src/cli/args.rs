@@ -1,0 +1,258 @@
+//! Arguments that several commands share, and the parsers of their values.
+
+use std::path::{Path, PathBuf};
+
+use clap::{Arg, ArgMatches, Args, Command, FromArgMatches, ValueEnum};
+
+use crate::fracture::Effort;
+use crate::layout::{self, Layer, Layout};
+use crate::profile::{Key, Profile, ProfileErrors};
+use crate::units::Nm;
+use crate::write_time::Field;
+
+use super::CliError;
+
+/// Which part of which layout.
+#[derive(Debug, Args)]
+pub(super) struct LayoutArgs {
+    /// Layout to read: GDSII (also gzip-compressed), OASIS, or WKT (polygons in nm); told by its content.
+    pub(super) layout: PathBuf,
+    /// Layer to take, as layer/datatype; repeat to unite several. Default: the only layer there is.
+    #[arg(long = "layer", value_name = "L/D", value_parser = layer)]
+    pub(super) layers: Vec<Layer>,
+    /// Mask length per layout length: 4 for wafer-scale data of a 4:1 mask.
+    #[arg(long, value_name = "K", default_value_t = 1.0, value_parser = positive, allow_negative_numbers = true)]
+    pub(super) scale: f64,
+}
+
+impl LayoutArgs {
+    /// Its name for messages.
+    pub(super) fn file(&self) -> String {
+        self.layout.display().to_string()
+    }
+
+    /// Reads it and tells what was repaired.
+    pub(super) fn open(&self) -> Result<Layout, CliError> {
+        let layout = layout::open(&self.layout)?;
+        for note in &layout.notes {
+            eprintln!("note: {}: {note}", self.file());
+        }
+        Ok(layout)
+    }
+}
+
+/// What a writer can flash, without a profile.
+#[derive(Debug, Args)]
+pub(super) struct LimitArgs {
+    /// Least side of a shot, nm.
+    #[arg(long, value_name = "NM", default_value_t = 10.0, value_parser = positive, allow_negative_numbers = true)]
+    pub(super) min_side_nm: f64,
+    /// Greatest side of a shot, nm.
+    #[arg(long, value_name = "NM", default_value_t = 1000.0, value_parser = positive, allow_negative_numbers = true)]
+    pub(super) max_side_nm: f64,
+    /// A shot whose short side is under this is counted as a sliver, nm.
+    #[arg(long, value_name = "NM", default_value_t = 20.0, value_parser = not_negative, allow_negative_numbers = true)]
+    pub(super) sliver_nm: f64,
+    /// Address unit: all shot sides lie on multiples of it, nm.
+    #[arg(long, value_name = "NM", default_value_t = 0.1, value_parser = positive, allow_negative_numbers = true)]
+    pub(super) address_nm: f64,
+}
+
+impl LimitArgs {
+    pub(super) fn limits(&self) -> Result<crate::shot::ShotLimits, CliError> {
+        if self.min_side_nm > self.max_side_nm {
+            return Err(CliError::Arguments(format!(
+                "--min-side-nm is {}, expected at most the {} of --max-side-nm",
+                self.min_side_nm, self.max_side_nm
+            )));
+        }
+        Ok(crate::shot::ShotLimits {
+            address: crate::shot::AddressUnit::new(Nm(self.address_nm))?,
+            least_side: Nm(self.min_side_nm),
+            greatest_side: Nm(self.max_side_nm),
+            sliver: Nm(self.sliver_nm),
+        })
+    }
+}
+
+/// How hard to search.
+#[derive(Clone, Copy, Debug, Default, ValueEnum)]
+pub(super) enum EffortArg {
+    /// One start, few trials.
+    Quick,
+    /// What a quote needs.
+    #[default]
+    Normal,
+    /// All starts: several times the work for a shot less now and then.
+    Thorough,
+}
+
+impl From<EffortArg> for Effort {
+    fn from(effort: EffortArg) -> Self {
+        match effort {
+            EffortArg::Quick => Self::Quick,
+            EffortArg::Normal => Self::Normal,
+            EffortArg::Thorough => Self::Thorough,
+        }
+    }
+}
+
+/// Numbers of a profile given on the command line, by their keys in files.
+#[derive(Clone, Debug)]
+pub(super) struct Overrides(pub(super) Vec<(&'static str, f64)>);
+
+impl Overrides {
+    /// The profile of a name or file with the overrides in.
+    pub(super) fn profile(&self, name: &str) -> Result<Profile, CliError> {
+        let mut profile = open_profile(name)?;
+        profile.set_all(self.0.iter().copied())?;
+        Ok(profile)
+    }
+
+    /// Whether a number was given.
+    pub(super) fn has(&self, key: Key) -> bool {
+        self.0.iter().any(|(name, _)| *name == key.info().name)
+    }
+}
+
+/// A built-in profile by its name, else a file.
+pub(super) fn open_profile(name: &str) -> Result<Profile, CliError> {
+    let builtin = Profile::builtins().any(|builtin| builtin == name);
+    if builtin || !Path::new(name).exists() {
+        return Ok(Profile::builtin(name)?);
+    }
+    let text = std::fs::read_to_string(name).map_err(|cause| CliError::File {
+        file: name.to_owned(),
+        cause,
+    })?;
+    Profile::parse(&text, name).map_err(|errors: ProfileErrors| errors.into())
+}
+
+impl FromArgMatches for Overrides {
+    fn from_arg_matches(matches: &ArgMatches) -> Result<Self, clap::Error> {
+        let given = Key::ALL.iter().filter_map(|key| {
+            let name = key.info().name;
+            Some((name, *matches.get_one::<f64>(name)?))
+        });
+        Ok(Self(given.collect()))
+    }
+
+    fn update_from_arg_matches(&mut self, matches: &ArgMatches) -> Result<(), clap::Error> {
+        *self = Self::from_arg_matches(matches)?;
+        Ok(())
+    }
+}
+
+impl Args for Overrides {
+    fn augment_args(command: Command) -> Command {
+        Key::ALL
+            .iter()
+            .fold(command, |command, &key| command.arg(argument(key)))
+    }
+
+    fn augment_args_for_update(command: Command) -> Command {
+        Self::augment_args(command)
+    }
+}
+
+/// `settle_ns` as `--settle-ns <NS>`.
+fn argument(key: Key) -> Arg {
+    let info = key.info();
+    let value = if info.unit.is_empty() { "N" } else { info.unit };
+    let parse = move |text: &str| {
+        let within = |x: &f64| (info.least..=info.greatest).contains(x);
+        let whole = |x: &f64| !key.is_count() || x.fract() == 0.0;
+        number(text)
+            .ok()
+            .filter(within)
+            .filter(whole)
+            .ok_or_else(|| format!("expected {}", key.expected()))
+    };
+    let arg = Arg::new(info.name)
+        .long(info.name.replace('_', "-"))
+        .value_name(value)
+        .help(info.meaning)
+        .help_heading("Numbers of the profile, each in place of the profile's own")
+        .hide_short_help(true)
+        .allow_negative_numbers(true)
+        .value_parser(parse);
+    match key {
+        Key::LeastSide => arg.visible_alias("min-side-nm"),
+        Key::GreatestSide => arg.visible_alias("max-side-nm"),
+        _ => arg,
+    }
+}
+
+fn number(text: &str) -> Result<f64, String> {
+    text.parse::<f64>()
+        .ok()
+        .filter(|x| x.is_finite())
+        .ok_or_else(|| "expected a finite number".to_owned())
+}
+
+/// A finite number over 0.
+pub(super) fn positive(text: &str) -> Result<f64, String> {
+    number(text)
+        .ok()
+        .filter(|x| *x > 0.0)
+        .ok_or_else(|| "expected a finite number over 0".to_owned())
+}
+
+/// A finite number of 0 or more.
+pub(super) fn not_negative(text: &str) -> Result<f64, String> {
+    number(text)
+        .ok()
+        .filter(|x| *x >= 0.0)
+        .ok_or_else(|| "expected a finite number of 0 or more".to_owned())
+}
+
+/// A share over 0, up to 1.
+pub(super) fn share(text: &str) -> Result<f64, String> {
+    number(text)
+        .ok()
+        .filter(|x| *x > 0.0 && *x <= 1.0)
+        .ok_or_else(|| "expected a number over 0, up to 1".to_owned())
+}
+
+/// `104x132` in millimetres.
+pub(super) fn field_mm(text: &str) -> Result<Field, String> {
+    let sides = text.split_once(['x', '×']);
+    let sides = sides.and_then(|(w, h)| Some((positive(w).ok()?, positive(h).ok()?)));
+    let (width, height) = sides.ok_or("expected two lengths over 0 in mm, as 104x132")?;
+    Ok(Field {
+        width: Nm::from_mm(width),
+        height: Nm::from_mm(height),
+    })
+}
+
+/// `1/0`, or `1` for datatype 0.
+fn layer(text: &str) -> Result<Layer, String> {
+    let (layer, datatype) = text.split_once('/').unwrap_or((text, "0"));
+    let number = |text: &str| {
+        text.parse()
+            .map_err(|_| "expected layer/datatype, two whole numbers as 1/0".to_owned())
+    };
+    Ok(Layer {
+        layer: number(layer)?,
+        datatype: number(datatype)?,
+    })
+}
+
+/// A count, also written as 3e11.
+pub(super) fn count(text: &str) -> Result<u128, String> {
+    let expected = || "expected a whole number of 0 or more, up to 1e24".to_owned();
+    if let Ok(count) = text.parse() {
+        return Ok(count);
+    }
+    let value = number(text).map_err(|_| expected())?;
+    if !(0.0..=1e24).contains(&value) || value.fract() != 0.0 {
+        return Err(expected());
+    }
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "whole and within range"
+    )]
+    let count = value as u128;
+    Ok(count)
+}

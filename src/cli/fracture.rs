@@ -1,0 +1,293 @@
+//! `shotwright fracture`: one fracture of a layout as a shot list.
+
+use std::io::{self, Write};
+use std::path::PathBuf;
+
+use clap::{Args, ValueEnum};
+use serde::Serialize;
+
+use crate::blur::Blur;
+use crate::fracture::overlap::Overlap;
+use crate::fracture::tile::{Staircase, Tile};
+use crate::fracture::{FractureError, Fracturer};
+use crate::judge::Settings;
+use crate::mask::Mask;
+use crate::quote::made::{self, Made};
+use crate::quote::result::{Count, FractureSummary};
+use crate::quote::{Chosen, Setup, summary};
+use crate::report::progress::Progress;
+use crate::report::shots_csv::{Rows, ShotWriter};
+use crate::units::Nm;
+
+use super::args::{EffortArg, LayoutArgs, LimitArgs, positive};
+use super::output::{create, file_error, print, print_json, scores};
+use super::{CliError, Outcome};
+
+/// Fracture a layout into shots.
+///
+/// The result says how the shots print, and names the figures that do not print within tolerance with the place. Exit
+/// status 1 if there is one, or a shot is outside the limits. In the shot list, x and y are the lower-left corner of a shot and w and h its size, nm at mask scale.
+#[derive(Debug, Args)]
+#[command(after_long_help = "Examples:
+  shotwright fracture sample-masks/iso.oas --method overlap --sigma-nm 12 -o shots.csv
+  shotwright fracture sample-masks/array-block.gds --method tile --exact --sigma-nm 12 -o -")]
+pub(super) struct FractureArgs {
+    #[command(flatten)]
+    layout: LayoutArgs,
+    /// How to fracture.
+    #[arg(long, value_enum)]
+    method: MethodArg,
+    /// Standard deviation of the blur, nm.
+    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    sigma_nm: f64,
+    /// How far the printed contour may stray from the drawn outline, nm.
+    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = positive, allow_negative_numbers = true)]
+    tolerance_nm: f64,
+    #[command(flatten)]
+    limits: LimitArgs,
+    /// How far the plain staircase may stray from the outline, nm. Default: the tolerance.
+    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    within_nm: Option<f64>,
+    /// Tile every rectilinear figure exactly, even one that is a curve drawn in pixels.
+    #[arg(long)]
+    exact: bool,
+    /// How hard to search.
+    #[arg(long, value_enum, default_value_t)]
+    effort: EffortArg,
+    /// Where the shots go, as CSV; - is standard output, and the summary then goes to standard error.
+    #[arg(short, long, value_name = "FILE")]
+    output: Option<PathBuf>,
+    /// Write the shots of each distinct figure once, at its first place, instead of at all its places.
+    #[arg(long)]
+    distinct: bool,
+    /// Print the summary as JSON.
+    #[arg(long)]
+    json: bool,
+}
+
+#[derive(Clone, Copy, Debug, ValueEnum)]
+enum MethodArg {
+    /// Plain geometric staircase in tiles, made without a model of the blur.
+    Staircase,
+    /// Shots that do not overlap.
+    Tile,
+    /// Shots that may overlap.
+    Overlap,
+}
+
+#[derive(Serialize)]
+struct Answer {
+    #[serde(flatten)]
+    summary: FractureSummary,
+    figures_distinct: u64,
+    figures_placed: Count,
+    /// Shots at all places with a side outside the limits.
+    shots_beyond_limits: Count,
+    failing: Vec<Failing>,
+}
+
+/// A figure that does not print within tolerance.
+#[derive(Serialize)]
+struct Failing {
+    figure: u64,
+    /// The gravest place, mask coordinates.
+    place_nm: [f64; 2],
+    dose: Option<f64>,
+    reason: String,
+}
+
+/// Failing figures told one by one.
+const MOST_TOLD: usize = 20;
+
+pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
+    let setup = Setup {
+        blur: Blur::new(Nm(args.sigma_nm))
+            .map_err(|error| CliError::Arguments(format!("--sigma-nm: {error}")))?,
+        tolerance: Nm(args.tolerance_nm),
+        limits: args.limits.limits()?,
+    };
+    let to_stdout = args
+        .output
+        .as_ref()
+        .is_some_and(|path| path.as_os_str() == "-");
+    if to_stdout && args.json {
+        return Err(CliError::Arguments(
+            "--json and -o - both want standard output: give -o a file".to_owned(),
+        ));
+    }
+    let file = args
+        .output
+        .as_ref()
+        .filter(|_| !to_stdout)
+        .map(|path| Ok::<_, CliError>((path, create(path)?)))
+        .transpose()?;
+    let layout = args.layout.open()?;
+    let name = args.layout.file();
+    let chosen = Chosen {
+        name: &name,
+        layout: &layout,
+        layers: &args.layout.layers,
+        scale: args.layout.scale,
+    };
+    let mask = chosen
+        .mask(&setup)
+        .map_err(|cause| CliError::mask(&name, cause))?;
+    let bar = Progress::new("figures", 2 * mask.figures.len() as u64);
+    let tick = || bar.inc();
+    let shots = made::fracture(&mask, args.fracturer().as_ref(), &setup, &tick);
+    let settings = Settings::new(setup.blur, setup.tolerance);
+    let made = made::judge(&mask, shots, &settings, &tick);
+    drop(bar);
+    let summary = summary::of_mask(&mask.figures, &made, setup.limits.sliver);
+
+    if let Some((path, mut out)) = file {
+        let rows = write(&mask, &made, args.distinct, &mut out)
+            .map_err(|cause| file_error(path, cause))?;
+        eprintln!("{}: {rows} shots written", path.display());
+    } else if to_stdout {
+        write(&mask, &made, args.distinct, &mut io::stdout().lock()).map_err(CliError::Stdout)?;
+    }
+    let answer = Answer {
+        shots_beyond_limits: Count(beyond_limits(&mask, &made, &setup)),
+        figures_distinct: mask.figures.len() as u64,
+        figures_placed: Count(mask.place_count()),
+        failing: failing(&mask, &made),
+        summary,
+    };
+    for one in answer.failing.iter().take(MOST_TOLD) {
+        let [x, y] = one.place_nm;
+        let dose = one
+            .dose
+            .map_or_else(String::new, |d| format!(", dose {d:.3}"));
+        eprintln!(
+            "figure {} at ({x:.1}, {y:.1}) nm does not print within tolerance{dose}: {}",
+            one.figure, one.reason
+        );
+    }
+    if answer.failing.len() > MOST_TOLD {
+        eprintln!("and {} more figures", answer.failing.len() - MOST_TOLD);
+    }
+    if answer.shots_beyond_limits.0 > 0 {
+        eprintln!(
+            "{} shots have a side outside {} to {} nm",
+            answer.shots_beyond_limits, args.limits.min_side_nm, args.limits.max_side_nm
+        );
+    }
+    if args.json {
+        print_json(&answer)?;
+    } else if to_stdout {
+        eprint!("{}", scores(&answer.summary));
+    } else {
+        print(&scores(&answer.summary))?;
+        if args.output.is_none() {
+            eprintln!("no file written; -o FILE writes the shots");
+        }
+    }
+    let over = !answer.failing.is_empty() || answer.shots_beyond_limits.0 > 0;
+    Ok(Outcome::over_a_limit_if(over))
+}
+
+impl FractureArgs {
+    fn fracturer(&self) -> Box<dyn Fracturer> {
+        let effort = self.effort.into();
+        match self.method {
+            MethodArg::Staircase => Box::new(Staircase {
+                within: Nm(self.within_nm.unwrap_or(self.tolerance_nm)),
+            }),
+            MethodArg::Tile => Box::new(Tile {
+                effort,
+                exact: self.exact,
+                ..Tile::default()
+            }),
+            MethodArg::Overlap => Box::new(Overlap {
+                effort,
+                bound: false,
+            }),
+        }
+    }
+}
+
+/// Writes the shots of all figures; returns the number of lines.
+pub(super) fn write(
+    mask: &Mask,
+    made: &[Result<Made, FractureError>],
+    distinct: bool,
+    out: impl Write,
+) -> io::Result<u64> {
+    let rows = if distinct {
+        Rows::Distinct
+    } else {
+        Rows::Placed
+    };
+    let mut writer = ShotWriter::new(out, rows)?;
+    for (number, (figure, made)) in (0..).zip(mask.figures.iter().zip(made)) {
+        let Ok(made) = made else { continue };
+        let places = figure.places.iter().map(|p| (p.transform, &p.repetition));
+        writer.figure(number, &made.fracture.shots, places)?;
+    }
+    let lines = writer.lines();
+    writer.finish()?;
+    Ok(lines)
+}
+
+fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setup) -> u128 {
+    let (least, greatest) = (setup.limits.least_side, setup.limits.greatest_side);
+    let all = mask.figures.iter().zip(made);
+    all.filter_map(|(figure, made)| {
+        let beyond = summary::beyond_limits(&made.as_ref().ok()?.fracture.shots, least, greatest);
+        Some(figure.place_count().saturating_mul(beyond as u128))
+    })
+    .fold(0, u128::saturating_add)
+}
+
+fn failing(mask: &Mask, made: &[Result<Made, FractureError>]) -> Vec<Failing> {
+    let one = |(figure, made): (usize, &Result<Made, FractureError>)| {
+        let distinct = &mask.figures[figure];
+        let first = made::first_place(distinct);
+        let corner = first.apply_rect(distinct.figure.bounds()).min.to_nm();
+        let failing = |place_nm, dose, reason: String| {
+            Some(Failing {
+                figure: figure as u64,
+                place_nm,
+                dose,
+                reason,
+            })
+        };
+        let made = match made {
+            Ok(made) if made.fidelity.prints_within_tolerance() => return None,
+            Ok(made) => made,
+            Err(error) => return failing(corner, None, error.to_string()),
+        };
+        let worst = made
+            .fracture
+            .misses
+            .iter()
+            .max_by(|a, b| (a.dose.0 - 0.5).abs().total_cmp(&(b.dose.0 - 0.5).abs()));
+        match worst {
+            Some(miss) => {
+                let need = if miss.must_print {
+                    "must print"
+                } else {
+                    "must not print"
+                };
+                let place = first.apply(miss.place).to_nm();
+                failing(
+                    place,
+                    Some(miss.dose.0),
+                    format!("{need}; {}", made::why(miss.reason)),
+                )
+            }
+            None => {
+                let violation = made.fidelity.worst_violations.first();
+                let at = violation.map_or(corner, |v| {
+                    let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
+                    let place = crate::geom::Point::new(pm(v.place[0]), pm(v.place[1]));
+                    first.apply(place).to_nm()
+                });
+                let dose = violation.map(|v| v.dose);
+                failing(at, dose, "the shots of its neighbours reach it".to_owned())
+            }
+        }
+    };
+    made.iter().enumerate().filter_map(one).collect()
+}

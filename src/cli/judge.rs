@@ -1,0 +1,138 @@
+//! `shotwright judge`: the score of any shot list.
+
+use std::fs::File;
+use std::io::BufReader;
+use std::path::PathBuf;
+
+use clap::Args;
+use serde::Serialize;
+
+use crate::blur::Blur;
+use crate::judge::Settings;
+use crate::quote::result::FractureSummary;
+use crate::quote::shots::score;
+use crate::quote::{Chosen, Setup};
+use crate::report::progress::Progress;
+use crate::report::shots_csv;
+use crate::units::Nm;
+
+use super::args::{LayoutArgs, LimitArgs, positive};
+use super::output::{file_error, print, print_json, scores};
+use super::{CliError, Outcome};
+
+/// Score a shot list against a layout.
+///
+/// Every figure at every place is judged on the dose of the whole list. Exit status 1 if one does not print within
+/// tolerance, or a shot is outside the limits.
+#[derive(Debug, Args)]
+#[command(after_long_help = "Examples:
+  shotwright judge sample-masks/iso.oas shots.csv --sigma-nm 12 --tolerance-nm 2
+  shotwright judge clip.gds shots.csv --layer 1/0 --sigma-nm 12 --min-side-nm 10 --json
+
+The shot list needs the columns x_nm, y_nm (lower-left corner), w_nm and h_nm; dose is 1 where there is no such column.")]
+pub(super) struct JudgeArgs {
+    #[command(flatten)]
+    layout: LayoutArgs,
+    /// Shot list, CSV with a header.
+    shots: PathBuf,
+    /// Standard deviation of the blur, nm.
+    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    sigma_nm: f64,
+    /// How far the printed contour may stray from the drawn outline, nm.
+    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = positive, allow_negative_numbers = true)]
+    tolerance_nm: f64,
+    #[command(flatten)]
+    limits: LimitArgs,
+    /// Print JSON.
+    #[arg(long)]
+    json: bool,
+}
+
+#[derive(Serialize)]
+struct Answer {
+    #[serde(flatten)]
+    summary: FractureSummary,
+    /// Shots further than 5 σ from every figure.
+    stray_shots: u64,
+    /// Shots with a side outside the limits.
+    shots_beyond_limits: u64,
+}
+
+/// Failing figures told one by one.
+const MOST_TOLD: usize = 20;
+
+pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
+    let setup = Setup {
+        blur: Blur::new(Nm(args.sigma_nm))
+            .map_err(|error| CliError::Arguments(format!("--sigma-nm: {error}")))?,
+        tolerance: Nm(args.tolerance_nm),
+        limits: args.limits.limits()?,
+    };
+    let input = File::open(&args.shots).map_err(|cause| file_error(&args.shots, cause))?;
+    let layout = args.layout.open()?;
+    let name = args.layout.file();
+    let chosen = Chosen {
+        name: &name,
+        layout: &layout,
+        layers: &args.layout.layers,
+        scale: args.layout.scale,
+    };
+    let mask = chosen
+        .mask(&setup)
+        .map_err(|cause| CliError::mask(&name, cause))?;
+    let file = args.shots.display().to_string();
+    let list = shots_csv::read(BufReader::new(input), setup.limits.address)
+        .map_err(|cause| CliError::Shots { file, cause })?;
+    for note in &list.notes {
+        eprintln!("note: {}: {note}", args.shots.display());
+    }
+    let places = u64::try_from(mask.place_count()).unwrap_or(u64::MAX);
+    let bar = Progress::new("figures", places);
+    let settings = Settings::new(setup.blur, setup.tolerance);
+    let scored = score(&mask, &list.shots, &settings, &setup.limits, &|| bar.inc())
+        .map_err(|cause| CliError::TooManyPlaces { file: name, cause })?;
+    drop(bar);
+    for (figure, transform, fidelity) in scored.failing.iter().take(MOST_TOLD) {
+        let bounds = transform.apply_rect(mask.figures[*figure].figure.bounds());
+        let [x, y] = bounds.min.to_nm();
+        let worst = fidelity.worst_violations.first().map_or_else(
+            || "its pieces or holes are not as drawn".to_owned(),
+            |v| {
+                format!(
+                    "dose {:.3} at ({:.1}, {:.1}) nm",
+                    v.dose, v.place[0], v.place[1]
+                )
+            },
+        );
+        eprintln!(
+            "figure {figure} at ({x:.1}, {y:.1}) nm does not print within tolerance: {worst}"
+        );
+    }
+    if scored.failing.len() > MOST_TOLD {
+        eprintln!("and {} more figures", scored.failing.len() - MOST_TOLD);
+    }
+    if scored.stray > 0 {
+        eprintln!(
+            "{} shots are further than 5 σ from every figure",
+            scored.stray
+        );
+    }
+    if scored.beyond_limits > 0 {
+        eprintln!(
+            "{} shots have a side outside {} to {} nm",
+            scored.beyond_limits, args.limits.min_side_nm, args.limits.max_side_nm
+        );
+    }
+    let prints = scored.summary.prints_within_tolerance == Some(true);
+    let outcome = Outcome::over_a_limit_if(!prints || scored.beyond_limits > 0);
+    if args.json {
+        print_json(&Answer {
+            summary: scored.summary,
+            stray_shots: scored.stray as u64,
+            shots_beyond_limits: scored.beyond_limits as u64,
+        })?;
+    } else {
+        print(&scores(&scored.summary))?;
+    }
+    Ok(outcome)
+}

@@ -1,0 +1,197 @@
+//! Every distinct figure fractured once and judged once, with its neighbours' shots.
+
+use rayon::prelude::*;
+
+use crate::blur::{Blur, REACH};
+use crate::expose::Exposure;
+use crate::fracture::{Fracture, FractureError, Fracturer, Job, MissReason};
+use crate::geom::{Figure, Rect, Transform};
+use crate::judge::{self, Fidelity};
+use crate::mask::{DistinctFigure, Mask, Standings};
+use crate::shot::ShotLimits;
+use crate::target::DoseField;
+use crate::units::{Dose, Nm};
+
+/// What all figures of a mask are fractured for.
+#[derive(Clone, Copy, Debug)]
+pub struct Setup {
+    /// The short-range blur.
+    pub blur: Blur,
+    /// How far the contour may stray from the outline.
+    pub tolerance: Nm,
+    /// What the writer can flash.
+    pub limits: ShotLimits,
+}
+
+/// One fracture of one distinct figure with its score.
+#[derive(Clone, Debug)]
+pub struct Made {
+    /// Shots in the figure's own frame, and what the fracturer says of them.
+    pub fracture: Fracture,
+    /// How they print together with the shots of the neighbours at the figure's first place.
+    pub fidelity: Fidelity,
+    /// Greatest dose on a lattice of σ/2 over what is flashed.
+    pub peak: Dose,
+}
+
+/// Fractures every distinct figure; `tick` is called after each.
+#[must_use]
+pub fn fracture(
+    mask: &Mask,
+    fracturer: &dyn Fracturer,
+    setup: &Setup,
+    tick: &(dyn Fn() + Sync),
+) -> Vec<Result<Fracture, FractureError>> {
+    let one = |distinct: &DistinctFigure| {
+        let made = fracturer.fracture(&Job {
+            figure: &distinct.figure,
+            context: &distinct.context,
+            blur: setup.blur,
+            tolerance: setup.tolerance,
+            limits: setup.limits,
+        });
+        tick();
+        made
+    };
+    mask.figures.par_iter().map(one).collect()
+}
+
+/// Judges every distinct figure on the dose of its own shots and of those its neighbours got; `tick` is called after each.
+///
+/// Neighbours are those at the figure's first place: at its other places the same figures stand, fractured for their own
+/// contexts, which may differ beyond the reach of the blur.
+#[must_use]
+pub fn judge(
+    mask: &Mask,
+    fractures: Vec<Result<Fracture, FractureError>>,
+    settings: &judge::Settings,
+    tick: &(dyn Fn() + Sync),
+) -> Vec<Result<Made, FractureError>> {
+    let standings = Standings::new(mask);
+    let judged: Vec<Option<(Fidelity, Dose)>> = (0..fractures.len())
+        .into_par_iter()
+        .map(|i| {
+            let own = fractures[i].as_ref().ok()?;
+            let scene = Scene::of(mask, &standings, &fractures, i, settings.blur);
+            let fidelity = judge::judge(
+                &mask.figures[i].figure,
+                &scene.neighbours,
+                &scene.dose,
+                settings,
+            );
+            let peak = peak(&scene.dose, own);
+            tick();
+            Some((fidelity, peak))
+        })
+        .collect();
+    let made = |(fracture, judged): (Result<Fracture, FractureError>, _)| {
+        let (fidelity, peak) = match judged {
+            Some(judged) => judged,
+            None => (Fidelity::default(), Dose(0.0)),
+        };
+        fracture.map(|fracture| Made {
+            fracture,
+            fidelity,
+            peak,
+        })
+    };
+    fractures.into_iter().zip(judged).map(made).collect()
+}
+
+/// A figure at its first place with all that reaches it, in its own frame.
+pub struct Scene {
+    /// Other figures whose bounds come within 5 σ of its bounds.
+    pub neighbours: Vec<Figure>,
+    /// The dose of all their shots and its own.
+    pub dose: Exposure,
+}
+
+impl Scene {
+    /// Around figure number `figure`; a neighbour without shots adds no dose.
+    #[must_use]
+    pub fn of(
+        mask: &Mask,
+        standings: &Standings<'_>,
+        fractures: &[Result<Fracture, FractureError>],
+        figure: usize,
+        blur: Blur,
+    ) -> Self {
+        let distinct = &mask.figures[figure];
+        let first = first_place(distinct);
+        let back = first.inverse();
+        let window = window(distinct, blur);
+        let (mut neighbours, mut flashes) = (Vec::new(), Vec::new());
+        for (other, transform) in standings.touching(first.apply_rect(window)) {
+            let own = other == figure && transform == first;
+            let into_frame = transform.then(back);
+            if !own {
+                neighbours.push(mask.figures[other].figure.transformed(into_frame));
+            }
+            if let Ok(fracture) = &fractures[other] {
+                let rects = fracture.shots.rects();
+                let moved = rects.map(|(rect, dose)| (into_frame.apply_rect(rect), dose));
+                flashes.extend(moved.filter(|(rect, _)| own || rect.touches(window)));
+            }
+        }
+        Self {
+            neighbours,
+            dose: Exposure::new(blur, flashes),
+        }
+    }
+}
+
+/// Own frame → mask at the first place of a figure.
+#[must_use]
+pub fn first_place(distinct: &DistinctFigure) -> Transform {
+    distinct
+        .places
+        .first()
+        .map_or(Transform::IDENTITY, |place| {
+            let by = place.repetition.displacements().next().unwrap_or_default();
+            Transform {
+                shift: place.transform.shift + by,
+                ..place.transform
+            }
+        })
+}
+
+/// Why a place is missed, in words.
+#[must_use]
+pub const fn why(reason: MissReason) -> &'static str {
+    match reason {
+        MissReason::TooNarrow => "narrower than the blur can print",
+        MissReason::TooSharp => "turns more sharply than the blur can follow",
+        MissReason::Limits => "the limits of a shot's sides stand in the way",
+        MissReason::NotFound => "no better shots were found",
+    }
+}
+
+/// What the blur carries to a figure, in its own frame.
+fn window(distinct: &DistinctFigure, blur: Blur) -> Rect {
+    let reach = (blur.sigma() * REACH).to_pm().unwrap_or_default();
+    distinct.figure.bounds().grown(reach)
+}
+
+/// Greatest dose on a lattice of σ/2 over a figure's shots.
+fn peak(dose: &Exposure, fracture: &Fracture) -> Dose {
+    let rects = fracture.shots.rects().map(|(rect, _)| rect);
+    let Some(around) = rects.reduce(Rect::hull) else {
+        return Dose(0.0);
+    };
+    let ([x0, y0], [x1, y1]) = (around.min.to_nm(), around.max.to_nm());
+    let step = 0.5 * dose.blur().sigma().0;
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "a positive length over σ/2; a float to integer cast saturates"
+    )]
+    let count = |length: f64| (length / step) as usize + 2;
+    let mut row = vec![0.0; count(x1 - x0)];
+    let mut peak = 0.0_f64;
+    for j in 0..count(y1 - y0) {
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        dose.row(y0 + j as f64 * step, x0, step, &mut row);
+        peak = row.iter().copied().fold(peak, f64::max);
+    }
+    Dose(peak)
+}

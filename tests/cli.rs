@@ -1,0 +1,522 @@
+//! The program as its user meets it: every subcommand, good and bad input, exit status, where text goes.
+
+use std::fs;
+use std::path::{Path, PathBuf};
+
+use assert_cmd::Command;
+use serde_json::Value;
+
+/// A disc of 24 edges, 200 nm across, and a square of 180 nm, 300 nm apart.
+const SHAPES: &str = "POLYGON ((100 0, 96.6 25.9, 86.6 50, 70.7 70.7, 50 86.6, 25.9 96.6, 0 100, -25.9 96.6, -50 86.6, -70.7 70.7, -86.6 50, -96.6 25.9, -100 0, -96.6 -25.9, -86.6 -50, -70.7 -70.7, -50 -86.6, -25.9 -96.6, 0 -100, 25.9 -96.6, 50 -86.6, 70.7 -70.7, 86.6 -50, 96.6 -25.9, 100 0))
+POLYGON ((400 -90, 580 -90, 580 90, 400 90, 400 -90))
+";
+
+fn shotwright() -> Command {
+    Command::new(env!("CARGO_BIN_EXE_shotwright"))
+}
+
+fn sample(name: &str) -> PathBuf {
+    Path::new(env!("CARGO_MANIFEST_DIR"))
+        .join("sample-masks")
+        .join(name)
+}
+
+fn two_layers() -> PathBuf {
+    Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/cli/two-layers.oas")
+}
+
+/// A directory that holds `shapes.wkt`.
+fn with_shapes() -> (tempfile::TempDir, PathBuf) {
+    let directory = tempfile::tempdir().unwrap();
+    let layout = directory.path().join("shapes.wkt");
+    fs::write(&layout, SHAPES).unwrap();
+    (directory, layout)
+}
+
+/// Runs to the exit status expected; returns standard output and standard error.
+fn run(command: &mut Command, status: i32) -> (String, String) {
+    let output = command.output().unwrap();
+    let text = |bytes: &[u8]| String::from_utf8(bytes.to_vec()).unwrap();
+    let (out, err) = (text(&output.stdout), text(&output.stderr));
+    assert_eq!(output.status.code(), Some(status), "{out}\n{err}");
+    (out, err)
+}
+
+fn json(text: &str) -> Value {
+    serde_json::from_str(text).unwrap_or_else(|error| panic!("{error}: {text}"))
+}
+
+fn number(value: &Value, path: &str) -> f64 {
+    let found = value.pointer(path).and_then(Value::as_f64);
+    found.unwrap_or_else(|| panic!("no number at {path} in {value}"))
+}
+
+/// Hours of CHECKS 5: µC/cm² ÷ A/cm² = µs by definition, worked by hand.
+#[test]
+fn hours_without_a_layout() {
+    for (shots, dose, current, settle, expected) in [
+        ("1e11", "20", "200", "100", 8.333),
+        ("3e11", "25", "400", "60", 15.208),
+        ("5e11", "30", "1200", "50", 17.361),
+        ("1e12", "75", "1200", "50", 45.139),
+    ] {
+        let args = [
+            "hours",
+            "--shots",
+            shots,
+            "--base-dose-uc-cm2",
+            dose,
+            "--current-a-cm2",
+            current,
+            "--settle-ns",
+            settle,
+            "--passes",
+            "2",
+        ];
+        let (out, err) = run(shotwright().args(args).arg("--json"), 0);
+        assert!(err.is_empty(), "{err}");
+        let hours = json(&out);
+        let total = number(&hours, "/total_h");
+        assert!((total - expected).abs() < 5e-4, "{shots}: {total}");
+        let parts: f64 = ["flash_h", "settle_h", "subfield_h", "stage_h", "overhead_h"]
+            .iter()
+            .map(|part| number(&hours, &format!("/{part}")))
+            .sum();
+        assert!((parts - total).abs() < 1e-12 * total);
+        let (out, _) = run(shotwright().args(args), 0);
+        assert!(out.contains(&format!("{expected:.3} h")), "{out}");
+    }
+}
+
+#[test]
+fn bad_numbers_are_refused_by_name() {
+    let hours = |flag: &str, value: &str| {
+        let mut command = shotwright();
+        command.args(["hours", "--shots", "1e9", "--base-dose-uc-cm2", "25"]);
+        command.args(["--current-a-cm2", "400"]);
+        command.args([flag, value]);
+        run(&mut command, 2).1
+    };
+    for (flag, value) in [
+        ("--settle-ns", "nan"),
+        ("--settle-ns", "-1"),
+        ("--stage-mm-s", "inf"),
+        ("--sigma-nm", "0"),
+        ("--passes", "1.5"),
+        ("--mean-dose", "-2"),
+        ("--field-mm", "104"),
+        ("--field-mm", "104x-1"),
+        ("--threads", "0"),
+    ] {
+        let error = hours(flag, value);
+        assert!(error.contains(flag) && error.contains(value), "{error}");
+    }
+    let (_, error) = run(
+        shotwright().args(["hours", "--shots", "-3", "--current-a-cm2", "400"]),
+        2,
+    );
+    assert!(
+        error.contains("--shots") && error.contains("expected a whole number"),
+        "{error}"
+    );
+    let (_, error) = run(shotwright().args(["hours", "--shots", "3"]), 2);
+    assert!(error.contains("--current-a-cm2 is not given"), "{error}");
+}
+
+#[test]
+fn profiles_are_listed_printed_and_read_again() {
+    let (out, _) = run(shotwright().arg("profile"), 0);
+    assert!(
+        out.lines().count() >= 6 && out.contains("shaped-400"),
+        "{out}"
+    );
+    let (text, _) = run(shotwright().args(["profile", "shaped-800"]), 0);
+    let (directory, _) = with_shapes();
+    let file = directory.path().join("mine.toml");
+    fs::write(&file, &text).unwrap();
+    let hours = |profile: &str| {
+        let mut command = shotwright();
+        command.args(["hours", "--shots", "1e10", "--profile", profile, "--json"]);
+        run(&mut command, 0).0
+    };
+    assert_eq!(hours("shaped-800"), hours(file.to_str().unwrap()));
+    fs::write(&file, text.replace("settle_ns", "setle_ns")).unwrap();
+    let (_, error) = run(
+        shotwright()
+            .args(["hours", "--shots", "1", "--profile"])
+            .arg(&file),
+        2,
+    );
+    assert!(
+        error.contains("mine.toml:") && error.contains("`setle_ns`"),
+        "{error}"
+    );
+    let (_, error) = run(shotwright().args(["profile", "nobody"]), 2);
+    assert!(error.contains("no built-in profile `nobody`"), "{error}");
+}
+
+#[test]
+fn inspect_counts_what_a_layout_holds() {
+    let (out, _) = run(shotwright().arg("inspect").arg(two_layers()), 0);
+    assert!(out.contains("1/0") && out.contains("10/0"), "{out}");
+    let (out, _) = run(
+        shotwright()
+            .arg("inspect")
+            .arg(sample("array-block.gds"))
+            .arg("--json"),
+        0,
+    );
+    let contents = json(&out);
+    assert_eq!(contents["layers"][0]["layer"], "1/0");
+    assert_eq!(number(&contents, "/layers/0/polygons"), 1431.0);
+    assert_eq!(number(&contents, "/layers/0/curved_share"), 0.0);
+    let (out, _) = run(
+        shotwright()
+            .args(["inspect", "--layer", "1/0", "--scale", "4", "--json"])
+            .arg(two_layers()),
+        0,
+    );
+    let contents = json(&out);
+    assert_eq!(contents["layers"].as_array().map(Vec::len), Some(1));
+    assert_eq!(number(&contents, "/layers/0/extent_nm/0"), 4.0 * 2594.0);
+}
+
+#[test]
+fn layouts_that_cannot_be_taken_are_refused_with_place_found_and_expected() {
+    let (directory, _) = with_shapes();
+    let broken = directory.path().join("broken.wkt");
+    fs::write(&broken, "POLYGON ((0 0, 1 x, 2 2, 0 0))").unwrap();
+    let (_, error) = run(shotwright().arg("inspect").arg(&broken), 2);
+    assert!(
+        error.contains("broken.wkt: line 1, column") && error.contains("expected"),
+        "{error}"
+    );
+    let (_, error) = run(
+        shotwright()
+            .args(["quote", "--slot-h", "24"])
+            .arg(two_layers()),
+        2,
+    );
+    assert!(
+        error.contains("1/0 (7 polygons), 10/0 (1 polygon)") && error.contains("hint: "),
+        "{error}"
+    );
+    let (_, error) = run(
+        shotwright()
+            .args([
+                "fracture",
+                "--method",
+                "tile",
+                "--sigma-nm",
+                "12",
+                "--layer",
+                "7/7",
+            ])
+            .arg(two_layers()),
+        2,
+    );
+    assert!(error.contains("layer 7/7 holds no polygon"), "{error}");
+    let (_, error) = run(shotwright().args(["inspect", "nowhere.gds"]), 2);
+    assert!(error.contains("nowhere.gds: cannot be read"), "{error}");
+}
+
+#[test]
+fn fractured_shots_are_judged_alike_when_read_back() {
+    let (directory, layout) = with_shapes();
+    let csv = directory.path().join("shots.csv");
+    for method in ["staircase", "tile", "overlap"] {
+        let mut command = shotwright();
+        command
+            .arg("fracture")
+            .arg(&layout)
+            .args(["--method", method]);
+        command.args(["--sigma-nm", "12", "--tolerance-nm", "2", "--json", "-o"]);
+        let output = command.arg(&csv).output().unwrap();
+        let made = json(&String::from_utf8(output.stdout).unwrap());
+        let mut command = shotwright();
+        command.arg("judge").arg(&layout).arg(&csv);
+        command.args(["--sigma-nm", "12", "--tolerance-nm", "2", "--json"]);
+        let judged = command.output().unwrap();
+        assert_eq!(judged.status.code(), output.status.code(), "{method}");
+        let judged = json(&String::from_utf8(judged.stdout).unwrap());
+        for same in [
+            "shots",
+            "smallest_side_nm",
+            "slivers",
+            "prints_within_tolerance",
+            "shots_beyond_limits",
+        ] {
+            assert_eq!(made[same], judged[same], "{method}: {same}");
+        }
+        // Samples of a ring begin elsewhere in another frame, and sums round differently.
+        for near in [
+            "/edge_error_nm/worst",
+            "/margin_nm_per_pct/median",
+            "/out_of_tolerance_share",
+        ] {
+            let (a, b) = (number(&made, near), number(&judged, near));
+            assert!((a - b).abs() < 0.02, "{method}: {near} is {a}, then {b}");
+        }
+        if method != "staircase" {
+            assert_eq!(made["prints_within_tolerance"], true, "{method}");
+            assert_eq!(output.status.code(), Some(0), "{method}");
+        }
+        let text = fs::read_to_string(&csv).unwrap();
+        assert!(text.starts_with("figure,place,x_nm,y_nm,w_nm,h_nm,dose\n"));
+        assert_eq!(text.lines().count() as f64, 1.0 + number(&made, "/shots"));
+    }
+}
+
+/// A shot list with a gap, and one with a shot far off: both must fail.
+#[test]
+fn judge_sees_what_is_missing_and_what_is_too_much() {
+    let (directory, layout) = with_shapes();
+    let csv = directory.path().join("shots.csv");
+    let square = "x_nm,y_nm,w_nm,h_nm\n400,-90,180,180\n";
+    let only_square = directory.path().join("square.wkt");
+    fs::write(&only_square, SHAPES.lines().nth(1).unwrap()).unwrap();
+    let judge = |layout: &Path, shots: &str, status| {
+        fs::write(&csv, shots).unwrap();
+        let mut command = shotwright();
+        command
+            .arg("judge")
+            .arg(layout)
+            .arg(&csv)
+            .args(["--sigma-nm", "12", "--json"]);
+        let (out, err) = run(&mut command, status);
+        (json(&out), err)
+    };
+    let (exact, _) = judge(&only_square, square, 0);
+    // Where the corner zone ends, 2 σ along the edge, the other edge takes 1 − Φ(2) of the dose: (½ − ½·Φ(2))/(0.398942/σ).
+    let greatest = 0.5 * 0.022_750 * 12.0 / 0.398_942;
+    assert!(number(&exact, "/edge_error_nm/worst") < greatest, "{exact}");
+    // Closed form: at a wide edge 1 % of dose moves the contour by 0.01·½/(0.398942/σ).
+    let margin = number(&exact, "/margin_nm_per_pct/median");
+    assert!(
+        (margin - 0.005 * 12.0 / 0.398_942).abs() < 0.002,
+        "{margin}"
+    );
+    let (missing, err) = judge(&layout, square, 1);
+    assert_eq!(missing["figures_out_of_tolerance"], 1);
+    assert!(err.contains("does not print within tolerance"), "{err}");
+    let far = format!("{square}5000,5000,100,100\n");
+    let (stray, err) = judge(&only_square, &far, 1);
+    assert_eq!(stray["stray_shots"], 1);
+    assert_eq!(stray["prints_within_tolerance"], false);
+    assert!(err.contains("further than 5 σ"), "{err}");
+    fs::write(&csv, "x_nm,y_nm,w_nm,h_nm\n0,0,nan,5\n").unwrap();
+    let mut command = shotwright();
+    command
+        .arg("judge")
+        .arg(&layout)
+        .arg(&csv)
+        .args(["--sigma-nm", "12"]);
+    let (_, error) = run(&mut command, 2);
+    assert!(
+        error.contains("shots.csv: line 2, column w_nm: found `nan`"),
+        "{error}"
+    );
+}
+
+#[test]
+fn shots_go_to_standard_output_and_the_summary_aside() {
+    let (_directory, layout) = with_shapes();
+    let mut command = shotwright();
+    command.arg("fracture").arg(&layout);
+    command.args(["--method", "overlap", "--sigma-nm", "12", "-o", "-"]);
+    let (out, err) = run(&mut command, 0);
+    assert!(out.starts_with("figure,place,"), "{out}");
+    assert!(err.contains("prints within tolerance"), "{err}");
+    let (_, error) = run(command.arg("--json"), 2);
+    assert!(error.contains("standard output"), "{error}");
+}
+
+#[test]
+fn a_figure_out_of_tolerance_ends_a_fracture_with_status_1() {
+    let (directory, _) = with_shapes();
+    let hair = directory.path().join("hair.wkt");
+    // 10 nm wide under a blur of 12 nm: under 1.349 σ no line prints at dose 1, and tiles do not overlap.
+    fs::write(&hair, "POLYGON ((0 0, 300 0, 300 10, 0 10, 0 0))").unwrap();
+    let mut command = shotwright();
+    command
+        .arg("fracture")
+        .arg(&hair)
+        .args(["--method", "tile", "--sigma-nm", "12"]);
+    let (_, err) = run(&mut command, 1);
+    assert!(
+        err.contains("figure 0 at") && err.contains("must print"),
+        "{err}"
+    );
+}
+
+#[test]
+fn a_quote_says_whether_it_fits_and_writes_its_files() {
+    let (directory, layout) = with_shapes();
+    let out = directory.path().join("out");
+    let mut command = shotwright();
+    command
+        .arg("quote")
+        .arg(&layout)
+        .args(["--slot-h", "24", "--sliver-nm", "10", "--out"])
+        .arg(&out);
+    let (text, _) = run(&mut command, 0);
+    for word in [
+        "staircase",
+        "overlap",
+        "Fits the slot of 24 h",
+        "profile shaped-400, sigma 14 nm",
+        "for the clip alone",
+        "This is an estimate",
+    ] {
+        assert!(text.contains(word), "{word}: {text}");
+    }
+    let quote = json(&fs::read_to_string(out.join("quote.json")).unwrap());
+    for method in ["staircase", "tile", "overlap"] {
+        let fracture = &quote["fractures"][method];
+        let lines = |file: &str| fs::read_to_string(out.join(file)).unwrap().lines().count() as f64;
+        if method != "staircase" {
+            assert_eq!(
+                lines(&format!("shots-{method}.csv")),
+                1.0 + number(fracture, "/shots")
+            );
+            assert_eq!(fracture["prints_within_tolerance"], true);
+        }
+        for path in [
+            "/smallest_side_nm",
+            "/slivers",
+            "/edge_error_nm/mean",
+            "/edge_error_nm/p95",
+            "/edge_error_nm/worst",
+            "/out_of_tolerance_share",
+            "/margin_nm_per_pct/median",
+            "/margin_nm_per_pct/worst",
+        ] {
+            number(fracture, path);
+        }
+        let parts: f64 = ["flash_h", "settle_h", "subfield_h", "stage_h", "overhead_h"]
+            .iter()
+            .map(|part| number(fracture, &format!("/hours/{part}")))
+            .sum();
+        let total = number(fracture, "/hours/total_h");
+        assert!((parts - total).abs() < 1e-9 * total);
+    }
+    assert!(quote["verdict"]["fits"] == "yes" && quote["flags"].is_array());
+    assert!(quote["recommended"].is_string());
+    assert!(fs::metadata(out.join("overview.png")).unwrap().len() > 1000);
+    assert_eq!(
+        fs::read_to_string(out.join("figures.csv"))
+            .unwrap()
+            .lines()
+            .count(),
+        3
+    );
+
+    let mut command = shotwright();
+    command
+        .arg("quote")
+        .arg(&layout)
+        .args(["--slot-h", "0.5", "--json"]);
+    let (text, err) = run(&mut command, 1);
+    assert_eq!(json(&text)["verdict"]["fits"], "no");
+    assert!(err.contains("no files written"), "{err}");
+}
+
+#[test]
+fn a_quote_of_a_field_counts_copies_of_the_clip() {
+    let (_directory, layout) = with_shapes();
+    let mut command = shotwright();
+    command
+        .arg("quote")
+        .arg(&layout)
+        .args(["--slot-h", "1000", "--effort", "quick"]);
+    command.args([
+        "--field-mm",
+        "10x10",
+        "--coverage",
+        "0.5",
+        "--settle-ns",
+        "0",
+        "--json",
+    ]);
+    let output = command.output().unwrap();
+    let quote = json(&String::from_utf8(output.stdout).unwrap());
+    let tile = &quote["fractures"]["tile"];
+    assert_eq!(number(tile, "/hours/settle_h"), 0.0);
+    // By hand: every shot of the clip at the shares of the field over the clip's box, flashed in D·Q/J.
+    assert_eq!(number(&quote, "/scaled_to_field/coverage"), 0.5);
+    assert!(number(tile, "/hours/flash_h") > 0.01, "{tile}");
+    let mut command = shotwright();
+    command
+        .arg("quote")
+        .arg(&layout)
+        .args(["--field-mm", "10x10"]);
+    let (_, error) = run(&mut command, 2);
+    assert!(error.contains("--coverage"), "{error}");
+}
+
+#[test]
+fn a_hair_is_flagged_as_not_printable() {
+    let (directory, _) = with_shapes();
+    let layout = directory.path().join("hair.wkt");
+    let hair = "POLYGON ((0 600, 300 600, 300 610, 0 610, 0 600))";
+    fs::write(&layout, format!("{SHAPES}{hair}\n")).unwrap();
+    let mut command = shotwright();
+    command
+        .arg("quote")
+        .arg(&layout)
+        .args(["--effort", "quick", "--json"]);
+    let (out, _) = run(&mut command, 0);
+    let quote = json(&out);
+    let flag = &quote["flags"][0];
+    assert_eq!(flag["kind"], "not_printable_at_this_blur");
+    assert!((number(flag, "/number") - 10.0).abs() < 0.2, "{flag}");
+    let near = |path, expected: f64| (number(flag, path) - expected).abs() < 1.0;
+    assert!(
+        near("/place_nm/0", 0.0) && near("/place_nm/1", 600.0),
+        "{flag}"
+    );
+    let remedy = flag["remedy"].as_str().unwrap();
+    assert!(remedy.contains("widen it to 18.9 nm"), "{remedy}"); // 1.349 σ, σ = 14
+}
+
+#[test]
+fn a_raster_writer_has_hours_but_no_shots() {
+    let (_directory, layout) = with_shapes();
+    let mut command = shotwright();
+    command
+        .arg("quote")
+        .arg(&layout)
+        .args(["--profile", "raster"]);
+    let (_, error) = run(&mut command, 2);
+    assert!(error.contains("raster writer flashes no shots"), "{error}");
+    // 137.28 cm² at 100 µC/cm² and 1 µA: 3.813 h (t = D·A/I).
+    let mut command = shotwright();
+    command.args([
+        "hours",
+        "--shots",
+        "0",
+        "--beam-na",
+        "1000",
+        "--base-dose-uc-cm2",
+        "100",
+    ]);
+    let (out, _) = run(command.args(["--field-mm", "104x132", "--json"]), 0);
+    assert!(
+        (number(&json(&out), "/total_h") - 3.813).abs() < 5e-4,
+        "{out}"
+    );
+}
+
+#[test]
+fn help_and_version_go_to_standard_output() {
+    let (out, _) = run(shotwright().arg("--version"), 0);
+    assert!(out.starts_with("shotwright "), "{out}");
+    for command in ["quote", "inspect", "fracture", "judge", "hours", "profile"] {
+        let (out, err) = run(shotwright().args([command, "--help"]), 0);
+        assert!(
+            out.contains("Usage: shotwright") && out.contains("Examples:"),
+            "{out}"
+        );
+        assert!(err.is_empty(), "{err}");
+    }
+}
