@@ -134,6 +134,9 @@ impl EdgeSd {
     }
 }
 
+/// Into the figure and out of it, along an outward normal.
+const BOTH: [f64; 2] = [-1.0, 1.0];
+
 /// A place where a dose breaks the rule.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Violation {
@@ -331,15 +334,14 @@ impl Target {
     /// Places just beyond the tolerance on both sides of the outline, where the rule bites first.
     ///
     /// At most `step` nm apart along every edge and around every vertex; each is given with its need (never
-    /// [`Need::Free`]). `beyond` (nm, small) pushes them that much further out than the tolerance.
-    pub fn rim(&self, step: f64, beyond: f64, mut each: impl FnMut([f64; 2], Need)) {
-        let mut offer = |q: [f64; 2], n: [f64; 2], tolerance: f64| {
-            for side in [-1.0, 1.0] {
-                let reach = side * (tolerance + beyond);
+    /// [`Need::Free`]). `creases` adds, at every vertex, the point where the lines beside its two edges meet.
+    pub fn rim(&self, step: f64, creases: bool, mut each: impl FnMut([f64; 2], Need)) {
+        let mut offer = |q: [f64; 2], n: [f64; 2], tolerance: f64, sides: &[f64]| {
+            for side in sides {
+                let reach = side * tolerance;
                 let p = [q[0] + reach * n[0], q[1] + reach * n[1]];
                 // A hair under the tolerance, or rounding would free the very places meant here.
-                if !self.outline_within(p, self.tolerance_at(p) + beyond - 1e-7 * (1.0 + tolerance))
-                {
+                if !self.outline_within(p, self.tolerance_at(p) - 1e-7 * (1.0 + tolerance)) {
                     each(
                         p,
                         if self.inside(p) {
@@ -368,9 +370,9 @@ impl Target {
             for k in 0..=pieces {
                 #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
                 let q = edge.at(k as f64 / pieces as f64);
-                offer(q, normal, self.tolerance);
+                offer(q, normal, self.tolerance, &BOTH);
                 if self.corner_within(q, zone) {
-                    offer(q, normal, self.corner_tolerance());
+                    offer(q, normal, self.corner_tolerance(), &BOTH);
                 }
             }
             let ends_ring = i + 1 == self.edges.len() || self.edges[i + 1].a != edge.b;
@@ -379,21 +381,27 @@ impl Target {
             } else {
                 self.edges[i + 1]
             };
-            self.fan(edge, &next, step, &mut offer);
+            self.fan(edge, &next, step, creases, &mut offer);
             previous = if ends_ring { None } else { Some((*edge, i)) };
         }
     }
 
-    /// Normals between those of two consecutive edges, so that the arcs around a vertex are covered too.
+    /// Places about a vertex: normals between those of its two edges, so that the arc on the wide side is covered, and
+    /// the point where the lines beside its edges meet on the narrow side.
     fn fan(
         &self,
         edge: &Edge,
         next: &Edge,
         step: f64,
-        offer: &mut impl FnMut([f64; 2], [f64; 2], f64),
+        creases: bool,
+        offer: &mut impl FnMut([f64; 2], [f64; 2], f64, &[f64]),
     ) {
         let (m, n) = (edge.outward(), next.outward());
         let turn = (m[0] * n[1] - m[1] * n[0]).atan2(m[0] * n[0] + m[1] * n[1]);
+        let toward = |angle: f64| {
+            let (s, c) = angle.sin_cos();
+            [m[0] * c - m[1] * s, m[0] * s + m[1] * c]
+        };
         for tolerance in [self.tolerance, self.corner_tolerance()] {
             if tolerance > self.tolerance && !self.in_corner_zone(edge.b) {
                 continue;
@@ -406,18 +414,28 @@ impl Target {
             let pieces = ((turn.abs() * tolerance / step).ceil() as usize).max(1);
             for k in 1..pieces {
                 #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-                let (s, c) = (turn * k as f64 / pieces as f64).sin_cos();
                 offer(
                     edge.b,
-                    [m[0] * c - m[1] * s, m[0] * s + m[1] * c],
+                    toward(turn * k as f64 / pieces as f64),
                     tolerance,
+                    &BOTH,
+                );
+            }
+            let half = 0.5 * turn;
+            // Beyond a turn of 160° the two lines meet further off than the edges are long.
+            if creases && half.cos() > 0.17 {
+                offer(
+                    edge.b,
+                    toward(half),
+                    tolerance / half.cos(),
+                    &[-turn.signum()],
                 );
             }
         }
     }
 
-    /// Every place found where a dose breaks the rule: along the rim at `rim_step` nm and on a lattice of
-    /// `lattice_step` nm over the bounds grown by `margin` nm.
+    /// Every place found where a dose breaks the rule by more than it may: along the rim at `rim_step` nm and on a lattice of
+    /// `lattice_step` nm over the bounds grown by `margin` nm. A dose is asked to keep `spare` off the threshold.
     #[must_use]
     pub fn violations(
         &self,
@@ -425,11 +443,19 @@ impl Target {
         rim_step: f64,
         lattice_step: f64,
         margin: f64,
+        spare: f64,
     ) -> Vec<Violation> {
         let mut found = Vec::new();
-        self.rim(rim_step, 0.0, |place, need| {
+        let breaks = |print: bool, dose: f64| {
+            if print {
+                dose < THRESHOLD + spare
+            } else {
+                dose >= THRESHOLD - spare
+            }
+        };
+        self.rim(rim_step, true, |place, need| {
             let dose = dose.dose(place);
-            if (need == Need::Print) != (dose >= THRESHOLD) {
+            if breaks(need == Need::Print, dose) {
                 found.push(Violation { place, need, dose });
             }
         });
@@ -459,8 +485,7 @@ impl Target {
                     passed += 1;
                 }
                 let inside = passed % 2 == 1;
-                if inside != (value >= THRESHOLD)
-                    && !self.outline_within([x, y], self.tolerance_at([x, y]))
+                if breaks(inside, value) && !self.outline_within([x, y], self.tolerance_at([x, y]))
                 {
                     found.push(Violation {
                         place: [x, y],
@@ -626,7 +651,7 @@ mod tests {
             2.0,
         );
         let mut seen = 0;
-        t.rim(2.0, 0.0, |p, need| {
+        t.rim(2.0, true, |p, need| {
             seen += 1;
             assert_ne!(need, Need::Free);
             let brute = t

@@ -136,8 +136,13 @@ pub fn judge(
         REACH * sigma
     };
 
-    let mut violations =
-        target.violations(print, settings.rim_step(), settings.lattice_step(), around);
+    let mut violations = target.violations(
+        print,
+        settings.rim_step(),
+        settings.lattice_step(),
+        around,
+        0.0,
+    );
     // What a neighbour needs or may do there is judged with the neighbour.
     violations
         .retain(|v| v.need == Need::Print || others.iter().all(|o| o.need(v.place) == Need::Clear));

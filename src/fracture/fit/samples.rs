@@ -35,14 +35,16 @@ pub(in crate::fracture) fn samples_of(
 ) -> Vec<Sample> {
     let sigma = blur.sigma().0;
     let mut samples = Vec::new();
+    // No creases: on a finely drawn curve they are all there is on its narrow side, and asking the guard of each costs one shot in
+    // fifty; the check asks for them without the guard, and few are ever broken.
     // The rim comes edge by edge; on finely drawn curves that is denser than asked for, so it is thinned by distance.
     let mut last: [Option<[f64; 2]>; 2] = [None, None];
     let least = (0.6 * RIM_STEP * sigma).powi(2);
-    target.rim(RIM_STEP * sigma, 0.0, |p, need| {
+    target.rim(RIM_STEP * sigma, false, |p, need| {
         let side = &mut last[usize::from(need == Need::Print)];
         if side.is_none_or(|q| (q[0] - p[0]).powi(2) + (q[1] - p[1]).powi(2) >= least) {
             *side = Some(p);
-            samples.push(Sample::new(p, need, context));
+            samples.extend(Sample::asked(p, need, context));
         }
     });
     let step = LATTICE_STEP * sigma;
@@ -62,7 +64,7 @@ pub(in crate::fracture) fn samples_of(
             let wanted = !target.outline_within([x, y], 0.5 * sigma)
                 && (inside || target.outline_within([x, y], reach));
             if wanted {
-                samples.push(Sample::new(
+                samples.extend(Sample::asked(
                     [x, y],
                     if inside { Need::Print } else { Need::Clear },
                     context,
@@ -92,6 +94,11 @@ impl Sample {
 }
 
 impl Sample {
+    /// A place with its need, unless it must stay clear only of this figure.
+    fn asked(place: [f64; 2], need: Need, context: &ContextDose) -> Option<Self> {
+        (need == Need::Print || !context.may_print(place)).then(|| Self::new(place, need, context))
+    }
+
     /// The violation that it is when no shot is flashed.
     pub(super) fn unprinted(&self) -> Option<Violation> {
         (self.sign > 0.0).then(|| Violation {
@@ -105,6 +112,7 @@ impl Sample {
 /// The dose that other figures give, as if they printed ideally: each in bands of exact width.
 #[derive(Clone, Debug)]
 pub(in crate::fracture) struct ContextDose {
+    figures: Vec<Target>,
     bands: Vec<[f64; 4]>,
     sigma: f64,
     phi: PhiTable,
@@ -115,12 +123,15 @@ const BAND: f64 = 0.125;
 
 impl ContextDose {
     /// From the context figures of a job.
-    pub(in crate::fracture) fn of(context: &[Figure], blur: Blur) -> Self {
+    pub(in crate::fracture) fn of(context: &[Figure], blur: Blur, tolerance: Nm) -> Self {
         let sigma = blur.sigma().0;
+        let figures: Vec<Target> = context
+            .iter()
+            .map(|f| Target::new(f, blur, tolerance))
+            .collect();
         let mut bands = Vec::new();
         let mut crossings = Vec::new();
-        for figure in context {
-            let target = Target::new(figure, blur, Nm(1.0));
+        for target in &figures {
             let [_, y0, _, y1] = target.bounds();
             #[allow(
                 clippy::cast_possible_truncation,
@@ -142,10 +153,16 @@ impl ContextDose {
             }
         }
         Self {
+            figures,
             bands,
             sigma,
             phi: PhiTable::get(),
         }
+    }
+
+    /// Whether another figure may print at a place, so that it need not stay clear.
+    pub(in crate::fracture) fn may_print(&self, p: [f64; 2]) -> bool {
+        self.figures.iter().any(|f| f.need(p) != Need::Clear)
     }
 
     /// Whether there is no context.

@@ -31,12 +31,12 @@ pub(in crate::fracture) struct Fit {
 const GUARD: f32 = 0.004;
 
 /// Rounds of check and repair.
-const REPAIRS: usize = 6;
+const REPAIRS: usize = 10;
 
 impl<'a> Setting<'a> {
     pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
         let target = Target::new(job.figure, job.blur, job.tolerance);
-        let context = ContextDose::of(job.context, job.blur);
+        let context = ContextDose::of(job.context, job.blur, job.tolerance);
         let samples = samples_of(&target, job.blur, &context);
         Self {
             job,

@@ -5,6 +5,8 @@
 //! al., ICCAD 2014; Jiang and Zakhor, Proc. SPIE 8166 (2011); greedy cover with rectangles: Heinrich-Litan and Lübbecke, ACM JEA
 //! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
 
+mod bound;
+
 use super::fit::{Budget, Setting, Slabs, best_of, cover};
 use super::{Effort, Fracture, FractureError, Fracturer, Job};
 
@@ -72,6 +74,12 @@ impl Fracturer for Overlap {
                 )
             })
             .collect();
-        Ok(setting.reported(best_of(attempts)))
+        let lower_bound = bound::lower_bound(&setting.target, job.blur, &job.limits, |p| {
+            setting.context.dose(p)
+        });
+        Ok(Fracture {
+            lower_bound: Some(lower_bound),
+            ..setting.reported(best_of(attempts))
+        })
     }
 }
