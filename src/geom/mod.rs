@@ -12,7 +12,7 @@ mod repetition;
 mod ring;
 mod transform;
 
-pub use boolean::{intersect, merge, subtract, unite};
+pub use boolean::{intersect, merge, subtract, unite, wound};
 pub use figure::Figure;
 pub use offset::offset;
 pub use point::Point;

@@ -5,9 +5,11 @@
 //! `places` joins the hierarchy from the top. Cost follows what the file holds, not how often it is repeated.
 
 mod cells;
+mod clip;
 mod distinct;
 mod error;
 mod index;
+mod outline;
 mod places;
 mod repeat;
 mod resolve;
@@ -23,6 +25,7 @@ use crate::shot::AddressUnit;
 use crate::units::Nm;
 
 use distinct::Canonical;
+use outline::Outline;
 use places::Standing;
 use resolve::{Cluster, Resolved, Resolver};
 
@@ -193,8 +196,9 @@ fn placed(
     address: AddressUnit,
     reach: i64,
 ) -> Result<Vec<(Canonical, Vec<Standing>)>, MaskError> {
-    let figures = distinct::merged(&cluster.figures);
-    let near = distinct::neighbours(&figures, reach);
+    let merged = distinct::merged(&cluster.figures);
+    let outlines: Vec<Outline> = merged.into_par_iter().map(Outline::new).collect();
+    let near = distinct::neighbours(&outlines, reach);
     // Standings by position of the cell's own axes on the address grid: each such position is a different figure.
     let mut by_phase: BTreeMap<Point, Vec<Standing>> = BTreeMap::new();
     for standing in standings {
@@ -224,29 +228,26 @@ fn placed(
     }
     let mut found = Vec::new();
     for (phase, pieces) in by_phase {
-        let figure = |i: usize| -> (Canonical, Vec<Standing>) {
-            let onto_grid = |f: &Figure| f.translated(phase);
-            let near: Vec<Figure> = near[i].iter().map(|&j| onto_grid(&figures[j])).collect();
-            let near: Vec<&Figure> = near.iter().collect();
-            let (canonical, ways) =
-                distinct::canonical(&onto_grid(&figures[i]), &near, address.pm(), reach);
-            let off_grid = Transform {
-                shift: -phase,
-                ..Transform::IDENTITY
-            };
-            let stand = |piece: &Standing| {
-                let all = ways
-                    .iter()
-                    .map(|way| way.then(off_grid).then(piece.transform));
-                let transform = all.min().unwrap_or(piece.transform);
+        let distinct = distinct::neighbourhoods(&outlines, &near, phase, address.pm(), reach);
+        found.par_extend(distinct.into_par_iter().map(|(neighbourhood, shifts)| {
+            let (canonical, ways) = distinct::canonical(&neighbourhood, address.pm(), reach);
+            let stand = |shift: Point, piece: &Standing| {
+                let shift = Transform {
+                    shift: shift - phase,
+                    ..Transform::IDENTITY
+                };
+                let to_mask = shift.then(piece.transform);
+                let all = ways.iter().map(|way| way.then(to_mask));
                 Standing {
-                    transform,
+                    transform: all.min().unwrap_or(to_mask),
                     repetitions: piece.repetitions.clone(),
                 }
             };
-            (canonical, pieces.iter().map(stand).collect())
-        };
-        found.par_extend((0..figures.len()).into_par_iter().map(figure));
+            let standings = shifts
+                .iter()
+                .flat_map(|&shift| pieces.iter().map(move |piece| stand(shift, piece)));
+            (canonical, standings.collect())
+        }));
     }
     Ok(found)
 }
