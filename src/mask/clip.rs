@@ -211,3 +211,90 @@ fn crossing(p: Point, q: Point, at: i64) -> i64 {
     // Between the heights of the two points, so it fits.
     p.y + i64::try_from((2 * rise + run).div_euclid(2 * run)).unwrap_or(0)
 }
+
+#[cfg(test)]
+mod tests {
+    use std::sync::Arc;
+
+    use proptest::prelude::*;
+
+    use super::*;
+    use crate::geom::Orientation;
+
+    fn area_two(figures: &[Figure]) -> i128 {
+        figures.iter().map(Figure::area_two).sum()
+    }
+
+    /// Jagged figures with a hole, of few and of many edges; rectilinear ones step.
+    fn figures() -> impl Strategy<Value = Figure> {
+        (
+            3_u32..120,
+            any::<bool>(),
+            prop::collection::vec(300_u32..1_000, 120),
+        )
+            .prop_map(|(n, stepped, radii)| {
+                let corner = |k: u32, scale: f64| {
+                    let t = std::f64::consts::TAU * f64::from(k) / f64::from(n);
+                    let r = f64::from(radii[k as usize]) * scale;
+                    #[allow(clippy::cast_possible_truncation, reason = "a few thousand at most")]
+                    let whole = |v: f64| (v * 50.0) as i64;
+                    Point::new(whole(r * t.cos()), whole(r * t.sin()))
+                };
+                let ring = |scale: f64| {
+                    let corners = (0..n).map(|k| corner(k, scale));
+                    let next = |k: u32| corner((k + 1) % n, scale);
+                    let points: Vec<Point> = match stepped {
+                        true => corners
+                            .zip(0..)
+                            .flat_map(|(p, k)| [p, Point::new(next(k).x, p.y)])
+                            .collect(),
+                        false => corners.collect(),
+                    };
+                    Ring::new(points)
+                        .into_iter()
+                        .flat_map(|r| geom::merge([&r]))
+                        .collect::<Vec<_>>()
+                };
+                let figures = geom::subtract(&ring(1.0), &ring(0.3));
+                let largest = figures.into_iter().max_by_key(Figure::area_two);
+                largest.unwrap_or_else(|| {
+                    Figure::from_rect(Rect::new(Point::new(0, 0), Point::new(9, 9)))
+                })
+            })
+    }
+
+    fn windows() -> impl Strategy<Value = Rect> {
+        let side = || -60_000_i64..60_000;
+        (side(), side(), 1_i64..40_000, 1_i64..40_000)
+            .prop_map(|(x, y, w, h)| Rect::new(Point::new(x, y), Point::new(x + w, y + h)))
+    }
+
+    proptest! {
+        #[test]
+        fn a_cut_is_the_intersection_with_the_window(figure in figures(), window in windows(), turn in 0_usize..8) {
+            let expected = geom::intersect(std::slice::from_ref(&figure), &[Figure::from_rect(window)]);
+            let outline = Outline::new(Arc::new(figure));
+            let way = Transform { orientation: Orientation::all()[turn], shift: Point::new(17, -4) };
+            let turned = way.apply_rect(window);
+            let found = Piece::of(&outline, window, Point::default()).map_or(Vec::new(), |piece| piece.cut(way, turned));
+            prop_assert!(found.iter().all(|f| turned.contains(f.bounds().min) && turned.contains(f.bounds().max)));
+            let back: Vec<Figure> = found.iter().map(|f| f.transformed(way.inverse())).collect();
+            let wrong = area_two(&geom::subtract(&back, &expected)) + area_two(&geom::subtract(&expected, &back));
+            // Rounding moves slanted edges by 1 pm or so along their length, and nothing else.
+            let rectilinear = outline.figure.is_rectilinear();
+            let outline: f64 = expected.iter().map(Figure::outline_nm).sum();
+            #[allow(clippy::cast_precision_loss, reason = "a bound")]
+            let wrong = wrong as f64;
+            prop_assert!(wrong <= if rectilinear { 0.0 } else { 4_000.0 * outline }, "{wrong}");
+        }
+
+        #[test]
+        fn many_edges_are_found_as_few_are(figure in figures(), window in windows()) {
+            let found = Outline::new(Arc::new(figure.clone())).edges_at(window);
+            let rings = figure.rings().enumerate();
+            let edges = rings.flat_map(|(r, ring)| ring.edges().enumerate().map(move |(i, e)| (r, i, e)));
+            let scan: Vec<_> = edges.filter(|&(_, _, (p, q))| Rect::new(p, q).touches(window)).collect();
+            prop_assert_eq!(found, scan);
+        }
+    }
+}

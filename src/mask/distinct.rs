@@ -1,14 +1,13 @@
-//! Distinct figures: merged, seen in the least of their eight orientations, with what stands near them.
+//! Distinct figures: seen in the least of their eight orientations, with what stands near them.
 
 use std::collections::HashMap;
-use std::sync::Arc;
 
 use rayon::prelude::*;
 
-use crate::geom::{self, Figure, Orientation, Point, Rect, Transform};
+use crate::geom::{Figure, Orientation, Point, Rect, Transform};
 
 use super::clip::Piece;
-use super::index::{BoxIndex, clusters};
+use super::index::BoxIndex;
 use super::outline::Outline;
 
 /// A figure with its context in its own frame.
@@ -17,23 +16,6 @@ pub(super) struct Canonical {
     pub(super) figure: Figure,
     /// Cut to the figure's bounds grown by the reach, sorted.
     pub(super) context: Vec<Figure>,
-}
-
-/// The union of figures, block by block: only those whose bounds hang together meet in one boolean.
-pub(super) fn merged(figures: &[Arc<Figure>]) -> Vec<Arc<Figure>> {
-    let boxes: Vec<Rect> = figures.par_iter().map(|f| f.bounds()).collect();
-    let blocks = clusters(&boxes, |_, _| true);
-    let merged: Vec<Vec<Arc<Figure>>> = blocks
-        .par_iter()
-        .map(|block| match block[..] {
-            [single] => vec![Arc::clone(&figures[single])],
-            _ => {
-                let block: Vec<Figure> = block.iter().map(|&i| (*figures[i]).clone()).collect();
-                geom::unite(&block).into_iter().map(Arc::new).collect()
-            }
-        })
-        .collect();
-    merged.into_iter().flatten().collect()
 }
 
 /// For each figure the indices of those nearer than `reach`, ascending.
