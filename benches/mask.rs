@@ -3,26 +3,26 @@
 use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
 
 use shotwright::geom::{Point, Repetition};
-use shotwright::layout::{Cell, CellId, Layer, Layout, Placement, Shape};
+use shotwright::layout::{self, Cell, CellId, Layer, Layout, Placement, Shape};
 use shotwright::mask::{self, MaskOptions};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
 
+const LAYER: Layer = Layer {
+    layer: 1,
+    datatype: 0,
+};
+
 fn options() -> MaskOptions {
     MaskOptions {
-        layers: Vec::new(),
-        scale: 1.0,
-        reach: Nm(60.0),
-        address: AddressUnit::new(Nm(1.0)).expect("1 nm"),
+        layers: vec![LAYER],
+        ..MaskOptions::new(Nm(60.0), AddressUnit::new(Nm(1.0)).expect("1 nm"))
     }
 }
 
 fn shape(points: Vec<Point>, repetition: Repetition) -> Shape {
     Shape {
-        layer: Layer {
-            layer: 1,
-            datatype: 0,
-        },
+        layer: LAYER,
         points,
         repetition,
     }
@@ -109,20 +109,53 @@ fn array(columns: u64) -> Layout {
     }
 }
 
+/// A cell of a thousand crosses, placed `side` × `side` times.
+fn block_array(side: u64) -> Layout {
+    let mut layout = array(side);
+    let crosses = (0..500).flat_map(|k| {
+        let (x, y) = (k % 25 * 400, k / 25 * 400);
+        [
+            rect(x, y + 100, 300, 100),
+            rect(x + 100, y, 100, 300 + k % 7),
+        ]
+    });
+    layout.cells[1].shapes = crosses.collect();
+    layout.cells[0].placements[0].repetition = Repetition::Lattice {
+        columns: side,
+        rows: side,
+        a: Point::new(10_400, 0),
+        b: Point::new(0, 8_400),
+    };
+    layout
+}
+
+/// One curved figure of many vertices with small squares in its reach all along.
+fn large_beside_small(vertices: u32, squares: u32) -> Layout {
+    let at = |k: u32, n: u32, radius: f64| {
+        let t = std::f64::consts::TAU * f64::from(k) / f64::from(n);
+        let whole = |v: f64| {
+            #[allow(clippy::cast_possible_truncation, reason = "less than a millimetre")]
+            let v = v.round() as i64;
+            v
+        };
+        Point::new(whole(radius * t.cos()), whole(radius * t.sin()))
+    };
+    let star =
+        (0..vertices).map(|k| at(k, vertices, if k % 2 == 0 { 400_000.0 } else { 399_700.0 }));
+    let mut shapes = vec![shape(star.collect(), Repetition::Once)];
+    shapes.extend((0..squares).map(|k| {
+        let p = at(k, squares, 400_040.0);
+        rect(p.x - 10, p.y - 10, 20, 20)
+    }));
+    flat(shapes)
+}
+
 fn clip(name: &str) -> Layout {
-    let path = format!(
-        "{}/tests/fixtures/mask/{name}.json",
+    layout::open(format!(
+        "{}/sample-masks/{name}.oas",
         env!("CARGO_MANIFEST_DIR")
-    );
-    let text = std::fs::read_to_string(&path).expect("fixture");
-    let rings: Vec<Vec<(i64, i64)>> = serde_json::from_str(&text).expect("rings");
-    let points = |r: Vec<(i64, i64)>| r.into_iter().map(|(x, y)| Point::new(x, y)).collect();
-    flat(
-        rings
-            .into_iter()
-            .map(|r| shape(points(r), Repetition::Once))
-            .collect(),
-    )
+    ))
+    .expect("a sample")
 }
 
 fn bench(c: &mut Criterion) {
@@ -149,6 +182,21 @@ fn bench(c: &mut Criterion) {
     }
     for columns in [1, 10_000] {
         run("mask/array_side", columns.to_string(), &array(columns));
+    }
+    for side in [1, 10_000] {
+        run(
+            "mask/block_array_side",
+            side.to_string(),
+            &block_array(side),
+        );
+    }
+    for (vertices, squares) in [(10_000, 1_000), (100_000, 10_000)] {
+        let parameter = format!("{vertices}+{squares}");
+        run(
+            "mask/large_beside_small",
+            parameter,
+            &large_beside_small(vertices, squares),
+        );
     }
     for name in ["iso", "dense", "lineends", "mixed"] {
         run("mask/clip", name.to_owned(), &clip(name));

@@ -86,8 +86,7 @@ fn contents(args: &InspectArgs, layout: &Layout) -> Result<Contents, CliError> {
         let options = MaskOptions {
             layers: vec![layer],
             scale: args.layout.scale,
-            reach: Nm(0.0),
-            address: AddressUnit::FINEST,
+            ..MaskOptions::new(Nm(0.0), AddressUnit::FINEST)
         };
         let mask = mask::build(layout, &options)
             .map_err(|cause| CliError::mask(&args.layout.file(), cause))?;

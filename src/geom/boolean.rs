@@ -24,6 +24,13 @@ pub fn merge<'a>(rings: impl IntoIterator<Item = &'a Ring>) -> Vec<Figure> {
     run(&paths, &[], OverlayRule::Subject)
 }
 
+/// What rings together wind round, each counted in its own sense (the non-zero rule); normalized and sorted.
+#[must_use]
+pub fn wound(rings: &[Ring]) -> Vec<Figure> {
+    let paths: Vec<Path> = rings.iter().map(|r| path(r, false)).collect();
+    run(&paths, &[], OverlayRule::Subject)
+}
+
 /// The union of figures, holes kept where nothing covers them; normalized and sorted.
 #[must_use]
 pub fn unite(figures: &[Figure]) -> Vec<Figure> {

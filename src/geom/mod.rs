@@ -12,9 +12,9 @@ mod repetition;
 mod ring;
 mod transform;
 
-pub use boolean::{intersect, merge, subtract, unite};
+pub use boolean::{intersect, merge, subtract, unite, wound};
 pub use figure::Figure;
-pub use offset::offset;
+pub use offset::{offset, offset_mitred};
 pub use point::Point;
 pub use rect::Rect;
 pub use repetition::Repetition;

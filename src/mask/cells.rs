@@ -1,30 +1,34 @@
 //! The cells of a layout at mask scale: chosen layers only, whole picometres, every polygon made sound.
 //!
-//! **Rounding.** A coordinate is multiplied by the picometres of one database unit (a product within 1e-9 of a whole
-//! number counts as whole, so every usual grid is exact) and rounded to the nearest picometre, halves up: points in
-//! their own cell, origins and displacements in their parent. Placements turned by multiples of 90° at
-//! magnification 1 are exact. Any other angle or magnification makes its own copy of the cell, whose points are
-//! turned and magnified in `f64` (angles and magnifications of nested placements joined first) and rounded once.
-//!
-//! **Repair.** A polygon covers what its outline winds round at least once, either way (the non-zero rule); so crossings are
-//! filled, spikes and keyhole bridges vanish, repeated points do not matter, and a polygon without area is dropped.
+//! `scaling` states how numbers are rounded, `repair` how outlines are made sound.
 
 use std::collections::{BTreeMap, HashMap};
 use std::sync::Arc;
 
 use rayon::prelude::*;
 
-use crate::geom::{self, Figure, Orientation, Point, Rect, Repetition, Ring, Transform};
+use crate::geom::{Figure, Orientation, Point, Rect, Repetition, Transform};
 use crate::layout::{Cell, CellId, Layer, Layout, Placement, Shape};
 use crate::units::PM_PER_NM;
 
-use super::repeat::{RANGE, add_spans, lattice, span};
-use super::{LayerCounts, MAX_PARTS, MaskError, MaskOptions};
+use super::repair::{Repairs, sound};
+use super::repeat::{RANGE, add_spans, span};
+use super::scaling::{Residue, ScaleError, Scaling};
+use super::{Defect, Expose, LayerCounts, MAX_PARTS, MaskError, MaskOptions};
+
+/// What a figure does to the mask.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub(super) enum Role {
+    Drawn,
+    Subtracted,
+    /// The border of an exposed background.
+    Frame,
+}
 
 /// What stands in a cell.
 #[derive(Clone, Debug)]
 pub(super) enum Content {
-    Figure(Arc<Figure>),
+    Figure(Role, Arc<Figure>),
     /// Index into [`Cells::cells`].
     Cell(usize),
 }
@@ -52,6 +56,19 @@ impl Item {
             .try_fold(self.bounds, |sum, r| add_spans(sum, span(r)?))
     }
 
+    /// Mirrored and shifted as asked; `None` out of range.
+    fn onto_mask(&self, options: &MaskOptions) -> Option<Self> {
+        let t = Transform {
+            orientation: Orientation::new(options.mirror, 0),
+            shift: options.shift,
+        };
+        let far = |v: i64| v.unsigned_abs() > RANGE.unsigned_abs();
+        if far(t.shift.x) || far(t.shift.y) {
+            return None;
+        }
+        Some(self.moved(t)).filter(|item| item.checked_extent().is_some())
+    }
+
     pub(super) fn moved(&self, t: Transform) -> Self {
         Self {
             content: self.content.clone(),
@@ -68,6 +85,14 @@ pub(super) struct PmCell {
     pub(super) name: String,
     pub(super) items: Vec<Item>,
     pub(super) bounds: Rect,
+}
+
+/// The name of the cell an item places; empty for a figure.
+pub(super) fn name_of(cells: &[PmCell], item: &Item) -> String {
+    match item.content {
+        Content::Cell(cell) => cells[cell].name.clone(),
+        Content::Figure(..) => String::new(),
+    }
 }
 
 /// All cells of the chosen layers, and what was repaired on the way.
@@ -88,300 +113,28 @@ pub(super) fn layer_counts(layout: &Layout) -> LayerCounts {
     LayerCounts(counts.into_iter().collect())
 }
 
-fn chosen_layers(layout: &Layout, named: &[Layer]) -> Result<Vec<Layer>, MaskError> {
+/// The layers taken and subtracted, with what their polygons do.
+fn chosen_layers(layout: &Layout, options: &MaskOptions) -> Result<Vec<(Layer, Role)>, MaskError> {
     let present = layer_counts(layout);
-    if named.is_empty() {
-        return match present.0[..] {
-            [(only, _)] => Ok(vec![only]),
-            _ => Err(MaskError::LayerNotChosen { present }),
-        };
-    }
-    match named
-        .iter()
-        .find(|l| !present.0.iter().any(|(p, _)| p == *l))
-    {
-        Some(&layer) => Err(MaskError::LayerAbsent { layer, present }),
-        None => Ok(named.to_vec()),
-    }
-}
-
-/// A linear map that is not one of the eight orientations: turn by less than 90°, magnify. `NONE` is exact.
-#[derive(Clone, Copy, Debug, PartialEq)]
-struct Residue {
-    angle_deg: f64,
-    magnification: f64,
-}
-
-impl Residue {
-    const NONE: Self = Self {
-        angle_deg: 0.0,
-        magnification: 1.0,
-    };
-
-    fn key(self) -> (u64, u64) {
-        (self.angle_deg.to_bits(), self.magnification.to_bits())
-    }
-
-    /// The placement's linear map followed by this one, as what remains in the child and the orientation after it.
-    fn after(self, placement: &Placement) -> (Self, Orientation) {
-        let turn = snapped(placement.angle_deg + self.angle_deg).rem_euclid(360.0);
-        let quarters = (turn / 90.0).floor();
-        let rest = turn - 90.0 * quarters;
-        #[allow(
-            clippy::cast_possible_truncation,
-            clippy::cast_sign_loss,
-            reason = "0 to 4"
-        )]
-        let mut quarters = quarters as u8;
-        // R(90q + r)·M = R(90q)·M·R(−r), and R(−r) = R(−90)·R(90 − r) brings the rest back into [0°, 90°).
-        let angle_deg = match (placement.mirror, rest > 0.0) {
-            (true, true) => {
-                quarters += 1;
-                90.0 - rest
-            }
-            _ => rest,
-        };
-        // M maps y → −y, which is x → −x and a half turn.
-        let orientation = Orientation::new(
-            placement.mirror,
-            quarters + if placement.mirror { 2 } else { 0 },
-        );
-        let magnification = self.magnification * placement.magnification;
-        (
-            Self {
-                angle_deg,
-                magnification: snapped(magnification),
-            },
-            orientation,
-        )
-    }
-}
-
-/// Numbers within 1e-9 (relative) of a whole number count as whole: formats store them as rounded reals.
-fn snapped(x: f64) -> f64 {
-    let whole = x.round();
-    if (x - whole).abs() <= 1e-9 * whole.abs().max(1.0) && whole != 0.0 {
-        whole
-    } else {
-        x
-    }
-}
-
-/// Database units → picometres within one copy of a cell.
-#[derive(Clone, Copy)]
-struct Scaling {
-    /// Rows of the 2×2 matrix.
-    cos: f64,
-    sin: f64,
-    /// Whole factor, when there is no turn.
-    exact: Option<i64>,
-}
-
-impl Scaling {
-    fn new(pm_per_unit: f64, residue: Residue) -> Self {
-        let factor = snapped(pm_per_unit * residue.magnification);
-        let (sin, cos) = residue.angle_deg.to_radians().sin_cos();
-        #[allow(clippy::cast_possible_truncation, reason = "a whole number below 2^52")]
-        let exact = (residue.angle_deg == 0.0 && factor.fract() == 0.0 && factor.abs() < 4.5e15)
-            .then_some(factor as i64);
-        Self {
-            cos: factor * cos,
-            sin: factor * sin,
-            exact,
+    let mut taken = options.layers.clone();
+    if taken.is_empty() {
+        let mut rest = present.0.iter().map(|&(layer, _)| layer);
+        let mut rest = rest.by_ref().filter(|layer| !options.minus.contains(layer));
+        match (rest.next(), rest.next()) {
+            (Some(only), None) => taken.push(only),
+            _ => return Err(MaskError::LayerNotChosen { present }),
         }
     }
-
-    /// The unrounded image.
-    #[allow(
-        clippy::cast_precision_loss,
-        reason = "only used where the result is rounded anyway"
-    )]
-    fn real(self, p: Point) -> [f64; 2] {
-        let (x, y) = (p.x as f64, p.y as f64);
-        [self.cos * x - self.sin * y, self.sin * x + self.cos * y]
+    if let Some(&layer) = taken.iter().find(|layer| options.minus.contains(layer)) {
+        return Err(MaskError::LayerTwice { layer });
     }
-
-    /// The rounded image; `None` beyond the range.
-    fn point(self, p: Point) -> Option<Point> {
-        let within = |v: i64| (v.abs() <= RANGE).then_some(v);
-        if let Some(factor) = self.exact {
-            return Some(Point::new(
-                within(p.x.checked_mul(factor)?)?,
-                within(p.y.checked_mul(factor)?)?,
-            ));
-        }
-        #[allow(
-            clippy::cast_possible_truncation,
-            reason = "a float to integer cast saturates"
-        )]
-        let [x, y] = self.real(p).map(|v| (v + 0.5).floor() as i64);
-        Some(Point::new(within(x)?, within(y)?))
+    let absent = |layer: &&Layer| !present.0.iter().any(|(p, _)| p == *layer);
+    if let Some(&layer) = taken.iter().chain(&options.minus).find(absent) {
+        return Err(MaskError::LayerAbsent { layer, present });
     }
-
-    /// A repetition in picometres. A lattice whose last element would be off by half a picometre is written out.
-    fn repetition(self, r: &Repetition) -> Result<Repetition, ScaleError> {
-        match r {
-            Repetition::Once => Ok(Repetition::Once),
-            Repetition::List(list) => {
-                let mut list: Vec<Point> = list
-                    .iter()
-                    .map(|&p| self.point(p))
-                    .collect::<Option<_>>()
-                    .ok_or(ScaleError::Range)?;
-                list.sort_by_key(|p| (p.y, p.x));
-                list.dedup();
-                Ok(if list == [Point::default()] {
-                    Repetition::Once
-                } else {
-                    Repetition::List(list)
-                })
-            }
-            Repetition::Lattice {
-                columns,
-                rows,
-                a,
-                b,
-            } => {
-                let columns = if *a == Point::default() { 1 } else { *columns };
-                let rows = if *b == Point::default() { 1 } else { *rows };
-                let steps = (self.point(*a), self.point(*b));
-                let (Some(pa), Some(pb)) = steps else {
-                    return Err(ScaleError::Range);
-                };
-                let drift = |p: Point, step: Point, n: u64| {
-                    let [x, y] = self.real(p);
-                    #[allow(clippy::cast_precision_loss, reason = "compared with a half")]
-                    let (dx, dy, n) = (
-                        x - step.x as f64,
-                        y - step.y as f64,
-                        n.saturating_sub(1) as f64,
-                    );
-                    dx.abs().max(dy.abs()) * n
-                };
-                if self.exact.is_some() || drift(*a, pa, columns) + drift(*b, pb, rows) < 0.5 {
-                    return Ok(lattice(columns, rows, pa, pb));
-                }
-                let written_out = Repetition::Lattice {
-                    columns,
-                    rows,
-                    a: *a,
-                    b: *b,
-                };
-                if written_out.count() > MAX_PARTS {
-                    return Err(ScaleError::TooMany(written_out.count()));
-                }
-                span(&written_out).ok_or(ScaleError::Range)?;
-                self.repetition(&Repetition::List(written_out.displacements().collect()))
-            }
-            Repetition::Nested(parts) => {
-                let parts = parts
-                    .iter()
-                    .map(|p| self.repetition(p))
-                    .collect::<Result<_, _>>()?;
-                Ok(Repetition::nested(parts))
-            }
-        }
-    }
-}
-
-enum ScaleError {
-    Range,
-    TooMany(u128),
-}
-
-impl ScaleError {
-    fn at(self, cell: &str, what: String) -> MaskError {
-        let cell = cell.to_owned();
-        match self {
-            Self::Range => MaskError::OutOfRange { cell, what },
-            Self::TooMany(found) => MaskError::TooMany {
-                cell,
-                found,
-                limit: MAX_PARTS,
-            },
-        }
-    }
-}
-
-/// Repairs counted over the polygons as they stand in the file.
-#[derive(Default)]
-struct Repairs {
-    crossing: usize,
-    empty: usize,
-    repeated_points: usize,
-}
-
-impl Repairs {
-    fn add(mut self, other: Self) -> Self {
-        self.crossing += other.crossing;
-        self.empty += other.empty;
-        self.repeated_points += other.repeated_points;
-        self
-    }
-
-    fn notes(&self) -> Vec<String> {
-        let sentence = |n: usize, rule: &str| {
-            let polygons = if n == 1 { "polygon" } else { "polygons" };
-            (n > 0).then(|| format!("{n} {polygons} {rule}"))
-        };
-        [
-            sentence(
-                self.crossing,
-                "with a self-crossing outline: all it winds round was filled",
-            ),
-            sentence(self.empty, "without area: dropped"),
-            sentence(self.repeated_points, "with repeated points: each kept once"),
-        ]
-        .into_iter()
-        .flatten()
-        .collect()
-    }
-}
-
-/// The figures one polygon covers (one, unless it crosses itself).
-fn sound(points: &[Point], scaling: Scaling) -> Option<(Vec<Figure>, Repairs)> {
-    let mut points: Vec<Point> = points
-        .iter()
-        .map(|&p| scaling.point(p))
-        .collect::<Option<_>>()?;
-    let before = points.len();
-    points.dedup();
-    let mut repairs = Repairs {
-        repeated_points: usize::from(points.len() < before),
-        ..Repairs::default()
-    };
-    let Some(ring) = Ring::new(points) else {
-        return Some((
-            Vec::new(),
-            Repairs {
-                empty: 1,
-                ..repairs
-            },
-        ));
-    };
-    if is_rectangle(ring.points()) {
-        return Some((vec![Figure::from_rect(ring.bounds())], repairs));
-    }
-    let figures = geom::merge([&ring]);
-    let covered: i128 = figures.iter().map(Figure::area_two).sum();
-    if figures.is_empty() {
-        repairs.empty = 1;
-    } else if covered != ring.area_two().abs() {
-        // An outline that winds once round all it encloses has exactly the covered area; bridges cancel.
-        repairs.crossing = 1;
-    }
-    Some((figures, repairs))
-}
-
-fn is_rectangle(points: &[Point]) -> bool {
-    match *points {
-        [a, b, c, d] => {
-            let horizontal_first = a.y == b.y && b.x == c.x && c.y == d.y && d.x == a.x;
-            let vertical_first = a.x == b.x && b.y == c.y && c.x == d.x && d.y == a.y;
-            (horizontal_first || vertical_first) && a.x != c.x && a.y != c.y
-        }
-        _ => false,
-    }
+    let drawn = taken.into_iter().map(|layer| (layer, Role::Drawn));
+    let subtracted = options.minus.iter().map(|&layer| (layer, Role::Subtracted));
+    Ok(drawn.chain(subtracted).collect())
 }
 
 /// Brings the chosen layers of a layout to mask scale.
@@ -398,7 +151,7 @@ pub(super) fn convert(layout: &Layout, options: &MaskOptions) -> Result<Cells, M
     let pm_per_unit = layout.unit.0 * PM_PER_NM as f64 * options.scale;
     let mut converter = Converter {
         layout,
-        layers: chosen_layers(layout, &options.layers)?,
+        layers: chosen_layers(layout, options)?,
         pm_per_unit,
         done: HashMap::new(),
         cells: Vec::new(),
@@ -410,20 +163,41 @@ pub(super) fn convert(layout: &Layout, options: &MaskOptions) -> Result<Cells, M
     let mut tops = Vec::new();
     for id in (0..layout.cells.len()).filter(|&id| is_top[id]) {
         if let Some(cell) = converter.convert(id)? {
-            tops.push(Item {
+            let item = Item {
                 content: Content::Cell(cell),
                 bounds: converter.cells[cell].bounds,
                 transform: Transform::IDENTITY,
                 repetitions: Vec::new(),
-            });
+            };
+            let name = || layout.cells[id].name.clone();
+            tops.push(
+                item.onto_mask(options)
+                    .ok_or_else(|| ScaleError::Range.at(&name(), "the shift".to_owned()))?,
+            );
         }
+    }
+    let top_count = tops.len();
+    if let Some((id, polygon, defect)) = converter.repairs.first.filter(|_| options.strict) {
+        let cell = layout.cells[id].name.clone();
+        return Err(MaskError::Unsound {
+            cell,
+            polygon,
+            defect,
+        });
+    }
+    if let Expose::Background { frame } = options.expose {
+        tops.push(Item {
+            content: Content::Figure(Role::Frame, Arc::new(Figure::from_rect(frame))),
+            bounds: frame,
+            transform: Transform::IDENTITY,
+            repetitions: Vec::new(),
+        });
     }
     let mut notes = layout.notes.clone();
     notes.extend(converter.repairs.notes());
-    if tops.len() > 1 {
+    if top_count > 1 {
         notes.push(format!(
-            "{} top cells: all taken, each at its own origin",
-            tops.len()
+            "{top_count} top cells: all taken, each at its own origin"
         ));
     }
     Ok(Cells {
@@ -478,7 +252,7 @@ type CopyKey = (usize, (u64, u64));
 
 struct Converter<'a> {
     layout: &'a Layout,
-    layers: Vec<Layer>,
+    layers: Vec<(Layer, Role)>,
     pm_per_unit: f64,
     /// Finished copies; `None` where nothing of the chosen layers is inside.
     done: HashMap<CopyKey, Option<usize>>,
@@ -546,21 +320,24 @@ impl Converter<'_> {
     fn cell(&mut self, id: usize, residue: Residue) -> Result<Option<usize>, MaskError> {
         let cell = &self.layout.cells[id];
         let scaling = Scaling::new(self.pm_per_unit, residue);
-        let chosen: Vec<(usize, &Shape)> = cell
+        let chosen: Vec<(usize, &Shape, Role)> = cell
             .shapes
             .iter()
             .enumerate()
-            .filter(|(_, s)| self.layers.contains(&s.layer))
+            .filter_map(|(i, shape)| Some((i, shape, self.role(shape.layer)?)))
             .collect();
-        let polygons: Vec<(Vec<Item>, Repairs)> = chosen
+        let polygons: Vec<(usize, Vec<Item>, Vec<Defect>)> = chosen
             .par_iter()
-            .map(|&(i, shape)| self.polygon(cell, i, shape, scaling))
+            .map(|&(i, shape, role)| {
+                let (items, defects) = self.polygon(cell, i, shape, role, scaling)?;
+                Ok((i, items, defects))
+            })
             .collect::<Result<_, _>>()?;
         let mut items = Vec::new();
-        for (figures, repairs) in polygons {
+        for (i, figures, defects) in polygons {
             items.extend(figures);
             if !self.repaired[id] {
-                self.repairs = std::mem::take(&mut self.repairs).add(repairs);
+                self.repairs.add(id, i, &defects);
             }
         }
         self.repaired[id] = true;
@@ -583,23 +360,32 @@ impl Converter<'_> {
         Ok(Some(self.cells.len() - 1))
     }
 
+    fn role(&self, layer: Layer) -> Option<Role> {
+        let chosen = self.layers.iter().find(|(chosen, _)| *chosen == layer)?;
+        Some(chosen.1)
+    }
+
     fn polygon(
         &self,
         cell: &Cell,
         index: usize,
         shape: &Shape,
+        role: Role,
         scaling: Scaling,
-    ) -> Result<(Vec<Item>, Repairs), MaskError> {
+    ) -> Result<(Vec<Item>, Vec<Defect>), MaskError> {
         let what = || format!("polygon {index}");
-        let (figures, repairs) = sound(&shape.points, scaling)
+        let points = shape.points.iter().map(|&p| scaling.point(p));
+        let points = points
+            .collect::<Option<_>>()
             .ok_or_else(|| ScaleError::Range.at(&cell.name, what()))?;
+        let (figures, defects) = sound(points);
         let repetition = scaling
             .repetition(&shape.repetition)
             .map_err(|e| e.at(&cell.name, what()))?;
         let items = figures.into_iter().map(|figure| {
             let bounds = figure.bounds();
             Item {
-                content: Content::Figure(Arc::new(figure)),
+                content: Content::Figure(role, Arc::new(figure)),
                 bounds,
                 transform: Transform::IDENTITY,
                 repetitions: stack(repetition.clone()),
@@ -607,7 +393,7 @@ impl Converter<'_> {
         });
         let items: Vec<Item> = items.collect();
         match items.iter().all(|item| item.checked_extent().is_some()) {
-            true => Ok((items, repairs)),
+            true => Ok((items, defects)),
             false => Err(ScaleError::Range.at(&cell.name, what())),
         }
     }

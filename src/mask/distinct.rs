@@ -1,12 +1,14 @@
-//! Distinct figures: merged, seen in the least of their eight orientations, with what stands near them.
+//! Distinct figures: seen in the least of their eight orientations, with what stands near them.
 
-use std::sync::Arc;
+use std::collections::HashMap;
 
 use rayon::prelude::*;
 
-use crate::geom::{self, Figure, Orientation, Point, Rect, Transform};
+use crate::geom::{Figure, Orientation, Point, Rect, Transform};
 
-use super::index::{BoxIndex, clusters};
+use super::clip::Piece;
+use super::index::BoxIndex;
+use super::outline::Outline;
 
 /// A figure with its context in its own frame.
 #[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
@@ -16,105 +18,90 @@ pub(super) struct Canonical {
     pub(super) context: Vec<Figure>,
 }
 
-/// The union of figures, block by block: only those whose bounds hang together meet in one boolean.
-pub(super) fn merged(figures: &[Arc<Figure>]) -> Vec<Arc<Figure>> {
-    let boxes: Vec<Rect> = figures.par_iter().map(|f| f.bounds()).collect();
-    let blocks = clusters(&boxes, |_, _| true);
-    let merged: Vec<Vec<Arc<Figure>>> = blocks
-        .par_iter()
-        .map(|block| match block[..] {
-            [single] => vec![Arc::clone(&figures[single])],
-            _ => {
-                let block: Vec<Figure> = block.iter().map(|&i| (*figures[i]).clone()).collect();
-                geom::unite(&block).into_iter().map(Arc::new).collect()
+/// For each figure the indices of those nearer than `reach`, ascending.
+pub(super) fn neighbours(outlines: &[Outline], reach: i64) -> Vec<Vec<usize>> {
+    let boxes: Vec<Rect> = outlines.iter().map(|o| o.bounds).collect();
+    let index = BoxIndex::new(&boxes);
+    let near = |i: usize| {
+        let mut near = Vec::new();
+        index.touching(boxes[i].grown(reach), |j| {
+            if j != i && outlines[i].nearer_than(&outlines[j], reach) {
+                near.push(j);
             }
-        })
-        .collect();
-    merged.into_iter().flatten().collect()
+        });
+        near.sort_unstable();
+        near
+    };
+    (0..outlines.len()).into_par_iter().map(near).collect()
 }
 
-/// For each figure the indices of those nearer than `reach`, ascending.
-pub(super) fn neighbours(figures: &[Arc<Figure>], reach: i64) -> Vec<Vec<usize>> {
-    let boxes: Vec<Rect> = figures.par_iter().map(|f| f.bounds()).collect();
-    let index = BoxIndex::new(&boxes);
-    (0..figures.len())
-        .into_par_iter()
-        .map(|i| {
-            let mut near = Vec::new();
-            index.touching(boxes[i].grown(reach), |j| {
-                if j != i && nearer_than(&figures[i], &figures[j], reach) {
-                    near.push(j);
-                }
-            });
-            near.sort_unstable();
-            near
-        })
+/// A figure and the pieces of others within reach, shifted by whole address units to the origin.
+#[derive(Clone, Debug, PartialEq, Eq, Hash)]
+pub(super) struct Neighbourhood {
+    figure: Figure,
+    near: Vec<Piece>,
+}
+
+/// The distinct neighbourhoods up to shifts by whole address units, `phase` added to all coordinates first, in the
+/// order of their first figures: each with the shifts back to its figures.
+///
+/// What is drawn again and again one by one is turned and cut in [`canonical`] once.
+pub(super) fn neighbourhoods(
+    outlines: &[Outline],
+    near: &[Vec<usize>],
+    phase: Point,
+    address: i64,
+    reach: i64,
+) -> Vec<(Neighbourhood, Vec<Point>)> {
+    /// Neighbourhoods written out at a time: most are known already, and memory is held for the distinct ones only.
+    const BLOCK: usize = 1 << 14;
+    let at = |i: usize| {
+        let own = &outlines[i];
+        let corner = own.bounds.min + phase;
+        let back = Point::new(
+            corner.x - corner.x.rem_euclid(address),
+            corner.y - corner.y.rem_euclid(address),
+        );
+        let (by, window) = (phase - back, own.bounds.grown(reach));
+        let pieces = near[i]
+            .iter()
+            .filter_map(|&j| Piece::of(&outlines[j], window, by));
+        let mut near: Vec<Piece> = pieces.collect();
+        near.sort_unstable();
+        let figure = own.figure.translated(by);
+        (Neighbourhood { figure, near }, back)
+    };
+    let mut slots: HashMap<Neighbourhood, usize> = HashMap::new();
+    let mut shifts: Vec<Vec<Point>> = Vec::new();
+    for start in (0..outlines.len()).step_by(BLOCK) {
+        let block = start..outlines.len().min(start + BLOCK);
+        let found: Vec<(Neighbourhood, Point)> = block.into_par_iter().map(at).collect();
+        for (neighbourhood, back) in found {
+            let slot = *slots.entry(neighbourhood).or_insert(shifts.len());
+            if slot == shifts.len() {
+                shifts.push(Vec::new());
+            }
+            shifts[slot].push(back);
+        }
+    }
+    let mut distinct: Vec<(usize, Neighbourhood)> = slots
+        .into_iter()
+        .map(|(neighbourhood, slot)| (slot, neighbourhood))
+        .collect();
+    distinct.par_sort_unstable_by_key(|(slot, _)| *slot);
+    distinct
+        .into_iter()
+        .map(|(_, neighbourhood)| neighbourhood)
+        .zip(shifts)
         .collect()
 }
 
-/// Whether the outlines of two disjoint figures come nearer to each other than `reach`.
-fn nearer_than(f: &Figure, g: &Figure, reach: i64) -> bool {
-    /// Up to this many pairs of edges a double loop beats building a tree.
-    const FEW_PAIRS: usize = 1024;
-    let edges_near = |figure: &Figure, other: Rect| -> Vec<(Point, Point)> {
-        let near = other.grown(reach);
-        let edges = figure.rings().flat_map(|r| r.edges());
-        edges
-            .filter(|&(p, q)| Rect::new(p, q).touches(near))
-            .collect()
-    };
-    let (f_edges, g_edges) = (edges_near(f, g.bounds()), edges_near(g, f.bounds()));
-    if f_edges.len() * g_edges.len() <= FEW_PAIRS {
-        return f_edges
-            .iter()
-            .any(|&e| g_edges.iter().any(|&h| edges_nearer_than(e, h, reach)));
-    }
-    let boxes: Vec<Rect> = f_edges.iter().map(|&(p, q)| Rect::new(p, q)).collect();
-    let index = BoxIndex::new(&boxes);
-    g_edges.iter().any(|&h| {
-        let mut found = false;
-        index.touching(Rect::new(h.0, h.1).grown(reach), |i| {
-            found = found || edges_nearer_than(f_edges[i], h, reach)
-        });
-        found
-    })
-}
-
-/// The same for two edges that do not cross: the nearest place is an end of one.
-fn edges_nearer_than((a, b): (Point, Point), (c, d): (Point, Point), reach: i64) -> bool {
-    [(a, c, d), (b, c, d), (c, a, b), (d, a, b)]
-        .into_iter()
-        .any(|(p, q, r)| point_nearer_than(p, q, r, reach))
-}
-
-/// Only differences of coordinates enter, so the answer is the same after a shift, turn or mirror.
-fn point_nearer_than(p: Point, a: Point, b: Point, reach: i64) -> bool {
-    #[allow(clippy::cast_precision_loss, reason = "differences stay below 2^53")]
-    let vector = |from: Point, to: Point| ((to.x - from.x) as f64, (to.y - from.y) as f64);
-    let ((ex, ey), (px, py)) = (vector(a, b), vector(a, p));
-    let along = px * ex + py * ey;
-    let length_two = ex * ex + ey * ey;
-    let square = if along <= 0.0 || length_two == 0.0 {
-        px * px + py * py
-    } else if along >= length_two {
-        let (qx, qy) = vector(b, p);
-        qx * qx + qy * qy
-    } else {
-        let across = px * ey - py * ex;
-        across * across / length_two
-    };
-    #[allow(clippy::cast_precision_loss, reason = "below 2^53")]
-    let reach = reach as f64;
-    square < reach * reach
-}
-
-/// A figure and its neighbours in the figure's own frame, and all ways from there back (more than one if symmetric).
+/// A neighbourhood in the figure's own frame, and all ways from there back (more than one if symmetric).
 ///
-/// The least figure of the eight orientations wins, among equals the least context. Cuts are made in the own frame, so a mirrored
+/// The least figure of the eight orientations wins, among equals the least context. Slanted edges are cut in the own frame, so a mirrored
 /// copy of the same surroundings is cut alike to the picometre.
 pub(super) fn canonical(
-    figure: &Figure,
-    near: &[&Figure],
+    Neighbourhood { figure, near }: &Neighbourhood,
     address: i64,
     reach: i64,
 ) -> (Canonical, Vec<Transform>) {
@@ -149,7 +136,7 @@ pub(super) fn canonical(
         for way in into {
             let mut cut: Vec<Figure> = near
                 .iter()
-                .flat_map(|f| cut_to(&f.transformed(way), window))
+                .flat_map(|piece| piece.cut(way, window))
                 .collect();
             cut.sort();
             match context.as_ref().map(|c| cut.cmp(c)) {
@@ -171,28 +158,4 @@ pub(super) fn canonical(
         },
         back,
     )
-}
-
-/// The pieces of a figure in a window, normalized.
-fn cut_to(figure: &Figure, window: Rect) -> Vec<Figure> {
-    let bounds = figure.bounds();
-    if window.contains(bounds.min) && window.contains(bounds.max) {
-        return vec![figure.clone().normalized()];
-    }
-    if *figure.outer() == *Figure::from_rect(bounds).outer() && figure.holes().is_empty() {
-        let min = Point::new(
-            bounds.min.x.max(window.min.x),
-            bounds.min.y.max(window.min.y),
-        );
-        let max = Point::new(
-            bounds.max.x.min(window.max.x),
-            bounds.max.y.min(window.max.y),
-        );
-        return if min.x < max.x && min.y < max.y {
-            vec![Figure::from_rect(Rect { min, max })]
-        } else {
-            Vec::new()
-        };
-    }
-    geom::intersect(std::slice::from_ref(figure), &[Figure::from_rect(window)])
 }

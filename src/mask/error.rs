@@ -1,5 +1,6 @@
 //! What can be wrong with a layout or the options when a mask is made of it.
 
+use crate::geom::Rect;
 use crate::layout::Layer;
 use crate::units::Nm;
 
@@ -25,6 +26,62 @@ impl std::fmt::Display for LayerCounts {
     }
 }
 
+/// What can be wrong with the outline of a polygon.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Defect {
+    /// It crosses itself, or winds round something more than once.
+    SelfCrossing,
+    /// It encloses nothing.
+    NoArea,
+    /// Neighbouring points coincide, at mask scale.
+    RepeatedPoints,
+    /// It turns straight back at a point.
+    Spike,
+    /// It runs clockwise; sound in every format, so noted and never refused.
+    Clockwise,
+}
+
+impl Defect {
+    /// All, in the order of the notes.
+    pub const ALL: [Self; 5] = [
+        Self::SelfCrossing,
+        Self::NoArea,
+        Self::RepeatedPoints,
+        Self::Spike,
+        Self::Clockwise,
+    ];
+
+    /// How it is repaired.
+    #[must_use]
+    pub fn rule(self) -> &'static str {
+        match self {
+            Self::SelfCrossing => "all it winds round was filled",
+            Self::NoArea => "dropped",
+            Self::RepeatedPoints => "each kept once",
+            Self::Spike => "the spike was dropped",
+            Self::Clockwise => "filled like any other",
+        }
+    }
+
+    /// Whether [`super::MaskOptions::strict`] refuses it.
+    #[must_use]
+    pub fn is_refused(self) -> bool {
+        self != Self::Clockwise
+    }
+}
+
+impl std::fmt::Display for Defect {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        f.write_str(match self {
+            Self::SelfCrossing => "with a self-crossing outline",
+            Self::NoArea => "without area",
+            Self::RepeatedPoints => "with repeated points",
+            Self::Spike => "with a spike that has no area",
+            Self::Clockwise => "drawn clockwise",
+        })
+    }
+}
+
 /// Why no mask could be made of a layout.
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum MaskError {
@@ -41,6 +98,38 @@ pub enum MaskError {
         layer: Layer,
         /// What there is.
         present: LayerCounts,
+    },
+    /// A layer is both taken and subtracted.
+    #[error("layer {}/{} is both taken and subtracted", layer.layer, layer.datatype)]
+    LayerTwice {
+        /// Which.
+        layer: Layer,
+    },
+    /// A polygon needs repair, and repairs are refused.
+    #[error(
+        "cell `{cell}`: polygon {polygon} {defect}; expected a sound outline, repairs are refused"
+    )]
+    Unsound {
+        /// Where it is drawn.
+        cell: String,
+        /// Its index.
+        polygon: usize,
+        /// The first thing wrong with it.
+        defect: Defect,
+    },
+    /// The bias is not finite or absurdly large.
+    #[error("bias is {found}, expected from -1e6 to 1e6 nm")]
+    Bias {
+        /// What was given.
+        found: Nm,
+    },
+    /// The frame or window has no area.
+    #[error("the {what} from {:?} to {:?} nm has no area", found.min.to_nm(), found.max.to_nm())]
+    EmptyRectangle {
+        /// Frame or window.
+        what: &'static str,
+        /// What was given.
+        found: Rect,
     },
     /// The scale is not a positive finite number.
     #[error("scale is {found}, expected a positive finite number")]

@@ -1,51 +1,50 @@
 //! Layout → mask: chosen layers at mask scale, merged, as distinct figures with their contexts and places.
 //!
-//! The steps, each in its file: `cells` brings the cells to picometres and makes every polygon sound; `resolve` finds what
-//! interacts within reach and loosens only that; `distinct` merges, finds contexts and writes each figure one way;
-//! `places` joins the hierarchy from the top. Cost follows what the file holds, not how often it is repeated.
+//! The steps, each in its file: `cells` brings the cells to picometres and makes every polygon sound; `window` leaves away what
+//! lies outside; `resolve` finds what interacts within reach and loosens only that; `exposed` merges, subtracts, biases and tones;
+//! `distinct` finds contexts and writes each figure one way; `places` joins the hierarchy from the top. Cost follows what the file holds,
+//! not how often it is repeated.
 
 mod cells;
+mod clip;
+mod cut;
 mod distinct;
 mod error;
+mod exposed;
 mod index;
 mod near;
+mod options;
+mod outline;
 mod places;
+mod repair;
 mod repeat;
 mod resolve;
+mod scaling;
 mod summary;
+mod window;
 
 use std::collections::{BTreeMap, HashMap};
+use std::sync::Arc;
 
 use rayon::prelude::*;
 
 use crate::geom::{Figure, Point, Rect, Repetition, Transform};
-use crate::layout::{Layer, Layout};
+use crate::layout::Layout;
 use crate::shot::AddressUnit;
-use crate::units::Nm;
 
 use distinct::Canonical;
+use exposed::Rules;
+use outline::Outline;
 use places::Standing;
 use resolve::{Cluster, Resolved, Resolver};
 
-pub use error::{LayerCounts, MaskError};
+pub use error::{Defect, LayerCounts, MaskError};
 pub use near::Standings;
+pub use options::{Expose, MaskOptions};
 pub use summary::Summary;
 
 /// Most parts that are looked at one by one, checked before memory is taken: about 200 bytes each.
 pub const MAX_PARTS: u128 = 50_000_000;
-
-/// What to take from a layout.
-#[derive(Clone, Debug)]
-pub struct MaskOptions {
-    /// Layers united; empty means the only one there is.
-    pub layers: Vec<Layer>,
-    /// Mask length per layout length (4 for wafer-scale data at 4:1).
-    pub scale: f64,
-    /// Other figures nearer than this are context (5 σ).
-    pub reach: Nm,
-    /// Distinct figures are kept apart by their position within the address grid.
-    pub address: AddressUnit,
-}
 
 /// The figures of the chosen layers, each distinct one once.
 #[derive(Clone, Debug)]
@@ -88,6 +87,20 @@ impl DistinctFigure {
     }
 }
 
+impl DistinctFigure {
+    /// Around it at all its places.
+    fn extent(&self) -> Option<Rect> {
+        let bounds = self.figure.bounds();
+        let at = |place: &Place| {
+            repeat::add_spans(
+                place.transform.apply_rect(bounds),
+                repeat::span(&place.repetition)?,
+            )
+        };
+        self.places.iter().filter_map(at).reduce(Rect::hull)
+    }
+}
+
 impl Mask {
     /// Figures over all places; `u128::MAX` stands for that many or more.
     #[must_use]
@@ -116,34 +129,45 @@ pub fn layer_counts(layout: &Layout) -> LayerCounts {
 /// Makes the mask of a layout.
 ///
 /// Figures nearer to each other than the reach are each other's context; equal figures with equal contexts are one
-/// [`DistinctFigure`]. Rounding and repair follow the rules at the top of `cells`: nearest picometre, halves up; non-zero fill.
+/// [`DistinctFigure`]. Rounding and repair follow the rules at the top of `scaling` and `repair`: nearest picometre, halves up; non-zero fill.
 ///
 /// # Errors
-/// A layer not chosen or not there, numbers out of range, a broken hierarchy, or more than [`MAX_PARTS`] repeated parts that
-/// come within reach of each other.
+/// A layer not chosen or not there, numbers out of range, a broken hierarchy, a polygon that needs repair if repairs are refused, or more than
+/// [`MAX_PARTS`] repeated parts that come within reach of each other.
 pub fn build(layout: &Layout, options: &MaskOptions) -> Result<Mask, MaskError> {
-    let reach = options
-        .reach
-        .to_pm()
-        .filter(|pm| (0..=1_000_000_000).contains(pm))
-        .ok_or(MaskError::Reach {
-            found: options.reach,
-        })?;
-    let cells::Cells { cells, tops, notes } = cells::convert(layout, options)?;
-    let mut resolver = Resolver { cells, reach };
+    let (reach, growth) = (options.reach_pm()?, options.growth_pm()?);
+    options.check_rectangles()?;
+    let rules = Rules {
+        growth,
+        background: matches!(options.expose, Expose::Background { .. }),
+    };
+    // Edges at this distance from each other may come to touch, each moving.
+    let moved = exposed::furthest(growth);
+    let cells::Cells {
+        cells,
+        mut tops,
+        notes,
+    } = cells::convert(layout, options)?;
+    let name = match &tops[..] {
+        [single] => cells::name_of(&cells, single),
+        _ => "all top cells".to_owned(),
+    };
+    if let Some(window) = options.window {
+        tops = window::inside(&cells, tops, window, moved)?;
+    }
+    let mut resolver = Resolver {
+        cells,
+        reach: reach + 2 * moved,
+    };
     let mut resolved: Vec<Option<Resolved>> = Vec::new();
     let top = resolver.cells.len();
-    let whole = tops.iter().map(|item| item.bounds).reduce(Rect::hull);
+    let whole = tops.iter().map(cells::Item::extent).reduce(Rect::hull);
     let Some(bounds) = whole else {
         return Ok(Mask {
             figures: Vec::new(),
             extent: None,
             notes,
         });
-    };
-    let name = match &tops[..] {
-        [single] => resolver.name_of(single),
-        _ => "all top cells".to_owned(),
     };
     resolver.cells.push(cells::PmCell {
         name,
@@ -174,29 +198,43 @@ pub fn build(layout: &Layout, options: &MaskOptions) -> Result<Mask, MaskError> 
         .filter_map(|(cell, (resolved, standings))| Some((cell, resolved.as_ref()?, standings)))
         .flat_map(|(cell, resolved, standings)| {
             let name = &resolver.cells[cell].name;
-            resolved
-                .clusters
-                .par_iter()
-                .map(move |c| placed(c, standings, name, options.address, reach))
+            let window = options.window.filter(|_| cell == top);
+            resolved.clusters.par_iter().map(move |c| {
+                // What is repeated keeps clear of the border.
+                let window = window.filter(|_| c.repetitions.is_empty());
+                placed(
+                    exposed::exposed(c, rules, window),
+                    c,
+                    standings,
+                    name,
+                    options.address,
+                    reach,
+                )
+            })
         })
         .collect::<Result<Vec<_>, _>>()?;
+    let figures = numbered(found.into_iter().flatten());
     Ok(Mask {
-        figures: numbered(found.into_iter().flatten()),
-        extent: Some(bounds),
+        extent: figures
+            .iter()
+            .filter_map(DistinctFigure::extent)
+            .reduce(Rect::hull),
+        figures,
         notes,
     })
 }
 
 /// The figures of one cluster, each with where it stands.
 fn placed(
+    figures: Vec<Arc<Figure>>,
     cluster: &Cluster,
     standings: &[Standing],
     cell: &str,
     address: AddressUnit,
     reach: i64,
 ) -> Result<Vec<(Canonical, Vec<Standing>)>, MaskError> {
-    let figures = distinct::merged(&cluster.figures);
-    let near = distinct::neighbours(&figures, reach);
+    let outlines: Vec<Outline> = figures.into_par_iter().map(Outline::new).collect();
+    let near = distinct::neighbours(&outlines, reach);
     // Standings by position of the cell's own axes on the address grid: each such position is a different figure.
     let mut by_phase: BTreeMap<Point, Vec<Standing>> = BTreeMap::new();
     for standing in standings {
@@ -226,29 +264,26 @@ fn placed(
     }
     let mut found = Vec::new();
     for (phase, pieces) in by_phase {
-        let figure = |i: usize| -> (Canonical, Vec<Standing>) {
-            let onto_grid = |f: &Figure| f.translated(phase);
-            let near: Vec<Figure> = near[i].iter().map(|&j| onto_grid(&figures[j])).collect();
-            let near: Vec<&Figure> = near.iter().collect();
-            let (canonical, ways) =
-                distinct::canonical(&onto_grid(&figures[i]), &near, address.pm(), reach);
-            let off_grid = Transform {
-                shift: -phase,
-                ..Transform::IDENTITY
-            };
-            let stand = |piece: &Standing| {
-                let all = ways
-                    .iter()
-                    .map(|way| way.then(off_grid).then(piece.transform));
-                let transform = all.min().unwrap_or(piece.transform);
+        let distinct = distinct::neighbourhoods(&outlines, &near, phase, address.pm(), reach);
+        found.par_extend(distinct.into_par_iter().map(|(neighbourhood, shifts)| {
+            let (canonical, ways) = distinct::canonical(&neighbourhood, address.pm(), reach);
+            let stand = |shift: Point, piece: &Standing| {
+                let shift = Transform {
+                    shift: shift - phase,
+                    ..Transform::IDENTITY
+                };
+                let to_mask = shift.then(piece.transform);
+                let all = ways.iter().map(|way| way.then(to_mask));
                 Standing {
-                    transform,
+                    transform: all.min().unwrap_or(to_mask),
                     repetitions: piece.repetitions.clone(),
                 }
             };
-            (canonical, pieces.iter().map(stand).collect())
-        };
-        found.par_extend((0..figures.len()).into_par_iter().map(figure));
+            let standings = shifts
+                .iter()
+                .flat_map(|&shift| pieces.iter().map(move |piece| stand(shift, piece)));
+            (canonical, standings.collect())
+        }));
     }
     Ok(found)
 }

@@ -17,16 +17,15 @@ use std::sync::Arc;
 
 use crate::geom::{Figure, Point, Rect, Repetition, Transform};
 
-use super::cells::{Content, Item, PmCell};
+use super::cells::{Content, Item, PmCell, Role};
+use super::cut::{all_of, cut, element, last, shifted, too_many};
 use super::index::{BoxIndex, clusters};
-use super::repeat::{
-    IndexRange, add_spans, indices_in, interacts_with_itself, lattice, span, window,
-};
+use super::repeat::{IndexRange, add_spans, indices_in, interacts_with_itself, span, window};
 use super::{MAX_PARTS, MaskError};
 
 /// Figures to be merged together, with the repetitions of the whole cluster (innermost first).
 pub(super) struct Cluster {
-    pub(super) figures: Vec<Arc<Figure>>,
+    pub(super) figures: Vec<(Role, Arc<Figure>)>,
     pub(super) repetitions: Vec<Repetition>,
 }
 
@@ -51,14 +50,6 @@ pub(super) struct Resolver {
 }
 
 impl Resolver {
-    /// The name of the cell an item places; empty for a figure.
-    pub(super) fn name_of(&self, item: &Item) -> String {
-        match item.content {
-            Content::Cell(cell) => self.cells[cell].name.clone(),
-            Content::Figure(_) => String::new(),
-        }
-    }
-
     /// Takes the parts of one cell apart.
     pub(super) fn resolve(&mut self, name: &str, items: Vec<Item>) -> Result<Resolved, MaskError> {
         let mut resolved = Resolved::default();
@@ -67,7 +58,7 @@ impl Resolver {
             for group in self.groups(items) {
                 let alone = group.len() == 1 && self.self_interaction(&group[0]).is_none();
                 let flat = |item: &Item| {
-                    matches!(item.content, Content::Figure(_)) && item.repetitions.is_empty()
+                    matches!(item.content, Content::Figure(..)) && item.repetitions.is_empty()
                 };
                 if alone || group.iter().all(flat) {
                     resolved.take(group);
@@ -104,7 +95,7 @@ impl Resolver {
         if x.repetitions.is_empty() && y.repetitions.is_empty() {
             let figures = matches!(
                 (&x.content, &y.content),
-                (Content::Figure(_), Content::Figure(_))
+                (Content::Figure(..), Content::Figure(..))
             );
             return figures || !(self.apart(x, y) || self.apart(y, x));
         }
@@ -161,7 +152,7 @@ impl Resolver {
     fn apart(&self, x: &Item, y: &Item) -> bool {
         /// Outlines longer than this are not worth the walk.
         const MOST_VERTICES: usize = 4096;
-        let Content::Figure(figure) = &x.content else {
+        let Content::Figure(_, figure) = &x.content else {
             return false;
         };
         if !x.repetitions.is_empty() || figure.vertices() > MOST_VERTICES {
@@ -370,10 +361,13 @@ impl Resolved {
             return;
         }
         let figures = group.into_iter().filter_map(|item| match item.content {
-            Content::Figure(figure) if item.transform == Transform::IDENTITY => Some(figure),
-            Content::Figure(figure) => {
-                Some(Arc::new(figure.transformed(item.transform).normalized()))
+            Content::Figure(role, figure) if item.transform == Transform::IDENTITY => {
+                Some((role, figure))
             }
+            Content::Figure(role, figure) => Some((
+                role,
+                Arc::new(figure.transformed(item.transform).normalized()),
+            )),
             Content::Cell(_) => None,
         });
         self.clusters.push(Cluster {
@@ -415,34 +409,6 @@ impl Resolved {
     }
 }
 
-fn too_many(name: &str, found: u128) -> MaskError {
-    MaskError::TooMany {
-        cell: name.to_owned(),
-        found,
-        limit: MAX_PARTS,
-    }
-}
-
-fn last(n: u64) -> i64 {
-    i64::try_from(n.saturating_sub(1)).unwrap_or(i64::MAX)
-}
-
-fn all_of(columns: u64, rows: u64) -> IndexRange {
-    IndexRange {
-        columns: (0, last(columns)),
-        rows: (0, last(rows)),
-    }
-}
-
-/// The outermost repetition of an item, and the bounds of what it repeats.
-fn element(item: &Item) -> Option<(&Repetition, Rect)> {
-    let (outermost, inner) = item.repetitions.split_last()?;
-    let element = inner
-        .iter()
-        .try_fold(item.bounds, |sum, r| add_spans(sum, span(r)?));
-    Some((outermost, element.unwrap_or(item.bounds)))
-}
-
 fn same_steps(x: &Item, y: &Item) -> bool {
     match (&x.repetitions[..], &y.repetitions[..]) {
         ([Repetition::Lattice { a, b, .. }], [Repetition::Lattice { a: ya, b: yb, .. }]) => {
@@ -450,114 +416,4 @@ fn same_steps(x: &Item, y: &Item) -> bool {
         }
         _ => false,
     }
-}
-
-fn shifted(item: &Item, by: Point, repetitions: Vec<Repetition>) -> Item {
-    let transform = Transform {
-        shift: item.transform.shift + by,
-        ..item.transform
-    };
-    Item {
-        content: item.content.clone(),
-        bounds: item.bounds.translated(by),
-        transform,
-        repetitions,
-    }
-}
-
-/// Cuts the outermost repetition so that elements within reach of `near` stand alone.
-fn cut(
-    name: &str,
-    item: &Item,
-    near: &[Rect],
-    reach: i64,
-    parts: &mut Vec<Item>,
-) -> Result<(), MaskError> {
-    let Some((outermost, element)) = element(item) else {
-        return Ok(());
-    };
-    let inner = &item.repetitions[..item.repetitions.len() - 1];
-    let with = |outer: Repetition| {
-        let mut repetitions = inner.to_vec();
-        repetitions.extend((outer != Repetition::Once).then_some(outer));
-        repetitions
-    };
-    let &Repetition::Lattice {
-        columns,
-        rows,
-        a,
-        b,
-    } = outermost
-    else {
-        let list: Vec<Point> = outermost.displacements().collect();
-        let places: Vec<Rect> = list.iter().map(|&d| Rect { min: d, max: d }).collect();
-        let index = BoxIndex::new(&places);
-        let mut hit = vec![false; list.len()];
-        for &other in near {
-            index.touching(window(element, other, reach), |i| hit[i] = true);
-        }
-        let mut rest = Vec::new();
-        for (&d, hit) in list.iter().zip(hit) {
-            if hit {
-                parts.push(shifted(item, d, inner.to_vec()));
-            } else {
-                rest.push(d);
-            }
-        }
-        if !rest.is_empty() {
-            parts.push(Item {
-                repetitions: with(Repetition::List(rest)),
-                ..item.clone()
-            });
-        }
-        return Ok(());
-    };
-    let displacement = |i: i64, j: i64| Point::new(i * a.x + j * b.x, i * a.y + j * b.y);
-    let size = |(first, last): (i64, i64)| u64::try_from(last - first + 1).unwrap_or(0);
-    let mut blocks = vec![all_of(columns, rows)];
-    for &other in near {
-        let near = window(element, other, reach);
-        let mut kept = Vec::new();
-        for block in blocks {
-            let Some(hit) = indices_in(block, a, b, near) else {
-                kept.push(block);
-                continue;
-            };
-            let total =
-                u128::from(size(hit.columns)) * u128::from(size(hit.rows)) + parts.len() as u128;
-            if total > MAX_PARTS {
-                return Err(too_many(name, total));
-            }
-            for j in hit.rows.0..=hit.rows.1 {
-                parts.extend(
-                    (hit.columns.0..=hit.columns.1)
-                        .map(|i| shifted(item, displacement(i, j), inner.to_vec())),
-                );
-            }
-            let ((c0, c1), (r0, r1)) = (block.columns, block.rows);
-            let ((h0, h1), (v0, v1)) = (hit.columns, hit.rows);
-            let around = [
-                ((c0, c1), (r0, v0 - 1)),
-                ((c0, h0 - 1), (v0, v1)),
-                ((h1 + 1, c1), (v0, v1)),
-                ((c0, c1), (v1 + 1, r1)),
-            ];
-            kept.extend(
-                around
-                    .into_iter()
-                    .filter(|(c, r)| c.0 <= c.1 && r.0 <= r.1)
-                    .map(|(columns, rows)| IndexRange { columns, rows }),
-            );
-        }
-        blocks = kept;
-    }
-    for block in blocks {
-        let outer = lattice(size(block.columns), size(block.rows), a, b);
-        parts.push(shifted(
-            item,
-            displacement(block.columns.0, block.rows.0),
-            with(outer),
-        ));
-    }
-    Ok(())
 }

@@ -132,8 +132,7 @@ impl Chosen<'_> {
             &MaskOptions {
                 layers: self.layers.to_vec(),
                 scale: self.scale,
-                reach: setup.blur.sigma() * REACH,
-                address: setup.limits.address,
+                ..MaskOptions::new(setup.blur.sigma() * REACH, setup.limits.address)
             },
         )
     }
