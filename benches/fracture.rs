@@ -28,7 +28,11 @@ fn fracturers(effort: Effort) -> [Box<dyn Fracturer>; 2] {
         effort,
         ..Tile::default()
     };
-    [Box::new(tile), Box::new(Overlap { effort })]
+    let overlap = Overlap {
+        effort,
+        bound: false,
+    };
+    [Box::new(tile), Box::new(overlap)]
 }
 
 /// Shots of a figure and whether it prints.

@@ -23,6 +23,7 @@ fn found_and_bound(figure: &Figure) -> Option<(usize, usize)> {
     };
     let fracture = Overlap {
         effort: Effort::Quick,
+        bound: true,
     }
     .fracture(&job)
     .unwrap();

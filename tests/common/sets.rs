@@ -1,37 +1,22 @@
 //! The reference sets, and the jobs that are asked of their figures.
 
-use std::str::FromStr;
-
 use shotwright::blur::Blur;
 use shotwright::fracture::Job;
-use shotwright::geom::{Figure, Point, Ring};
+use shotwright::geom::{Figure, Ring};
+use shotwright::layout;
 use shotwright::shot::{AddressUnit, ShotLimits};
 use shotwright::units::Nm;
-use wkt::Wkt;
 
 pub(crate) const CURVY: &str = include_str!("../data/sets/curvy.wkt");
 pub(crate) const ASSIST: &str = include_str!("../data/sets/assist.wkt");
 
-/// One figure a line, in nm.
+/// One figure without holes for each polygon, in the order of the text.
 pub(crate) fn figures(text: &str) -> Vec<Figure> {
-    text.lines().map(figure).collect()
-}
-
-fn figure(line: &str) -> Figure {
-    let Ok(Wkt::Polygon(polygon)) = Wkt::<f64>::from_str(line) else {
-        panic!("expected a POLYGON, found {line:.40}");
-    };
-    let mut rings = polygon.rings().iter().map(|ring| {
-        let points = ring.coords().iter().map(|c| point(c.x, c.y)).collect();
-        Ring::new(points).expect("three points or more")
-    });
-    Figure::new(rings.next().expect("an outer ring"), rings.collect())
-}
-
-/// A place in nm, to the nearest picometre.
-pub(crate) fn point(x: f64, y: f64) -> Point {
-    let pm = |v: f64| Nm(v).to_pm().expect("a place within 4 km");
-    Point::new(pm(x), pm(y))
+    let layout = layout::read(text.as_bytes(), "set").expect("WKT");
+    let shapes = layout.cells.into_iter().flat_map(|cell| cell.shapes);
+    shapes
+        .map(|shape| Figure::new(Ring::new(shape.points).expect("three points"), Vec::new()))
+        .collect()
 }
 
 /// Address 0.1 nm, sides from 8 nm to 1000 nm: the limits that the references of the sets were found under.

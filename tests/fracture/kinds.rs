@@ -11,9 +11,15 @@ use std::collections::BTreeMap;
 use std::f64::consts::{PI, TAU};
 
 use shotwright::geom::{Figure, Point, Ring};
+use shotwright::units::Nm;
 
 use crate::random::Random;
-use crate::sets::point;
+
+/// A place in nm, to the nearest picometre.
+fn point(x: f64, y: f64) -> Point {
+    let pm = |v: f64| Nm(v).to_pm().expect("a place within 4 km");
+    Point::new(pm(x), pm(y))
+}
 
 /// A uniform number from `low` to `high`.
 pub(crate) fn between(random: &mut Random, low: f64, high: f64) -> f64 {

@@ -27,6 +27,7 @@ const TILE: Tile = Tile {
 
 const OVERLAP: Overlap = Overlap {
     effort: Effort::Normal,
+    bound: false,
 };
 
 const BOTH: [&dyn Fracturer; 2] = [&TILE, &OVERLAP];

@@ -15,6 +15,9 @@ fn figure(rings: &[&[(i64, i64)]]) -> Figure {
     Figure::new(rings.next().unwrap(), rings.collect())
 }
 
+/// Vertices of rings in nm, the outer first.
+type Rings = &'static [&'static [(i64, i64)]];
+
 /// A bar of a width and a height, nm.
 fn bar(width: i64, height: i64) -> Figure {
     Figure::from_rect(Rect::new(Point::new(0, 0), Point::from_nm(width, height)))
@@ -31,7 +34,7 @@ fn area_two_of_shots(fracturer: &Tile, figure: &Figure) -> (usize, i128) {
 #[test]
 fn letters_take_the_least_tiles() {
     // CHECKS of the partition, by hand: "rectangle 1, L 2, T 2, U 3, square ring 4".
-    let cases: [(&str, &[&[(i64, i64)]], usize); 5] = [
+    let cases: [(&str, Rings, usize); 5] = [
         ("rectangle", &[&[(0, 0), (300, 0), (300, 200), (0, 200)]], 1),
         (
             "L",
