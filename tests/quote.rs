@@ -2,11 +2,12 @@
 
 use shotwright::fracture::Effort;
 use shotwright::geom::{Point, Repetition};
-use shotwright::layout::{self, Layer, Layout};
-use shotwright::mask::{Mask, Standings};
+use shotwright::layout::{self, Layout};
+use shotwright::mask::{Mask, MaskOptions, Standings};
 use shotwright::profile::{Kind, Profile};
 use shotwright::quote::result::{Fits, FlagKind, Method};
 use shotwright::quote::{self, Answer, Chosen, Share, Terms};
+use shotwright::shot::AddressUnit;
 use shotwright::units::{Dose, Hours, Nm};
 use shotwright::write_time::Field;
 
@@ -38,11 +39,7 @@ fn quoted(layout: &Layout, terms: &Terms<'_>) -> (Mask, Answer) {
     let chosen = Chosen {
         name: "test",
         layout,
-        layers: &[Layer {
-            layer: 0,
-            datatype: 0,
-        }],
-        scale: 1.0,
+        options: &MaskOptions::new(Nm(0.0), AddressUnit::FINEST),
     };
     let mask = chosen.mask(&terms.setup().unwrap()).unwrap();
     let answer = quote::quote(&chosen, &mask, terms, &|| ()).unwrap();

@@ -268,7 +268,13 @@ fn quote() -> Quote {
         source: Source {
             name: "elbow.oas".to_owned(),
             layers: vec!["1/0".to_owned()],
+            minus: Vec::new(),
             scale: 4.0,
+            mirror: false,
+            shift_nm: [0.0; 2],
+            bias_nm: 0.0,
+            background_of_nm: None,
+            window_nm: None,
             extent_nm: Some([20_000.0, 8_400.0]),
             figures_distinct: 14,
             figures_placed: Count(1_200_000),

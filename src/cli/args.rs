@@ -5,8 +5,11 @@ use std::path::{Path, PathBuf};
 use clap::{Arg, ArgMatches, Args, Command, FromArgMatches, ValueEnum};
 
 use crate::fracture::Effort;
+use crate::geom::{Point, Rect};
 use crate::layout::{self, Layer, Layout};
+use crate::mask::{Expose, MaskOptions};
 use crate::profile::{Key, Profile, ProfileErrors};
+use crate::shot::{AddressUnit, ShotLimits};
 use crate::units::Nm;
 use crate::write_time::Field;
 
@@ -23,9 +26,70 @@ pub(super) struct LayoutArgs {
     /// Mask length per layout length: 4 for wafer-scale data of a 4:1 mask.
     #[arg(long, value_name = "K", default_value_t = 1.0, value_parser = positive, allow_negative_numbers = true)]
     pub(super) scale: f64,
+    /// Layer to subtract, as layer/datatype; repeat for several.
+    #[arg(long, value_name = "L/D", value_parser = layer, help_heading = TRANSFER)]
+    minus: Vec<Layer>,
+    /// Mirror about the y axis (x becomes -x), as a mask seen from its other side.
+    #[arg(long, help_heading = TRANSFER)]
+    mirror: bool,
+    /// Then move by this, nm at mask scale.
+    #[arg(long, value_name = "X,Y", value_parser = place, allow_hyphen_values = true, help_heading = TRANSFER)]
+    shift_nm: Option<Point>,
+    /// Move every drawn edge outward from what is exposed, nm; inward if negative.
+    #[arg(long, value_name = "NM", default_value_t = 0.0, value_parser = number, allow_negative_numbers = true, help_heading = TRANSFER)]
+    bias_nm: f64,
+    /// What is exposed.
+    #[arg(long, value_enum, default_value_t, help_heading = TRANSFER)]
+    expose: ExposeArg,
+    /// Frame whose background is exposed, two corners in nm at mask scale.
+    #[arg(long, value_name = "X0,Y0,X1,Y1", value_parser = rectangle, allow_hyphen_values = true, required_if_eq("expose", "background"), help_heading = TRANSFER)]
+    frame: Option<Rect>,
+    /// Take only what lies in this window, cut at its border; two corners in nm at mask scale.
+    #[arg(long, value_name = "X0,Y0,X1,Y1", value_parser = rectangle, allow_hyphen_values = true, help_heading = TRANSFER)]
+    window: Option<Rect>,
+    /// Refuse a polygon that needs repair instead of repairing it.
+    #[arg(long, help_heading = TRANSFER)]
+    strict: bool,
+}
+
+const TRANSFER: &str = "How the layout goes onto the mask, in this order";
+
+/// What is exposed.
+#[derive(Clone, Copy, Debug, Default, ValueEnum)]
+enum ExposeArg {
+    /// What is drawn.
+    #[default]
+    Figures,
+    /// What is not drawn of the --frame.
+    Background,
 }
 
 impl LayoutArgs {
+    /// What is taken; reach and address unit are left to who knows the blur and the writer.
+    pub(super) fn options(&self) -> Result<MaskOptions, CliError> {
+        let expose = match (self.expose, self.frame) {
+            (ExposeArg::Figures, None) => Expose::Figures,
+            (ExposeArg::Background, Some(frame)) => Expose::Background { frame },
+            _ => {
+                return Err(CliError::Arguments(
+                    "--frame and --expose background need each other".to_owned(),
+                ));
+            }
+        };
+        Ok(MaskOptions {
+            layers: self.layers.clone(),
+            minus: self.minus.clone(),
+            scale: self.scale,
+            mirror: self.mirror,
+            shift: self.shift_nm.unwrap_or_default(),
+            bias: Nm(self.bias_nm),
+            expose,
+            window: self.window,
+            strict: self.strict,
+            ..MaskOptions::new(Nm(0.0), AddressUnit::FINEST)
+        })
+    }
+
     /// Its name for messages.
     pub(super) fn file(&self) -> String {
         self.layout.display().to_string()
@@ -59,15 +123,15 @@ pub(super) struct LimitArgs {
 }
 
 impl LimitArgs {
-    pub(super) fn limits(&self) -> Result<crate::shot::ShotLimits, CliError> {
+    pub(super) fn limits(&self) -> Result<ShotLimits, CliError> {
         if self.min_side_nm > self.max_side_nm {
             return Err(CliError::Arguments(format!(
                 "--min-side-nm is {}, expected at most the {} of --max-side-nm",
                 self.min_side_nm, self.max_side_nm
             )));
         }
-        Ok(crate::shot::ShotLimits {
-            address: crate::shot::AddressUnit::new(Nm(self.address_nm))?,
+        Ok(ShotLimits {
+            address: AddressUnit::new(Nm(self.address_nm))?,
             least_side: Nm(self.min_side_nm),
             greatest_side: Nm(self.max_side_nm),
             sliver: Nm(self.sliver_nm),
@@ -223,6 +287,27 @@ pub(super) fn field_mm(text: &str) -> Result<Field, String> {
         width: Nm::from_mm(width),
         height: Nm::from_mm(height),
     })
+}
+
+/// `N` lengths in nm, separated by commas, as picometres.
+fn lengths<const N: usize>(text: &str) -> Option<[i64; N]> {
+    let pm = |text: &str| Nm(number(text.trim()).ok()?).to_pm();
+    let all = text.split(',').map(pm).collect::<Option<Vec<_>>>()?;
+    all.try_into().ok()
+}
+
+/// `100,-50` in nm.
+fn place(text: &str) -> Result<Point, String> {
+    let [x, y] = lengths(text).ok_or("expected two lengths in nm, as 100,-50")?;
+    Ok(Point::new(x, y))
+}
+
+/// `0,0,1000,500` in nm.
+fn rectangle(text: &str) -> Result<Rect, String> {
+    lengths(text)
+        .map(|[x0, y0, x1, y1]| Rect::new(Point::new(x0, y0), Point::new(x1, y1)))
+        .filter(|rect| rect.width() > 0 && rect.height() > 0)
+        .ok_or_else(|| "expected two corners of a rectangle in nm, as 0,0,1000,500".to_owned())
 }
 
 /// `1/0`, or `1` for datatype 0.

@@ -20,7 +20,9 @@ use crate::report::shots_csv::{Rows, ShotWriter};
 use crate::units::Nm;
 
 use super::args::{EffortArg, LayoutArgs, LimitArgs, positive};
-use super::output::{create, file_error, print, print_json, scores};
+use crate::report::table::{grouped, significant};
+
+use super::output::{aligned, create, file_error, print, print_json, scores};
 use super::{CliError, Outcome};
 
 /// Fracture a layout into shots.
@@ -51,6 +53,9 @@ pub(super) struct FractureArgs {
     /// Tile every rectilinear figure exactly, even one that is a curve drawn in pixels.
     #[arg(long)]
     exact: bool,
+    /// Prove how many shots any overlap fracture needs at least: about half as much work again.
+    #[arg(long)]
+    bound: bool,
     /// How hard to search.
     #[arg(long, value_enum, default_value_t)]
     effort: EffortArg,
@@ -81,6 +86,8 @@ struct Answer {
     summary: FractureSummary,
     figures_distinct: u64,
     figures_placed: Count,
+    /// Shots at all places that any list of the kind needs; `None` if not known of every figure.
+    lower_bound: Option<Count>,
     /// Shots at all places with a side outside the limits.
     shots_beyond_limits: Count,
     failing: Vec<Failing>,
@@ -106,6 +113,12 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         tolerance: Nm(args.tolerance_nm),
         limits: args.limits.limits()?,
     };
+    let options = args.layout.options()?;
+    if args.bound && !matches!(args.method, MethodArg::Overlap) {
+        return Err(CliError::Arguments(
+            "--bound is for --method overlap".to_owned(),
+        ));
+    }
     let to_stdout = args
         .output
         .as_ref()
@@ -126,8 +139,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     let chosen = Chosen {
         name: &name,
         layout: &layout,
-        layers: &args.layout.layers,
-        scale: args.layout.scale,
+        options: &options,
     };
     let mask = chosen
         .mask(&setup)
@@ -151,6 +163,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         shots_beyond_limits: Count(beyond_limits(&mask, &made, &setup)),
         figures_distinct: mask.figures.len() as u64,
         figures_placed: Count(mask.place_count()),
+        lower_bound: lower_bound(&mask, &made),
         failing: failing(&mask, &made),
         summary,
     };
@@ -176,9 +189,9 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     if args.json {
         print_json(&answer)?;
     } else if to_stdout {
-        eprint!("{}", scores(&answer.summary));
+        eprint!("{}", text(&answer));
     } else {
-        print(&scores(&answer.summary))?;
+        print(&text(&answer))?;
         if args.output.is_none() {
             eprintln!("no file written; -o FILE writes the shots");
         }
@@ -201,7 +214,7 @@ impl FractureArgs {
             }),
             MethodArg::Overlap => Box::new(Overlap {
                 effort,
-                bound: false,
+                bound: self.bound,
             }),
         }
     }
@@ -228,6 +241,35 @@ pub(super) fn write(
     let lines = writer.lines();
     writer.finish()?;
     Ok(lines)
+}
+
+/// The scores, and how far the shots are from the fewest possible where that is known.
+fn text(answer: &Answer) -> String {
+    let mut lines = scores(&answer.summary);
+    if let Some(bound) = answer.lower_bound {
+        let excess = answer.summary.shots.0.saturating_sub(bound.0);
+        #[allow(clippy::cast_precision_loss, reason = "a share, to be read")]
+        let gap = 100.0 * excess as f64 / answer.summary.shots.0.max(1) as f64;
+        lines.push((
+            "lower bound",
+            format!(
+                "{} shots; at most {} % of those above could be saved",
+                grouped(bound),
+                significant(gap)
+            ),
+        ));
+    }
+    aligned(&lines)
+}
+
+fn lower_bound(mask: &Mask, made: &[Result<Made, FractureError>]) -> Option<Count> {
+    let all = mask.figures.iter().zip(made);
+    let mut bounds = all.map(|(figure, made)| {
+        let bound = made.as_ref().ok()?.fracture.lower_bound?;
+        Some(figure.place_count().saturating_mul(bound as u128))
+    });
+    let total = bounds.try_fold(0, |sum: u128, bound| Some(sum.saturating_add(bound?)));
+    total.map(Count)
 }
 
 fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setup) -> u128 {

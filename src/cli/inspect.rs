@@ -8,7 +8,6 @@ use crate::layout::{Layer, Layout};
 use crate::mask::{self, MaskOptions};
 use crate::quote::result::Count;
 use crate::report::table::{grouped, significant};
-use crate::shot::AddressUnit;
 use crate::units::Nm;
 
 use super::args::LayoutArgs;
@@ -75,18 +74,19 @@ pub(super) fn run(args: &InspectArgs) -> Result<Outcome, CliError> {
 
 fn contents(args: &InspectArgs, layout: &Layout) -> Result<Contents, CliError> {
     let summary = layout.summary();
-    let chosen: Vec<Layer> = if args.layout.layers.is_empty() {
-        summary.layers.keys().copied().collect()
+    let options = args.layout.options()?;
+    let chosen: Vec<Layer> = if options.layers.is_empty() {
+        let all = summary.layers.keys().copied();
+        all.filter(|layer| !options.minus.contains(layer)).collect()
     } else {
-        args.layout.layers.clone()
+        options.layers.clone()
     };
     let mut layers = Vec::new();
     let mut notes = layout.notes.clone();
     for layer in chosen {
         let options = MaskOptions {
             layers: vec![layer],
-            scale: args.layout.scale,
-            ..MaskOptions::new(Nm(0.0), AddressUnit::FINEST)
+            ..options.clone()
         };
         let mask = mask::build(layout, &options)
             .map_err(|cause| CliError::mask(&args.layout.file(), cause))?;

@@ -17,7 +17,7 @@ use crate::report::shots_csv;
 use crate::units::Nm;
 
 use super::args::{LayoutArgs, LimitArgs, positive};
-use super::output::{file_error, print, print_json, scores};
+use super::output::{aligned, file_error, print, print_json, scores};
 use super::{CliError, Outcome};
 
 /// Score a shot list against a layout.
@@ -68,14 +68,14 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
         tolerance: Nm(args.tolerance_nm),
         limits: args.limits.limits()?,
     };
+    let options = args.layout.options()?;
     let input = File::open(&args.shots).map_err(|cause| file_error(&args.shots, cause))?;
     let layout = args.layout.open()?;
     let name = args.layout.file();
     let chosen = Chosen {
         name: &name,
         layout: &layout,
-        layers: &args.layout.layers,
-        scale: args.layout.scale,
+        options: &options,
     };
     let mask = chosen
         .mask(&setup)
@@ -132,7 +132,7 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
             shots_beyond_limits: scored.beyond_limits as u64,
         })?;
     } else {
-        print(&scores(&scored.summary))?;
+        print(&aligned(&scores(&scored.summary)))?;
     }
     Ok(outcome)
 }

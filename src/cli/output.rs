@@ -41,8 +41,8 @@ pub(super) fn file_error(path: &Path, cause: io::Error) -> CliError {
     }
 }
 
-/// The scores of one fracture, a line each.
-pub(super) fn scores(summary: &FractureSummary) -> String {
+/// The scores of one fracture, a line each: label and value.
+pub(super) fn scores(summary: &FractureSummary) -> Vec<(&'static str, String)> {
     let number = |x: Option<f64>| x.map_or_else(|| "–".to_owned(), significant);
     let signed = |x: Option<f64>| x.map_or_else(|| "–".to_owned(), |x| format!("{x:+.2}"));
     let error = summary.edge_error_nm;
@@ -80,7 +80,7 @@ pub(super) fn scores(summary: &FractureSummary) -> String {
     if let Some(peak) = summary.peak_dose {
         lines.push(("peak dose", format!("{} × dose-to-size", significant(peak))));
     }
-    aligned(&lines)
+    lines
 }
 
 /// Labels to the left, values in a column.

@@ -89,6 +89,7 @@ pub(super) fn run(args: &QuoteArgs) -> Result<Outcome, CliError> {
         slot: args.slot_h.map(Hours),
         peak_dose: args.peak_dose.map(Dose),
     };
+    let options = args.layout.options()?;
     let name = args.layout.file();
     let failed = |cause| CliError::Quote {
         file: name.clone(),
@@ -103,8 +104,7 @@ pub(super) fn run(args: &QuoteArgs) -> Result<Outcome, CliError> {
     let chosen = Chosen {
         name: &name,
         layout: &layout,
-        layers: &args.layout.layers,
-        scale: args.layout.scale,
+        options: &options,
     };
     let mask = chosen
         .mask(&setup)

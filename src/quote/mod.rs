@@ -20,9 +20,10 @@ use crate::expose::CorrectionError;
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Staircase, Tile};
 use crate::fracture::{Effort, FractureError, Fracturer};
+use crate::geom::Rect;
 use crate::judge::{Background, Settings};
 use crate::layout::{Layer, Layout};
-use crate::mask::{self, Mask, MaskError, MaskOptions};
+use crate::mask::{self, Expose, Mask, MaskError, MaskOptions};
 use crate::profile::{Kind, Profile};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::WriteTimeError;
@@ -115,10 +116,8 @@ pub struct Chosen<'a> {
     pub name: &'a str,
     /// What it holds.
     pub layout: &'a Layout,
-    /// Layers united; empty means the only one there is.
-    pub layers: &'a [Layer],
-    /// Mask length per layout length.
-    pub scale: f64,
+    /// What of it is taken, and how it goes onto the mask; reach and address unit are those of the setup instead.
+    pub options: &'a MaskOptions,
 }
 
 impl Chosen<'_> {
@@ -130,25 +129,41 @@ impl Chosen<'_> {
         mask::build(
             self.layout,
             &MaskOptions {
-                layers: self.layers.to_vec(),
-                scale: self.scale,
-                ..MaskOptions::new(setup.blur.sigma() * REACH, setup.limits.address)
+                reach: setup.blur.sigma() * REACH,
+                address: setup.limits.address,
+                ..self.options.clone()
             },
         )
     }
 
     fn source(&self, mask: &Mask) -> Source {
         let name = |layer: &Layer| format!("{}/{}", layer.layer, layer.datatype);
-        let layers = if self.layers.is_empty() {
+        let options = self.options;
+        let layers = if options.layers.is_empty() {
             let present = mask::layer_counts(self.layout).0;
-            present.iter().map(|(layer, _)| name(layer)).collect()
+            let present = present.iter().map(|(layer, _)| layer);
+            let taken = present.filter(|layer| !options.minus.contains(layer));
+            taken.map(name).collect()
         } else {
-            self.layers.iter().map(name).collect()
+            options.layers.iter().map(name).collect()
+        };
+        let corners = |rect: Rect| {
+            let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
+            [x0, y0, x1, y1]
         };
         Source {
             name: self.name.to_owned(),
             layers,
-            scale: self.scale,
+            minus: options.minus.iter().map(name).collect(),
+            scale: options.scale,
+            mirror: options.mirror,
+            shift_nm: options.shift.to_nm(),
+            bias_nm: options.bias.0,
+            background_of_nm: match options.expose {
+                Expose::Figures => None,
+                Expose::Background { frame } => Some(corners(frame)),
+            },
+            window_nm: options.window.map(corners),
             extent_nm: mask
                 .extent
                 .map(|extent| [extent.width(), extent.height()].map(|side| Nm::from_pm(side).0)),

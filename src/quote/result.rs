@@ -96,8 +96,20 @@ pub struct Source {
     pub name: String,
     /// Layers united, each as `L/D`.
     pub layers: Vec<String>,
+    /// Layers subtracted from them.
+    pub minus: Vec<String>,
     /// Mask length per layout length.
     pub scale: f64,
+    /// Mirrored, `x → −x`.
+    pub mirror: bool,
+    /// Then moved by this.
+    pub shift_nm: [f64; 2],
+    /// Drawn edges moved outward by this.
+    pub bias_nm: f64,
+    /// `x0, y0, x1, y1` of the frame whose background is exposed; `None` if the figures are.
+    pub background_of_nm: Option<[f64; 4]>,
+    /// `x0, y0, x1, y1` of what alone was taken; `None` for all.
+    pub window_nm: Option<[f64; 4]>,
     /// Width and height around all figures at mask scale; `None` for an empty mask.
     pub extent_nm: Option<[f64; 2]>,
     /// Figures that differ, each counted once.

@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
-use crate::quote::result::{Count, Flag, FractureSummary, Method, Quote};
+use crate::quote::result::{Count, Flag, FractureSummary, Method, Quote, Source};
 
 /// Shown where nothing was measured.
 const UNMEASURED: &str = "–";
@@ -75,10 +75,10 @@ fn heading(quote: &Quote, out: &mut Text) {
     );
     out.paragraph(
         &format!(
-            "{}, layer {}, scale {}: {extent}, {} distinct figures at {} places",
+            "{}, layer {}{}: {extent}, {} distinct figures at {} places",
             s.name,
             s.layers.join(" + "),
-            s.scale,
+            transfer(s),
             grouped(s.figures_distinct.into()),
             grouped(s.figures_placed)
         ),
@@ -117,6 +117,24 @@ fn heading(quote: &Quote, out: &mut Text) {
         ),
         "",
     );
+}
+
+/// How the layers went onto the mask; only the scale is said if it is as drawn.
+fn transfer(s: &Source) -> String {
+    let corners = |[x0, y0, x1, y1]: [f64; 4]| format!("({x0}, {y0}) to ({x1}, {y1}) nm");
+    let [x, y] = s.shift_nm;
+    let minus: String = s.minus.iter().map(|layer| format!(" - {layer}")).collect();
+    let parts = [
+        Some(format!("{minus}, scale {}", s.scale)),
+        s.mirror.then(|| "mirrored".to_owned()),
+        ([x, y] != [0.0; 2]).then(|| format!("shift ({x}, {y}) nm")),
+        (s.bias_nm != 0.0).then(|| format!("bias {} nm", s.bias_nm)),
+        s.background_of_nm
+            .map(|frame| format!("background of {}", corners(frame))),
+        s.window_nm
+            .map(|window| format!("window {}", corners(window))),
+    ];
+    parts.into_iter().flatten().collect::<Vec<_>>().join(", ")
 }
 
 /// One measure of a fracture: up to three header lines (wide table), a label (narrow table), its value.

@@ -1,7 +1,7 @@
 //! Shots that may overlap, their doses adding.
 //!
 //! Minimising their number is NP-hard. Propose: slabs of both directions, each grown across as far as the figure allows,
-//! chosen greedily until they cover it. Refine and reduce: [`super::fit`]. Background: Kagalwalla and Gupta, DAC 2015; Chan et
+//! chosen greedily until they cover it. Refine and reduce: `fracture::fit`. Background: Kagalwalla and Gupta, DAC 2015; Chan et
 //! al., ICCAD 2014; Jiang and Zakhor, Proc. SPIE 8166 (2011); greedy cover with rectangles: Heinrich-Litan and Lübbecke, ACM JEA
 //! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
 
