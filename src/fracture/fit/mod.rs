@@ -16,6 +16,7 @@ mod snap;
 mod solve;
 mod start;
 
+pub(super) use model::Flash;
 pub(super) use reduce::Budget;
 pub(super) use search::{Setting, best_of};
 pub(super) use start::{Slabs, cover};

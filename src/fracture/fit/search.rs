@@ -99,19 +99,46 @@ impl<'a> Setting<'a> {
         }
     }
 
-    /// Shots that start as `start`, moved to where the rule holds if moving them can bring that about.
+    /// What `fit` finds with no side under the sliver limit; if that does not print, what it finds with none under the least side.
+    pub(in crate::fracture) fn without_slivers(
+        &self,
+        fit: impl Fn(f64) -> Option<Fit>,
+    ) -> Fracture {
+        let limits = &self.job.limits;
+        let unit = limits.address.nm().0;
+        let (least, sliver) = (limits.least_side.0 + unit, limits.sliver.0 + unit);
+        let first = fit(sliver.max(least));
+        if sliver <= least || first.as_ref().is_some_and(|f| f.violations.is_empty()) {
+            return self.reported(first);
+        }
+        let second = fit(least);
+        let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, |f| f.violations.len());
+        if missed(&second) >= missed(&first) {
+            return self.reported(first);
+        }
+        let mut fracture = self.reported(second);
+        let slivers = fracture.shots.slivers(limits.sliver);
+        if slivers > 0 {
+            fracture.notes.push(format!(
+                "{slivers} slivers: nothing without them was found to print"
+            ));
+        }
+        fracture
+    }
+
+    /// Shots that start as `start`, no side under `least` nm, moved to where the rule holds if moving them can bring that about.
     pub(in crate::fracture) fn attempt(
         &self,
         start: &[Flash],
         disjoint: bool,
+        least: f64,
         budget: Budget,
     ) -> Attempt<'_> {
         let limits = &self.job.limits;
-        let unit = limits.address.nm().0;
-        // One address off both limits, so that rounding cannot overstep them.
         let rules = Rules {
-            least_side: limits.least_side.0.max(limits.sliver.0) + unit,
-            greatest_side: limits.greatest_side.0 - unit,
+            least_side: least,
+            // One address off, so that rounding cannot overstep it; `least` likewise.
+            greatest_side: limits.greatest_side.0 - limits.address.nm().0,
             disjoint,
             guard: GUARD,
         };

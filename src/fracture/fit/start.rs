@@ -103,9 +103,9 @@ impl Rows {
     }
 
     /// Cuts every branch of the figure into slabs as high as its two sides wander by at most `slack` σ within them (but no lower
-    /// than about σ), each as wide as the branch is there on average.
-    fn slabs(&self, slack: f64) -> Vec<Flash> {
-        let least = self.lines(1.1 * self.sigma);
+    /// than `least` nm and about σ), each as wide as the branch is there on average.
+    fn slabs(&self, slack: f64, least: f64) -> Vec<Flash> {
+        let least = self.lines(least.max(1.1 * self.sigma));
         let limit = slack * self.sigma;
         let mut flashes = Vec::new();
         for branch in self.branches() {
@@ -235,11 +235,11 @@ impl Slabs {
     }
 
     /// The figure as horizontal and as vertical slabs; see [`Rows::slabs`].
-    pub(in crate::fracture) fn both(&self, slack: f64) -> [Vec<Flash>; 2] {
+    pub(in crate::fracture) fn both(&self, slack: f64, least: f64) -> [Vec<Flash>; 2] {
         [
-            self.rows.slabs(slack),
+            self.rows.slabs(slack, least),
             self.columns
-                .slabs(slack)
+                .slabs(slack, least)
                 .iter()
                 .map(Flash::flipped)
                 .collect(),
@@ -250,12 +250,12 @@ impl Slabs {
     pub(in crate::fracture) fn grown(&self, slack: f64, inset: f64) -> Vec<Flash> {
         let horizontal = self
             .rows
-            .slabs(slack)
+            .slabs(slack, 0.0)
             .into_iter()
             .map(|f| self.rows.grown(&f, inset));
         let vertical = self
             .columns
-            .slabs(slack)
+            .slabs(slack, 0.0)
             .into_iter()
             .map(|f| self.columns.grown(&f, inset).flipped());
         horizontal.chain(vertical).collect()

@@ -7,7 +7,7 @@
 
 mod bound;
 
-use super::fit::{Budget, Setting, Slabs, best_of, cover};
+use super::fit::{Budget, Flash, Setting, Slabs, best_of, cover};
 use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
 
 /// The overlap fracture.
@@ -73,17 +73,18 @@ impl Overlap {
         let grown = INSETS.map(|inset| slabs.grown(SLACK, inset * setting.sigma()));
         let both = grown.concat();
         let [slim, wide] = &grown;
-        let attempts = [&both, wide, slim][..starts]
+        let starts: Vec<Vec<Flash>> = [&both, wide, slim][..starts]
             .iter()
-            .map(|candidates| {
-                setting.attempt(
-                    &cover(candidates, &setting.samples, setting.sigma()),
-                    false,
-                    budget,
-                )
-            })
+            .map(|candidates| cover(candidates, &setting.samples, setting.sigma()))
             .collect();
-        let mut fracture = setting.reported(best_of(attempts));
+        let mut fracture = setting.without_slivers(|least| {
+            best_of(
+                starts
+                    .iter()
+                    .map(|start| setting.attempt(start, false, least, budget))
+                    .collect(),
+            )
+        });
         fracture.lower_bound = self.bound.then(|| {
             let context = |p| setting.context.dose(p);
             bound::lower_bound(&setting.target, job.blur, &job.limits, context)

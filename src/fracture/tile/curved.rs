@@ -44,9 +44,14 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
         ),
     };
     let slabs = Slabs::of(job, &setting.target);
-    let starts = SLACKS[..starts].iter().flat_map(|&slack| slabs.both(slack));
-    let attempts = starts
-        .map(|start| setting.attempt(&start, true, budget))
-        .collect();
-    setting.reported(best_of(attempts))
+    setting.without_slivers(|least| {
+        let starts = SLACKS[..starts]
+            .iter()
+            .flat_map(|&slack| slabs.both(slack, least));
+        best_of(
+            starts
+                .map(|start| setting.attempt(&start, true, least, budget))
+                .collect(),
+        )
+    })
 }
