@@ -149,6 +149,22 @@ impl Bins {
         [x, y, x + size(self.columns), y + size(self.rows)]
     }
 
+    /// Boxes numbered from 0, each entered in all cells that it touches.
+    pub(super) fn of(bounds: [f64; 4], size: f64, boxes: &[[f64; 4]]) -> Self {
+        let mut bins = Self::new(bounds, size);
+        for (id, &side) in (0_u32..).zip(boxes) {
+            for cell in bins.touched(side) {
+                bins.cells[cell].push(id);
+            }
+        }
+        bins
+    }
+
+    /// Items of the cell that a place lies in, each once.
+    pub(super) fn at(&self, p: [f64; 2]) -> impl Iterator<Item = u32> + '_ {
+        self.items([p[0], p[1], p[0], p[1]])
+    }
+
     /// Enters an item at a place.
     pub(super) fn insert(&mut self, id: u32, p: [f64; 2]) {
         for cell in self.touched([p[0], p[1], p[0], p[1]]) {

@@ -1,6 +1,7 @@
 //! The places at which a fit is held to the print rule.
 
-use crate::blur::{Blur, PhiTable};
+use super::model::{Bins, Flash};
+use crate::blur::{Blur, PhiTable, REACH};
 use crate::geom::Figure;
 use crate::target::{Need, Target, Violation};
 use crate::units::Nm;
@@ -114,6 +115,8 @@ impl Sample {
 pub(in crate::fracture) struct ContextDose {
     figures: Vec<Target>,
     bands: Vec<[f64; 4]>,
+    /// Bands by where their dose reaches, and figures by where they may print; none without context.
+    reach: Option<[Bins; 2]>,
     sigma: f64,
     phi: PhiTable,
 }
@@ -152,9 +155,25 @@ impl ContextDose {
                 );
             }
         }
+        let reached: Vec<[f64; 4]> = bands
+            .iter()
+            .map(|&b| Flash::new(b).grown(REACH * sigma).side)
+            .collect();
+        let printed: Vec<[f64; 4]> = figures
+            .iter()
+            .map(|f| Flash::new(f.bounds()).grown(f.corner_tolerance()).side)
+            .collect();
+        let hull = reached
+            .iter()
+            .chain(&printed)
+            .map(|&b| Flash::new(b))
+            .reduce(|a, b| a.hull(&b));
+        let reach = hull
+            .map(|hull| [&reached, &printed].map(|boxes| Bins::of(hull.side, 4.0 * sigma, boxes)));
         Self {
             figures,
             bands,
+            reach,
             sigma,
             phi: PhiTable::get(),
         }
@@ -162,21 +181,29 @@ impl ContextDose {
 
     /// Whether another figure may print at a place, so that it need not stay clear.
     pub(in crate::fracture) fn may_print(&self, p: [f64; 2]) -> bool {
-        self.figures.iter().any(|f| f.need(p) != Need::Clear)
+        let Some([_, printed]) = &self.reach else {
+            return false;
+        };
+        printed
+            .at(p)
+            .any(|id| self.figures[id as usize].need(p) != Need::Clear)
     }
 
     /// Whether there is no context.
     pub(in crate::fracture) fn is_empty(&self) -> bool {
-        self.bands.is_empty()
+        self.reach.is_none()
     }
 
     /// The dose at a place.
     pub(in crate::fracture) fn dose(&self, p: [f64; 2]) -> f64 {
+        let Some([reached, _]) = &self.reach else {
+            return 0.0;
+        };
         let share = |at: f64, from: f64, to: f64| {
             self.phi.cdf((at - from) / self.sigma) - self.phi.cdf((at - to) / self.sigma)
         };
-        self.bands
-            .iter()
+        let bands = reached.at(p).map(|id| self.bands[id as usize]);
+        bands
             .map(|b| share(p[0], b[0], b[2]) * share(p[1], b[1], b[3]))
             .sum()
     }
