@@ -7,7 +7,7 @@ pub mod tile;
 use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
 
 use crate::blur::{Blur, NARROWEST_LINE};
-use crate::geom::{Figure, Orientation, Point, Rect, Transform};
+use crate::geom::{Figure, Orientation, Point, Transform};
 use crate::shot::{ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
@@ -117,9 +117,10 @@ fn framed(
 }
 
 impl Miss {
-    /// A shot outside the limits of the writer.
-    fn unfit(rect: Rect, dose: Dose) -> Self {
-        let place = Point::new((rect.min.x + rect.max.x) / 2, (rect.min.y + rect.max.y) / 2);
+    /// A shot (sides in nm) outside the limits of the writer, or a tile on another.
+    fn unfit([x0, y0, x1, y1]: [f64; 4], dose: Dose) -> Self {
+        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
+        let place = Point::new(pm(0.5 * (x0 + x1)), pm(0.5 * (y0 + y1)));
         Self {
             place,
             dose,

@@ -386,6 +386,22 @@ impl Model {
         slots
     }
 
+    /// Other shots that a shot overlaps by more than `by` nm both ways.
+    pub(super) fn overlapped(
+        &self,
+        slot: usize,
+        flash: &Flash,
+        by: f64,
+    ) -> impl Iterator<Item = Flash> + '_ {
+        let flash = *flash;
+        let others = self
+            .near(flash.side)
+            .into_iter()
+            .filter(move |&s| s != slot)
+            .filter_map(|s| self.get(s));
+        others.filter(move |g| g.gap(&flash) < -by)
+    }
+
     /// Puts a shot in a slot, or takes it out, without touching the doses at the samples.
     pub(super) fn place(&mut self, slot: usize, flash: Option<Flash>) {
         if slot >= self.slots.len() {

@@ -152,18 +152,22 @@ fn options(model: &Model, place: [f64; 2], must_print: bool) -> Vec<(Vec<usize>,
     options
 }
 
-/// Slots of shots that come nearest to a sample where the rule is broken, and of those outside the limits, ascending.
+/// Slots of shots that come nearest to a sample where the rule is broken, and of those outside the limits or (tiles) on another,
+/// ascending.
 fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
     let reach = 3.0 * model.sigma;
-    let unfit = |f: &Flash| {
-        (0..2).any(|axis| {
+    let unfit = |slot: usize, f: &Flash| {
+        let off = |axis: usize| {
             f.length(axis) < solver.rules.least_side - UNFIT
                 || f.length(axis) > solver.rules.greatest_side + UNFIT
-        })
+        };
+        off(0)
+            || off(1)
+            || (solver.rules.disjoint && model.overlapped(slot, f, UNFIT).next().is_some())
     };
     let mut slots: Vec<usize> = model
         .flashes()
-        .filter(|(_, f)| unfit(f))
+        .filter(|(slot, f)| unfit(*slot, f))
         .map(|(s, _)| s)
         .collect();
     for (sample, &dose) in model.samples().iter().zip(model.doses()) {

@@ -1,16 +1,15 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
 use crate::fracture::{Fracture, Job, Miss};
-use crate::geom::Rect;
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
-use crate::units::Nm;
+use crate::units::Dose;
 
 use super::model::{Flash, Model};
 use super::reduce::{Budget, reduce};
 use super::relax::{mend, relax};
 use super::samples::{ContextDose, Sample, samples_of};
-use super::snap::{check, shots, snap};
+use super::snap::{check, shots, snap, unfit};
 use super::solve::{Rules, Solver};
 
 /// A job with all that its fits share.
@@ -26,6 +25,15 @@ pub(in crate::fracture) struct Setting<'a> {
 pub(in crate::fracture) struct Fit {
     pub(in crate::fracture) shots: ShotList,
     pub(in crate::fracture) violations: Vec<Violation>,
+    /// Shots outside the limits, or tiles on another.
+    pub(in crate::fracture) unfit: Vec<Flash>,
+}
+
+impl Fit {
+    /// How much is wrong: nothing when it prints and can be written.
+    fn faults(&self) -> usize {
+        self.violations.len() + self.unfit.len()
+    }
 }
 
 /// Dose to spare at every sample. Rounding three sides to a tenth of a nanometre moves the dose by up to
@@ -66,7 +74,12 @@ impl<'a> Setting<'a> {
             );
         }
         let violations = check(&self.target, &model, &self.context);
-        self.reported(Some(Fit { shots, violations }))
+        let unfit = unfit(&model, &self.job.limits, false);
+        self.reported(Some(Fit {
+            shots,
+            violations,
+            unfit,
+        }))
     }
 
     /// A fit as the result of a fracture; without one, no shots and every sample that must print as a miss.
@@ -74,22 +87,13 @@ impl<'a> Setting<'a> {
         let fit = fit.unwrap_or_else(|| Fit {
             shots: ShotList::new(self.job.limits.address, Vec::new()),
             violations: self.samples.iter().filter_map(Sample::unprinted).collect(),
+            unfit: Vec::new(),
         });
-        let limits = &self.job.limits;
-        let fits = |r: &Rect| {
-            let (short, long) = (r.width().min(r.height()), r.width().max(r.height()));
-            Nm::from_pm(short).0 > limits.least_side.0 - 1e-6
-                && Nm::from_pm(long).0 < limits.greatest_side.0 + 1e-6
-        };
-        let unfit = fit
-            .shots
-            .rects()
-            .filter(|(r, _)| !fits(r))
-            .map(|(r, dose)| Miss::unfit(r, dose));
         let broken = fit
             .violations
             .iter()
             .map(|v| Miss::of(v, &self.target, self.job.blur));
+        let unfit = fit.unfit.iter().map(|f| Miss::unfit(f.side, Dose(f.dose)));
         let misses = broken.chain(unfit).collect();
         Fracture {
             shots: fit.shots,
@@ -113,7 +117,7 @@ impl<'a> Setting<'a> {
                 continue;
             }
             let found = fit(stage);
-            let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, |f| f.violations.len());
+            let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, Fit::faults);
             if missed(&found) < missed(&best) {
                 best = found;
             }
@@ -220,15 +224,19 @@ impl Attempt<'_> {
                 self.model
                     .add_sample(Sample::new(v.place, v.need, &self.setting.context));
             }
-            let holds = violations.is_empty();
-            if best
-                .as_ref()
-                .is_none_or(|b| violations.len() < b.violations.len())
-            {
-                best = Some(Fit {
-                    shots: shots(&snapped, address),
-                    violations,
-                });
+            let unfit = unfit(
+                &snapped,
+                &self.setting.job.limits,
+                self.solver.rules.disjoint,
+            );
+            let fit = Fit {
+                shots: shots(&snapped, address),
+                violations,
+                unfit,
+            };
+            let holds = fit.faults() == 0;
+            if best.as_ref().is_none_or(|b| fit.faults() < b.faults()) {
+                best = Some(fit);
             }
             if holds {
                 break;
@@ -285,12 +293,12 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
         // Repairs may have added shots: only an attempt with fewer can still do better.
         if best
             .as_ref()
-            .is_some_and(|b| b.violations.is_empty() && b.shots.len() <= attempt.count())
+            .is_some_and(|b| b.faults() == 0 && b.shots.len() <= attempt.count())
         {
             break;
         }
         let fit = attempt.finish();
-        let rank = |f: &Fit| (f.violations.len(), f.shots.len());
+        let rank = |f: &Fit| (f.faults(), f.shots.len());
         if best.as_ref().is_none_or(|b| rank(&fit) < rank(b)) {
             best = Some(fit);
         }

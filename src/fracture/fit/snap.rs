@@ -1,7 +1,7 @@
 //! Brings shots to the address grid, and checks the whole neighbourhood.
 
 use crate::blur::PhiTable;
-use crate::shot::{AddressUnit, Shot, ShotList};
+use crate::shot::{AddressUnit, Shot, ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
 
@@ -26,6 +26,21 @@ pub(in crate::fracture) fn check(
     let mut found = target.violations(&field, 1.0, model.sigma / 4.0, 3.0 * model.sigma, SPARE);
     found.retain(|v| v.need == Need::Print || !context.may_print(v.place));
     found
+}
+
+/// Shots that the writer would refuse: sides outside the limits, or (tiles) on another shot.
+pub(in crate::fracture) fn unfit(model: &Model, limits: &ShotLimits, disjoint: bool) -> Vec<Flash> {
+    let off = |f: &Flash, axis: usize| {
+        f.length(axis) < limits.least_side.0 - 1e-6
+            || f.length(axis) > limits.greatest_side.0 + 1e-6
+    };
+    let clashes =
+        |slot: usize, f: &Flash| disjoint && model.overlapped(slot, f, 1e-6).next().is_some();
+    model
+        .flashes()
+        .filter(|(slot, f)| off(f, 0) || off(f, 1) || clashes(*slot, f))
+        .map(|(_, f)| f)
+        .collect()
 }
 
 /// Moves every side to the address grid, then single sides by one address as long as that mends what the rounding broke.
