@@ -70,9 +70,9 @@ impl LayoutArgs {
         let expose = match (self.expose, self.frame) {
             (ExposeArg::Figures, None) => Expose::Figures,
             (ExposeArg::Background, Some(frame)) => Expose::Background { frame },
-            _ => {
+            (ExposeArg::Background, None) | (ExposeArg::Figures, Some(_)) => {
                 return Err(CliError::Arguments(
-                    "--frame and --expose background need each other".to_owned(),
+                    "--frame is for --expose background".to_owned(),
                 ));
             }
         };
