@@ -458,6 +458,25 @@ fn rectangles_and_places_that_are_none_are_refused_by_name() {
 }
 
 #[test]
+fn a_mask_without_a_figure_is_no_success() {
+    let (_directory, layout) = with_shapes();
+    for command in [
+        &["fracture", "--method", "tile", "--sigma-nm", "12"][..],
+        &["quote"],
+    ] {
+        let mut far = shotwright();
+        far.args(command).arg(&layout);
+        far.args(["--window", "5000,5000,6000,6000"]);
+        let (_, error) = run(&mut far, 2);
+        assert!(error.contains("none in the window"), "{error}");
+    }
+    let mut command = shotwright();
+    command.arg("quote").arg(&layout);
+    let (_, error) = run(command.args(["--tolerance-nm", "1e9"]), 2);
+    assert!(error.contains("up to 1000"), "{error}");
+}
+
+#[test]
 fn a_lower_bound_is_proved_if_asked() {
     let (_directory, layout) = with_shapes();
     let mut command = shotwright();
