@@ -99,31 +99,46 @@ impl<'a> Setting<'a> {
         }
     }
 
-    /// What `fit` finds with no side under the sliver limit; if that does not print, what it finds with none under the least side.
-    pub(in crate::fracture) fn without_slivers(
+    /// What `fit` finds at the first of some stages that prints, else at the one that misses least.
+    ///
+    /// A stage is skipped when it asks for no less than the one before. Slivers left are said in a note.
+    pub(in crate::fracture) fn staged(
         &self,
-        fit: impl Fn(f64) -> Option<Fit>,
+        stages: &[Stage],
+        fit: impl Fn(Stage) -> Option<Fit>,
     ) -> Fracture {
-        let limits = &self.job.limits;
-        let unit = limits.address.nm().0;
-        let (least, sliver) = (limits.least_side.0 + unit, limits.sliver.0 + unit);
-        let first = fit(sliver.max(least));
-        if sliver <= least || first.as_ref().is_some_and(|f| f.violations.is_empty()) {
-            return self.reported(first);
+        let mut best: Option<Fit> = None;
+        for (i, &stage) in stages.iter().enumerate() {
+            if i > 0 && stages[i - 1] == stage {
+                continue;
+            }
+            let found = fit(stage);
+            let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, |f| f.violations.len());
+            if missed(&found) < missed(&best) {
+                best = found;
+            }
+            if missed(&best) == 0 {
+                break;
+            }
         }
-        let second = fit(least);
-        let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, |f| f.violations.len());
-        if missed(&second) >= missed(&first) {
-            return self.reported(first);
-        }
-        let mut fracture = self.reported(second);
-        let slivers = fracture.shots.slivers(limits.sliver);
+        let mut fracture = self.reported(best);
+        let slivers = fracture.shots.slivers(self.job.limits.sliver);
         if slivers > 0 {
             fracture.notes.push(format!(
                 "{slivers} slivers: nothing without them was found to print"
             ));
         }
         fracture
+    }
+
+    /// Least sides (nm) that keep off slivers and that keep the limits, one address more so that rounding cannot undercut them.
+    pub(in crate::fracture) fn least_sides(&self) -> [f64; 2] {
+        let limits = &self.job.limits;
+        let unit = limits.address.nm().0;
+        [
+            limits.sliver.0.max(limits.least_side.0) + unit,
+            limits.least_side.0 + unit,
+        ]
     }
 
     /// Shots that start as `start`, no side under `least` nm, moved to where the rule holds if moving them can bring that about.
@@ -233,12 +248,26 @@ impl Attempt<'_> {
     }
 }
 
+/// What a search asks of its shots; nm.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(in crate::fracture) struct Stage {
+    /// No slab of the start is lower than this.
+    pub(in crate::fracture) start: f64,
+    /// No side is less than this.
+    pub(in crate::fracture) least: f64,
+    /// Whether shots are added where moving them does not do.
+    pub(in crate::fracture) mend: bool,
+}
+
 /// The best of several attempts: reduced, and the one with fewest shots that really prints; else the one that misses least.
 ///
-/// Those that do not hold are mended only when none does, the nearest first and until one holds.
-pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>) -> Option<Fit> {
+/// Those that do not hold are mended only when none does, the nearest first and until one holds; `None` if that is not wanted.
+pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -> Option<Fit> {
     attempts.sort_by(|a, b| b.holds.cmp(&a.holds).then(a.worst().total_cmp(&b.worst())));
     if attempts.first().is_some_and(|a| !a.holds) {
+        if !mend {
+            return None;
+        }
         for attempt in &mut attempts {
             attempt.mend();
             if attempt.holds {

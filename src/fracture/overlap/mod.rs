@@ -7,7 +7,7 @@
 
 mod bound;
 
-use super::fit::{Budget, Flash, Setting, Slabs, best_of, cover};
+use super::fit::{Budget, Flash, Setting, Slabs, Stage, best_of, cover};
 use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
 
 /// The overlap fracture.
@@ -77,13 +77,16 @@ impl Overlap {
             .iter()
             .map(|candidates| cover(candidates, &setting.samples, setting.sigma()))
             .collect();
-        let mut fracture = setting.without_slivers(|least| {
-            best_of(
-                starts
-                    .iter()
-                    .map(|start| setting.attempt(start, false, least, budget))
-                    .collect(),
-            )
+        let stages = setting.least_sides().map(|least| Stage {
+            start: 0.0,
+            least,
+            mend: true,
+        });
+        let mut fracture = setting.staged(&stages, |stage| {
+            let attempts = starts
+                .iter()
+                .map(|start| setting.attempt(start, false, stage.least, budget));
+            best_of(attempts.collect(), stage.mend)
         });
         fracture.lower_bound = self.bound.then(|| {
             let context = |p| setting.context.dose(p);

@@ -4,7 +4,7 @@
 //! together, keeps tiles apart, and merges and drops tiles as long as the print stays within tolerance. What comes
 //! out mixes directions where a merge across slabs holds.
 
-use crate::fracture::fit::{Budget, Setting, Slabs, best_of};
+use crate::fracture::fit::{Budget, Setting, Slabs, Stage, best_of};
 use crate::fracture::{Effort, Fracture, Job};
 
 /// How far the outline may wander within a first slab, σ. Finer starts hardly ever fail to print and merge to the same counts or
@@ -44,14 +44,32 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
         ),
     };
     let slabs = Slabs::of(job, &setting.target);
-    setting.without_slivers(|least| {
+    let [sliver, least] = setting.least_sides();
+    let stages = [
+        Stage {
+            start: sliver,
+            least: sliver,
+            mend: false,
+        },
+        // High slabs still, so that only those that must become slivers.
+        Stage {
+            start: sliver,
+            least,
+            mend: false,
+        },
+        Stage {
+            start: least,
+            least,
+            mend: true,
+        },
+    ];
+    setting.staged(&stages, |stage| {
         let starts = SLACKS[..starts]
             .iter()
-            .flat_map(|&slack| slabs.both(slack, least));
-        best_of(
-            starts
-                .map(|start| setting.attempt(&start, true, least, budget))
-                .collect(),
-        )
+            .flat_map(|&slack| slabs.both(slack, stage.start));
+        let attempts = starts
+            .map(|start| setting.attempt(&start, true, stage.least, budget))
+            .collect();
+        best_of(attempts, stage.mend)
     })
 }
