@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
-use crate::quote::result::{Count, Flag, FlagKind, FractureSummary, Method, Quote, Source};
+use crate::quote::result::{Count, Flag, FractureSummary, Method, Quote, Source};
 
 /// Shown where nothing was measured.
 const UNMEASURED: &str = "–";
@@ -354,9 +354,10 @@ fn flags(flags: &[Flag], most: usize, out: &mut Text) {
         );
         if let Some(number) = flag.number {
             // A dose that misses one half by little must not read as one half.
-            let number = match flag.kind {
-                FlagKind::ToleranceNotReached => format!("{number:.4}"),
-                _ => significant(number),
+            let number = if flag.unit.starts_with("dose") {
+                format!("{number:.4}")
+            } else {
+                significant(number)
             };
             let _ = write!(words, ", {number} {}", flag.unit);
         }
