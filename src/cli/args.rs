@@ -7,8 +7,9 @@ use clap::{Arg, ArgMatches, Args, Command, FromArgMatches, ValueEnum};
 use crate::fracture::Effort;
 use crate::geom::{Point, Rect};
 use crate::layout::{self, Layer, Layout};
-use crate::mask::{Expose, MaskOptions};
+use crate::mask::{Expose, Mask, MaskOptions};
 use crate::profile::{Key, Profile, ProfileErrors};
+use crate::quote::{Chosen, QuoteError, Setup};
 use crate::shot::{AddressUnit, ShotLimits};
 use crate::units::Nm;
 use crate::write_time::Field;
@@ -70,9 +71,9 @@ impl LayoutArgs {
         let expose = match (self.expose, self.frame) {
             (ExposeArg::Figures, None) => Expose::Figures,
             (ExposeArg::Background, Some(frame)) => Expose::Background { frame },
-            _ => {
+            (ExposeArg::Background, None) | (ExposeArg::Figures, Some(_)) => {
                 return Err(CliError::Arguments(
-                    "--frame and --expose background need each other".to_owned(),
+                    "--frame is for --expose background".to_owned(),
                 ));
             }
         };
@@ -103,6 +104,20 @@ impl LayoutArgs {
         }
         Ok(layout)
     }
+}
+
+/// The mask of what was chosen, which holds a figure.
+pub(super) fn mask(chosen: &Chosen<'_>, setup: &Setup) -> Result<Mask, CliError> {
+    let mask = chosen
+        .mask(setup)
+        .map_err(|cause| CliError::mask(chosen.name, cause))?;
+    if mask.figures.is_empty() {
+        return Err(CliError::Quote {
+            file: chosen.name.to_owned(),
+            cause: QuoteError::NoFigure,
+        });
+    }
+    Ok(mask)
 }
 
 /// What a writer can flash, without a profile.
@@ -260,6 +275,14 @@ pub(super) fn positive(text: &str) -> Result<f64, String> {
         .ok()
         .filter(|x| *x > 0.0)
         .ok_or_else(|| "expected a finite number over 0".to_owned())
+}
+
+/// A length by which contours may stray, nm: beyond a thousand it says nothing of a blur.
+pub(super) fn stray(text: &str) -> Result<f64, String> {
+    number(text)
+        .ok()
+        .filter(|x| *x > 0.0 && *x <= 1000.0)
+        .ok_or_else(|| "expected a number over 0, up to 1000".to_owned())
 }
 
 /// A finite number of 0 or more.

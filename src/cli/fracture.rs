@@ -19,7 +19,7 @@ use crate::report::progress::Progress;
 use crate::report::shots_csv::{Rows, ShotWriter};
 use crate::units::Nm;
 
-use super::args::{EffortArg, LayoutArgs, LimitArgs, positive};
+use super::args::{EffortArg, LayoutArgs, LimitArgs, mask, positive, stray};
 use crate::report::table::{grouped, significant};
 
 use super::output::{aligned, create, file_error, print, print_json, scores};
@@ -43,12 +43,12 @@ pub(super) struct FractureArgs {
     #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
     sigma_nm: f64,
     /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = positive, allow_negative_numbers = true)]
+    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
     tolerance_nm: f64,
     #[command(flatten)]
     limits: LimitArgs,
     /// How far the plain staircase may stray from the outline, nm. Default: the tolerance.
-    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    #[arg(long, value_name = "NM", value_parser = stray, allow_negative_numbers = true)]
     within_nm: Option<f64>,
     /// Tile every rectilinear figure exactly, even one that is a curve drawn in pixels.
     #[arg(long)]
@@ -141,9 +141,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         layout: &layout,
         options: &options,
     };
-    let mask = chosen
-        .mask(&setup)
-        .map_err(|cause| CliError::mask(&name, cause))?;
+    let mask = mask(&chosen, &setup)?;
     let bar = Progress::new("figures", 2 * mask.figures.len() as u64);
     let tick = || bar.inc();
     let shots = made::fracture(&mask, args.fracturer().as_ref(), &setup, &tick);
@@ -171,7 +169,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         let [x, y] = one.place_nm;
         let dose = one
             .dose
-            .map_or_else(String::new, |d| format!(", dose {d:.3}"));
+            .map_or_else(String::new, |d| format!(", dose {d:.4}"));
         eprintln!(
             "figure {} at ({x:.1}, {y:.1}) nm does not print within tolerance{dose}: {}",
             one.figure, one.reason

@@ -16,7 +16,7 @@ use crate::report::progress::Progress;
 use crate::report::shots_csv;
 use crate::units::Nm;
 
-use super::args::{LayoutArgs, LimitArgs, positive};
+use super::args::{LayoutArgs, LimitArgs, mask, positive, stray};
 use super::output::{aligned, file_error, print, print_json, scores};
 use super::{CliError, Outcome};
 
@@ -39,7 +39,7 @@ pub(super) struct JudgeArgs {
     #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
     sigma_nm: f64,
     /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = positive, allow_negative_numbers = true)]
+    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
     tolerance_nm: f64,
     #[command(flatten)]
     limits: LimitArgs,
@@ -77,9 +77,7 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
         layout: &layout,
         options: &options,
     };
-    let mask = chosen
-        .mask(&setup)
-        .map_err(|cause| CliError::mask(&name, cause))?;
+    let mask = mask(&chosen, &setup)?;
     let file = args.shots.display().to_string();
     let list = shots_csv::read(BufReader::new(input), setup.limits.address)
         .map_err(|cause| CliError::Shots { file, cause })?;
@@ -99,7 +97,7 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
             || "its pieces or holes are not as drawn".to_owned(),
             |v| {
                 format!(
-                    "dose {:.3} at ({:.1}, {:.1}) nm",
+                    "dose {:.4} at ({:.1}, {:.1}) nm",
                     v.dose, v.place[0], v.place[1]
                 )
             },

@@ -40,7 +40,7 @@ impl Outcome {
 #[command(version, name = "shotwright", max_term_width = 100)]
 pub struct Cli {
     /// Threads to use; all processors unless given. The results do not depend on it.
-    #[arg(long, global = true, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    #[arg(long, global = true, display_order = 900, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
     threads: Option<u16>,
     #[command(subcommand)]
     command: Command,

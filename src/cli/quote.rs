@@ -15,7 +15,7 @@ use crate::report::table::{self, TextOptions};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::Field;
 
-use super::args::{EffortArg, LayoutArgs, Overrides, field_mm, positive, share};
+use super::args::{EffortArg, LayoutArgs, Overrides, field_mm, mask, positive, share, stray};
 use super::fracture::write;
 use super::output::{create, file_error, print, print_json};
 use super::pictures::Pictures;
@@ -42,10 +42,10 @@ pub(super) struct QuoteArgs {
     #[arg(long, value_name = "NAME|FILE", default_value = "shaped-400")]
     profile: String,
     /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = positive, allow_negative_numbers = true)]
+    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
     tolerance_nm: f64,
     /// How far the plain staircase may stray from the outline, nm. Default: the tolerance.
-    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    #[arg(long, value_name = "NM", value_parser = stray, allow_negative_numbers = true)]
     within_nm: Option<f64>,
     /// How hard to search for fewer shots.
     #[arg(long, value_enum, default_value_t)]
@@ -106,9 +106,7 @@ pub(super) fn run(args: &QuoteArgs) -> Result<Outcome, CliError> {
         layout: &layout,
         options: &options,
     };
-    let mask = chosen
-        .mask(&setup)
-        .map_err(|cause| CliError::mask(&name, cause))?;
+    let mask = mask(&chosen, &setup)?;
     let bar = Progress::new("figures", quote::ticks(&mask));
     let mut answer = quote::quote(&chosen, &mask, &terms, &|| bar.inc()).map_err(failed)?;
     drop(bar);

@@ -57,7 +57,7 @@ pub enum QuoteError {
     #[error(transparent)]
     Mask(#[from] MaskError),
     /// The chosen layers hold no figure.
-    #[error("no figure of any area on the chosen layers")]
+    #[error("no figure of any area on the chosen layers, or none in the window")]
     NoFigure,
     /// The dose cannot be corrected.
     #[error(transparent)]

@@ -353,7 +353,13 @@ fn flags(flags: &[Flag], most: usize, out: &mut Text) {
             flag.kind.name().replace('_', " ")
         );
         if let Some(number) = flag.number {
-            let _ = write!(words, ", {} {}", significant(number), flag.unit);
+            // A dose that misses one half by little must not read as one half.
+            let number = if flag.unit.starts_with("dose") {
+                format!("{number:.4}")
+            } else {
+                significant(number)
+            };
+            let _ = write!(words, ", {number} {}", flag.unit);
         }
         if !flag.remedy.is_empty() {
             let _ = write!(words, "; {}", flag.remedy);
