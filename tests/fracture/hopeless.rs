@@ -123,12 +123,24 @@ fn thin_and_tiny_figures_get_an_honest_answer() {
         ("star", star),
         ("dot", bar(1, 1)),
         ("speck", ring(&[(0, 0), (9, 2), (4, 11)])),
-        ("no area", ring(&[(0, 0), (100, 0), (50, 0)])),
     ];
     for (name, figure) in &figures {
         for fracturer in BOTH {
             honest(name, fracturer, figure);
         }
+    }
+}
+
+#[test]
+fn a_figure_without_area_is_refused_or_gets_no_shot() {
+    let flat = ring(&[(0, 0), (100, 0), (50, 0)]);
+    for fracturer in BOTH {
+        let made = fracturer.fracture(&job(&flat, SIGMA, 2.0));
+        assert!(
+            made.is_err() || made.is_ok_and(|f| f.shots.is_empty()),
+            "{}",
+            fracturer.name()
+        );
     }
 }
 

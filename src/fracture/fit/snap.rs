@@ -1,6 +1,6 @@
 //! Brings shots to the address grid, and checks the whole neighbourhood.
 
-use crate::blur::PhiTable;
+use crate::blur::{PhiTable, THRESHOLD};
 use crate::shot::{AddressUnit, Shot, ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
@@ -9,10 +9,13 @@ use super::model::{Field, Flash, Model};
 use super::samples::ContextDose;
 use super::solve::Solver;
 
-/// Dose that the check asks for beyond the threshold: what may lie between its places, which are 1 nm apart along the outline.
+/// Dose that the check asks for beyond the threshold: what may lie between its places, which are 1 nm apart along the outline;
+/// it falls with the square of their distance.
 const SPARE: f64 = 0.001;
 
-/// Every place found where the shots break the rule.
+/// Every place found where the shots break the rule, or keep it with no dose to spare.
+///
+/// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared.
 pub(in crate::fracture) fn check(
     target: &Target,
     model: &Model,
@@ -23,9 +26,19 @@ pub(in crate::fracture) fn check(
         context,
         phi: PhiTable::get(),
     };
-    let mut found = target.violations(&field, 1.0, model.sigma / 4.0, 3.0 * model.sigma, SPARE);
-    found.retain(|v| v.need == Need::Print || !context.may_print(v.place));
-    found
+    let margin = 3.0 * model.sigma;
+    let look = |step: f64, lattice: f64, spare: f64| {
+        let mut found = target.violations(&field, step, model.sigma / lattice, margin, spare);
+        found.retain(|v| v.need == Need::Print || !context.may_print(v.place));
+        found
+    };
+    let found = look(1.0, 4.0, SPARE);
+    let broken = |v: &Violation| (v.need == Need::Print) != (v.dose >= THRESHOLD);
+    if found.is_empty() || found.iter().any(broken) {
+        found
+    } else {
+        look(0.25, 8.0, SPARE / 16.0)
+    }
 }
 
 /// Shots that the writer would refuse: sides outside the limits, or (tiles) on another shot.

@@ -25,6 +25,9 @@ const SLACK: f64 = 0.6;
 /// How much of both ends of a slab may stick out when it is grown, σ: a shot's corner prints rounded by about as much.
 const INSETS: [f64; 2] = [0.3, 0.6];
 
+/// Shots in a first cover from which a figure counts as long.
+const LONG: usize = 40;
+
 impl Fracturer for Overlap {
     fn name(&self) -> &'static str {
         "overlap"
@@ -73,10 +76,16 @@ impl Overlap {
         let grown = INSETS.map(|inset| slabs.grown(SLACK, inset * setting.sigma()));
         let both = grown.concat();
         let [slim, wide] = &grown;
-        let starts: Vec<Vec<Flash>> = [&both, wide, slim][..starts]
+        let mut starts: Vec<Vec<Flash>> = [&both, wide, slim][..starts]
             .iter()
             .map(|candidates| cover(candidates, &setting.samples, setting.sigma()))
             .collect();
+        // Where one shot's width is all that a figure has, a cover needs as many as a cut, and the cut is the better start.
+        if starts[0].len() > LONG {
+            let cut = slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len);
+            starts.truncate(1);
+            starts.extend(cut);
+        }
         let stages = setting.least_sides().map(|least| Stage {
             start: 0.0,
             least,
