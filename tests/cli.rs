@@ -496,6 +496,51 @@ fn a_lower_bound_is_proved_if_asked() {
     assert!(error.contains("--bound is for --method overlap"), "{error}");
 }
 
+/// By hand: the bump is cut off as one sliver of 10 nm, or three upright tiles have none.
+#[test]
+fn slivers_can_be_bought_off_and_the_price_is_shown() {
+    let (directory, _) = with_shapes();
+    let bump = directory.path().join("bump.wkt");
+    fs::write(
+        &bump,
+        "POLYGON ((0 0, 300 0, 300 100, 200 100, 200 110, 100 110, 100 100, 0 100, 0 0))",
+    )
+    .unwrap();
+    for (prefer, shots, slivers) in [("shots", 2.0, 1.0), ("slivers", 3.0, 0.0)] {
+        let mut command = shotwright();
+        command.arg("fracture").arg(&bump).args([
+            "--method",
+            "tile",
+            "--exact",
+            "--sigma-nm",
+            "12",
+            "--json",
+        ]);
+        command.args([
+            "--sliver-nm",
+            "20",
+            "--min-side-nm",
+            "8",
+            "--tolerance-nm",
+            "10",
+            "--prefer",
+            prefer,
+        ]);
+        let (out, _) = run(&mut command, 0);
+        let answer = json(&out);
+        assert_eq!(
+            (number(&answer, "/shots"), number(&answer, "/slivers")),
+            (shots, slivers),
+            "{prefer}: {out}"
+        );
+        assert_eq!(
+            out.contains("1 shots more than the least"),
+            prefer == "slivers",
+            "{out}"
+        );
+    }
+}
+
 #[test]
 fn a_figure_out_of_tolerance_ends_a_fracture_with_status_1() {
     let (directory, _) = with_shapes();

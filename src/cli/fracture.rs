@@ -8,7 +8,7 @@ use serde::Serialize;
 
 use crate::blur::Blur;
 use crate::fracture::overlap::Overlap;
-use crate::fracture::tile::{Staircase, Tile};
+use crate::fracture::tile::{Prefer, Staircase, Tile};
 use crate::fracture::{FractureError, Fracturer};
 use crate::judge::Settings;
 use crate::mask::Mask;
@@ -53,6 +53,9 @@ pub(super) struct FractureArgs {
     /// Tile every rectilinear figure exactly, even one that is a curve drawn in pixels.
     #[arg(long)]
     exact: bool,
+    /// What an exact tiling prefers: the fewest shots, or no slivers at the price of shots (the price is shown).
+    #[arg(long, value_enum, default_value_t = PreferArg::Shots)]
+    prefer: PreferArg,
     /// Prove how many shots any overlap fracture needs at least: about half as much work again.
     #[arg(long)]
     bound: bool,
@@ -80,6 +83,14 @@ enum MethodArg {
     Overlap,
 }
 
+#[derive(Clone, Copy, Debug, ValueEnum)]
+enum PreferArg {
+    /// The fewest shots; slivers only break ties.
+    Shots,
+    /// One shot more for every sliver that a cut removes.
+    Slivers,
+}
+
 #[derive(Serialize)]
 struct Answer {
     #[serde(flatten)]
@@ -91,6 +102,8 @@ struct Answer {
     /// Shots at all places with a side outside the limits.
     shots_beyond_limits: Count,
     failing: Vec<Failing>,
+    /// What the fracturer decided on its own, by figure.
+    notes: Vec<String>,
 }
 
 /// A figure that does not print within tolerance.
@@ -163,8 +176,15 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         figures_placed: Count(mask.place_count()),
         lower_bound: lower_bound(&mask, &made),
         failing: failing(&mask, &made),
+        notes: notes(&made),
         summary,
     };
+    for note in answer.notes.iter().take(MOST_TOLD) {
+        eprintln!("{note}");
+    }
+    if answer.notes.len() > MOST_TOLD {
+        eprintln!("and {} more notes", answer.notes.len() - MOST_TOLD);
+    }
     for one in answer.failing.iter().take(MOST_TOLD) {
         let [x, y] = one.place_nm;
         let dose = one
@@ -208,7 +228,10 @@ impl FractureArgs {
             MethodArg::Tile => Box::new(Tile {
                 effort,
                 exact: self.exact,
-                ..Tile::default()
+                prefer: match self.prefer {
+                    PreferArg::Shots => Prefer::FewTiles,
+                    PreferArg::Slivers => Prefer::FewSlivers,
+                },
             }),
             MethodArg::Overlap => Box::new(Overlap {
                 effort,
@@ -216,6 +239,18 @@ impl FractureArgs {
             }),
         }
     }
+}
+
+/// The notes of all figures, each with its figure.
+fn notes(made: &[Result<Made, FractureError>]) -> Vec<String> {
+    let of = |(figure, made): (u64, &Result<Made, FractureError>)| {
+        let notes = made.as_ref().map_or(&[][..], |m| &m.fracture.notes);
+        notes
+            .iter()
+            .map(|note| format!("figure {figure}: {note}"))
+            .collect::<Vec<_>>()
+    };
+    (0..).zip(made).flat_map(of).collect()
 }
 
 /// Writes the shots of all figures; returns the number of lines.
