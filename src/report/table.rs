@@ -108,7 +108,7 @@ fn heading(quote: &Quote, out: &mut Text) {
             || "Counts and hours are for the clip alone, not for a field.".to_owned(),
             |f| {
                 format!(
-                    "Counts and hours are for a field of {} mm × {} mm, of which copies of the clip fill {} %.",
+                    "Hours are for a field of {} mm × {} mm, of which copies of the clip fill {} %; shots and slivers are those of one clip.",
                     f.width_mm,
                     f.height_mm,
                     significant(100.0 * f.coverage)
