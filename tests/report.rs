@@ -241,6 +241,7 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
 
 fn hours(total_h: f64) -> Hours {
     Hours {
+        shots_written: Count(0),
         total_h,
         flash_h: 0.5 * total_h,
         settle_h: 0.25 * total_h,

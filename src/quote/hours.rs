@@ -12,7 +12,7 @@ use crate::write_time::{self, Field, Pattern, Placed, WriteTime, WriteTimeError}
 
 use super::QuoteError;
 use super::made::Made;
-use super::result::Hours;
+use super::result::{Count, Hours};
 
 /// The field that a clip stands for.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -106,6 +106,7 @@ pub fn of_time(time: &WriteTime) -> Hours {
     let turns = time.overhead.turns_h.0;
     let subfield_h = time.overhead.subfield_h.0;
     Hours {
+        shots_written: Count(time.shots),
         total_h: time.total_h.0,
         flash_h: time.flash_h.0,
         settle_h: time.settle_h.0,

@@ -277,6 +277,9 @@ pub struct Margin {
 /// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Hours {
+    /// Shots that they are for, cuts at borders included: those of the whole field where a clip stands for one.
+    #[serde(default)]
+    pub shots_written: Count,
     /// All together.
     pub total_h: f64,
     /// Beam on.

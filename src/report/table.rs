@@ -108,15 +108,32 @@ fn heading(quote: &Quote, out: &mut Text) {
             || "Counts and hours are for the clip alone, not for a field.".to_owned(),
             |f| {
                 format!(
-                    "Hours are for a field of {} mm × {} mm, of which copies of the clip fill {} %; shots and slivers are those of one clip.",
+                    "Hours are for a field of {} mm × {} mm, of which copies of the clip fill {} %; shots and slivers are those of one clip. On the field: {}.",
                     f.width_mm,
                     f.height_mm,
-                    significant(100.0 * f.coverage)
+                    significant(100.0 * f.coverage),
+                    field_shots(quote)
                 )
             },
         ),
         "",
     );
+}
+
+/// Shots of each fracture on the whole field.
+fn field_shots(quote: &Quote) -> String {
+    let of = |(method, summary): (Method, Option<&FractureSummary>)| {
+        let shots = summary?.hours?.shots_written;
+        #[allow(clippy::cast_precision_loss, reason = "four digits are shown")]
+        let shots = shots.0 as f64;
+        Some(format!("{} {shots:.3e} shots", method.name()))
+    };
+    quote
+        .fractures
+        .iter()
+        .filter_map(of)
+        .collect::<Vec<_>>()
+        .join(", ")
 }
 
 /// How the layers went onto the mask; only the scale is said if it is as drawn.
