@@ -103,11 +103,10 @@ impl Flash {
     }
 }
 
-/// A row of cells: its lower and upper border, and where its samples end in a list of samples sorted by row.
+/// A cell with its box, and where its samples end in a list of samples sorted by row and column of cells.
 #[derive(Clone, Copy, Debug)]
-pub(super) struct Band {
-    pub(super) low: f64,
-    pub(super) high: f64,
+pub(super) struct Block {
+    pub(super) side: [f64; 4],
     pub(super) end: usize,
 }
 
@@ -178,10 +177,26 @@ impl Bins {
             .flat_map(|cell| self.cells[cell].iter().copied())
     }
 
-    fn low_of_row(&self, j: usize) -> f64 {
-        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-        let j = j as f64;
-        self.origin[1] + j * self.size
+    /// The box of a cell. Items beyond the border are kept in the border cells: these have no end there.
+    fn side_of(&self, cell: [usize; 2]) -> [f64; 4] {
+        let border = |axis: usize, i: usize| {
+            #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+            let at = i as f64;
+            if i == 0 {
+                f64::NEG_INFINITY
+            } else if i == [self.columns, self.rows][axis] {
+                f64::INFINITY
+            } else {
+                self.origin[axis] + at * self.size
+            }
+        };
+        let [i, j] = cell;
+        [
+            border(0, i),
+            border(1, j),
+            border(0, i + 1),
+            border(1, j + 1),
+        ]
     }
 
     /// Indices of the cells that a box touches.
@@ -288,15 +303,15 @@ impl Model {
         &mut self.dose
     }
 
-    /// Samples in cells that any of the boxes touches, row of cells by row; `bands` says where each row lies and ends.
+    /// Samples in cells that any of the boxes touches, cell by cell along the rows; `blocks` says which cells have any.
     pub(super) fn samples_near(
         &self,
         boxes: &[[f64; 4]],
         out: &mut Vec<u32>,
-        bands: &mut Vec<Band>,
+        blocks: &mut Vec<Block>,
     ) {
         out.clear();
-        bands.clear();
+        blocks.clear();
         let bins = &self.samples_by_place;
         let spans: Vec<[(usize, usize); 2]> = boxes
             .iter()
@@ -317,25 +332,17 @@ impl Model {
             let mut next = 0;
             for &(from, to) in &columns {
                 for i in from.max(next)..=to {
-                    out.extend_from_slice(&bins.cells[j * bins.columns + i]);
+                    let cell = &bins.cells[j * bins.columns + i];
+                    if !cell.is_empty() {
+                        out.extend_from_slice(cell);
+                        blocks.push(Block {
+                            side: bins.side_of([i, j]),
+                            end: out.len(),
+                        });
+                    }
                 }
                 next = next.max(to + 1);
             }
-            // Samples beyond the border are kept in the border cells.
-            let border = |j: usize| {
-                if j == 0 {
-                    f64::NEG_INFINITY
-                } else if j == bins.rows {
-                    f64::INFINITY
-                } else {
-                    bins.low_of_row(j)
-                }
-            };
-            bands.push(Band {
-                low: border(j),
-                high: border(j + 1),
-                end: out.len(),
-            });
         }
     }
 
