@@ -127,7 +127,7 @@ impl Reduction<'_> {
         if 0.04 * deep as f64 > self.budget.hopeless {
             return;
         }
-        let score = self.solver.score(self.model, removed, &added);
+        let score = self.solver.estimate(self.model, removed, &added);
         if score > self.budget.hopeless {
             return;
         }
