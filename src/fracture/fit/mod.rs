@@ -7,6 +7,7 @@
 //! and checks the whole neighbourhood. Everything is local: a shot touches only samples within 4.5 σ of it.
 
 mod algebra;
+mod field;
 mod kernel;
 mod model;
 mod reduce;

@@ -1,9 +1,8 @@
 //! Shots with sides anywhere, the samples they are held to, and the dose at these; all indexed by place.
 
 use crate::blur::{PhiTable, THRESHOLD};
-use crate::target::DoseField;
 
-use super::samples::{ContextDose, Sample};
+use super::samples::Sample;
 
 /// A shot before it is brought to the address grid: sides in nm as `[x0, y0, x1, y1]`.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -371,6 +370,11 @@ impl Model {
             .filter_map(|(i, f)| f.map(|f| (i, f)))
     }
 
+    /// What every slot holds.
+    pub(super) fn all(&self) -> &[Option<Flash>] {
+        &self.slots
+    }
+
     /// Slots ever used.
     pub(super) fn slots(&self) -> usize {
         self.slots.len()
@@ -435,64 +439,5 @@ impl Model {
             .zip(&self.dose)
             .map(|(s, d)| f64::from(s.sign) * (THRESHOLD - f64::from(*d)))
             .fold(f64::NEG_INFINITY, f64::max)
-    }
-}
-
-/// The dose of the model's shots with the context, anywhere.
-pub(super) struct Field<'a> {
-    pub(super) model: &'a Model,
-    pub(super) context: &'a ContextDose,
-    pub(super) phi: PhiTable,
-}
-
-impl DoseField for Field<'_> {
-    fn dose(&self, p: [f64; 2]) -> f64 {
-        let sigma = self.model.sigma;
-        let reach = 5.0 * sigma;
-        let near = self
-            .model
-            .near([p[0] - reach, p[1] - reach, p[0] + reach, p[1] + reach]);
-        let shots: f64 = near
-            .into_iter()
-            .filter_map(|s| self.model.get(s))
-            .map(|f| f.dose_at(self.phi, 1.0 / sigma, p))
-            .sum();
-        self.context.dose(p) + shots
-    }
-
-    fn row(&self, y: f64, x0: f64, step: f64, out: &mut [f64]) {
-        let sigma = self.model.sigma;
-        let reach = 5.0 * sigma;
-        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-        let x_of = |i: usize| x0 + i as f64 * step;
-        for (i, value) in out.iter_mut().enumerate() {
-            *value = if self.context.is_empty() {
-                0.0
-            } else {
-                self.context.dose([x_of(i), y])
-            };
-        }
-        let end = x_of(out.len());
-        for slot in self
-            .model
-            .near([x0 - reach, y - reach, end + reach, y + reach])
-        {
-            let Some(f) = self.model.get(slot) else {
-                continue;
-            };
-            let gy = f.dose
-                * (self.phi.cdf((y - f.side[1]) / sigma) - self.phi.cdf((y - f.side[3]) / sigma));
-            if gy.abs() < 1e-9 {
-                continue;
-            }
-            let from = cell_index((f.side[0] - reach - x0) / step);
-            let to = (cell_index((f.side[2] + reach - x0) / step) + 1).min(out.len());
-            for (i, value) in out.iter_mut().enumerate().take(to).skip(from) {
-                let x = x_of(i);
-                *value += gy
-                    * (self.phi.cdf((x - f.side[0]) / sigma)
-                        - self.phi.cdf((x - f.side[2]) / sigma));
-            }
-        }
     }
 }

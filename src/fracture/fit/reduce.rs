@@ -65,9 +65,8 @@ struct Reduction<'a> {
     version: Vec<u32>,
 }
 
-/// Takes shots away until no single drop or merge can be mended any more.
-pub(in crate::fracture) fn reduce(model: &mut Model, solver: &mut Solver, budget: Budget) {
-    let slots: Vec<usize> = model.flashes().map(|(i, _)| i).collect();
+/// Takes shots away until no single drop or merge that involves one of `slots`, or a shot moved for it, can be mended any more.
+pub(super) fn reduce(model: &mut Model, solver: &mut Solver, budget: Budget, slots: &[usize]) {
     let version = vec![0; model.slots()];
     let mut reduction = Reduction {
         model,
@@ -77,7 +76,7 @@ pub(in crate::fracture) fn reduce(model: &mut Model, solver: &mut Solver, budget
         offered: 0,
         version,
     };
-    reduction.offer(&slots);
+    reduction.offer(slots);
     while let Some(m) = reduction.moves.pop() {
         let current = m
             .removed

@@ -1,10 +1,12 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
+use crate::blur::REACH;
 use crate::fracture::{Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
 use crate::units::Dose;
 
+use super::field::Boxes;
 use super::model::{Flash, Model};
 use super::reduce::{Budget, reduce};
 use super::relax::{mend, relax};
@@ -40,8 +42,11 @@ impl Fit {
 /// `3·0.05·0.4/σ = 0.005` at σ = 12; what lies between samples is caught by the check.
 const GUARD: f32 = 0.004;
 
-/// Rounds of check and repair.
-const REPAIRS: usize = 10;
+/// Rounds of check and repair without less that is wrong after them.
+const REPAIRS: usize = 8;
+
+/// Rounds of check and repair in all.
+const MOST_REPAIRS: usize = 40;
 
 impl<'a> Setting<'a> {
     pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
@@ -73,7 +78,7 @@ impl<'a> Setting<'a> {
                 }),
             );
         }
-        let violations = check(&self.target, &model, &self.context);
+        let violations = check(&self.target, &model, &self.context, None);
         let unfit = unfit(&model, &self.job.limits, false);
         self.reported(Some(Fit {
             shots,
@@ -209,51 +214,98 @@ impl Attempt<'_> {
 
     /// Takes shots away where the rule holds around them.
     pub(in crate::fracture) fn reduce(&mut self) {
-        reduce(&mut self.model, &mut self.solver, self.budget);
+        let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
+        reduce(&mut self.model, &mut self.solver, self.budget, &all);
     }
 
-    /// Check, repair what the samples did not see, snap, and check again what is then really flashed.
+    /// Check, repair what the samples did not see, snap, and check again what is then really flashed: all of it once, then what
+    /// a repair changed.
     pub(in crate::fracture) fn finish(mut self) -> Fit {
-        let address = self.setting.job.limits.address;
+        let Setting {
+            job,
+            target,
+            context,
+            ..
+        } = self.setting;
+        let address = job.limits.address;
+        let mut snapped = self.model.clone();
+        let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
+        snap(&mut snapped, &mut self.solver, address, &all);
+        let mut violations = check(target, &snapped, context, None);
         let mut best: Option<Fit> = None;
-        for _ in 0..REPAIRS {
-            let mut snapped = self.model.clone();
-            snap(&mut snapped, &mut self.solver, address);
-            let violations = check(&self.setting.target, &snapped, &self.setting.context);
-            for v in &violations {
-                self.model
-                    .add_sample(Sample::new(v.place, v.need, &self.setting.context));
-            }
-            let unfit = unfit(
-                &snapped,
-                &self.setting.job.limits,
-                self.solver.rules.disjoint,
-            );
+        let mut stale = 0;
+        for _ in 0..MOST_REPAIRS {
+            let unfit = unfit(&snapped, &job.limits, self.solver.rules.disjoint);
             let fit = Fit {
                 shots: shots(&snapped, address),
-                violations,
+                violations: violations.clone(),
                 unfit,
             };
             let holds = fit.faults() == 0;
+            stale += 1;
             if best.as_ref().is_none_or(|b| fit.faults() < b.faults()) {
                 best = Some(fit);
+                stale = 0;
             }
-            if holds {
+            if holds || stale == REPAIRS {
                 break;
             }
-            let Self {
-                model,
-                solver,
-                budget,
-                ..
-            } = &mut self;
-            if !relax(model, solver, budget.window.max(10)) && mend(model, solver, budget.window, 2)
-            {
-                reduce(model, solver, *budget);
+            for v in &violations {
+                let sample = Sample::new(v.place, v.need, context);
+                self.model.add_sample(sample);
+                snapped.add_sample(sample);
             }
+            let before: Vec<Option<Flash>> = self.model.all().to_vec();
+            self.repair();
+            let moved: Vec<usize> = changed(&before, self.model.all());
+            let flashed: Vec<Option<Flash>> = snapped.all().to_vec();
+            // Out first, so that what comes finds the place free.
+            for &slot in &moved {
+                self.solver.set(&mut snapped, slot, None);
+            }
+            for &slot in &moved {
+                self.solver.set(&mut snapped, slot, self.model.get(slot));
+            }
+            snap(&mut snapped, &mut self.solver, address, &moved);
+            let reach = REACH * self.setting.sigma();
+            let boxes: Vec<[f64; 4]> = changed(&flashed, snapped.all())
+                .into_iter()
+                .flat_map(|slot| [flashed.get(slot).copied().flatten(), snapped.get(slot)])
+                .flatten()
+                .map(|f| f.grown(reach).side)
+                .collect();
+            let part = Boxes::only(boxes.clone(), self.setting.sigma());
+            violations.retain(|v| !part.holds(v.place));
+            violations.extend(check(target, &snapped, context, Some(&boxes)));
         }
         best.unwrap_or_else(|| unreachable!("at least one round was made"))
     }
+
+    /// Moves shots to where the rule holds at all samples; where that does not do, adds one or two and takes away what they make needless.
+    fn repair(&mut self) {
+        let Self {
+            model,
+            solver,
+            budget,
+            ..
+        } = self;
+        if relax(model, solver, budget.window.max(10)) {
+            return;
+        }
+        let before: Vec<Option<Flash>> = model.all().to_vec();
+        let most = 2 + model.flashes().count() / 32;
+        if mend(model, solver, budget.window, most) {
+            let moved = changed(&before, model.all());
+            reduce(model, solver, *budget, &moved);
+        }
+    }
+}
+
+/// Slots that do not hold the same shot in both lists, ascending.
+fn changed(before: &[Option<Flash>], after: &[Option<Flash>]) -> Vec<usize> {
+    (0..before.len().max(after.len()))
+        .filter(|&slot| before.get(slot).copied().flatten() != after.get(slot).copied().flatten())
+        .collect()
 }
 
 /// What a search asks of its shots; nm.

@@ -273,6 +273,15 @@ impl Solver {
         slots
     }
 
+    /// Puts a shot in a slot of the model, or takes it out.
+    pub(super) fn set(&mut self, model: &mut Model, slot: usize, flash: Option<Flash>) {
+        self.score(model, &[slot], flash.as_slice());
+        for (&id, &value) in self.ids.iter().zip(&self.value) {
+            model.doses_mut()[id as usize] = value;
+        }
+        model.place(slot, flash);
+    }
+
     /// Gathers the samples within reach of `removed` and `window`, with the dose of all other shots there.
     ///
     /// Only every `stride`-th of the samples.
@@ -282,6 +291,7 @@ impl Solver {
         let all = || gone.iter().chain(window);
         let Some(hull) = all().copied().reduce(|a, b| a.hull(&b)) else {
             self.ids.clear();
+            self.local.clear();
             return;
         };
         self.origin = [hull.side[0], hull.side[1]];
