@@ -20,7 +20,7 @@ pub(in crate::fracture) struct Budget {
 }
 
 /// A shot whose sides all move by less than this (σ) keeps the moves it has queued, and those that failed stay failed.
-const STILL: f64 = 0.1;
+const STILL: f64 = 0.2;
 
 /// One way to have a shot less: what goes and what comes in its place.
 struct Move {
