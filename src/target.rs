@@ -568,7 +568,11 @@ impl Target {
             let mut passed = 0;
             for &[from, to] in &spans {
                 let first = count(from - x0 + step * (1.0 - 1e-9)).min(columns);
-                let end = if to < x0 { 0 } else { (count(to - x0) + 1).min(columns) };
+                let end = if to < x0 {
+                    0
+                } else {
+                    (count(to - x0) + 1).min(columns)
+                };
                 if first >= end {
                     continue;
                 }

@@ -82,7 +82,11 @@ impl WithSimd for Cholesky<'_> {
         }
         for i in (0..n).rev() {
             let line = &a[i * n..(i + 1) * n];
-            let known: f64 = line[i + 1..].iter().zip(&b[i + 1..]).map(|(p, x)| p * x).sum();
+            let known: f64 = line[i + 1..]
+                .iter()
+                .zip(&b[i + 1..])
+                .map(|(p, x)| p * x)
+                .sum();
             b[i] = (b[i] - known) / line[i];
         }
     }

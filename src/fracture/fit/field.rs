@@ -37,7 +37,12 @@ impl<'a> Field<'a> {
     )]
     fn add(&self, place: impl Fn(usize) -> [f64; 2], out: &mut [f64]) {
         let (sigma, count) = (self.model.sigma, out.len());
-        let mut hull = Flash::new([f64::INFINITY, f64::INFINITY, f64::NEG_INFINITY, f64::NEG_INFINITY]);
+        let mut hull = Flash::new([
+            f64::INFINITY,
+            f64::INFINITY,
+            f64::NEG_INFINITY,
+            f64::NEG_INFINITY,
+        ]);
         for i in 0..count {
             let [x, y] = place(i);
             hull = hull.hull(&Flash::new([x, y, x, y]));
@@ -113,7 +118,9 @@ impl Boxes {
     pub(super) fn only(sides: Vec<[f64; 4]>, sigma: f64) -> Self {
         let mut boxes = Self::sorted(sides);
         let hull = boxes.sides.iter().map(|&s| Flash::new(s));
-        let hull = hull.reduce(|a, b| a.hull(&b)).unwrap_or(Flash::new([0.0; 4]));
+        let hull = hull
+            .reduce(|a, b| a.hull(&b))
+            .unwrap_or(Flash::new([0.0; 4]));
         boxes.bins = Some(Bins::of(hull.side, 8.0 * sigma, &boxes.sides));
         boxes
     }

@@ -189,11 +189,6 @@ impl ContextDose {
             .any(|id| self.figures[id as usize].need(p) != Need::Clear)
     }
 
-    /// Whether there is no context.
-    pub(in crate::fracture) fn is_empty(&self) -> bool {
-        self.reach.is_none()
-    }
-
     /// The dose at a place.
     pub(in crate::fracture) fn dose(&self, p: [f64; 2]) -> f64 {
         let Some([reached, _]) = &self.reach else {

@@ -76,12 +76,7 @@ pub(in crate::fracture) fn unfit(model: &Model, limits: &ShotLimits, disjoint: b
 
 /// Moves every side of some shots (slots ascending) to the address grid, where those of all others are, then single sides by one
 /// address as long as that mends what the rounding broke.
-pub(super) fn snap(
-    model: &mut Model,
-    solver: &mut Solver,
-    address: AddressUnit,
-    slots: &[usize],
-) {
+pub(super) fn snap(model: &mut Model, solver: &mut Solver, address: AddressUnit, slots: &[usize]) {
     let unit = address.nm().0;
     for &slot in slots {
         let Some(flash) = model.get(slot) else {

@@ -234,12 +234,7 @@ impl Solver {
     }
 
     /// About what [`Solver::score`] gives, from one sample in [`THINNED`].
-    pub(super) fn estimate(
-        &mut self,
-        model: &Model,
-        removed: &[usize],
-        window: &[Flash],
-    ) -> f64 {
+    pub(super) fn estimate(&mut self, model: &Model, removed: &[usize], window: &[Flash]) -> f64 {
         self.begin(model, removed, window, THINNED);
         self.link();
         #[allow(clippy::cast_precision_loss, reason = "a small number")]
@@ -322,10 +317,13 @@ impl Solver {
         {
             let near = || self.ids.iter().map(|&id| &samples[id as usize]);
             let [x, y] = self.origin;
-            self.x.extend(near().map(|s| ((s.place[0] - x) * inverse) as f32));
-            self.y.extend(near().map(|s| ((s.place[1] - y) * inverse) as f32));
+            self.x
+                .extend(near().map(|s| ((s.place[0] - x) * inverse) as f32));
+            self.y
+                .extend(near().map(|s| ((s.place[1] - y) * inverse) as f32));
             self.sign.extend(near().map(|s| s.sign));
-            self.base.extend(self.ids.iter().map(|&id| doses[id as usize]));
+            self.base
+                .extend(self.ids.iter().map(|&id| doses[id as usize]));
         }
         // Places that nothing touches and that hold whatever is asked.
         let padded = self.ids.len().next_multiple_of(LANES);
@@ -336,7 +334,14 @@ impl Solver {
         for flash in &gone {
             let mut local = self.localise(flash);
             local.dose = -local.dose;
-            add(self.arch, &self.blocks, &self.x, &self.y, &local, &mut self.base);
+            add(
+                self.arch,
+                &self.blocks,
+                &self.x,
+                &self.y,
+                &local,
+                &mut self.base,
+            );
         }
         self.local.clear();
         for flash in window {
@@ -383,18 +388,26 @@ impl Solver {
         self.value.clear();
         self.value.extend_from_slice(&self.base);
         for flash in window {
-            add(self.arch, &self.blocks, &self.x, &self.y, flash, &mut self.value);
+            add(
+                self.arch,
+                &self.blocks,
+                &self.x,
+                &self.y,
+                flash,
+                &mut self.value,
+            );
         }
         let missed = self.arch.dispatch(Missed {
             value: &self.value,
             sign: &self.sign,
             aim: self.rules.guard + AIM,
         });
-        missed + self
-            .links
-            .iter()
-            .map(|l| (l.excess(window) * LINK_WEIGHT).max(0.0).powi(2))
-            .sum::<f64>()
+        missed
+            + self
+                .links
+                .iter()
+                .map(|l| (l.excess(window) * LINK_WEIGHT).max(0.0).powi(2))
+                .sum::<f64>()
     }
 
     /// Whether everything holds with the guard, at the values last computed.
@@ -529,8 +542,7 @@ impl Solver {
             for k in 0..self.local.len() {
                 let a: [f32; 4] = std::array::from_fn(|side| rows.slopes[(4 * k + side) * n + i]);
                 if a.iter().any(|s| s.abs() > LEAST_SLOPE) {
-                    rows.entries
-                        .push((narrow(4 * k), a.map(f64::from)));
+                    rows.entries.push((narrow(4 * k), a.map(f64::from)));
                 }
             }
         }
@@ -556,7 +568,11 @@ impl Solver {
         for (at, l) in self.links.iter().enumerate() {
             let moved = |i: Option<usize>| i.map_or(0.0, |i| self.step[i]);
             let excess = l.excess(&self.local)
-                + if stepped { moved(l.plus) - moved(l.minus) } else { 0.0 };
+                + if stepped {
+                    moved(l.plus) - moved(l.minus)
+                } else {
+                    0.0
+                };
             if excess > 0.0 {
                 self.active.push(narrow(self.rows.r0.len() + at));
             }
@@ -650,8 +666,7 @@ fn reached(blocks: &[Block], flash: &Local, mut each: impl FnMut(Range<usize>)) 
     let (mut open, mut start) = (0..0, 0);
     for block in blocks {
         let [a0, b0, a1, b1] = block.side;
-        let touched =
-            a0 <= x1 + TOUCH && x0 - TOUCH <= a1 && b0 <= y1 + TOUCH && y0 - TOUCH <= b1;
+        let touched = a0 <= x1 + TOUCH && x0 - TOUCH <= a1 && b0 <= y1 + TOUCH && y0 - TOUCH <= b1;
         if touched {
             let from = start / LANES * LANES;
             if from > open.end {
