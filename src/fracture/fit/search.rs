@@ -1,13 +1,13 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
-use crate::blur::REACH;
+use crate::blur::{REACH, THRESHOLD};
 use crate::fracture::{Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
 use crate::units::Dose;
 
 use super::field::Boxes;
-use super::model::{Flash, Model};
+use super::model::{Bins, Flash, Model};
 use super::reduce::{Budget, reduce};
 use super::relax::{mend, relax};
 use super::samples::{ContextDose, Sample, samples_of};
@@ -42,11 +42,15 @@ impl Fit {
 /// `3·0.05·0.4/σ = 0.005` at σ = 12; what lies between samples is caught by the check.
 const GUARD: f32 = 0.004;
 
-/// Rounds of check and repair without less that is wrong after them.
-const REPAIRS: usize = 8;
+/// Least distance of the places that one check adds to the samples, σ: many next to one another weigh no more than the worst of them.
+const APART: f64 = 0.2;
 
-/// Rounds of check and repair in all.
-const MOST_REPAIRS: usize = 40;
+/// Rounds of check and repair without less that is wrong after them.
+const STALE_REPAIRS: usize = 6;
+
+/// Rounds of check and repair of a figure of one shot, and for how many shots there is one more: the longer a figure, the more
+/// rounds until its last place holds.
+const REPAIRS: (usize, usize) = (10, 50);
 
 impl<'a> Setting<'a> {
     pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
@@ -196,6 +200,11 @@ pub(in crate::fracture) struct Attempt<'s> {
 }
 
 impl Attempt<'_> {
+    /// The shots as they are now.
+    pub(in crate::fracture) fn flashes(&self) -> Vec<Flash> {
+        self.model.flashes().map(|(_, flash)| flash).collect()
+    }
+
     /// How many shots there are.
     pub(in crate::fracture) fn count(&self) -> usize {
         self.model.flashes().count()
@@ -234,7 +243,7 @@ impl Attempt<'_> {
         let mut violations = check(target, &snapped, context, None);
         let mut best: Option<Fit> = None;
         let mut stale = 0;
-        for _ in 0..MOST_REPAIRS {
+        for _ in 0..REPAIRS.0 + all.len() / REPAIRS.1 {
             let unfit = unfit(&snapped, &job.limits, self.solver.rules.disjoint);
             let fit = Fit {
                 shots: shots(&snapped, address),
@@ -247,10 +256,10 @@ impl Attempt<'_> {
                 best = Some(fit);
                 stale = 0;
             }
-            if holds || stale == REPAIRS {
+            if holds || stale == STALE_REPAIRS {
                 break;
             }
-            for v in &violations {
+            for v in thinned(&violations, APART * self.setting.sigma()) {
                 let sample = Sample::new(v.place, v.need, context);
                 self.model.add_sample(sample);
                 snapped.add_sample(sample);
@@ -299,6 +308,35 @@ impl Attempt<'_> {
             reduce(model, solver, *budget, &moved);
         }
     }
+}
+
+/// The worst of the places where the rule is broken, none nearer to another than `apart` nm.
+fn thinned(violations: &[Violation], apart: f64) -> Vec<Violation> {
+    let mut worst = violations.to_vec();
+    // Those as bad as one another in the order found.
+    worst.sort_by(|a, b| {
+        (b.dose - THRESHOLD)
+            .abs()
+            .total_cmp(&(a.dose - THRESHOLD).abs())
+    });
+    let at = |p: [f64; 2]| Flash::new([p[0], p[1], p[0], p[1]]);
+    let Some(hull) = worst.iter().map(|v| at(v.place)).reduce(|a, b| a.hull(&b)) else {
+        return worst;
+    };
+    let mut taken = Bins::new(hull.side, 8.0 * apart);
+    let mut kept: Vec<Violation> = Vec::new();
+    for v in worst {
+        let [x, y] = v.place;
+        let clash = taken.items(at(v.place).grown(apart).side).any(|id| {
+            let [u, w] = kept[id as usize].place;
+            (u - x).powi(2) + (w - y).powi(2) < apart * apart
+        });
+        if !clash {
+            taken.insert(u32::try_from(kept.len()).unwrap_or(u32::MAX), v.place);
+            kept.push(v);
+        }
+    }
+    kept
 }
 
 /// Slots that do not hold the same shot in both lists, ascending.
