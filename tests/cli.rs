@@ -428,10 +428,10 @@ fn a_quote_says_how_the_layout_went_onto_the_mask() {
     assert!(text.contains(said), "{text}");
     let (out, _) = run(command.arg("--json"), 0);
     let quote = json(&out);
-    assert_eq!(number(&quote, "/source/bias_nm"), 3.0);
+    assert_eq!(number(&quote, "/sources/0/bias_nm"), 3.0);
     // Of the two figures only the square of 180 nm is in the window.
-    assert_eq!(number(&quote, "/source/extent_nm/0"), 186.0);
-    assert_eq!(quote["source"]["window_nm"][2], -350.0);
+    assert_eq!(number(&quote, "/sources/0/extent_nm/0"), 186.0);
+    assert_eq!(quote["sources"][0]["window_nm"][2], -350.0);
 }
 
 #[test]

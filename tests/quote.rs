@@ -6,7 +6,7 @@ use shotwright::layout::{self, Layout};
 use shotwright::mask::{Mask, MaskOptions, Standings};
 use shotwright::profile::{Kind, Profile};
 use shotwright::quote::result::{Fits, FlagKind, Method};
-use shotwright::quote::{self, Answer, Chosen, Share, Terms};
+use shotwright::quote::{self, Answer, Chosen, Clip, Terms};
 use shotwright::shot::AddressUnit;
 use shotwright::units::{Dose, Hours, Nm};
 use shotwright::write_time::Field;
@@ -29,21 +29,42 @@ fn terms(profile: &Profile) -> Terms<'_> {
         tolerance: Nm(2.0),
         within: Nm(2.0),
         effort: Effort::Quick,
-        share: None,
+        field: None,
         slot: Some(Hours(24.0)),
         peak_dose: None,
+        raster: None,
     }
 }
 
 fn quoted(layout: &Layout, terms: &Terms<'_>) -> (Mask, Answer) {
-    let chosen = Chosen {
+    let (mut masks, answer) = quoted_clips(&[(layout, None)], terms);
+    (masks.remove(0), answer)
+}
+
+/// Layouts with their shares of the field.
+fn quoted_clips(layouts: &[(&Layout, Option<f64>)], terms: &Terms<'_>) -> (Vec<Mask>, Answer) {
+    let options = MaskOptions::new(Nm(0.0), AddressUnit::FINEST);
+    let chosen = |layout| Chosen {
         name: "test",
         layout,
-        options: &MaskOptions::new(Nm(0.0), AddressUnit::FINEST),
+        options: &options,
     };
-    let mask = chosen.mask(&terms.setup().unwrap()).unwrap();
-    let answer = quote::quote(&chosen, &mask, terms, &|| ()).unwrap();
-    (mask, answer)
+    let setup = terms.setup().unwrap();
+    let masks: Vec<Mask> = layouts
+        .iter()
+        .map(|(layout, _)| chosen(layout).mask(&setup).unwrap())
+        .collect();
+    let clips: Vec<Clip<'_>> = layouts
+        .iter()
+        .zip(&masks)
+        .map(|(&(layout, coverage), mask)| Clip {
+            chosen: chosen(layout),
+            mask,
+            coverage,
+        })
+        .collect();
+    let answer = quote::quote(&clips, terms, &|| ()).unwrap();
+    (masks, answer)
 }
 
 fn wkt(text: &str) -> Layout {
@@ -142,18 +163,14 @@ backscatter = [{ eta = 0.6, beta_nm = 10000 }]
 #[test]
 fn a_field_is_filled_with_copies_of_the_clip() {
     let profile = plain();
-    let share = Share {
-        field: Field {
+    let terms = Terms {
+        field: Some(Field {
             width: Nm::from_mm(1.0),
             height: Nm::from_mm(2.0),
-        },
-        coverage: 0.25,
-    };
-    let terms = Terms {
-        share: Some(share),
+        }),
         ..terms(&profile)
     };
-    let (_, answer) = quoted(&wkt(SQUARE), &terms);
+    let (_, answer) = quoted_clips(&[(&wkt(SQUARE), Some(0.25))], &terms);
     // 0.25 · 2 mm² of clips of 200 × 200 nm, one shot each.
     let shots = 0.25 * 2e12 / 4e4;
     let hours = answer.quote.fractures.tile.unwrap().hours.unwrap();
@@ -221,10 +238,10 @@ fn a_figure_is_judged_with_its_neighbours_shots() {
     let near = format!("{SQUARE}\nPOLYGON ((230 0, 430 0, 430 200, 230 200, 230 0))");
     let (mask, answer) = quoted(&wkt(&near), &terms(&profile));
     assert_eq!(mask.figures.len(), 1, "the two are mirror images");
-    let made = answer.made.tile.as_ref().unwrap()[0].as_ref().unwrap();
+    let made = answer.made[0].tile.as_ref().unwrap()[0].as_ref().unwrap();
     let mean = |made: &quote::Made| made.fidelity.edges.error.mean().unwrap();
     let (_, alone) = quoted(&wkt(SQUARE), &terms(&profile));
-    let alone = alone.made.tile.as_ref().unwrap()[0].as_ref().unwrap();
+    let alone = alone.made[0].tile.as_ref().unwrap()[0].as_ref().unwrap();
     // In one dimension the facing edge gets Φ(−30/12) more, so its contour moves by that over the slope; it is a quarter of
     // all outline judged, and the neighbour is as wide as it is.
     let (tail, slope) = (0.006_209_665, 0.398_942 / 12.0);

@@ -242,6 +242,9 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
 fn hours(total_h: f64) -> Hours {
     Hours {
         shots_written: Count(0),
+        flashes: Count(0),
+        stripes: 0,
+        stage_bound_stripes: 0,
         total_h,
         flash_h: 0.5 * total_h,
         settle_h: 0.25 * total_h,
@@ -266,7 +269,7 @@ fn quote() -> Quote {
         ..summary(0, 0.0)
     };
     Quote {
-        source: Source {
+        sources: vec![Source {
             name: "elbow.oas".to_owned(),
             layers: vec!["1/0".to_owned()],
             minus: Vec::new(),
@@ -277,9 +280,10 @@ fn quote() -> Quote {
             background_of_nm: None,
             window_nm: None,
             extent_nm: Some([20_000.0, 8_400.0]),
+            coverage: None,
             figures_distinct: 14,
             figures_placed: Count(1_200_000),
-        },
+        }],
         profile: ProfileUsed {
             name: "example".to_owned(),
             numbers: BTreeMap::from([("base_dose_uc_cm2".to_owned(), 25.0)]),
@@ -312,8 +316,11 @@ fn quote() -> Quote {
         },
         recommended: Some(Method::Overlap),
         reason: "It is the only fracture that is written within the slot, and it prints within tolerance.".to_owned(),
+        sensitivity: Vec::new(),
+        raster: None,
         flags: vec![
             Flag {
+                clip: 1,
                 figure: 7,
                 place_nm: [1200.25, -40.0],
                 kind: FlagKind::ToleranceNotReached,
@@ -323,6 +330,7 @@ fn quote() -> Quote {
                 picture: Some("figure-7.png".to_owned()),
             },
             Flag {
+                clip: 1,
                 figure: 9,
                 place_nm: [0.0, 0.0],
                 kind: FlagKind::BrokenOutline,
@@ -467,6 +475,7 @@ fn unmeasured_is_never_zero() {
 #[test]
 fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     let figure = FigureResult {
+        clip: 1,
         figure: 3,
         place_nm: [12.5, -4.0],
         places: Count(40),

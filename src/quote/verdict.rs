@@ -1,5 +1,6 @@
 //! Whether the slot suffices, which fracture to order and why.
 
+use crate::number::brief as number;
 use crate::units;
 
 use super::result::{Fits, FractureSummary, Fractures, Hours, Method, Verdict};
@@ -213,20 +214,6 @@ fn time(hours: f64) -> String {
         1.0.. => format!("{} s", number(seconds)),
         _ => format!("{} ms", number(seconds * 1e3)),
     }
-}
-
-/// Three significant digits; whole numbers in full.
-pub(super) fn number(x: f64) -> String {
-    if x == x.trunc() || x.abs() >= 1000.0 {
-        return format!("{x:.0}");
-    }
-    #[allow(
-        clippy::cast_possible_truncation,
-        clippy::cast_sign_loss,
-        reason = "a logarithm between -300 and 3, clamped"
-    )]
-    let decimals = (2.0 - x.abs().log10().floor()).clamp(0.0, 8.0) as usize;
-    format!("{x:.decimals$}")
 }
 
 #[cfg(test)]

@@ -5,7 +5,8 @@ use std::io::Write;
 use crate::quote::result::{FigureFracture, FigureResult, FlagKind, Method};
 
 /// Columns before those of the fractures.
-const FIGURE: [&str; 7] = [
+const FIGURE: [&str; 8] = [
+    "clip",
     "figure",
     "x_nm",
     "y_nm",
@@ -54,6 +55,7 @@ fn row(figure: &FigureResult) -> Vec<String> {
         "curved"
     };
     let mut row = vec![
+        figure.clip.to_string(),
         figure.figure.to_string(),
         figure.place_nm[0].to_string(),
         figure.place_nm[1].to_string(),

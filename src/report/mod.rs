@@ -8,4 +8,5 @@ pub mod overview_plot;
 mod plot;
 pub mod progress;
 pub mod shots_csv;
+pub mod stripes_csv;
 pub mod table;
