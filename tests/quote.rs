@@ -275,3 +275,104 @@ fn standings_find_every_copy_in_a_window() {
     assert_eq!(found.len(), expected);
     assert!(expected > 0);
 }
+
+#[test]
+fn a_raster_writer_stands_beside_at_the_same_dose_and_ties_where_hours_meet() {
+    let profile = plain();
+    let numbers = [("beam_na", 1000.0), ("base_dose_uc_cm2", 100.0)];
+    let raster = Profile::from_numbers("beams", Kind::Raster, numbers).unwrap();
+    let terms = Terms {
+        raster: Some(&raster),
+        field: Some(Field {
+            width: Nm::from_mm(10.0),
+            height: Nm::from_mm(10.0),
+        }),
+        ..terms(&profile)
+    };
+    let (_, answer) = quoted_clips(&[(&wkt(SQUARE), Some(0.5))], &terms);
+    let line = answer.quote.raster.unwrap();
+    // 1 cm² at the shaped writer's 25 µC/cm² and 1 µA: 25 s (t = D·A/I), whatever the pattern.
+    let hours = line.hours.total_h;
+    assert!((hours - 25.0 / 3600.0).abs() < 1e-12, "{hours}");
+    // At 182.5 ns a shot: 25 s are 136 986 301.4 shots.
+    assert_eq!(line.tie_flashes.unwrap().0, 136_986_302);
+    // Half of 1 cm² in boxes of 200 nm.
+    assert_eq!(line.flashes.unwrap().0, 1_250_000_000);
+    let error = quote::quote(&[], &terms, &|| ()).unwrap_err();
+    assert!(
+        error.to_string().contains("a share of it for each"),
+        "{error}"
+    );
+}
+
+#[test]
+fn what_moves_the_total_is_in_the_quote_by_its_size() {
+    let profile = plain();
+    let (_, answer) = quoted(&wkt(SQUARE), &terms(&profile));
+    let found: Vec<(&str, f64, f64)> = answer
+        .quote
+        .sensitivity
+        .iter()
+        .map(|s| (s.key.as_str(), 3.6e12 * s.at_lower_h, 3.6e12 * s.at_upper_h))
+        .collect();
+    // By hand, ns: 62.5 of flashing and 60 a pass of settling; ±10 % of each, one pass less or more.
+    let expected = [
+        ("passes", 122.5, 242.5),
+        ("settle_ns", 170.5, 194.5),
+        ("current_a_cm2", 120.0 + 62.5 / 0.9, 120.0 + 62.5 / 1.1),
+        ("base_dose_uc_cm2", 176.25, 188.75),
+    ];
+    assert_eq!(found.len(), expected.len(), "{found:?}");
+    for (found, expected) in found.iter().zip(expected) {
+        assert_eq!(found.0, expected.0);
+        assert!(
+            (found.1 - expected.1).abs() < 1e-6 && (found.2 - expected.2).abs() < 1e-6,
+            "{found:?}"
+        );
+    }
+}
+
+/// A dense stripe waits for the beam, the one above it for the stage: the quote counts both and the rows add up to its hours.
+#[test]
+fn stripes_are_beam_bound_or_stage_bound_by_what_lies_in_them() {
+    let mut profile = plain();
+    profile
+        .set_all([("stripe_um", 10.0), ("stage_mm_s", 100.0), ("turn_s", 0.0)])
+        .unwrap();
+    // 20 µm of travel at 100 mm/s: 200 µs. Below 50 × 24 squares, 91.25 ns a pass each; above a single one.
+    let mut text = String::new();
+    for (column, row) in (0..50).flat_map(|column| (0..48).map(move |row| (column, row))) {
+        let (x, y) = (400 * column, 200 * row);
+        text += &format!(
+            "POLYGON (({x} {y}, {} {y}, {} {}, {x} {}, {x} {y}))\n",
+            x + 200,
+            x + 200,
+            y + 200,
+            y + 200
+        );
+    }
+    text += "POLYGON ((0 19000, 200 19000, 200 19200, 0 19200, 0 19000))\n";
+    profile.set("greatest_side_nm", 200.0).unwrap();
+    let (_, answer) = quoted(&wkt(&text), &terms(&profile));
+    let rows = answer.stripes.tile.as_ref().unwrap();
+    let hours = answer.quote.fractures.tile.as_ref().unwrap().hours.unwrap();
+    assert_eq!(
+        (hours.stripes, hours.stage_bound_stripes),
+        (4, 2),
+        "{rows:?}"
+    );
+    assert!(rows[0].stage_s == 0.0 && rows[1].stage_s > 0.0, "{rows:?}");
+    assert_eq!(rows[0].flashes.0, 2400);
+    let sum: f64 = rows
+        .iter()
+        .map(|r| {
+            f64::from(r.passes)
+                * r.count as f64
+                * (r.flash_s + r.settle_s + r.subfield_s + r.stage_s)
+        })
+        .sum();
+    assert!((sum - 3600.0 * hours.total_h).abs() < 1e-12, "{sum}");
+    // The lower: 2400 flashes at 31.25 + 60 ns; the upper: the travel of 19.8 µm.
+    let expected = 2.0 * (2400.0 * 91.25e-9 + 19.8e-6 / 0.1);
+    assert!((sum - expected).abs() < 1e-12, "{sum}, expected {expected}");
+}

@@ -478,6 +478,7 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
         clip: 1,
         figure: 3,
         place_nm: [12.5, -4.0],
+        fingerprint: "00112233445566ff".to_owned(),
         places: Count(40),
         outline_nm: 812.25,
         vertices: 96,
@@ -502,12 +503,12 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     figures_csv::write(&mut out, [&figure]).unwrap();
     assert_eq!(
         String::from_utf8(out).unwrap(),
-        "figure,x_nm,y_nm,places,outline_nm,vertices,shape,\
+        "clip,figure,x_nm,y_nm,fingerprint,places,outline_nm,vertices,shape,\
          staircase_shots,staircase_edge_error_mean_nm,staircase_edge_error_p95_nm,staircase_edge_error_worst_nm,staircase_prints_within_tolerance,staircase_seconds,\
          tile_shots,tile_edge_error_mean_nm,tile_edge_error_p95_nm,tile_edge_error_worst_nm,tile_prints_within_tolerance,tile_seconds,\
          overlap_shots,overlap_edge_error_mean_nm,overlap_edge_error_p95_nm,overlap_edge_error_worst_nm,overlap_prints_within_tolerance,overlap_seconds,\
          flags\n\
-         3,12.5,-4,40,812.25,96,curved,,,,,,,12,-0.5,1.5,,true,0.25,,,,,,,broken_outline shot_limits_not_met\n"
+         1,3,12.5,-4,00112233445566ff,40,812.25,96,curved,,,,,,,12,-0.5,1.5,,true,0.25,,,,,,,broken_outline shot_limits_not_met\n"
     );
 }
 

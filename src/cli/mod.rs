@@ -1,6 +1,7 @@
 //! The command line: arguments checked into plans before any work, results on stdout, talk on stderr.
 
 mod args;
+mod compare;
 mod error;
 mod files;
 mod fracture;
@@ -12,6 +13,7 @@ mod output;
 mod pictures;
 mod profile;
 mod quote;
+mod sweep;
 mod values;
 
 use clap::{Parser, Subcommand};
@@ -56,6 +58,8 @@ enum Command {
     Fracture(fracture::FractureArgs),
     Judge(judge::JudgeArgs),
     Hours(Box<hours::HoursArgs>),
+    Sweep(Box<sweep::SweepArgs>),
+    Compare(compare::CompareArgs),
     Profile(profile::ProfileArgs),
 }
 
@@ -66,7 +70,7 @@ enum Command {
 pub fn run(cli: Cli) -> Result<Outcome, CliError> {
     let threads = cli.threads;
     // A job file may say how many.
-    if !matches!(cli.command, Command::Quote(_)) {
+    if !matches!(cli.command, Command::Quote(_) | Command::Sweep(_)) {
         start_threads(threads)?;
     }
     match cli.command {
@@ -75,6 +79,8 @@ pub fn run(cli: Cli) -> Result<Outcome, CliError> {
         Command::Fracture(args) => fracture::run(&args),
         Command::Judge(args) => judge::run(&args),
         Command::Hours(args) => hours::run(&args),
+        Command::Sweep(args) => sweep::run(&args, threads),
+        Command::Compare(args) => compare::run(&args),
         Command::Profile(args) => profile::run(&args),
     }
 }

@@ -14,6 +14,7 @@ use crate::quote::result::Method;
 use crate::quote::{Answer, Clip, Setup, Terms};
 use crate::report::figure_plot::{Contour, FigurePicture, PlotError};
 use crate::report::overview_plot::{Mark, Overview, OverviewFigure};
+use crate::report::stripes_plot::StripesPicture;
 use crate::target::Target;
 use crate::units::Nm;
 
@@ -35,13 +36,29 @@ const CHANGES: [(&str, f64); 3] = [
 ];
 
 impl Pictures<'_> {
-    /// Draws the masks and the first `most` flagged figures, and names the pictures in their flags.
+    /// Draws the stripes, the masks and the first `most` flagged figures, and names the pictures in their flags. Returns those
+    /// that show the whole, with what they show.
     pub(super) fn write(
         &self,
         answer: &mut Answer,
         most: usize,
         output: &mut Output,
-    ) -> Result<(), CliError> {
+    ) -> Result<Vec<(String, String)>, CliError> {
+        let mut shown = vec![(
+            "stripes.png".to_owned(),
+            "Time by stripe and cause".to_owned(),
+        )];
+        let path = output.claim(&shown[0].0)?;
+        let names: Vec<&str> = self.clips.iter().map(|clip| clip.chosen.name).collect();
+        StripesPicture {
+            title: &format!("{}: time by stripe", names.join(", ")),
+            stripes: &answer.stripes,
+        }
+        .png(&path)
+        .map_err(|cause| CliError::Picture {
+            file: path.display().to_string(),
+            cause,
+        })?;
         let setup = self.terms.setup().map_err(|cause| CliError::Quote {
             file: self.terms.profile.name().to_owned(),
             cause,
@@ -57,8 +74,10 @@ impl Pictures<'_> {
         for (index, clip) in self.clips.iter().enumerate() {
             let prefix = prefix(index, self.clips.len());
             let number = index as u64 + 1;
-            let path = output.claim(&format!("{prefix}overview.png"))?;
+            let name = format!("{prefix}overview.png");
+            let path = output.claim(&name)?;
             overview(clip, number, answer, &path)?;
+            shown.push((name, format!("Shots per figure of {}", clip.chosen.name)));
             let flagged = flagged.iter().filter(|(clip, _)| *clip == number);
             let flagged: Vec<usize> = flagged
                 .filter_map(|&(_, figure)| usize::try_from(figure).ok())
@@ -98,7 +117,7 @@ impl Pictures<'_> {
         for flag in &mut answer.quote.flags {
             flag.picture = named.get(&(flag.clip, flag.figure)).cloned();
         }
-        Ok(())
+        Ok(shown)
     }
 }
 

@@ -8,6 +8,7 @@ use crate::mask::Mask;
 use crate::quote::result::{Fits, FlagKind, Method};
 use crate::quote::{self, Answer, Chosen, Clip, Terms};
 use crate::report::figures_csv;
+use crate::report::html::{self, Beside};
 use crate::report::progress::Progress;
 use crate::report::stripes_csv;
 use crate::report::table::{self, TextOptions};
@@ -135,9 +136,30 @@ struct Files {
     quote: Sink,
     figures: Sink,
     stripes: Sink,
+    page: Sink,
     /// By clip: tile and overlap, with their names.
     shots: Vec<[(Method, String, Sink); 2]>,
 }
+
+/// What the page links to.
+const BESIDE: [Beside<'static>; 4] = [
+    Beside {
+        name: "quote.json",
+        about: "the whole result",
+    },
+    Beside {
+        name: "figures.csv",
+        about: "a line for each distinct figure",
+    },
+    Beside {
+        name: "stripes.csv",
+        about: "the time of each stripe by cause",
+    },
+    Beside {
+        name: "job.toml",
+        about: "all that was asked, to quote again",
+    },
+];
 
 /// What the files of a clip begin with: nothing where there is one, else its number.
 pub(super) fn prefix(clip: usize, clips: usize) -> String {
@@ -165,6 +187,7 @@ impl Files {
             quote: output.sink("quote.json")?,
             figures: output.sink("figures.csv")?,
             stripes: output.sink("stripes.csv")?,
+            page: output.sink("report.html")?,
             shots,
             output,
         })
@@ -200,11 +223,20 @@ impl Files {
                 }
             }
         }
-        Pictures { clips, terms }.write(answer, plan.flags, &mut self.output)?;
+        let pictures = Pictures { clips, terms };
+        let shown = pictures.write(answer, plan.flags, &mut self.output)?;
         self.figures
             .write(|out| figures_csv::write(out, &answer.figures).map_err(std::io::Error::other))?;
         self.stripes
             .write(|out| stripes_csv::write(out, &answer.stripes).map_err(std::io::Error::other))?;
+        self.page.write(|out| {
+            let pictures: Vec<Beside<'_>> = shown
+                .iter()
+                .map(|(name, about)| Beside { name, about })
+                .collect();
+            let page = html::page(&answer.quote, &pictures, &BESIDE, plan.flags);
+            out.write_all(page.as_bytes())
+        })?;
         self.quote.write(|out| {
             serde_json::to_writer_pretty(&mut *out, &answer.quote)?;
             writeln!(out)

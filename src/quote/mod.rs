@@ -3,6 +3,8 @@
 //! The only module that knows the order of the stages: a mask's distinct figures are fractured in three ways, each is judged
 //! on the dose that its shots and its neighbours' give, the shots are timed where they stand, and all is put side by side.
 
+pub mod compare;
+mod fingerprint;
 mod flags;
 pub mod hours;
 mod kept;
@@ -10,6 +12,7 @@ pub mod made;
 pub mod result;
 pub mod shots;
 pub mod summary;
+pub mod sweep;
 mod verdict;
 
 use std::sync::Arc;
@@ -496,6 +499,7 @@ fn figure_result(
         clip,
         figure: figure as u64,
         place_nm: corner.to_nm(),
+        fingerprint: fingerprint::of(&distinct.figure),
         places: result::Count(distinct.place_count()),
         outline_nm: distinct.figure.outline_nm(),
         vertices: distinct.figure.vertices() as u64,

@@ -2,11 +2,17 @@
 //!
 //! Units are in the names (`_nm`, `_h`, `_s`, `_nm_per_pct`). What was not measured is `None` (`null` in JSON), never 0.
 
+mod comparison;
+mod sweep;
+
 use std::collections::BTreeMap;
 use std::fmt;
 
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
+
+pub use comparison::{Changed, Comparison, FigureChange, FigureShare, ShotShare, TimeChange};
+pub use sweep::{Sweep, SweepPoint};
 
 /// Said in every report, word for word.
 pub const CAUTION: &str =
@@ -440,6 +446,20 @@ pub struct Flag {
     pub picture: Option<String>,
 }
 
+impl Hours {
+    /// Whether they fit so many hours: by the upper end of the interval.
+    #[must_use]
+    pub fn fits(&self, slot_h: f64) -> Fits {
+        if self.high_h <= slot_h {
+            Fits::Yes
+        } else if self.low_h > slot_h {
+            Fits::No
+        } else {
+            Fits::CannotSay
+        }
+    }
+}
+
 /// One distinct figure: a line of `figures.csv`.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct FigureResult {
@@ -449,6 +469,8 @@ pub struct FigureResult {
     pub figure: u64,
     /// Lower-left corner of its bounds at its first place, mask coordinates.
     pub place_nm: [f64; 2],
+    /// Hash of its outline in its own frame, 16 hexadecimal digits: equal figures have equal ones, in other layouts too.
+    pub fingerprint: String,
     /// At how many places it stands.
     pub places: Count,
     /// Length of all its rings.

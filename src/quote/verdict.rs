@@ -114,11 +114,7 @@ impl<'a> Offer<'a> {
 }
 
 fn fits(hours: Hours, slot: Option<units::Hours>) -> Fits {
-    match slot {
-        Some(slot) if hours.high_h <= slot.0 => Fits::Yes,
-        Some(slot) if hours.low_h > slot.0 => Fits::No,
-        _ => Fits::CannotSay,
-    }
+    slot.map_or(Fits::CannotSay, |slot| hours.fits(slot.0))
 }
 
 fn verdict(best: &Offer<'_>, other: Option<&Offer<'_>>, slot: Option<units::Hours>) -> Verdict {
