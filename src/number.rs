@@ -70,9 +70,32 @@ pub fn trimmed(x: f64) -> String {
     text.trim_end_matches('0').trim_end_matches('.').to_owned()
 }
 
+/// A value that was given, as it was given: `1.5`, `2`, `400`; what is finer than a thousandth is rounded to three digits.
+#[must_use]
+pub fn given(x: f64) -> String {
+    let text = trimmed(x);
+    let same = text.parse() == Ok(x) && x.abs() < 1000.0;
+    if same { text } else { brief(x) }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn what_was_given_is_shown_so() {
+        for (x, shown) in [
+            (1.5, "1.5"),
+            (2.0, "2"),
+            (0.125, "0.125"),
+            (40.0 / 3.0, "13.3"),
+            (-0.5, "-0.5"),
+            (0.000_4, "4.0e-4"),
+            (10_000.0, "10\u{202f}000"),
+        ] {
+            assert_eq!(given(x), shown);
+        }
+    }
 
     #[test]
     fn sentences_and_tables_group_alike() {

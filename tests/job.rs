@@ -440,7 +440,7 @@ fn a_sweep_fractures_only_what_a_number_touches() {
 fn a_sweep_writes_table_csv_and_picture() {
     let place = Place::new();
     let text =
-        format!("effort = \"quick\"\nslot_h = 1e-9\n[[clip]]\nlayout = \"ell.wkt\"\n{PLAIN}");
+        format!("effort = \"quick\"\nslot_h = 1e-10\n[[clip]]\nlayout = \"ell.wkt\"\n{PLAIN}");
     let job = place.write("job.toml", &text);
     let out = place.at("out");
     let (text, _) = run(

@@ -376,3 +376,49 @@ fn stripes_are_beam_bound_or_stage_bound_by_what_lies_in_them() {
     let expected = 2.0 * (2400.0 * 91.25e-9 + 19.8e-6 / 0.1);
     assert!((sum - expected).abs() < 1e-12, "{sum}, expected {expected}");
 }
+
+/// D = (1 + η)/(1 + 2ηU) multiplies every flash (DESIGN 4.3): a ± on η is in the interval, and η is among what moves the total.
+#[test]
+fn a_backscatter_that_is_not_sure_makes_the_hours_unsure() {
+    let text = "
+name = \"scatter\"
+[writer]
+kind = \"shaped\"
+current_a_cm2 = 400
+settle_ns = 60
+passes = 2
+[process]
+sigma_nm = 12
+base_dose_uc_cm2 = 25
+backscatter = [{ eta = { value = 0.6, plus_minus = 0.1 }, beta_nm = 10000 }]
+";
+    let profile = Profile::parse(text, "scatter").unwrap();
+    let layout = squares(10, 10, [400.0, 0.0], [0.0, 400.0]);
+    let (_, answer) = quoted(&layout, &terms(&profile));
+    let hours = answer.quote.fractures.tile.as_ref().unwrap().hours.unwrap();
+    let density = 100.0 * 200.0 * 200.0 / (3800.0 * 3800.0);
+    let total = |eta: f64| {
+        let dose = (1.0 + eta) / (1.0 + 2.0 * eta * density);
+        100.0 * (dose * 62.5e-9 + 120e-9) / 3600.0
+    };
+    for (found, eta) in [
+        (hours.low_h, 0.5),
+        (hours.total_h, 0.6),
+        (hours.high_h, 0.7),
+    ] {
+        let expected = total(eta);
+        assert!(
+            (found - expected).abs() < 1e-9 * expected,
+            "{found}, expected {expected}"
+        );
+    }
+    let mut moved = answer.quote.sensitivity.iter();
+    let moved = moved.find(|s| s.key == "backscatter[0].eta").unwrap();
+    for (found, eta) in [(moved.at_lower_h, 0.54), (moved.at_upper_h, 0.66)] {
+        let expected = total(eta);
+        assert!(
+            (found - expected).abs() < 1e-9 * expected,
+            "{found}, expected {expected}"
+        );
+    }
+}

@@ -66,9 +66,16 @@ pub(super) struct Written<'a> {
     /// By clip and figure; `None` where there is no fracture.
     by_figure: Vec<Vec<Option<Vec<Placed<'a>>>>>,
     by_clip: Vec<Vec<Placed<'a>>>,
-    /// By clip: around it, and its share of the field.
-    frames: Vec<(Rect, Option<f64>)>,
+    /// By clip.
+    frames: Vec<Frame>,
     field: Option<Field>,
+}
+
+/// Around a clip, and its share of the field.
+#[derive(Clone, Copy)]
+struct Frame {
+    around: Rect,
+    coverage: Option<f64>,
 }
 
 /// How long one fracture of all clips takes.
@@ -102,7 +109,10 @@ impl<'a> Written<'a> {
                 .collect(),
             frames: clips
                 .iter()
-                .map(|clip| (clip.mask.extent.unwrap_or(NOWHERE), clip.coverage))
+                .map(|clip| Frame {
+                    around: clip.mask.extent.unwrap_or(NOWHERE),
+                    coverage: clip.coverage,
+                })
                 .collect(),
             by_figure,
             field,
@@ -116,17 +126,13 @@ impl<'a> Written<'a> {
     }
 
     /// The shots where they stand, or as samples of the field.
-    fn of<R>(
-        &self,
-        parts: &[(&[Placed<'_>], &(Rect, Option<f64>))],
-        with: impl FnOnce(&Pattern<'_>) -> R,
-    ) -> R {
+    fn of<R>(&self, parts: &[(&[Placed<'_>], &Frame)], with: impl FnOnce(&Pattern<'_>) -> R) -> R {
         let clips: Vec<write_time::Clip<'_>> = parts
             .iter()
-            .map(|(placed, (frame, coverage))| write_time::Clip {
+            .map(|(placed, frame)| write_time::Clip {
                 placed,
-                frame: *frame,
-                coverage: coverage.unwrap_or(1.0),
+                frame: frame.around,
+                coverage: frame.coverage.unwrap_or(1.0),
             })
             .collect();
         with(&match (self.field, &clips[..]) {

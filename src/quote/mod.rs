@@ -13,6 +13,7 @@ pub mod result;
 pub mod shots;
 pub mod summary;
 pub mod sweep;
+mod uncertain;
 mod verdict;
 
 use std::sync::Arc;
@@ -318,8 +319,10 @@ pub fn quote_again(
             .collect();
         let mut summary = summary::of_parts(&parts, setup.limits.sliver);
         let lists: Vec<&MadeMask> = judged.iter().map(AsRef::as_ref).collect();
-        let timed = Written::new(clips, &lists, correction, terms.field).time(terms.profile)?;
-        summary.hours = Some(timed.hours);
+        let written = Written::new(clips, &lists, correction, terms.field);
+        let timed = written.time(terms.profile)?;
+        let hours = uncertain::widened(timed.hours, &written, terms.profile, correction)?;
+        summary.hours = Some(hours);
         *fractures.slot(method) = Some(summary);
         *stripes.slot(method) = Some(hours::rows(&timed.time));
         for (all, of_clip) in seconds.iter_mut().zip(timed.seconds) {
@@ -337,7 +340,7 @@ pub fn quote_again(
         Written::new(clips, &lists, correction, terms.field)
     });
     let sensitivity = match &recommended {
-        Some(written) => written.sensitivity(terms.profile)?,
+        Some(written) => uncertain::sensitivity(written, terms.profile, correction)?,
         None => Vec::new(),
     };
     let raster = match terms.raster {

@@ -59,6 +59,9 @@ pub fn text(comparison: &Comparison, most: usize) -> String {
     out
 }
 
+/// Hours of one cause.
+type Part = fn(&Hours) -> f64;
+
 fn hours(comparison: &Comparison) -> String {
     let [before, after] = &comparison.hours;
     let names = comparison
@@ -70,7 +73,7 @@ fn hours(comparison: &Comparison) -> String {
         format!("after ({})", names[1]),
         "change".to_owned(),
     ]);
-    let parts: [(&str, fn(&Hours) -> f64); 6] = [
+    let parts: [(&str, Part); 6] = [
         ("flash", |h| h.flash_h),
         ("settle", |h| h.settle_h),
         ("sub-field", |h| h.subfield_h),

@@ -1,6 +1,6 @@
 //! `report.html`: the quote as one page, with its pictures beside it and links to its files.
 
-use crate::number::brief;
+use crate::number::given;
 use crate::quote::result::{Flag, Quote};
 
 use super::table::{self, TextOptions};
@@ -61,7 +61,7 @@ fn sensitivity(quote: &Quote) -> String {
         out += &format!(
             "<tr><td>{}</td><td>{}</td><td>{}</td><td>{}</td></tr>\n",
             escaped(&s.key),
-            brief(s.value),
+            given(s.value),
             table::significant(s.at_lower_h),
             table::significant(s.at_upper_h)
         );

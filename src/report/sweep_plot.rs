@@ -7,7 +7,7 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, Dash, FONT, MARGIN_RIGHT, palette};
-use crate::number::brief;
+use crate::number::given;
 use crate::quote::result::{Method, Sweep};
 
 /// Size of the picture, pixels.
@@ -104,8 +104,8 @@ where
         .y_desc("hours")
         .x_labels(10)
         .y_labels(9)
-        .x_label_formatter(&|x| brief(*x))
-        .y_label_formatter(&|y| brief(*y))
+        .x_label_formatter(&|x| given(*x))
+        .y_label_formatter(&|y| given(*y))
         .label_style(TEXT)
         .draw()?;
     let plan = chart.plotting_area();
@@ -125,7 +125,13 @@ where
                 label.clone()
             };
             let at = EmptyElement::at((*error, *hours));
-            plan.draw(&(at + Text::new(label, (8, -18), (FONT, 14))))?;
+            // Tile and overlap are often close: one is labelled above its points, the other below.
+            let down = if line.method == Method::Overlap {
+                6
+            } else {
+                -20
+            };
+            plan.draw(&(at + Text::new(label, (8, down), (FONT, 14))))?;
         }
     }
     Ok(())
@@ -150,7 +156,7 @@ fn lines(sweep: &Sweep) -> Vec<Line> {
     let mut lines: Vec<(Vec<f64>, Line)> = Vec::new();
     for point in &sweep.points {
         let (first, others) = match point.values.split_first() {
-            Some((first, others)) => (brief(*first), others.to_vec()),
+            Some((first, others)) => (given(*first), others.to_vec()),
             None => (String::new(), Vec::new()),
         };
         for (method, fracture) in point.fractures.iter() {
@@ -158,7 +164,7 @@ fn lines(sweep: &Sweep) -> Vec<Line> {
             let Some((error, hours)) = place else {
                 continue;
             };
-            let named: Vec<String> = others.iter().map(|x| brief(*x)).collect();
+            let named: Vec<String> = others.iter().map(|x| given(*x)).collect();
             let at = lines
                 .iter()
                 .position(|(known, line)| *known == others && line.method == method);

@@ -2,7 +2,7 @@
 
 use comfy_table::{CellAlignment, Table, presets};
 
-use crate::number::{UNMEASURED, brief, grouped, significant};
+use crate::number::{UNMEASURED, brief, given, grouped, significant};
 use crate::quote::result::{Fits, Sweep};
 
 /// The whole sweep, ending in a newline.
@@ -28,7 +28,7 @@ pub fn text(sweep: &Sweep) -> String {
     for point in &sweep.points {
         for (method, fracture) in point.fractures.iter() {
             let Some(f) = fracture else { continue };
-            let mut row: Vec<String> = point.values.iter().map(|x| brief(*x)).collect();
+            let mut row: Vec<String> = point.values.iter().map(|x| given(*x)).collect();
             let hours = f.hours;
             row.extend([
                 method.name().to_owned(),

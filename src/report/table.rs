@@ -410,7 +410,7 @@ fn beside(raster: &RasterLine, recommended: Option<Method>) -> String {
             );
         }
         (None, Some(_)) => {
-            let _ = write!(words, "; it is the faster whatever the number of shots");
+            let _ = write!(words, "; it takes no longer whatever the number of shots");
         }
         _ => {}
     }
@@ -446,7 +446,7 @@ fn moves(sensitivity: &[Sensitivity]) -> Option<String> {
         format!(
             "{} (now {}): {} to {} h",
             s.key,
-            brief(s.value),
+            number::given(s.value),
             significant(s.at_lower_h),
             significant(s.at_upper_h)
         )
