@@ -422,3 +422,40 @@ backscatter = [{ eta = { value = 0.6, plus_minus = 0.1 }, beta_nm = 10000 }]
         );
     }
 }
+
+/// By hand, of 100 squares of 200 nm at 25 µC/cm² in two passes: 12.5 µC/cm² a pass is two flashes of 10 at most, each of 3.125 to
+/// 31.25 ns; 100 nA at 400 A/cm² are 25 000 nm², so a square is two parts.
+#[test]
+fn flashes_beyond_one_a_shot_are_counted_by_cause() {
+    let layout = squares(10, 10, [400.0, 0.0], [0.0, 400.0]);
+    let flashes = |numbers: &[(&str, f64)]| {
+        let mut profile = plain();
+        profile.set_all(numbers.iter().copied()).unwrap();
+        let (_, answer) = quoted(&layout, &terms(&profile));
+        let hours = answer.quote.fractures.tile.unwrap().hours.unwrap();
+        let more = hours.more_flashes;
+        [
+            hours.flashes,
+            more.border,
+            more.beam_current,
+            more.dose,
+            hours.too_short,
+        ]
+        .map(|n| n.0)
+    };
+    assert_eq!(flashes(&[]), [200, 0, 0, 0, 0]);
+    assert_eq!(
+        flashes(&[("greatest_flash_uc_cm2", 10.0)]),
+        [400, 0, 0, 200, 0]
+    );
+    assert_eq!(flashes(&[("greatest_beam_na", 100.0)]), [400, 0, 200, 0, 0]);
+    assert_eq!(flashes(&[("shortest_flash_ns", 31.0)]), [200, 0, 0, 0, 0]);
+    assert_eq!(flashes(&[("shortest_flash_ns", 32.0)]), [200, 0, 0, 0, 200]);
+    // Borders every 3 µm: the one at 3000 nm runs between squares that end at 3000 and begin at 3200; at 2.9 µm it cuts the row, and
+    // the column, from 2800 to 3000: 9 + 9 squares in two, one in four, in each pass.
+    assert_eq!(flashes(&[("stripe_um", 3.0), ("subfield_um", 3.0)])[1], 0);
+    assert_eq!(
+        flashes(&[("stripe_um", 2.9), ("subfield_um", 2.9)])[1],
+        2 * (9 + 9 + 3)
+    );
+}

@@ -241,10 +241,6 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
 
 fn hours(total_h: f64) -> Hours {
     Hours {
-        shots_written: Count(0),
-        flashes: Count(0),
-        stripes: 0,
-        stage_bound_stripes: 0,
         total_h,
         flash_h: 0.5 * total_h,
         settle_h: 0.25 * total_h,
@@ -253,6 +249,7 @@ fn hours(total_h: f64) -> Hours {
         overhead_h: 0.125 * total_h,
         low_h: total_h,
         high_h: total_h,
+        ..Hours::default()
     }
 }
 

@@ -12,7 +12,7 @@ use crate::write_time::{
 };
 
 use super::made::{Made, MadeMask};
-use super::result::{Count, Hours, RasterLine, Sensitivity, StripeRow};
+use super::result::{Count, Hours, MoreFlashes, RasterLine, Sensitivity, StripeRow};
 use super::{Clip, QuoteError, Terms};
 
 /// One dose for the whole mask that keeps a wide edge where it was drawn.
@@ -216,6 +216,12 @@ pub fn of_time(time: &WriteTime) -> Hours {
     Hours {
         shots_written: Count(time.shots),
         flashes: Count(time.flashes),
+        more_flashes: MoreFlashes {
+            border: Count(time.cuts.border),
+            beam_current: Count(time.cuts.beam),
+            dose: Count(time.cuts.repeated),
+        },
+        too_short: Count(time.cuts.too_short),
         stripes: travels(time, |_| true),
         stage_bound_stripes: travels(time, |stripe| stripe.bound == Bound::Stage),
         total_h: time.total_h.0,

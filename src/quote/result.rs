@@ -297,6 +297,12 @@ pub struct Hours {
     /// Flashes over all passes: a shot is flashed more than once where a border cuts it or a limit of the writer divides it.
     #[serde(default)]
     pub flashes: Count,
+    /// Of them, those beyond one for each shot and pass, by what made them.
+    #[serde(default)]
+    pub more_flashes: MoreFlashes,
+    /// Of them, those shorter than the shortest that the writer can make: not writable in so many passes at this current.
+    #[serde(default)]
+    pub too_short: Count,
     /// Stripes over all passes …
     #[serde(default)]
     pub stripes: u64,
@@ -367,6 +373,17 @@ pub struct StripeRow {
     pub subfield_s: f64,
     /// By how much the stage takes longer than these three together; it bounds the stripe where this is not 0.
     pub stage_s: f64,
+}
+
+/// Flashes beyond one for each shot and pass, over all passes.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+pub struct MoreFlashes {
+    /// A border of a stripe or sub-field cuts a shot.
+    pub border: Count,
+    /// A shot is too large for the beam current.
+    pub beam_current: Count,
+    /// A shot needs a greater dose than one flash may give.
+    pub dose: Count,
 }
 
 /// Whether the mask can be written in the slot.

@@ -53,8 +53,8 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     if let Some(intervals) = intervals(quote) {
         out.line(&intervals);
     }
-    if let Some(bound) = bound(quote) {
-        out.line(&bound);
+    for line in written(quote) {
+        out.line(&line);
     }
     if let Some(first) = moves(&quote.sensitivity) {
         out.line(&first);
@@ -426,18 +426,53 @@ fn large(count: f64) -> String {
     }
 }
 
-/// In how many stripes the beam waits for the stage; `None` where nothing was recommended.
-fn bound(quote: &Quote) -> Option<String> {
-    let method = quote.recommended?;
-    let hours = quote.fractures.get(method)?.hours?;
-    (hours.stripes > 0).then(|| {
+/// How the recommended fracture is written: stripes by what bounds them, flashes beyond one a shot, flashes that cannot be made.
+fn written(quote: &Quote) -> Vec<String> {
+    let Some(method) = quote.recommended else {
+        return Vec::new();
+    };
+    let hours = quote.fractures.get(method).and_then(|f| f.hours);
+    let Some(hours) = hours.filter(|hours| hours.stripes > 0) else {
+        return Vec::new();
+    };
+    let large = |count: Count| {
+        #[allow(clippy::cast_precision_loss, reason = "three digits are shown")]
+        let count = count.0 as f64;
+        large(count)
+    };
+    let mut words = format!(
+        "{}: {} stripes over all passes, of which the stage bounds {} and the beam the others; {} flashes",
+        method.name(),
+        grouped(hours.stripes.into()),
+        grouped(hours.stage_bound_stripes.into()),
+        large(hours.flashes)
+    );
+    let more = hours.more_flashes;
+    let causes = [
+        (more.border, "where a border cuts a shot"),
+        (more.beam_current, "where the beam current does not reach"),
+        (more.dose, "where one flash may not give the dose"),
+    ];
+    let causes: Vec<String> = causes
+        .into_iter()
+        .filter(|(count, _)| count.0 > 0)
+        .map(|(count, why)| format!("{} {why}", large(count)))
+        .collect();
+    if !causes.is_empty() {
+        let _ = write!(
+            words,
+            ", of which beyond one a shot and pass: {}",
+            causes.join(", ")
+        );
+    }
+    let short = (hours.too_short.0 > 0).then(|| {
         format!(
-            "{}: {} stripes over all passes, of which the stage bounds {} and the beam the others",
+            "{}: {} flashes are shorter than the shortest that the writer makes (shortest_flash_ns): fewer passes or less current",
             method.name(),
-            grouped(hours.stripes.into()),
-            grouped(hours.stage_bound_stripes.into())
+            large(hours.too_short)
         )
-    })
+    });
+    std::iter::once(words).chain(short).collect()
 }
 
 /// What moves the total most.
