@@ -9,25 +9,52 @@ use crate::units::Nm;
 use super::made::Made;
 use super::result::{Count, EdgeError, FractureSummary, Margin};
 
-/// Adds up the figures of one fracture, each at all its places. Hours are left to be filled in.
+/// The figures of one mask in one fracture.
+#[derive(Clone, Copy, Debug)]
+pub struct Part<'a> {
+    /// In their order.
+    pub figures: &'a [DistinctFigure],
+    /// Their shots and scores.
+    pub made: &'a [Result<Made, FractureError>],
+    /// How often the mask counts in the scores against other parts.
+    pub weight: u64,
+}
+
+/// Adds up the figures of one mask, each at all its places. Hours are left to be filled in.
 #[must_use]
 pub fn of_mask(
     figures: &[DistinctFigure],
     made: &[Result<Made, FractureError>],
     sliver: Nm,
 ) -> FractureSummary {
+    let part = Part {
+        figures,
+        made,
+        weight: 1,
+    };
+    of_parts(&[part], sliver)
+}
+
+/// Adds up several masks: shots once for each, scores by their weights.
+#[must_use]
+pub fn of_parts(parts: &[Part<'_>], sliver: Nm) -> FractureSummary {
     let mut fidelity = Fidelity::default();
     let (mut shots, mut distinct, mut slivers, mut failing) = (0_u128, 0_u64, 0_u128, 0_u64);
     let mut smallest: Option<Nm> = None;
     let mut peak = 0.0_f64;
-    for (figure, made) in figures.iter().zip(made) {
+    let all = parts.iter().flat_map(|part| {
+        let figures = part.figures.iter().zip(part.made);
+        figures.map(|(figure, made)| (figure, made, part.weight))
+    });
+    for (figure, made, weight) in all {
         let places = figure.place_count();
         let Ok(made) = made else {
             failing += 1;
             continue;
         };
         let list = &made.fracture.shots;
-        fidelity.merge(&made.fidelity, u64::try_from(places).unwrap_or(u64::MAX));
+        let weighed = places.saturating_mul(weight.into());
+        fidelity.merge(&made.fidelity, u64::try_from(weighed).unwrap_or(u64::MAX));
         shots = shots.saturating_add(places.saturating_mul(list.len() as u128));
         slivers = slivers.saturating_add(places.saturating_mul(list.slivers(sliver) as u128));
         distinct += list.len() as u64;
