@@ -3,13 +3,13 @@
 //! It shares with the closed form nothing but the definition: pixels hold the exact share of each shot's area, a
 //! sampled Gaussian blurs them, bicubic interpolation (Keys, IEEE Trans. ASSP 29 (1981) 1153) reads between them.
 
-use crate::blur::{Blur, THRESHOLD};
+use crate::blur::Blur;
 use crate::geom::{Point, Rect};
 use crate::target::{DoseField, Printed};
 use crate::units::{Dose, Nm};
 
-use super::contour;
 use super::density::{Density, DensityError};
+use super::{contour, spread};
 
 /// Why there is no raster.
 #[derive(Clone, Copy, Debug, PartialEq, thiserror::Error)]
@@ -110,7 +110,7 @@ fn blurred(painted: &Density, sigma: f64) -> Density {
         .collect();
     let sum = 2.0 * kernel.iter().sum::<f64>() - kernel[0];
     kernel.iter_mut().for_each(|w| *w /= sum);
-    painted.separably(&kernel)
+    spread::separably(painted, &kernel)
 }
 
 /// Weights of the four neighbours at a share of the way from the second to the third, and their derivatives.
@@ -143,10 +143,16 @@ impl Printed for Raster {
         self.local(p).1
     }
 
-    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64> {
+    fn crossing_at(
+        &self,
+        p: [f64; 2],
+        outward: [f64; 2],
+        range: f64,
+        level: f64,
+    ) -> Option<f64> {
         let along = |t: f64| {
             let (dose, g) = self.local([p[0] + t * outward[0], p[1] + t * outward[1]]);
-            (dose - THRESHOLD, g[0] * outward[0] + g[1] * outward[1])
+            (dose - level, g[0] * outward[0] + g[1] * outward[1])
         };
         contour::crossing(along, self.sigma / 4.0, range)
     }

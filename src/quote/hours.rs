@@ -3,15 +3,14 @@
 use rayon::prelude::*;
 
 use crate::expose::uniform_correction;
-use crate::fracture::FractureError;
 use crate::geom::Rect;
-use crate::mask::{DistinctFigure, Mask, Place};
+use crate::mask::Mask;
 use crate::profile::Profile;
 use crate::units::{Dose, Nm};
 use crate::write_time::{self, Field, Pattern, Placed, WriteTime, WriteTimeError};
 
 use super::QuoteError;
-use super::made::Made;
+use super::exposure::{Exposed, Portion};
 use super::result::{Count, Hours};
 
 /// The field that a clip stands for.
@@ -23,10 +22,10 @@ pub struct Share {
     pub coverage: f64,
 }
 
-/// One dose for the whole mask that keeps a wide edge where it was drawn.
+/// The dose that keeps a wide edge where it was drawn if coverage is spread evenly over the mask.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Correction {
-    /// Multiplies the dose of every shot.
+    /// For the mean coverage.
     pub dose: Dose,
     /// Backscatter ratio η, all terms and fogging together.
     pub ratio: f64,
@@ -66,19 +65,17 @@ impl Correction {
 /// As [`WriteTime::new`].
 pub fn of_mask(
     mask: &Mask,
-    made: &[Result<Made, FractureError>],
     profile: &Profile,
     share: Option<Share>,
-    correction: Correction,
+    exposed: &Exposed<'_>,
 ) -> Result<(Hours, Vec<Option<f64>>), WriteTimeError> {
     let Some(frame) = mask.extent else {
         return Ok((Hours::default(), Vec::new()));
     };
-    let by_figure: Vec<Option<Vec<Placed<'_>>>> = mask
-        .figures
+    let by_figure: Vec<Option<Vec<Placed<'_>>>> = exposed
+        .portions
         .iter()
-        .zip(made)
-        .map(|(figure, made)| Some(placed(figure, made.as_ref().ok()?, correction.dose)))
+        .map(|portions| Some(placed(portions.as_ref()?)))
         .collect();
     let all: Vec<Placed<'_>> = by_figure.iter().flatten().flatten().copied().collect();
     let pattern = pattern(&all, frame, share);
@@ -118,14 +115,14 @@ pub fn of_time(time: &WriteTime) -> Hours {
     }
 }
 
-fn placed<'a>(figure: &'a DistinctFigure, made: &'a Made, dose: Dose) -> Vec<Placed<'a>> {
-    let place = |place: &'a Place| Placed {
-        shots: &made.fracture.shots,
-        transform: place.transform,
-        repetition: &place.repetition,
-        dose,
+fn placed<'a>(portions: &'a [Portion<'_>]) -> Vec<Placed<'a>> {
+    let place = |portion: &'a Portion<'_>| Placed {
+        shots: &portion.shots,
+        transform: portion.transform,
+        repetition: &portion.repetition,
+        dose: portion.dose,
     };
-    figure.places.iter().map(place).collect()
+    portions.iter().map(place).collect()
 }
 
 /// The shots where they stand, or as a sample of the field.

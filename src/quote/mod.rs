@@ -3,6 +3,7 @@
 //! The only module that knows the order of the stages: a mask's distinct figures are fractured in three ways, each is judged
 //! on the dose that its shots and its neighbours' give, the shots are timed where they stand, and all is put side by side.
 
+pub mod exposure;
 mod flags;
 pub mod hours;
 pub mod made;
@@ -16,7 +17,7 @@ pub use made::{Made, Setup};
 pub use result::Quote;
 
 use crate::blur::{Blur, BlurError, REACH};
-use crate::expose::CorrectionError;
+use crate::expose::{CorrectionError, DensityError};
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Staircase, Tile};
 use crate::fracture::{Effort, FractureError, Fracturer};
@@ -28,6 +29,7 @@ use crate::profile::{Kind, Profile};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::WriteTimeError;
 
+use exposure::{LongRange, shot_errors};
 use result::{
     ByMethod, CAUTION, DoseCorrection, FigureFracture, FigureResult, FlagKind, Method, ProfileUsed,
     ScaledToField, Source,
@@ -62,6 +64,9 @@ pub enum QuoteError {
     /// The dose cannot be corrected.
     #[error(transparent)]
     Correction(#[from] CorrectionError),
+    /// No density map can be made.
+    #[error(transparent)]
+    Density(#[from] DensityError),
     /// The writer model refuses the pattern.
     #[error(transparent)]
     WriteTime(#[from] WriteTimeError),
@@ -207,22 +212,37 @@ pub fn quote(
         return Err(QuoteError::NoFigure);
     }
     let correction = Correction::new(mask, terms.profile, terms.share)?;
+    let background = Background {
+        ratio: correction.ratio,
+        density: correction.density,
+    };
     let settings = Settings {
-        background: Background {
-            ratio: correction.ratio,
-            density: correction.density,
-        },
+        background,
+        errors: Some(shot_errors(terms.profile, correction.dose)),
         ..Settings::new(setup.blur, setup.tolerance)
     };
+    let long_range = LongRange::new(terms.profile);
     let mut made = ByMethod::default();
     let mut fractures = ByMethod::default();
     let mut seconds = ByMethod::default();
+    let mut doses: ByMethod<Vec<Option<Dose>>> = ByMethod::default();
     for method in Method::ALL {
         let shots = made::fracture(mask, fracturer(method, terms).as_ref(), &setup, tick);
         let judged = made::judge(mask, shots, &settings, tick);
-        let mut summary = summary::of_mask(&mask.figures, &judged, setup.limits.sliver);
-        let (hours, by_figure) =
-            hours::of_mask(mask, &judged, terms.profile, terms.share, correction)?;
+        let around = terms.share.map_or(0.0, |share| {
+            share.coverage * exposure::mean_coverage(mask, &judged)
+        });
+        let exposed = long_range.expose(mask, &judged, around)?;
+        let mut summary = summary::of_mask(
+            &mask.figures,
+            &judged,
+            &exposed,
+            background,
+            setup.limits.sliver,
+        );
+        let (hours, by_figure) = hours::of_mask(mask, terms.profile, terms.share, &exposed)?;
+        let means = (0..mask.figures.len()).map(|figure| exposed.mean_dose(figure));
+        *doses.slot(method) = Some(means.collect());
         summary.hours = Some(hours);
         *fractures.slot(method) = Some(summary);
         *seconds.slot(method) = Some(by_figure);
@@ -242,8 +262,7 @@ pub fn quote(
         figure_result(
             mask,
             figure,
-            &made,
-            &seconds,
+            (&made, &seconds, &doses),
             raised.map(|flag| flag.kind).collect(),
         )
     };
@@ -321,8 +340,11 @@ fn notes(layout: &Layout, mask: &Mask, terms: &Terms<'_>) -> Vec<String> {
 fn figure_result(
     mask: &Mask,
     figure: usize,
-    made: &ByMethod<Vec<Result<Made, FractureError>>>,
-    seconds: &ByMethod<Vec<Option<f64>>>,
+    (made, seconds, doses): (
+        &ByMethod<Vec<Result<Made, FractureError>>>,
+        &ByMethod<Vec<Option<f64>>>,
+        &ByMethod<Vec<Option<Dose>>>,
+    ),
     flags: Vec<FlagKind>,
 ) -> FigureResult {
     let distinct = &mask.figures[figure];
@@ -335,6 +357,11 @@ fn figure_result(
             shots: made.fracture.shots.len() as u64,
             edge_error_nm: summary::edge_error(&scores),
             prints_within_tolerance: Some(scores.prints_within_tolerance),
+            scores: Some(scores),
+            mean_dose: doses
+                .get(method)
+                .and_then(|all| all.get(figure).copied().flatten())
+                .map(|dose| dose.0),
             seconds: seconds
                 .get(method)
                 .and_then(|all| all.get(figure).copied().flatten()),

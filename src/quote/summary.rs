@@ -1,11 +1,12 @@
 //! From scores of figures to the numbers of the whole mask.
 
 use crate::fracture::FractureError;
-use crate::judge::{self, Fidelity};
+use crate::judge::{self, Background, Fidelity};
 use crate::mask::DistinctFigure;
 use crate::shot::ShotList;
 use crate::units::Nm;
 
+use super::exposure::Exposed;
 use super::made::Made;
 use super::result::{Count, EdgeError, FractureSummary, Margin};
 
@@ -14,20 +15,22 @@ use super::result::{Count, EdgeError, FractureSummary, Margin};
 pub fn of_mask(
     figures: &[DistinctFigure],
     made: &[Result<Made, FractureError>],
+    exposed: &Exposed<'_>,
+    background: Background,
     sliver: Nm,
 ) -> FractureSummary {
     let mut fidelity = Fidelity::default();
     let (mut shots, mut distinct, mut slivers, mut failing) = (0_u128, 0_u64, 0_u128, 0_u64);
     let mut smallest: Option<Nm> = None;
     let mut peak = 0.0_f64;
-    for (figure, made) in figures.iter().zip(made) {
+    for (i, (figure, made)) in figures.iter().zip(made).enumerate() {
         let places = figure.place_count();
         let Ok(made) = made else {
             failing += 1;
             continue;
         };
         let list = &made.fracture.shots;
-        fidelity.merge(&made.fidelity, u64::try_from(places).unwrap_or(u64::MAX));
+        exposed.merge(i, &made.fidelity, background, &mut fidelity);
         shots = shots.saturating_add(places.saturating_mul(list.len() as u128));
         slivers = slivers.saturating_add(places.saturating_mul(list.slivers(sliver) as u128));
         distinct += list.len() as u64;
@@ -43,6 +46,7 @@ pub fn of_mask(
         prints_within_tolerance: Some(failing == 0),
         figures_out_of_tolerance: Some(failing),
         peak_dose: (shots > 0).then_some(peak),
+        dose_map: exposed.map,
         ..of_fidelity(&fidelity.summary())
     }
 }
@@ -64,6 +68,8 @@ pub fn of_fidelity(scores: &judge::Summary) -> FractureSummary {
             worst: scores.margin_nm_per_pct.worst,
         },
         peak_dose: None,
+        scores: Some(*scores),
+        dose_map: None,
         hours: None,
     }
 }

@@ -2,6 +2,7 @@
 //!
 //! Everything here reads the nouns and [`crate::quote::result`]; nothing computes a result.
 
+mod fidelity;
 pub mod figure_plot;
 pub mod figures_csv;
 pub mod overview_plot;
