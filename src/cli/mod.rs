@@ -10,6 +10,7 @@ mod output;
 mod pictures;
 mod profile;
 mod quote;
+mod raster;
 
 use clap::{Parser, Subcommand};
 

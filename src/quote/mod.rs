@@ -11,6 +11,7 @@ pub mod result;
 pub mod shots;
 pub mod summary;
 mod verdict;
+pub mod witness;
 
 pub use hours::{Correction, Share};
 pub use made::{Made, Setup};
