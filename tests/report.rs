@@ -244,6 +244,9 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
 fn hours(total_h: f64) -> Hours {
     Hours {
         shots_written: Count(0),
+        flashes: Count(0),
+        stripes: 0,
+        stage_bound_stripes: 0,
         total_h,
         flash_h: 0.5 * total_h,
         settle_h: 0.25 * total_h,
@@ -268,7 +271,7 @@ fn quote() -> Quote {
         ..summary(0, 0.0)
     };
     Quote {
-        source: Source {
+        sources: vec![Source {
             name: "elbow.oas".to_owned(),
             layers: vec!["1/0".to_owned()],
             minus: Vec::new(),
@@ -279,9 +282,10 @@ fn quote() -> Quote {
             background_of_nm: None,
             window_nm: None,
             extent_nm: Some([20_000.0, 8_400.0]),
+            coverage: None,
             figures_distinct: 14,
             figures_placed: Count(1_200_000),
-        },
+        }],
         profile: ProfileUsed {
             name: "example".to_owned(),
             numbers: BTreeMap::from([("base_dose_uc_cm2".to_owned(), 25.0)]),
@@ -314,8 +318,11 @@ fn quote() -> Quote {
         },
         recommended: Some(Method::Overlap),
         reason: "It is the only fracture that is written within the slot, and it prints within tolerance.".to_owned(),
+        sensitivity: Vec::new(),
+        raster: None,
         flags: vec![
             Flag {
+                clip: 1,
                 figure: 7,
                 place_nm: [1200.25, -40.0],
                 kind: FlagKind::ToleranceNotReached,
@@ -325,6 +332,7 @@ fn quote() -> Quote {
                 picture: Some("figure-7.png".to_owned()),
             },
             Flag {
+                clip: 1,
                 figure: 9,
                 place_nm: [0.0, 0.0],
                 kind: FlagKind::BrokenOutline,
@@ -469,8 +477,10 @@ fn unmeasured_is_never_zero() {
 #[test]
 fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     let figure = FigureResult {
+        clip: 1,
         figure: 3,
         place_nm: [12.5, -4.0],
+        fingerprint: "00112233445566ff".to_owned(),
         places: Count(40),
         outline_nm: 812.25,
         vertices: 96,
@@ -497,7 +507,7 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     figures_csv::write(&mut out, [&figure]).unwrap();
     assert_eq!(
         String::from_utf8(out).unwrap(),
-        "figure,x_nm,y_nm,places,outline_nm,vertices,shape,\
+        "clip,figure,x_nm,y_nm,fingerprint,places,outline_nm,vertices,shape,\
          staircase_shots,staircase_edge_error_mean_nm,staircase_edge_error_p95_nm,staircase_edge_error_worst_nm,staircase_prints_within_tolerance,\
          staircase_corner_error_worst_nm,staircase_margin_median_nm_per_pct,staircase_margin_worst_nm_per_pct,staircase_edge_sd_median_nm,staircase_edge_sd_worst_nm,staircase_narrowest_drawn_nm,staircase_narrowest_printed_nm,staircase_printed_area_nm2,staircase_mean_dose,staircase_seconds,\
          tile_shots,tile_edge_error_mean_nm,tile_edge_error_p95_nm,tile_edge_error_worst_nm,tile_prints_within_tolerance,\
@@ -505,7 +515,7 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
          overlap_shots,overlap_edge_error_mean_nm,overlap_edge_error_p95_nm,overlap_edge_error_worst_nm,overlap_prints_within_tolerance,\
          overlap_corner_error_worst_nm,overlap_margin_median_nm_per_pct,overlap_margin_worst_nm_per_pct,overlap_edge_sd_median_nm,overlap_edge_sd_worst_nm,overlap_narrowest_drawn_nm,overlap_narrowest_printed_nm,overlap_printed_area_nm2,overlap_mean_dose,overlap_seconds,\
          flags\n\
-         3,12.5,-4,40,812.25,96,curved,,,,,,,,,,,,,,,,12,-0.5,1.5,,true,,,,,,,,,1.0625,0.25,,,,,,,,,,,,,,,,broken_outline shot_limits_not_met\n"
+         1,3,12.5,-4,00112233445566ff,40,812.25,96,curved,,,,,,,,,,,,,,,,12,-0.5,1.5,,true,,,,,,,,,1.0625,0.25,,,,,,,,,,,,,,,,broken_outline shot_limits_not_met\n"
     );
 }
 

@@ -40,6 +40,14 @@ pub enum CliError {
     /// The profile cannot be used.
     #[error(transparent)]
     Profile(#[from] ProfileErrors),
+    /// A job file cannot be used.
+    #[error("{place}: {message}")]
+    Job {
+        /// File and line.
+        place: String,
+        /// Found and expected.
+        message: String,
+    },
     /// Numbers that contradict each other.
     #[error("{0}")]
     Arguments(String),

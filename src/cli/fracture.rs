@@ -6,7 +6,6 @@ use std::path::PathBuf;
 use clap::{Args, ValueEnum};
 use serde::Serialize;
 
-use crate::blur::Blur;
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Prefer, Staircase, Tile};
 use crate::fracture::{FractureError, Fracturer};
@@ -15,12 +14,13 @@ use crate::mask::Mask;
 use crate::quote::exposure::Exposed;
 use crate::quote::made::{self, Made};
 use crate::quote::result::{Count, FractureSummary};
-use crate::quote::{Chosen, Setup, summary};
+use crate::quote::{Setup, summary};
 use crate::report::progress::Progress;
 use crate::report::shots_csv::{Rows, ShotWriter};
 use crate::units::Nm;
 
-use super::args::{EffortArg, LayoutArgs, LimitArgs, mask, positive, stray};
+use super::args::SetupArgs;
+use super::values::{EffortArg, stray};
 use crate::report::table::{grouped, significant};
 
 use super::output::{aligned, create, file_error, print, print_json, scores};
@@ -36,18 +36,10 @@ use super::{CliError, Outcome};
   shotwright fracture sample-masks/array-block.gds --method tile --exact --sigma-nm 12 -o -")]
 pub(super) struct FractureArgs {
     #[command(flatten)]
-    layout: LayoutArgs,
+    setup: SetupArgs,
     /// How to fracture.
     #[arg(long, value_enum)]
     method: MethodArg,
-    /// Standard deviation of the blur, nm.
-    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
-    sigma_nm: f64,
-    /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
-    tolerance_nm: f64,
-    #[command(flatten)]
-    limits: LimitArgs,
     /// How far the plain staircase may stray from the outline, nm. Default: the tolerance.
     #[arg(long, value_name = "NM", value_parser = stray, allow_negative_numbers = true)]
     within_nm: Option<f64>,
@@ -121,13 +113,8 @@ struct Failing {
 const MOST_TOLD: usize = 20;
 
 pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
-    let setup = Setup {
-        blur: Blur::new(Nm(args.sigma_nm))
-            .map_err(|error| CliError::Arguments(format!("--sigma-nm: {error}")))?,
-        tolerance: Nm(args.tolerance_nm),
-        limits: args.limits.limits()?,
-    };
-    let options = args.layout.options()?;
+    let plan = args.setup.plan()?;
+    let setup = plan.setup;
     if args.bound && !matches!(args.method, MethodArg::Overlap) {
         return Err(CliError::Arguments(
             "--bound is for --method overlap".to_owned(),
@@ -148,14 +135,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         .filter(|_| !to_stdout)
         .map(|path| Ok::<_, CliError>((path, create(path)?)))
         .transpose()?;
-    let layout = args.layout.open()?;
-    let name = args.layout.file();
-    let chosen = Chosen {
-        name: &name,
-        layout: &layout,
-        options: &options,
-    };
-    let mask = mask(&chosen, &setup)?;
+    let mask = args.setup.mask(&plan)?;
     let bar = Progress::new("figures", 2 * mask.figures.len() as u64);
     let tick = || bar.inc();
     let shots = made::fracture(&mask, args.fracturer().as_ref(), &setup, &tick);
@@ -208,7 +188,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     if answer.shots_beyond_limits.0 > 0 {
         eprintln!(
             "{} shots have a side outside {} to {} nm",
-            answer.shots_beyond_limits, args.limits.min_side_nm, args.limits.max_side_nm
+            answer.shots_beyond_limits, setup.limits.least_side.0, setup.limits.greatest_side.0
         );
     }
     if args.json {
@@ -230,7 +210,7 @@ impl FractureArgs {
         let effort = self.effort.into();
         match self.method {
             MethodArg::Staircase => Box::new(Staircase {
-                within: Nm(self.within_nm.unwrap_or(self.tolerance_nm)),
+                within: Nm(self.within_nm.unwrap_or(self.setup.tolerance_nm)),
             }),
             MethodArg::Tile => Box::new(Tile {
                 effort,

@@ -18,8 +18,8 @@ use crate::shot::{Shot, ShotList};
 use crate::target::ShotErrors;
 use crate::units::{BaseDose, Dose, Nm};
 
-use super::QuoteError;
-use super::made::Made;
+use super::{Clip, QuoteError};
+use super::made::{Made, MadeMask};
 use super::result::DoseMap;
 
 /// Doses nearer than this share of each other are one: a thousandth moves an edge by a tenth of its margin.
@@ -93,6 +93,27 @@ impl LongRange {
         let (a, b, c) = (w * h, w + h, 1.0 - MOST_CELLS);
         let inverse = (-b + (b * b - 4.0 * a * c).sqrt()) / (2.0 * a);
         Some(Nm(fine.max(1.0 / inverse)))
+    }
+
+    /// The doses of one fracture of all clips. Around a clip that stands for part of a field lies the mean of the field, around a
+    /// layout that stands for itself bare mask.
+    ///
+    /// # Errors
+    /// As [`LongRange::expose`].
+    pub(super) fn expose_clips<'a>(
+        &self,
+        clips: &[Clip<'a>],
+        made: &[&'a MadeMask],
+    ) -> Result<Vec<Exposed<'a>>, QuoteError> {
+        let all = || clips.iter().zip(made);
+        let of_field = all().map(|(clip, made)| {
+            let share = clip.coverage.unwrap_or(0.0);
+            share * mean_coverage(clip.mask, made)
+        });
+        let around: f64 = of_field.sum();
+        all()
+            .map(|(clip, made)| self.expose(clip.mask, made, around))
+            .collect()
     }
 
     /// The doses of one fracture. `surroundings` is the coverage beyond the mask's extent, written at the dose that suits it.
@@ -252,17 +273,18 @@ impl<'a> Exposed<'a> {
         }
     }
 
-    /// Puts the score of a figure in, once for each place, with the margins of its dose there; it was judged over `background`.
+    /// Puts the score of a figure in, once for each place times its weight, with the margins of its dose there; it was judged over this
+    /// background.
     pub(super) fn merge(
         &self,
         figure: usize,
-        score: &Fidelity,
-        background: Background,
+        (score, background, weight): (&Fidelity, Background, u64),
         all: &mut Fidelity,
     ) {
         let portions = self.portions.get(figure).and_then(Option::as_ref);
         for portion in portions.into_iter().flatten() {
-            let places = u64::try_from(portion.count()).unwrap_or(u64::MAX);
+            let places = portion.count().saturating_mul(weight.into());
+            let places = u64::try_from(places).unwrap_or(u64::MAX);
             let here = match self.map {
                 Some(_) => Background::of_dose(background.ratio, portion.mean),
                 None => background,

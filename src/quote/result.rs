@@ -2,7 +2,9 @@
 //!
 //! Units are in the names (`_nm`, `_h`, `_s`, `_nm_per_pct`). What was not measured is `None` (`null` in JSON), never 0.
 
+mod comparison;
 mod exposure;
+mod sweep;
 
 use std::collections::BTreeMap;
 use std::fmt;
@@ -10,6 +12,8 @@ use std::fmt;
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
 
+pub use comparison::{Changed, Comparison, FigureChange, FigureShare, ShotShare, TimeChange};
+pub use sweep::{Sweep, SweepPoint};
 pub use crate::judge::{CHANGES, Narrowest, Quantiles, Summary as Scores, ThroughDose};
 pub use exposure::DoseMap;
 
@@ -66,15 +70,15 @@ impl<'de> Deserialize<'de> for Count {
 /// A whole quote.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Quote {
-    /// The layout read.
-    pub source: Source,
+    /// The layouts read: one, or the clips that stand for a field.
+    pub sources: Vec<Source>,
     /// The profile, with the numbers used.
     pub profile: ProfileUsed,
     /// Tolerance on the edge error away from corners.
     pub tolerance_nm: f64,
     /// Standard deviation of the blur.
     pub sigma_nm: f64,
-    /// The field that the clip stands for; `None` for the clip alone.
+    /// The field that the clips stand for; `None` for the layout alone.
     pub scaled_to_field: Option<ScaledToField>,
     /// The dose of the mean coverage.
     pub dose_correction: DoseCorrection,
@@ -88,6 +92,12 @@ pub struct Quote {
     pub recommended: Option<Method>,
     /// Why, in one sentence.
     pub reason: String,
+    /// What moves the total of the recommended fracture, most first.
+    #[serde(default)]
+    pub sensitivity: Vec<Sensitivity>,
+    /// A raster multi-beam writer beside it; `None` if not asked for.
+    #[serde(default)]
+    pub raster: Option<RasterLine>,
     /// Figures to look at or to send back, worst first.
     pub flags: Vec<Flag>,
     /// [`CAUTION`].
@@ -117,6 +127,8 @@ pub struct Source {
     pub window_nm: Option<[f64; 4]>,
     /// Width and height around all figures at mask scale; `None` for an empty mask.
     pub extent_nm: Option<[f64; 2]>,
+    /// Share of the field filled with copies of it, 0 to 1; `None` where it stands for itself.
+    pub coverage: Option<f64>,
     /// Figures that differ, each counted once.
     pub figures_distinct: u64,
     /// Figures at all their places.
@@ -132,14 +144,14 @@ pub struct ProfileUsed {
     pub numbers: BTreeMap<String, f64>,
 }
 
-/// The field that a clip stands for.
+/// The field that clips stand for.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct ScaledToField {
     /// Width of the field.
     pub width_mm: f64,
     /// Height of the field.
     pub height_mm: f64,
-    /// Share of the field filled with copies of the clip, 0 to 1.
+    /// Share of the field filled with copies of the clips, 0 to 1.
     pub coverage: f64,
 }
 
@@ -288,9 +300,18 @@ pub struct Margin {
 /// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Hours {
-    /// Shots that they are for, cuts at borders included: those of the whole field where a clip stands for one.
+    /// Shots of one pass that they are for: those of the whole field where clips stand for one.
     #[serde(default)]
     pub shots_written: Count,
+    /// Flashes over all passes: a shot is flashed more than once where a border cuts it or a limit of the writer divides it.
+    #[serde(default)]
+    pub flashes: Count,
+    /// Stripes over all passes …
+    #[serde(default)]
+    pub stripes: u64,
+    /// … and those of them in which the beam waits for the stage.
+    #[serde(default)]
+    pub stage_bound_stripes: u64,
     /// All together.
     pub total_h: f64,
     /// Beam on.
@@ -307,6 +328,54 @@ pub struct Hours {
     pub low_h: f64,
     /// Upper end of the interval of the total; `total_h` if exact.
     pub high_h: f64,
+}
+
+/// How one number of the profile moves the total when it alone changes by ±10 % (a count by ±1).
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Sensitivity {
+    /// Its key.
+    pub key: String,
+    /// As the profile has it.
+    pub value: f64,
+    /// Total with the number at its lower value.
+    pub at_lower_h: f64,
+    /// Total with the number at its upper value.
+    pub at_upper_h: f64,
+}
+
+/// A raster multi-beam writer over the same field at the same base dose: its hours do not depend on the pattern.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct RasterLine {
+    /// Its profile.
+    pub profile: String,
+    /// Its hours.
+    pub hours: Hours,
+    /// Flashes of one pass at which the shaped-beam writer takes as long, flashed as the recommended fracture is on average;
+    /// `None` where it takes longer without any flash, or nothing is recommended.
+    pub tie_flashes: Option<Count>,
+    /// Flashes of one pass of the recommended fracture.
+    pub flashes: Option<Count>,
+}
+
+/// Consecutive stripes that are alike, in passes that are alike: a line of `stripes.csv`. Times are of one stripe in one pass.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct StripeRow {
+    /// In how many passes they are written so.
+    pub passes: u32,
+    /// First of these stripes, counted upward from 0.
+    pub stripe: u64,
+    /// How many.
+    pub count: u64,
+    /// Flashes.
+    pub flashes: Count,
+    /// Flashing.
+    pub flash_s: f64,
+    /// Settling.
+    pub settle_s: f64,
+    /// Moving from sub-field to sub-field.
+    pub subfield_s: f64,
+    /// By how much the stage takes longer than these three together; it bounds the stripe where this is not 0.
+    pub stage_s: f64,
 }
 
 /// Whether the mask can be written in the slot.
@@ -368,7 +437,9 @@ impl FlagKind {
 /// A figure to look at or to send back.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Flag {
-    /// Number of the distinct figure.
+    /// The layout it is of, counted from 1 in the order of the sources.
+    pub clip: u64,
+    /// Number of the distinct figure in it.
     pub figure: u64,
     /// Where it shows, mask coordinates.
     pub place_nm: [f64; 2],
@@ -384,13 +455,31 @@ pub struct Flag {
     pub picture: Option<String>,
 }
 
+impl Hours {
+    /// Whether they fit so many hours: by the upper end of the interval.
+    #[must_use]
+    pub fn fits(&self, slot_h: f64) -> Fits {
+        if self.high_h <= slot_h {
+            Fits::Yes
+        } else if self.low_h > slot_h {
+            Fits::No
+        } else {
+            Fits::CannotSay
+        }
+    }
+}
+
 /// One distinct figure: a line of `figures.csv`.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct FigureResult {
-    /// Its number.
+    /// The layout it is of, counted from 1 in the order of the sources.
+    pub clip: u64,
+    /// Its number there.
     pub figure: u64,
     /// Lower-left corner of its bounds at its first place, mask coordinates.
     pub place_nm: [f64; 2],
+    /// Hash of its outline in its own frame, 16 hexadecimal digits: equal figures have equal ones, in other layouts too.
+    pub fingerprint: String,
     /// At how many places it stands.
     pub places: Count,
     /// Length of all its rings.

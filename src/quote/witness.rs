@@ -4,6 +4,7 @@ use rayon::prelude::*;
 
 use crate::blur::REACH;
 use crate::expose::{Exposure, Raster, RasterError};
+use crate::geom::Transform;
 use crate::judge::{self, Fidelity, Settings, Summary};
 use crate::mask::{Mask, Standings};
 use crate::shot::ShotList;
@@ -55,7 +56,7 @@ pub fn witness(
     let placed = mask
         .extent
         .map_or_else(Vec::new, |extent| standings.touching(extent));
-    let one = |&(figure, transform): &_| {
+    let one = |&(figure, transform): &(usize, Transform)| {
         let own = mask.figures[figure].figure.transformed(transform);
         let window = own.bounds().grown(reach);
         let context = context(mask, &standings, (figure, transform), settings);

@@ -5,15 +5,14 @@ use std::fmt::Write as _;
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
 use super::fidelity;
-use crate::quote::result::{Count, Flag, FractureSummary, Method, Quote, Source};
+use crate::number::{self, UNMEASURED, brief};
+use crate::quote::result::{
+    Count, Flag, FractureSummary, Hours, Method, Quote, RasterLine, Sensitivity, Source,
+};
 
-/// Shown where nothing was measured.
-const UNMEASURED: &str = "–";
 /// Below this width, or where the wide table would not fit, measures run down and fractures across.
 const NARROW: usize = 100;
 const WIDEST: usize = 120;
-/// Space between digits of a group: thin, so that it reads as one number and never breaks.
-const GROUP: char = '\u{202f}';
 
 /// How much of a quote to write and how wide.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -53,15 +52,24 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     out.line(
         "staircase: the plain geometric one, as a flow without simulation writes it; the baseline",
     );
+    if let Some(raster) = &quote.raster {
+        out.line(&beside(raster, quote.recommended));
+    }
     out.line(&prints(quote));
     if let Some(intervals) = intervals(quote) {
         out.line(&intervals);
+    }
+    if let Some(bound) = bound(quote) {
+        out.line(&bound);
+    }
+    if let Some(first) = moves(&quote.sensitivity) {
+        out.line(&first);
     }
     out.blank();
     out.paragraph(&quote.verdict.sentence, "");
     let order = quote.recommended.map_or("none", Method::name);
     out.paragraph(&format!("Recommended: {order}. {}", quote.reason), "");
-    flags(&quote.flags, options.flags, &mut out);
+    flags(quote, options.flags, &mut out);
     out.blank();
     for note in &quote.notes {
         out.line(&format!("note: {note}"));
@@ -70,26 +78,39 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     out.text
 }
 
+pub use crate::number::significant;
+pub(super) use crate::number::trimmed;
+
 fn heading(quote: &Quote, out: &mut Text) {
-    let s = &quote.source;
-    let extent = s.extent_nm.map_or_else(
-        || "empty".to_owned(),
-        |[w, h]| {
-            let (unit, name) = unit(w.max(h));
-            format!("{} × {} {name}", trimmed(w / unit), trimmed(h / unit))
-        },
-    );
-    out.paragraph(
-        &format!(
-            "{}, layer {}{}: {extent}, {} distinct figures at {} places",
-            s.name,
-            s.layers.join(" + "),
-            transfer(s),
-            grouped(s.figures_distinct.into()),
-            grouped(s.figures_placed)
-        ),
-        "",
-    );
+    for (number, s) in (1..).zip(&quote.sources) {
+        let extent = s.extent_nm.map_or_else(
+            || "empty".to_owned(),
+            |[w, h]| {
+                let (unit, name) = unit(w.max(h));
+                format!("{} × {} {name}", trimmed(w / unit), trimmed(h / unit))
+            },
+        );
+        let (clip, share) = if quote.sources.len() > 1 {
+            let percent = 100.0 * s.coverage.unwrap_or(0.0);
+            (
+                format!("clip {number}: "),
+                format!(", fills {} % of the field", brief(percent)),
+            )
+        } else {
+            (String::new(), String::new())
+        };
+        out.paragraph(
+            &format!(
+                "{clip}{}, layer {}{}: {extent}, {} distinct figures at {} places{share}",
+                s.name,
+                s.layers.join(" + "),
+                transfer(s),
+                grouped(s.figures_distinct.into()),
+                grouped(s.figures_placed)
+            ),
+            "",
+        );
+    }
     out.paragraph(
         &format!(
             "profile {}, sigma {} nm, tolerance {} nm",
@@ -117,8 +138,13 @@ fn heading(quote: &Quote, out: &mut Text) {
         &quote.scaled_to_field.map_or_else(
             || "Counts and hours are for the clip alone, not for a field.".to_owned(),
             |f| {
+                let (copies, own) = if quote.sources.len() > 1 {
+                    ("copies of the clips", "those of the clips, each once")
+                } else {
+                    ("copies of the clip", "those of one clip")
+                };
                 format!(
-                    "Hours are for a field of {} mm × {} mm, of which copies of the clip fill {} %; shots and slivers are those of one clip. On the field: {}.",
+                    "Hours are for a field of {} mm × {} mm, of which {copies} fill {} %; shots and slivers are {own}. On the field: {}.",
                     f.width_mm,
                     f.height_mm,
                     significant(100.0 * f.coverage),
@@ -168,87 +194,95 @@ fn transfer(s: &Source) -> String {
 struct Measure {
     header: &'static str,
     label: &'static str,
-    value: fn(&FractureSummary) -> Option<String>,
+    value: Value,
+}
+
+/// What a measure is taken of.
+enum Value {
+    /// Shots and how they print.
+    Print(fn(&FractureSummary) -> Option<String>),
+    /// The hours, which a raster writer has too.
+    Time(fn(&Hours) -> f64),
 }
 
 const MEASURES: [Measure; 15] = [
     Measure {
         header: "\nshots\n",
         label: "shots",
-        value: |f| Some(grouped(f.shots)),
+        value: Value::Print(|f| Some(grouped(f.shots))),
     },
     Measure {
         header: "smallest\nside\nnm",
         label: "smallest side, nm",
-        value: |f| f.smallest_side_nm.map(trimmed),
+        value: Value::Print(|f| f.smallest_side_nm.map(trimmed)),
     },
     Measure {
         header: "\nslivers\n",
         label: "slivers",
-        value: |f| Some(grouped(f.slivers)),
+        value: Value::Print(|f| Some(grouped(f.slivers))),
     },
     Measure {
         header: "edge\nmean\nnm",
         label: "edge error, mean, nm",
-        value: |f| f.edge_error_nm.mean.map(|e| format!("{e:+.2}")),
+        value: Value::Print(|f| f.edge_error_nm.mean.map(|e| format!("{e:+.2}"))),
     },
     Measure {
         header: "error\n95 %\nnm",
         label: "edge error, 95 %, nm",
-        value: |f| f.edge_error_nm.p95.map(|e| format!("{e:.2}")),
+        value: Value::Print(|f| f.edge_error_nm.p95.map(|e| format!("{e:.2}"))),
     },
     Measure {
         header: "\nworst\nnm",
         label: "edge error, worst, nm",
-        value: |f| f.edge_error_nm.worst.map(|e| format!("{e:.2}")),
+        value: Value::Print(|f| f.edge_error_nm.worst.map(|e| format!("{e:.2}"))),
     },
     Measure {
         header: "out of\ntol.\n%",
         label: "outline out of tolerance, %",
-        value: |f| {
+        value: Value::Print(|f| {
             f.out_of_tolerance_share
                 .map(|s| format!("{:.2}", 100.0 * s))
-        },
+        }),
     },
     Measure {
         header: "margin\nmedian\nnm/%",
         label: "margin, median, nm/%",
-        value: |f| f.margin_nm_per_pct.median.map(|m| format!("{m:.2}")),
+        value: Value::Print(|f| f.margin_nm_per_pct.median.map(|m| format!("{m:.2}"))),
     },
     Measure {
         header: "\nworst\nnm/%",
         label: "margin, worst, nm/%",
-        value: |f| f.margin_nm_per_pct.worst.map(|m| format!("{m:.2}")),
+        value: Value::Print(|f| f.margin_nm_per_pct.worst.map(|m| format!("{m:.2}"))),
     },
     Measure {
         header: "time\nflash\nh",
         label: "time, flash, h",
-        value: |f| f.hours.map(|h| significant(h.flash_h)),
+        value: Value::Time(|h| h.flash_h),
     },
     Measure {
         header: "\nsettle\nh",
         label: "time, settle, h",
-        value: |f| f.hours.map(|h| significant(h.settle_h)),
+        value: Value::Time(|h| h.settle_h),
     },
     Measure {
         header: "sub-\nfield\nh",
         label: "time, sub-field moves, h",
-        value: |f| f.hours.map(|h| significant(h.subfield_h)),
+        value: Value::Time(|h| h.subfield_h),
     },
     Measure {
         header: "\nstage\nh",
         label: "time, stage, h",
-        value: |f| f.hours.map(|h| significant(h.stage_h)),
+        value: Value::Time(|h| h.stage_h),
     },
     Measure {
         header: "over-\nhead\nh",
         label: "time, overhead, h",
-        value: |f| f.hours.map(|h| significant(h.overhead_h)),
+        value: Value::Time(|h| h.overhead_h),
     },
     Measure {
         header: "\ntotal\nh",
         label: "time, total, h",
-        value: |f| f.hours.map(|h| significant(h.total_h)),
+        value: Value::Time(|h| h.total_h),
     },
 ];
 
@@ -256,11 +290,32 @@ const MEASURES: [Measure; 15] = [
 const GROUPS: [usize; 3] = [4, 8, 10];
 
 impl Measure {
-    fn of(&self, fracture: Option<&FractureSummary>) -> String {
-        fracture
-            .and_then(self.value)
-            .unwrap_or_else(|| UNMEASURED.to_owned())
+    fn of(&self, column: Column<'_>) -> String {
+        let value = match (&self.value, column) {
+            (Value::Print(value), Column::Fracture(Some(fracture))) => value(fracture),
+            (Value::Time(value), Column::Fracture(Some(fracture))) => {
+                fracture.hours.map(|hours| significant(value(&hours)))
+            }
+            (Value::Time(value), Column::Raster(raster)) => Some(significant(value(&raster.hours))),
+            (_, Column::Fracture(None)) | (Value::Print(_), Column::Raster(_)) => None,
+        };
+        value.unwrap_or_else(|| UNMEASURED.to_owned())
     }
+}
+
+/// What stands side by side.
+#[derive(Clone, Copy)]
+enum Column<'a> {
+    Fracture(Option<&'a FractureSummary>),
+    Raster(&'a RasterLine),
+}
+
+/// Every fracture, and the raster writer if there is one.
+fn columns(quote: &Quote) -> Vec<(&'static str, Column<'_>)> {
+    let fractures = quote.fractures.iter();
+    let fractures = fractures.map(|(method, f)| (method.name(), Column::Fracture(f)));
+    let raster = quote.raster.iter().map(|r| ("raster", Column::Raster(r)));
+    fractures.chain(raster).collect()
 }
 
 fn comparison(quote: &Quote, width: usize) -> String {
@@ -270,28 +325,27 @@ fn comparison(quote: &Quote, width: usize) -> String {
             return wide;
         }
     }
-    finished(narrow(quote), &[1, 2, 3])
+    finished(narrow(quote), &[1, 2, 3, 4])
 }
 
 fn wide(quote: &Quote) -> Table {
     let mut table = Table::new();
     table.set_header(std::iter::once("\nfracture\n").chain(MEASURES.iter().map(|m| m.header)));
-    for (method, fracture) in quote.fractures.iter() {
-        table.add_row(
-            std::iter::once(method.name().to_owned())
-                .chain(MEASURES.iter().map(|m| m.of(fracture))),
-        );
+    for (name, column) in columns(quote) {
+        table
+            .add_row(std::iter::once(name.to_owned()).chain(MEASURES.iter().map(|m| m.of(column))));
     }
     table
 }
 
 fn narrow(quote: &Quote) -> Table {
     let mut table = Table::new();
-    table.set_header(std::iter::once("").chain(Method::ALL.iter().map(|m| m.name())));
+    let columns = columns(quote);
+    table.set_header(std::iter::once("").chain(columns.iter().map(|(name, _)| *name)));
     for measure in &MEASURES {
         table.add_row(
             std::iter::once(measure.label.to_owned())
-                .chain(quote.fractures.iter().map(|(_, f)| measure.of(f))),
+                .chain(columns.iter().map(|(_, column)| measure.of(*column))),
         );
     }
     table
@@ -347,6 +401,79 @@ fn prints(quote: &Quote) -> String {
     format!("prints within tolerance: {}", words.join(", "))
 }
 
+/// The raster writer in words, and where it ties.
+fn beside(raster: &RasterLine, recommended: Option<Method>) -> String {
+    let mut words = format!(
+        "raster: a multi-beam writer (profile {}) at the same base dose, whatever the pattern",
+        raster.profile
+    );
+    let order = recommended.map_or("none", Method::name);
+    match (raster.tie_flashes, raster.flashes) {
+        (Some(tie), Some(own)) => {
+            #[allow(clippy::cast_precision_loss, reason = "three digits are shown")]
+            let [tie, own] = [tie, own].map(|n| n.0 as f64);
+            let _ = write!(
+                words,
+                "; it ties with {order} at {} flashes a pass, here {}",
+                large(tie),
+                large(own)
+            );
+        }
+        (None, Some(_)) => {
+            let _ = write!(words, "; it is the faster whatever the number of shots");
+        }
+        _ => {}
+    }
+    words
+}
+
+/// A count that may be astronomical, to three digits.
+fn large(count: f64) -> String {
+    if count >= 1e6 {
+        format!("{count:.2e}")
+    } else {
+        significant(count)
+    }
+}
+
+/// In how many stripes the beam waits for the stage; `None` where nothing was recommended.
+fn bound(quote: &Quote) -> Option<String> {
+    let method = quote.recommended?;
+    let hours = quote.fractures.get(method)?.hours?;
+    (hours.stripes > 0).then(|| {
+        format!(
+            "{}: {} stripes over all passes, of which the stage bounds {} and the beam the others",
+            method.name(),
+            grouped(hours.stripes.into()),
+            grouped(hours.stage_bound_stripes.into())
+        )
+    })
+}
+
+/// What moves the total most.
+fn moves(sensitivity: &[Sensitivity]) -> Option<String> {
+    let one = |s: &Sensitivity| {
+        format!(
+            "{} (now {}): {} to {} h",
+            s.key,
+            brief(s.value),
+            significant(s.at_lower_h),
+            significant(s.at_upper_h)
+        )
+    };
+    let (first, rest) = sensitivity.split_first()?;
+    let rest: Vec<String> = rest.iter().take(2).map(one).collect();
+    let then = if rest.is_empty() {
+        String::new()
+    } else {
+        format!("; then {}", rest.join(", "))
+    };
+    Some(format!(
+        "moves the total most, from 10 % less to 10 % more (a count by 1): {}{then}",
+        one(first)
+    ))
+}
+
 /// The intervals of the hours; `None` if all are exact.
 fn intervals(quote: &Quote) -> Option<String> {
     let words: Vec<String> = quote
@@ -362,7 +489,12 @@ fn intervals(quote: &Quote) -> Option<String> {
     (!words.is_empty()).then(|| format!("interval of the total: {}", words.join(", ")))
 }
 
-fn flags(flags: &[Flag], most: usize, out: &mut Text) {
+fn flags(quote: &Quote, most: usize, out: &mut Text) {
+    let flags = &quote.flags;
+    let clip = |flag: &Flag| match quote.sources.len() {
+        0 | 1 => String::new(),
+        _ => format!("clip {}, ", flag.clip),
+    };
     out.blank();
     if flags.is_empty() {
         out.line("No figure is flagged.");
@@ -372,8 +504,9 @@ fn flags(flags: &[Flag], most: usize, out: &mut Text) {
     out.line(&format!("Flagged: {count}"));
     for (i, flag) in flags.iter().take(most).enumerate() {
         let mut words = format!(
-            "{:>3}  figure {} at ({}, {}) nm: {}",
+            "{:>3}  {}figure {} at ({}, {}) nm: {}",
             i + 1,
+            clip(flag),
             flag.figure,
             trimmed(flag.place_nm[0]),
             trimmed(flag.place_nm[1]),
@@ -441,53 +574,10 @@ impl Text {
     }
 }
 
-/// Digits in groups of three: `1 412`.
+/// Digits of a count in groups of three: `1 412`.
 #[must_use]
 pub fn grouped(count: Count) -> String {
-    let digits = count.to_string();
-    let mut out = String::with_capacity(digits.len() * 2);
-    for (i, digit) in digits.chars().enumerate() {
-        if i > 0 && (digits.len() - i).is_multiple_of(3) {
-            out.push(GROUP);
-        }
-        out.push(digit);
-    }
-    out
-}
-
-/// Three significant digits, more only for whole numbers: `0.0412`, `3.08`, `41.5`, `412`, `1 412`; tiny as `4.1e-6`.
-#[must_use]
-pub fn significant(x: f64) -> String {
-    let size = x.abs();
-    if !x.is_finite() {
-        UNMEASURED.to_owned()
-    } else if size == 0.0 {
-        "0".to_owned()
-    } else if size < 0.000_995 {
-        format!("{x:.1e}")
-    } else if size >= 999.5 {
-        let whole = format!("{:.0}", size);
-        let text = whole.parse().map_or(whole, |n| grouped(Count(n)));
-        if x < 0.0 { format!("-{text}") } else { text }
-    } else {
-        let decimals = [
-            (99.95, 0),
-            (9.995, 1),
-            (0.9995, 2),
-            (0.09995, 3),
-            (0.009_995, 4),
-        ]
-        .iter()
-        .find(|(from, _)| size >= *from)
-        .map_or(5, |(_, d)| *d);
-        format!("{x:.decimals$}")
-    }
-}
-
-/// A coordinate or side to the picometre, without trailing zeros.
-pub(super) fn trimmed(x: f64) -> String {
-    let text = format!("{x:.3}");
-    text.trim_end_matches('0').trim_end_matches('.').to_owned()
+    number::grouped(count.0)
 }
 
 /// A length in the unit that suits it.

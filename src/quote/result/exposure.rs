@@ -25,3 +25,29 @@ pub struct DoseMap {
     /// Rounds to the fixed point.
     pub rounds: u32,
 }
+
+impl DoseMap {
+    /// Of several clips together: extremes; the mean weighs them alike. `None` of none.
+    #[must_use]
+    pub fn all<'a>(maps: impl IntoIterator<Item = &'a Self>) -> Option<Self> {
+        let maps: Vec<Self> = maps.into_iter().copied().collect();
+        let mean = maps.iter().map(|m| m.mean_dose).sum::<f64>() / maps.len() as f64;
+        let both = |a: Self, b: Self| Self {
+            mesh_nm: a.mesh_nm.max(b.mesh_nm),
+            least_dose: a.least_dose.min(b.least_dose),
+            greatest_dose: a.greatest_dose.max(b.greatest_dose),
+            uncorrected_level: [
+                a.uncorrected_level[0].min(b.uncorrected_level[0]),
+                a.uncorrected_level[1].max(b.uncorrected_level[1]),
+            ],
+            level_error: a.level_error.max(b.level_error),
+            rounds: a.rounds.max(b.rounds),
+            ..a
+        };
+        let all = maps.into_iter().reduce(both)?;
+        Some(Self {
+            mean_dose: mean,
+            ..all
+        })
+    }
+}
