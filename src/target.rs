@@ -63,9 +63,14 @@ impl Edge {
             return None;
         }
         let t = (n[0] * (self.a[0] - p[0]) + n[1] * (self.a[1] - p[1])) / facing;
-        let q = [p[0] + t * direction[0] - self.a[0], p[1] + t * direction[1] - self.a[1]];
+        let q = [
+            p[0] + t * direction[0] - self.a[0],
+            p[1] + t * direction[1] - self.a[1],
+        ];
         let along = q[1] * n[0] - q[0] * n[1];
-        (-1e-9..=self.length() + 1e-9).contains(&along).then_some((t, facing))
+        (-1e-9..=self.length() + 1e-9)
+            .contains(&along)
+            .then_some((t, facing))
     }
 
     fn distance_squared(&self, p: [f64; 2]) -> f64 {
@@ -111,13 +116,7 @@ pub trait Printed: DoseField {
     }
 
     /// As [`Printed::crossing`], for the line where the dose is `level`.
-    fn crossing_at(
-        &self,
-        p: [f64; 2],
-        outward: [f64; 2],
-        range: f64,
-        level: f64,
-    ) -> Option<f64>;
+    fn crossing_at(&self, p: [f64; 2], outward: [f64; 2], range: f64, level: f64) -> Option<f64>;
 
     /// Least x, least y, greatest x, greatest y (nm) of all that is flashed; `None` where nothing is.
     fn extent(&self) -> Option<[f64; 4]>;

@@ -32,7 +32,11 @@ fn arrays_cover_what_their_copies_cover() {
         (rect(60, 40, 410, 95), Dose(1.3)),
         (rect(-1700, 500, 900, 520), Dose(0.7)),
     ];
-    let list = Repetition::List([(0, 0), (3100, 70), (-900, 8000), (20, 20)].map(|(x, y)| Point::from_nm(x, y)).into());
+    let list = Repetition::List(
+        [(0, 0), (3100, 70), (-900, 8000), (20, 20)]
+            .map(|(x, y)| Point::from_nm(x, y))
+            .into(),
+    );
     let repetitions = [
         Repetition::Once,
         lattice(17, 23, (433, 0), (0, 377)),
@@ -42,7 +46,10 @@ fn arrays_cover_what_their_copies_cover() {
         lattice(6, 8, (100, 377), (433, 0)),
         lattice(6, 5, (400, 77), (-50, 390)),
         list.clone(),
-        Repetition::nested(vec![lattice(3, 4, (211, 0), (0, 190)), lattice(5, 2, (1500, 0), (0, 4100))]),
+        Repetition::nested(vec![
+            lattice(3, 4, (211, 0), (0, 190)),
+            lattice(5, 2, (1500, 0), (0, 4100)),
+        ]),
         Repetition::nested(vec![lattice(3, 4, (211, 0), (0, 190)), list.clone()]),
         Repetition::nested(vec![list, lattice(2, 2, (900, 30), (-30, 1400))]),
     ];
@@ -60,7 +67,10 @@ fn arrays_cover_what_their_copies_cover() {
         }
         let mut total = 0.0;
         for (k, (a, b)) in counted.cells().iter().zip(copied.cells()).enumerate() {
-            assert!((a - b).abs() < 1e-12, "{repetition:?}, cell {k}: {a} against {b}");
+            assert!(
+                (a - b).abs() < 1e-12,
+                "{repetition:?}, cell {k}: {a} against {b}"
+            );
             total += a;
         }
         assert!(total > 0.0);
@@ -85,16 +95,26 @@ fn huge_arrays_are_counted() {
 fn coverage_moves_with_the_mask() {
     let at = |by: Point| {
         let mut map = Density::new(rect(0, 0, 9000, 9000).translated(by), Nm(700.0), 0.2).unwrap();
-        map.add_repeated(&[(rect(10, 10, 333, 77).translated(by), Dose(1.1))], &lattice(12, 30, (433, 0), (5, 277)));
+        map.add_repeated(
+            &[(rect(10, 10, 333, 77).translated(by), Dose(1.1))],
+            &lattice(12, 30, (433, 0), (5, 277)),
+        );
         map.cells().to_vec()
     };
-    assert_eq!(at(Point::default()), at(Point::new(123_456_789_012_345, -98_765_432_109_877)));
+    assert_eq!(
+        at(Point::default()),
+        at(Point::new(123_456_789_012_345, -98_765_432_109_877))
+    );
 }
 
 /// A half plane spreads to the normal distribution: Φ(−x·√2/β) at x from its edge, for a radius of few cells and of many.
 #[test]
 fn an_edge_spreads_as_the_closed_form_says() {
-    for (radius, mesh) in [(10_000.0, 2500.0), (400_000.0, 2500.0), (9_000_000.0, 2500.0)] {
+    for (radius, mesh) in [
+        (10_000.0, 2500.0),
+        (400_000.0, 2500.0),
+        (9_000_000.0, 2500.0),
+    ] {
         let frame = rect(0, 0, 2_000_000, 40_000);
         // Covered left of the middle; above and below goes on what is around, so look at a map that does not depend on y.
         let mut map = Density::new(frame, Nm(mesh), 0.0).unwrap();
@@ -107,7 +127,10 @@ fn an_edge_spreads_as_the_closed_form_says() {
             let up = phi(40_000.0 - y) - phi(-y);
             let found = spread.at([x, y]);
             // The kernel ends at 6 σ.
-            assert!((found - across * up).abs() < 5e-9, "radius {radius}, x {x}: {found}");
+            assert!(
+                (found - across * up).abs() < 5e-9,
+                "radius {radius}, x {x}: {found}"
+            );
         }
     }
 }
@@ -121,7 +144,11 @@ fn surroundings_are_part_of_the_spread() {
     map.add(frame, Dose(0.4));
     for radius in [4000.0, 10_000.0, 8e6] {
         let spread = map.spread(Nm(radius));
-        assert!(spread.cells().iter().all(|c| (c - 0.4).abs() < 1e-8), "{:?}", spread.range());
+        assert!(
+            spread.cells().iter().all(|c| (c - 0.4).abs() < 1e-8),
+            "{:?}",
+            spread.range()
+        );
     }
     let c = correct(&map, &[term(0.6, 10_000.0), term(0.02, 8e6)]).unwrap();
     let uniform = 1.62 / (1.0 + 2.0 * 0.62 * 0.4);
@@ -144,10 +171,26 @@ fn correction_is_the_solution_of_the_linear_equations() {
         expected.push(v[3]);
     }
     assert_eq!(expected.len(), 24 * 18);
-    let c = correct(&map, &[term(0.6, 10_000.0), term(0.15, 3000.0), term(0.05, 60_000.0)]).unwrap();
-    assert!(c.residual < 1e-9 && c.rounds < 40, "{} after {}", c.residual, c.rounds);
+    let c = correct(
+        &map,
+        &[
+            term(0.6, 10_000.0),
+            term(0.15, 3000.0),
+            term(0.05, 60_000.0),
+        ],
+    )
+    .unwrap();
+    assert!(
+        c.residual < 1e-9 && c.rounds < 40,
+        "{} after {}",
+        c.residual,
+        c.rounds
+    );
     for (k, (found, expected)) in c.dose.cells().iter().zip(&expected).enumerate() {
-        assert!((found - expected).abs() < 1e-8, "cell {k}: {found}, solved {expected}");
+        assert!(
+            (found - expected).abs() < 1e-8,
+            "cell {k}: {found}, solved {expected}"
+        );
     }
 }
 
@@ -167,7 +210,10 @@ fn a_dense_half_and_an_empty_half_come_out_level() {
         let [x, y] = map.middle(column, 80);
         let density = 0.5 * shotwright::blur::cdf((boundary - x) * std::f64::consts::SQRT_2 / beta);
         let level = c.uncorrected.at([x, y]);
-        assert!((level - (1.0 + 2.0 * eta * density) / (1.0 + eta)).abs() < 1e-6, "x {x}: {level}");
+        assert!(
+            (level - (1.0 + 2.0 * eta * density) / (1.0 + eta)).abs() < 1e-6,
+            "x {x}: {level}"
+        );
         assert!((c.edge_level.at([x, y]) - 1.0).abs() < 1e-9);
     }
     let dose = |x: f64| c.dose.at([x, 200_000.0]);
@@ -178,14 +224,24 @@ fn a_dense_half_and_an_empty_half_come_out_level() {
 #[test]
 fn threads_change_no_bit() {
     let run = |threads: usize| {
-        let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().unwrap();
+        let pool = rayon::ThreadPoolBuilder::new()
+            .num_threads(threads)
+            .build()
+            .unwrap();
         pool.install(|| {
             let mut map = Density::new(rect(0, 0, 300_000, 200_000), Nm(1500.0), 0.1).unwrap();
             for k in 0..40 {
-                map.add(rect(7000 * k, 3000 * k, 7000 * k + 5500, 3000 * k + 60_000), Dose(1.0));
+                map.add(
+                    rect(7000 * k, 3000 * k, 7000 * k + 5500, 3000 * k + 60_000),
+                    Dose(1.0),
+                );
             }
             let c = correct(&map, &[term(0.5, 9000.0), term(0.1, 300_000.0)]).unwrap();
-            c.dose.cells().iter().map(|d| d.to_bits()).collect::<Vec<_>>()
+            c.dose
+                .cells()
+                .iter()
+                .map(|d| d.to_bits())
+                .collect::<Vec<_>>()
         })
     };
     assert_eq!(run(1), run(3));

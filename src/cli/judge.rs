@@ -15,8 +15,8 @@ use crate::report::shots_csv;
 use crate::units::Nm;
 
 use super::args::SetupArgs;
-use super::values::positive;
 use super::output::{aligned, file_error, print, print_json, scores};
+use super::values::positive;
 use super::{CliError, Outcome, raster};
 
 /// Score a shot list against a layout.

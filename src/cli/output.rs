@@ -95,8 +95,16 @@ fn further(scores: &Scores) -> Vec<(&'static str, String)> {
     line("corner zones, 95 %", scores.corner_error_nm.p95, "nm");
     line("corner zones, worst", scores.corner_error_nm.worst, "nm");
     line("margin, worst 5 %", scores.margin_nm_per_pct.p95, "nm/%");
-    line("error budget, median", scores.edge_sd_nm.median, "nm (1 sd)");
-    line("error budget, worst 5 %", scores.edge_sd_nm.p95, "nm (1 sd)");
+    line(
+        "error budget, median",
+        scores.edge_sd_nm.median,
+        "nm (1 sd)",
+    );
+    line(
+        "error budget, worst 5 %",
+        scores.edge_sd_nm.p95,
+        "nm (1 sd)",
+    );
     let labels = [
         "edge error at -10 % dose, 95 %",
         "edge error at -5 % dose, 95 %",
@@ -111,7 +119,11 @@ fn further(scores: &Scores) -> Vec<(&'static str, String)> {
         line("narrowest place, printed", narrowest.printed_nm, "nm");
     }
     let area = 100.0 * scores.printed_area_nm2 / scores.drawn_area_nm2;
-    line("area printed of that drawn", Some(area).filter(|a| a.is_finite()), "%");
+    line(
+        "area printed of that drawn",
+        Some(area).filter(|a| a.is_finite()),
+        "%",
+    );
     let pieces = scores.pieces;
     for (label, n) in [
         ("figures lost", pieces.lost),

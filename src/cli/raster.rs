@@ -62,7 +62,8 @@ impl Second {
     }
 
     pub(super) fn lines(&self) -> Vec<(&'static str, String)> {
-        let nm = |x: Option<f64>| x.map_or_else(|| "–".to_owned(), |x| format!("{} nm", significant(x)));
+        let nm =
+            |x: Option<f64>| x.map_or_else(|| "–".to_owned(), |x| format!("{} nm", significant(x)));
         let yes = if self.scores.prints_within_tolerance {
             "yes"
         } else {
@@ -81,8 +82,14 @@ impl Second {
                 "raster: edge error differs by",
                 format!("{} at most", nm(Some(self.edge_difference_nm))),
             ),
-            ("raster: edge error, 95 %", nm(self.scores.edge_error_nm.p95)),
-            ("raster: edge error, worst", nm(self.scores.edge_error_nm.worst)),
+            (
+                "raster: edge error, 95 %",
+                nm(self.scores.edge_error_nm.p95),
+            ),
+            (
+                "raster: edge error, worst",
+                nm(self.scores.edge_error_nm.worst),
+            ),
             ("raster: prints within tolerance", yes.to_owned()),
         ]
     }

@@ -30,8 +30,7 @@ pub(super) fn edge_sd(exposure: &Exposure, p: [f64; 2], errors: &ShotErrors) -> 
         let (sx, sy) = (a - b, c - d);
         gx += f.dose * (da - db) * sy;
         gy += f.dose * sx * (dc - dd);
-        by_edge += f.dose.powi(2)
-            * ((da * da + db * db) * sy * sy + (dc * dc + dd * dd) * sx * sx);
+        by_edge += f.dose.powi(2) * ((da * da + db * db) * sy * sy + (dc * dc + dd * dd) * sx * sx);
         by_dose += (f.dose * sx * sy).powi(2);
         let share = |at: f64, span: [f64; 2]| {
             table.cdf((at - span[0]) * narrow) - table.cdf((at - span[1]) * narrow)

@@ -36,7 +36,9 @@ pub enum CorrectionError {
         found: f64,
     },
     /// The surroundings alone give more than an edge may get.
-    #[error("the dose at an empty place would have to be {found}, expected over 0: the backscatter ratios are too great for this coverage")]
+    #[error(
+        "the dose at an empty place would have to be {found}, expected over 0: the backscatter ratios are too great for this coverage"
+    )]
     Negative {
         /// The least dose.
         found: f64,

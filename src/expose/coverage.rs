@@ -29,7 +29,10 @@ impl Density {
             return;
         };
         let area = |r: Rect| Nm::from_pm(r.width()).0 * Nm::from_pm(r.height()).0;
-        let charge = shots.iter().map(|(rect, dose)| dose.0 * area(*rect)).sum::<f64>();
+        let charge = shots
+            .iter()
+            .map(|(rect, dose)| dose.0 * area(*rect))
+            .sum::<f64>();
         let group = Group {
             shots,
             bounds,
@@ -99,7 +102,10 @@ impl Density {
             let k = count(first);
             (first >= 0.0 && k < cells && end <= first.floor() + 1.0).then_some(k)
         };
-        if let (Some(i), Some(j)) = (cell(from.x, to.x, self.columns), cell(from.y, to.y, self.rows)) {
+        if let (Some(i), Some(j)) = (
+            cell(from.x, to.x, self.columns),
+            cell(from.y, to.y, self.rows),
+        ) {
             let copies = |steps: &[Steps]| steps.iter().map(|s| s.0 as f64).product::<f64>();
             self.cells[j * self.columns + i] += group.share * copies(across) * copies(up);
             return;
@@ -163,7 +169,8 @@ impl Density {
             }
             for k in own {
                 let next = run.upto(k as f64 + 1.0);
-                widths[k - first] += (next.whole - border.whole) * run.width + (next.part - border.part);
+                widths[k - first] +=
+                    (next.whole - border.whole) * run.width + (next.part - border.part);
                 border = next;
             }
         }
@@ -208,7 +215,9 @@ impl Run {
                 part: n * reach.clamp(0.0, self.width),
             };
         }
-        let whole = ((reach - self.width) / self.step + 1.0).floor().clamp(0.0, n);
+        let whole = ((reach - self.width) / self.step + 1.0)
+            .floor()
+            .clamp(0.0, n);
         let begun = (reach / self.step).ceil().clamp(0.0, n);
         let mut part = 0.0;
         let mut k = whole;

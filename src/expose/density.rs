@@ -187,7 +187,8 @@ impl Density {
         let [from, to] = [window.min, window.max].map(|p| (p - self.origin).to_nm());
         let (i0, i1) = span(from[0], to[0], self.columns);
         let (j0, j1) = span(from[1], to[1], self.rows);
-        let cells = (j0..=j1).flat_map(|j| &self.cells[j * self.columns + i0..=j * self.columns + i1]);
+        let cells =
+            (j0..=j1).flat_map(|j| &self.cells[j * self.columns + i0..=j * self.columns + i1]);
         cells.fold([f64::INFINITY, f64::NEG_INFINITY], |[low, high], v| {
             [low.min(*v), high.max(*v)]
         })
@@ -240,7 +241,11 @@ impl Density {
     /// Sum of the products of cells, in their order.
     #[must_use]
     pub(super) fn dot(&self, other: &Self) -> f64 {
-        self.cells.iter().zip(&other.cells).map(|(a, b)| a * b).sum()
+        self.cells
+            .iter()
+            .zip(&other.cells)
+            .map(|(a, b)| a * b)
+            .sum()
     }
 
     /// The same mesh without its cells.

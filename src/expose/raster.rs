@@ -162,13 +162,7 @@ impl Printed for Raster {
         self.local(p).1
     }
 
-    fn crossing_at(
-        &self,
-        p: [f64; 2],
-        outward: [f64; 2],
-        range: f64,
-        level: f64,
-    ) -> Option<f64> {
+    fn crossing_at(&self, p: [f64; 2], outward: [f64; 2], range: f64, level: f64) -> Option<f64> {
         let along = |t: f64| {
             let (dose, g) = self.local([p[0] + t * outward[0], p[1] + t * outward[1]]);
             (dose - level, g[0] * outward[0] + g[1] * outward[1])

@@ -44,17 +44,21 @@ fn lines(cells: &mut [f64], length: usize, kernel: &[f64]) {
     // What lies further than a line is long touches nothing.
     let kernel = &kernel[..kernel.len().min(length)];
     if kernel.len() <= DIRECT {
-        cells.par_chunks_mut(length).for_each_init(Vec::new, |copy, line| {
-            copy.clear();
-            copy.extend_from_slice(line);
-            directly(copy, kernel, line);
-        });
+        cells
+            .par_chunks_mut(length)
+            .for_each_init(Vec::new, |copy, line| {
+                copy.clear();
+                copy.extend_from_slice(line);
+                directly(copy, kernel, line);
+            });
         return;
     }
     let transform = Transform::new(length, kernel);
     cells
         .par_chunks_mut(2 * length)
-        .for_each_init(Vec::new, |buffer, pair| transform.apply(pair, length, buffer));
+        .for_each_init(Vec::new, |buffer, pair| {
+            transform.apply(pair, length, buffer)
+        });
 }
 
 fn directly(line: &[f64], kernel: &[f64], out: &mut [f64]) {
@@ -94,7 +98,10 @@ impl Transform {
             wrapped[(padded - k) % padded].re = *weight;
         }
         forward.process(&mut wrapped);
-        #[allow(clippy::cast_precision_loss, reason = "a length of memory is below 2^53")]
+        #[allow(
+            clippy::cast_precision_loss,
+            reason = "a length of memory is below 2^53"
+        )]
         let scale = 1.0 / padded as f64;
         Self {
             forward,
@@ -160,7 +167,9 @@ mod tests {
     #[test]
     fn sums_and_transforms_agree() {
         #[allow(clippy::cast_precision_loss, reason = "small")]
-        let line: Vec<f64> = (0..301).map(|k| ((k * k * 37) % 101) as f64 / 101.0).collect();
+        let line: Vec<f64> = (0..301)
+            .map(|k| ((k * k * 37) % 101) as f64 / 101.0)
+            .collect();
         for sigma in [0.3, 2.0, 9.5, 31.0, 400.0] {
             let kernel = gaussian(sigma);
             let expected: Vec<f64> = (0..line.len())
@@ -177,10 +186,19 @@ mod tests {
             let short = &kernel[..kernel.len().min(line.len())];
             Transform::new(line.len(), short).apply(&mut pair, line.len(), &mut Vec::new());
             for (k, expected) in expected.iter().enumerate() {
-                assert!((direct[k] - expected).abs() < 1e-13, "sigma {sigma}, cell {k}");
-                assert!((pair[k] - expected).abs() < 1e-13, "sigma {sigma}, cell {k}");
+                assert!(
+                    (direct[k] - expected).abs() < 1e-13,
+                    "sigma {sigma}, cell {k}"
+                );
+                assert!(
+                    (pair[k] - expected).abs() < 1e-13,
+                    "sigma {sigma}, cell {k}"
+                );
                 let mirrored = pair[2 * line.len() - 1 - k];
-                assert!((mirrored - expected).abs() < 1e-13, "sigma {sigma}, cell {k}");
+                assert!(
+                    (mirrored - expected).abs() < 1e-13,
+                    "sigma {sigma}, cell {k}"
+                );
             }
         }
     }

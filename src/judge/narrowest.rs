@@ -87,7 +87,11 @@ fn narrowest(target: &Target, blur: Blur, everywhere: bool) -> Vec<Chord> {
             }
             if let Some(width) = target.way_out(from, inward, least + SAME) {
                 least = least.min(width);
-                chords.push(Chord { from, inward, width });
+                chords.push(Chord {
+                    from,
+                    inward,
+                    width,
+                });
             }
         }
     }

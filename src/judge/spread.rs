@@ -48,12 +48,18 @@ impl Spread {
             return self.merge(other, times);
         }
         for (value, weight) in other.bins() {
-            *self.bins.entry(whole(value * factor / self.step)).or_default() += weight * times;
+            *self
+                .bins
+                .entry(whole(value * factor / self.step))
+                .or_default() += weight * times;
         }
         self.weight += other.weight * times;
         // Rounded once for each kind of place, so still the same in any order.
         let moment = other.moment as f64 * factor;
-        #[allow(clippy::cast_possible_truncation, reason = "a float to integer cast saturates")]
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a float to integer cast saturates"
+        )]
         let moment = moment.round() as i128;
         self.moment += moment * i128::try_from(times).unwrap_or(i128::MAX);
         self.worst = self.worst.max(other.worst * factor);

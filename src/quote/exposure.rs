@@ -18,9 +18,9 @@ use crate::shot::{Shot, ShotList};
 use crate::target::ShotErrors;
 use crate::units::{BaseDose, Dose, Nm};
 
-use super::{Clip, QuoteError};
 use super::made::{Made, MadeMask};
 use super::result::DoseMap;
+use super::{Clip, QuoteError};
 
 /// Doses nearer than this share of each other are one: a thousandth moves an edge by a tenth of its margin.
 const STEP: f64 = 1e-3;
@@ -51,6 +51,21 @@ pub struct Portion<'a> {
     /// The mean of what multiplies the doses of the fracture.
     pub mean: Dose,
 }
+
+/// How densely a mask is written, and the correction of that.
+#[derive(Clone, Debug)]
+pub struct Maps {
+    /// Coverage × dose of the fracture.
+    pub coverage: Density,
+    /// The correction.
+    pub found: expose::Correction,
+}
+
+/// An empty mask.
+const NOWHERE: Rect = Rect {
+    min: Point { x: 0, y: 0 },
+    max: Point { x: 0, y: 0 },
+};
 
 /// The doses of one fracture of a mask.
 #[derive(Clone, Debug)]
@@ -130,23 +145,9 @@ impl LongRange {
             .iter()
             .map(|made| Some(&made.as_ref().ok()?.fracture.shots))
             .collect();
-        let mesh = mask.extent.and_then(|frame| Some((frame, self.mesh(frame)?)));
-        let Some((frame, mesh)) = mesh else {
+        let Some(Maps { coverage, found }) = self.maps(mask, &shots, surroundings)? else {
             return Ok(Exposed::as_fractured(mask, made));
         };
-        let around = surroundings.clamp(0.0, 1.0);
-        let mut coverage = Density::new(frame, mesh, around)?;
-        for (figure, shots) in mask.figures.iter().zip(&shots) {
-            let Some(shots) = shots else { continue };
-            for place in &figure.places {
-                let placed: Vec<(Rect, Dose)> = shots
-                    .rects()
-                    .map(|(rect, dose)| (place.transform.apply_rect(rect), dose))
-                    .collect();
-                coverage.add_repeated(&placed, &place.repetition);
-            }
-        }
-        let found = expose::correct(&coverage, &self.terms)?;
         let split = |(figure, shots): (&'a DistinctFigure, &Option<&'a ShotList>)| {
             let shots = (*shots)?;
             let mut portions = Vec::new();
@@ -164,17 +165,46 @@ impl LongRange {
             }
             Some(portions)
         };
-        let portions: Vec<Option<Vec<Portion<'a>>>> = mask
-            .figures
-            .par_iter()
-            .zip(&shots)
-            .map(split)
-            .collect();
+        let portions: Vec<Option<Vec<Portion<'a>>>> =
+            mask.figures.par_iter().zip(&shots).map(split).collect();
+        let frame = mask.extent.unwrap_or(NOWHERE);
         let map = self.summary(frame, &coverage, &found, &portions)?;
         Ok(Exposed {
             portions,
             map: Some(map),
         })
+    }
+
+    /// The coverage of placed shots and the correction of it; `None` of an empty mask or without a long range. `surroundings` is the coverage
+    /// beyond the mask's extent.
+    ///
+    /// # Errors
+    /// When the profile's terms are beyond what the correction takes.
+    pub fn maps(
+        &self,
+        mask: &Mask,
+        shots: &[Option<&ShotList>],
+        surroundings: f64,
+    ) -> Result<Option<Maps>, QuoteError> {
+        let mesh = mask
+            .extent
+            .and_then(|frame| Some((frame, self.mesh(frame)?)));
+        let Some((frame, mesh)) = mesh else {
+            return Ok(None);
+        };
+        let mut coverage = Density::new(frame, mesh, surroundings.clamp(0.0, 1.0))?;
+        for (figure, shots) in mask.figures.iter().zip(shots) {
+            let Some(shots) = shots else { continue };
+            for place in &figure.places {
+                let placed: Vec<(Rect, Dose)> = shots
+                    .rects()
+                    .map(|(rect, dose)| (place.transform.apply_rect(rect), dose))
+                    .collect();
+                coverage.add_repeated(&placed, &place.repetition);
+            }
+        }
+        let found = expose::correct(&coverage, &self.terms)?;
+        Ok(Some(Maps { coverage, found }))
     }
 
     /// What the correction found, and the level that edges see with the doses as they were handed out.
@@ -186,7 +216,8 @@ impl LongRange {
         portions: &[Option<Vec<Portion<'_>>>],
     ) -> Result<DoseMap, QuoteError> {
         // Beyond the frame, and in what cells reach beyond it, stands what the correction took there.
-        let mut written = Density::new(frame, coverage.mesh(), coverage.around())?.times(&found.dose);
+        let mut written =
+            Density::new(frame, coverage.mesh(), coverage.around())?.times(&found.dose);
         let all = || portions.iter().flatten().flatten();
         for portion in all() {
             let placed: Vec<(Rect, Dose)> = portion
@@ -216,12 +247,15 @@ impl LongRange {
                 // Its own dose for each shot: at dose 1 of the fracture that is the shot's.
                 Cow::Owned(shots) => {
                     for (rect, _) in shots.rects() {
-                        let dose = found.dose.at_point(middle(portion.transform.apply_rect(rect)));
+                        let dose = found
+                            .dose
+                            .at_point(middle(portion.transform.apply_rect(rect)));
                         look(rect, dose, Point::default());
                     }
                 }
                 Cow::Borrowed(shots) => {
-                    let Some(bounds) = shots.rects().map(|(rect, _)| rect).reduce(Rect::hull) else {
+                    let Some(bounds) = shots.rects().map(|(rect, _)| rect).reduce(Rect::hull)
+                    else {
                         continue;
                     };
                     for by in ends(&portion.repetition) {
@@ -232,7 +266,9 @@ impl LongRange {
             let area: f64 = portion
                 .shots
                 .rects()
-                .map(|(rect, dose)| dose.0 * (Nm::from_pm(rect.width()).0 * Nm::from_pm(rect.height()).0))
+                .map(|(rect, dose)| {
+                    dose.0 * (Nm::from_pm(rect.width()).0 * Nm::from_pm(rect.height()).0)
+                })
                 .sum();
             charge += copies * area * portion.dose.0;
             plain += copies * area * portion.dose.0 / portion.mean.0;
@@ -240,7 +276,12 @@ impl LongRange {
         let [low, high] = found.uncorrected_where_written(coverage);
         Ok(DoseMap {
             mesh_nm: coverage.mesh().0,
-            wanted_mesh_nm: 0.25 * self.terms.iter().map(|t| t.radius.0).fold(f64::INFINITY, f64::min),
+            wanted_mesh_nm: 0.25
+                * self
+                    .terms
+                    .iter()
+                    .map(|t| t.radius.0)
+                    .fold(f64::INFINITY, f64::min),
             surroundings: coverage.around(),
             least_dose: least,
             greatest_dose: greatest,
@@ -359,7 +400,9 @@ fn ends(repetition: &Repetition) -> Vec<Point> {
         }
         Repetition::Nested(parts) => parts.iter().fold(vec![Point::default()], |sums, part| {
             let ends = ends(part);
-            sums.iter().flat_map(|s| ends.iter().map(|e| *s + *e)).collect()
+            sums.iter()
+                .flat_map(|s| ends.iter().map(|e| *s + *e))
+                .collect()
         }),
         Repetition::Once | Repetition::List(_) => repetition.displacements().collect(),
     }
@@ -428,7 +471,10 @@ impl<'a> Splitter<'a, '_> {
         let many = (self.portions.len() + 1) * self.shots.len() > MOST_SHOTS;
         if !(changes && large) || self.shots.is_empty() || many {
             let dose = self.dose.at_point(middle(self.bounds.translated(shift)));
-            #[allow(clippy::cast_possible_truncation, reason = "a float to integer cast saturates")]
+            #[allow(
+                clippy::cast_possible_truncation,
+                reason = "a float to integer cast saturates"
+            )]
             let step = (dose.ln() / STEP).round() as i64;
             return self.singles.entry(step).or_default().push((shift, dose));
         }

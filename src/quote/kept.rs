@@ -79,7 +79,13 @@ impl Kept {
         let fracture = FractureKey::new(number, method, terms, setup);
         let (background, errors) = (settings.background, settings.errors.unwrap_or_default());
         let base_dose = errors.base_dose.map_or(0.0, |dose| dose.0);
-        let numbers = [background.ratio, background.density, errors.edge.0, errors.dose, base_dose];
+        let numbers = [
+            background.ratio,
+            background.density,
+            errors.edge.0,
+            errors.dose,
+            base_dose,
+        ];
         let key = (fracture, numbers.map(f64::to_bits));
         let figures = mask.figures.len() as u64;
         let skip = |ticks: u64| (0..ticks).for_each(|_| tick());

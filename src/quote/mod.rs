@@ -376,7 +376,11 @@ pub fn quote_again(
         let at = usize::try_from(clip - 1).unwrap_or(usize::MAX);
         figures.extend(numbers.map(|figure| {
             let dose = |method| exposed.get(method)?.get(at)?.mean_dose(figure);
-            let found = (&made[at], &seconds[at], &dose as &dyn Fn(Method) -> Option<Dose>);
+            let found = (
+                &made[at],
+                &seconds[at],
+                &dose as &dyn Fn(Method) -> Option<Dose>,
+            );
             figure_result((clip, of_clip.mask), figure, found, raised(figure))
         }));
     }

@@ -12,10 +12,10 @@ use std::fmt;
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
 
-pub use comparison::{Changed, Comparison, FigureChange, FigureShare, ShotShare, TimeChange};
-pub use sweep::{Sweep, SweepPoint};
 pub use crate::judge::{CHANGES, Narrowest, Quantiles, Summary as Scores, ThroughDose};
+pub use comparison::{Changed, Comparison, FigureChange, FigureShare, ShotShare, TimeChange};
 pub use exposure::DoseMap;
+pub use sweep::{Sweep, SweepPoint};
 
 /// Said in every report, word for word.
 pub const CAUTION: &str =

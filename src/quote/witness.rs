@@ -92,7 +92,10 @@ pub fn witness(
         tick();
         Ok(found)
     };
-    let all: Vec<One> = placed.par_iter().map(one).collect::<Result<_, RasterError>>()?;
+    let all: Vec<One> = placed
+        .par_iter()
+        .map(one)
+        .collect::<Result<_, RasterError>>()?;
     let mut fidelity = Fidelity::default();
     for one in &all {
         fidelity.merge(&one.fidelity, 1);

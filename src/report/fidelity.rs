@@ -55,13 +55,17 @@ const MEASURES: [Measure; 11] = [
         header: "narrowest\ndrawn, printed\nnm",
         value: |s| {
             let narrowest = s.narrowest?;
-            let printed = narrowest.printed_nm.map_or_else(|| UNMEASURED.to_owned(), trimmed);
+            let printed = narrowest
+                .printed_nm
+                .map_or_else(|| UNMEASURED.to_owned(), trimmed);
             Some(format!("{} {printed}", trimmed(narrowest.drawn_nm)))
         },
     },
     Measure {
         header: "area\nprinted\n%",
-        value: |s| two(Some(100.0 * s.printed_area_nm2 / s.drawn_area_nm2).filter(|p| p.is_finite())),
+        value: |s| {
+            two(Some(100.0 * s.printed_area_nm2 / s.drawn_area_nm2).filter(|p| p.is_finite()))
+        },
     },
 ];
 

@@ -7,6 +7,7 @@ mod fidelity;
 pub mod figure_plot;
 pub mod figures_csv;
 pub mod html;
+pub mod map_plot;
 pub mod overview_plot;
 mod plot;
 pub mod progress;
