@@ -5,6 +5,7 @@ use std::path::PathBuf;
 use clap::Args;
 use serde::Serialize;
 
+use crate::expose::Density;
 use crate::fracture::Effort;
 use crate::quote::exposure::{LongRange, Maps};
 use crate::quote::result::Method;
@@ -180,11 +181,15 @@ fn lines(a: &Answer) -> Vec<(&'static str, String)> {
     ]
 }
 
+/// Cells shown to both sides of the steepest step of a wide map: ten times the least radius.
+const AROUND_STEP: usize = 40;
+
 /// Owns what the picture borrows.
 struct Picture {
     title: String,
     origin_um: [f64; 2],
     mesh_um: f64,
+    along: &'static str,
     size: [usize; 2],
     cells: [Vec<f64>; 2],
     curves: [(&'static str, Vec<(f64, f64)>); 3],
@@ -194,10 +199,28 @@ fn picture(name: &str, maps: &Maps) -> Picture {
     let Maps { coverage, found } = maps;
     let [columns, rows] = coverage.size();
     let middle = rows / 2;
-    let along = |map: &crate::expose::Density| -> Vec<(f64, f64)> {
-        let row = &map.cells()[middle * columns..(middle + 1) * columns];
+    let row = |map: &Density| map.cells()[middle * columns..(middle + 1) * columns].to_vec();
+    // Over a wide map nothing could be seen of a step: shown is where the dose changes most.
+    let (shown, along_what) = if columns > 4 * AROUND_STEP {
+        let dose = row(&found.dose);
+        let steps = dose.windows(2).map(|pair| (pair[1] - pair[0]).abs());
+        let steepest = steps
+            .enumerate()
+            .max_by(|a, b| a.1.total_cmp(&b.1))
+            .map_or(0, |(i, _)| i);
+        let from = steepest.saturating_sub(AROUND_STEP);
+        let to = (steepest + AROUND_STEP + 1).min(columns);
+        (
+            from..to,
+            "along the middle, around its steepest step: x, µm",
+        )
+    } else {
+        (0..columns, "along the middle from left to right: x, µm")
+    };
+    let along = |map: &Density| -> Vec<(f64, f64)> {
+        let row = row(map);
         let x = |column: usize| Nm(coverage.middle(column, middle)[0]).um();
-        row.iter().enumerate().map(|(i, v)| (x(i), *v)).collect()
+        shown.clone().map(|i| (x(i), row[i])).collect()
     };
     let [x, y] = coverage.middle(0, 0).map(|v| Nm(v).um());
     let mesh_um = coverage.mesh().um();
@@ -208,6 +231,7 @@ fn picture(name: &str, maps: &Maps) -> Picture {
         ),
         origin_um: [x - 0.5 * mesh_um, y - 0.5 * mesh_um],
         mesh_um,
+        along: along_what,
         size: [columns, rows],
         cells: [coverage.cells().to_vec(), found.dose.cells().to_vec()],
         curves: [
@@ -234,7 +258,7 @@ impl Picture {
             origin_um: self.origin_um,
             mesh_um: self.mesh_um,
             maps: [map("coverage", 0), map("dose, × dose-to-size", 1)],
-            along: "along the middle from left to right: x, µm",
+            along: self.along,
             curves: &curves.collect::<Vec<_>>(),
         }
         .png(path)

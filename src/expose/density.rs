@@ -177,21 +177,36 @@ impl Density {
         low + v * (high - low)
     }
 
-    /// Least and greatest of all that [`Density::at`] gives in a window (pm).
+    /// The middle of all values that [`Density::at`] gives in a window (pm), if they differ by no more than a share of the least.
+    ///
+    /// Between middles of cells the value is linear in x and in y, so it is extreme at the window's corners, at middles, or where its
+    /// sides pass them.
     #[must_use]
-    pub fn range_in(&self, window: Rect) -> [f64; 2] {
-        let span = |from: f64, to: f64, cells: usize| {
-            let cell = |at: f64| super::dose::count(at / self.mesh - 0.5).min(cells - 1);
-            (cell(from), (cell(to) + 1).min(cells - 1))
-        };
+    pub fn even_in(&self, window: Rect, share: f64) -> Option<f64> {
         let [from, to] = [window.min, window.max].map(|p| (p - self.origin).to_nm());
-        let (i0, i1) = span(from[0], to[0], self.columns);
-        let (j0, j1) = span(from[1], to[1], self.rows);
-        let cells =
-            (j0..=j1).flat_map(|j| &self.cells[j * self.columns + i0..=j * self.columns + i1]);
-        cells.fold([f64::INFINITY, f64::NEG_INFINITY], |[low, high], v| {
-            [low.min(*v), high.max(*v)]
-        })
+        let stops = |axis: usize, cells: usize| {
+            let index = |at: f64| super::dose::count((at / self.mesh - 0.5).ceil()).min(cells);
+            #[allow(
+                clippy::cast_precision_loss,
+                reason = "an index of memory is below 2^53"
+            )]
+            let middles =
+                (index(from[axis])..index(to[axis])).map(|k| (k as f64 + 0.5) * self.mesh);
+            let ends = [from[axis], to[axis]];
+            ends.into_iter().chain(middles).collect::<Vec<f64>>()
+        };
+        let (across, up) = (stops(0, self.columns), stops(1, self.rows));
+        let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
+        for y in &up {
+            for x in &across {
+                let value = self.between([*x, *y]);
+                (low, high) = (low.min(value), high.max(value));
+                if high - low > share * low {
+                    return None;
+                }
+            }
+        }
+        Some(0.5 * (low + high))
     }
 
     /// Convolved with the unit-area Gaussian of 1/e radius `radius` (σ = radius/√2), at the middle of each cell.

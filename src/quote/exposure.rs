@@ -423,24 +423,31 @@ struct Splitter<'a, 'm> {
 impl<'a> Splitter<'a, '_> {
     fn split(&mut self, repetition: &Repetition, shift: Point) {
         let span = repetition.span();
-        let hull = Rect {
-            min: self.bounds.min + shift + span.min,
-            max: self.bounds.max + shift + span.max,
+        // A figure that is small against the mesh has one dose, that of its middle.
+        let own = if self.is_large() {
+            self.bounds
+        } else {
+            let middle = middle(self.bounds);
+            Rect::new(middle, middle)
         };
-        let [low, high] = self.dose.range_in(hull);
-        if high - low <= STEP * low && *repetition != Repetition::Once {
-            let dose = Dose(0.5 * (low + high));
-            return self.push(repetition.clone(), shift, dose);
+        let window = Rect {
+            min: own.min + shift + span.min,
+            max: own.max + shift + span.max,
+        };
+        let even = self.dose.even_in(window, STEP);
+        if let Some(dose) = even.filter(|_| *repetition != Repetition::Once) {
+            return self.push(repetition.clone(), shift, Dose(dose));
         }
         match repetition {
-            Repetition::Once => self.single(shift, high - low > STEP * low),
+            Repetition::Once => self.single(shift, even.is_none()),
             Repetition::List(list) => {
                 for by in list {
                     self.split(&Repetition::Once, shift + *by);
                 }
             }
-            &Repetition::Lattice { .. } => {
-                for (half, by) in halves(repetition) {
+            &Repetition::Lattice { a, b, .. } => {
+                let along = [a, b].map(|step| self.change_along(repetition, step, shift));
+                for (half, by) in halves(repetition, along) {
                     self.split(&half, shift + by);
                 }
             }
@@ -449,7 +456,10 @@ impl<'a> Splitter<'a, '_> {
                     return self.split(&Repetition::Once, shift);
                 };
                 let parts: Vec<(Repetition, Point)> = match outermost {
-                    Repetition::Lattice { .. } => halves(outermost),
+                    &Repetition::Lattice { a, b, .. } => {
+                        let along = [a, b].map(|step| self.change_along(outermost, step, shift));
+                        halves(outermost, along)
+                    }
                     _ => {
                         let each = outermost.displacements();
                         each.map(|by| (Repetition::Once, by)).collect()
@@ -464,12 +474,46 @@ impl<'a> Splitter<'a, '_> {
         }
     }
 
+    /// How much the dose changes along one side of an array, through its middle.
+    fn change_along(&self, array: &Repetition, step: Point, shift: Point) -> f64 {
+        let &Repetition::Lattice {
+            columns,
+            rows,
+            a,
+            b,
+        } = array
+        else {
+            return 0.0;
+        };
+        let last = |n: u64| i64::try_from(n - 1).unwrap_or(i64::MAX);
+        let times = |p: Point, n: i64| Point::new(p.x.saturating_mul(n), p.y.saturating_mul(n));
+        let (n, other) = if step == a {
+            (last(columns), times(b, last(rows) / 2))
+        } else {
+            (last(rows), times(a, last(columns) / 2))
+        };
+        let at = |k: i64| {
+            let by = shift + other + times(step, k);
+            self.dose.at_point(middle(self.bounds.translated(by)))
+        };
+        let ends = [at(0), at(n / 2), at(n)];
+        let [low, high] = ends
+            .iter()
+            .fold([f64::INFINITY, f64::NEG_INFINITY], |[l, h], d| {
+                [l.min(*d), h.max(*d)]
+            });
+        high - low
+    }
+
+    fn is_large(&self) -> bool {
+        let longest = self.bounds.width().max(self.bounds.height());
+        Nm::from_pm(longest).0 > self.dose.mesh().0
+    }
+
     /// One copy; if the dose changes over a large one, each of its shots gets its own.
     fn single(&mut self, shift: Point, changes: bool) {
-        let mesh = self.dose.mesh().0;
-        let large = Nm::from_pm(self.bounds.width().max(self.bounds.height())).0 > mesh;
         let many = (self.portions.len() + 1) * self.shots.len() > MOST_SHOTS;
-        if !(changes && large) || self.shots.is_empty() || many {
+        if !(changes && self.is_large()) || self.shots.is_empty() || many {
             let dose = self.dose.at_point(middle(self.bounds.translated(shift)));
             #[allow(
                 clippy::cast_possible_truncation,
@@ -532,8 +576,8 @@ impl<'a> Splitter<'a, '_> {
     }
 }
 
-/// An array cut in two along its longer side; a single copy is no array.
-fn halves(repetition: &Repetition) -> Vec<(Repetition, Point)> {
+/// An array cut in two across the side along which the dose changes more, of equal ones the longer; a single copy is no array.
+fn halves(repetition: &Repetition, change: [f64; 2]) -> Vec<(Repetition, Point)> {
     let &Repetition::Lattice {
         columns,
         rows,
@@ -559,7 +603,8 @@ fn halves(repetition: &Repetition) -> Vec<(Repetition, Point)> {
         let n = i64::try_from(n).unwrap_or(i64::MAX);
         Point::new(p.x.saturating_mul(n), p.y.saturating_mul(n))
     };
-    if columns >= rows && columns > 1 {
+    let first = change[0] > change[1] || (change[0] == change[1] && columns >= rows);
+    if columns > 1 && (first || rows == 1) {
         let left = columns / 2;
         vec![
             (part(left, rows), Point::default()),
