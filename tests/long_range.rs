@@ -201,14 +201,15 @@ fn a_dense_half_and_an_empty_half_come_out_level() {
     let (eta, beta, side) = (0.6, 10_000.0, 400_000);
     let mut map = Density::new(rect(0, 0, side, side), Nm(2500.0), 0.0).unwrap();
     map.add_repeated(
-        &[(rect(0, 0, 500, side), Dose(1.0))],
-        &lattice(200, 1, (1000, 0), (0, 0)),
+        &[(rect(0, 0, 625, side), Dose(1.0))],
+        &lattice(160, 1, (1250, 0), (0, 0)),
     );
     let c = correct(&map, &[term(eta, beta)]).unwrap();
     let boundary = 200_000.0;
     for column in 10..150 {
         let [x, y] = map.middle(column, 80);
-        let density = 0.5 * shotwright::blur::cdf((boundary - x) * std::f64::consts::SQRT_2 / beta);
+        let phi = |x: f64| shotwright::blur::cdf(x * std::f64::consts::SQRT_2 / beta);
+        let density = 0.5 * (phi(boundary - x) - phi(-x));
         let level = c.uncorrected.at([x, y]);
         assert!(
             (level - (1.0 + 2.0 * eta * density) / (1.0 + eta)).abs() < 1e-6,
