@@ -55,6 +55,24 @@ impl Edge {
         ]
     }
 
+    /// Where a ray meets the edge, and how squarely: the cosine between the ray and the outward normal.
+    fn crossed(&self, p: [f64; 2], direction: [f64; 2]) -> Option<(f64, f64)> {
+        let n = self.outward();
+        let facing = n[0] * direction[0] + n[1] * direction[1];
+        if facing == 0.0 {
+            return None;
+        }
+        let t = (n[0] * (self.a[0] - p[0]) + n[1] * (self.a[1] - p[1])) / facing;
+        let q = [
+            p[0] + t * direction[0] - self.a[0],
+            p[1] + t * direction[1] - self.a[1],
+        ];
+        let along = q[1] * n[0] - q[0] * n[1];
+        (-1e-9..=self.length() + 1e-9)
+            .contains(&along)
+            .then_some((t, facing))
+    }
+
     fn distance_squared(&self, p: [f64; 2]) -> f64 {
         let (dx, dy) = (self.b[0] - self.a[0], self.b[1] - self.a[1]);
         let (px, py) = (p[0] - self.a[0], p[1] - self.a[1]);
@@ -125,7 +143,12 @@ pub trait Printed: DoseField {
     ///
     /// From a place that prints it looks outward, from one that does not inward, for the first change: so the
     /// contour found has the print behind it. `None` where there is none in range (never 0).
-    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64>;
+    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64> {
+        self.crossing_at(p, outward, range, THRESHOLD)
+    }
+
+    /// As [`Printed::crossing`], for the line where the dose is `level`.
+    fn crossing_at(&self, p: [f64; 2], outward: [f64; 2], range: f64, level: f64) -> Option<f64>;
 
     /// Least x, least y, greatest x, greatest y (nm) of all that is flashed; `None` where nothing is.
     fn extent(&self) -> Option<[f64; 4]>;
@@ -328,6 +351,34 @@ impl Target {
         self.cells
             .near(p, limit)
             .any(|e| self.edges[e as usize].distance_squared(p) <= limit2)
+    }
+
+    /// How far it is (nm) from a place in the figure along the unit vector `direction` to the first outline that faces it (within 60°).
+    ///
+    /// `None` if there is none within `limit`, or the first one met is grazed.
+    #[must_use]
+    pub fn way_out(&self, p: [f64; 2], direction: [f64; 2], limit: f64) -> Option<f64> {
+        let step = self.cells.size;
+        let mut from = 0.0;
+        while from <= limit {
+            // Cells around one step of the way hold every edge that it crosses.
+            let to = from + step;
+            let middle = [
+                p[0] + (from + 0.5 * step) * direction[0],
+                p[1] + (from + 0.5 * step) * direction[1],
+            ];
+            let met = self
+                .cells
+                .near(middle, 0.5 * step)
+                .filter_map(|e| self.edges[e as usize].crossed(p, direction))
+                .filter(|(t, _)| *t > 1e-6 && *t <= to)
+                .min_by(|a, b| a.0.total_cmp(&b.0));
+            if let Some((t, facing)) = met {
+                return (t <= limit && facing > 0.5).then_some(t);
+            }
+            from = to;
+        }
+        None
     }
 
     /// Distance to the outline, nm, if it is at most `limit`.

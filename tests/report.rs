@@ -235,6 +235,8 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
             worst: Some(0.78),
         },
         peak_dose: Some(1.9),
+        scores: None,
+        dose_map: None,
         hours: Some(hours(total_h)),
     }
 }
@@ -490,6 +492,8 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
                     worst: None,
                 },
                 prints_within_tolerance: Some(true),
+                scores: None,
+                mean_dose: Some(1.0625),
                 seconds: Some(0.25),
             }),
             overlap: None,
@@ -501,11 +505,14 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     assert_eq!(
         String::from_utf8(out).unwrap(),
         "clip,figure,x_nm,y_nm,fingerprint,places,outline_nm,vertices,shape,\
-         staircase_shots,staircase_edge_error_mean_nm,staircase_edge_error_p95_nm,staircase_edge_error_worst_nm,staircase_prints_within_tolerance,staircase_seconds,\
-         tile_shots,tile_edge_error_mean_nm,tile_edge_error_p95_nm,tile_edge_error_worst_nm,tile_prints_within_tolerance,tile_seconds,\
-         overlap_shots,overlap_edge_error_mean_nm,overlap_edge_error_p95_nm,overlap_edge_error_worst_nm,overlap_prints_within_tolerance,overlap_seconds,\
+         staircase_shots,staircase_edge_error_mean_nm,staircase_edge_error_p95_nm,staircase_edge_error_worst_nm,staircase_prints_within_tolerance,\
+         staircase_corner_error_worst_nm,staircase_margin_median_nm_per_pct,staircase_margin_worst_nm_per_pct,staircase_edge_sd_median_nm,staircase_edge_sd_worst_nm,staircase_narrowest_drawn_nm,staircase_narrowest_printed_nm,staircase_printed_area_nm2,staircase_mean_dose,staircase_seconds,\
+         tile_shots,tile_edge_error_mean_nm,tile_edge_error_p95_nm,tile_edge_error_worst_nm,tile_prints_within_tolerance,\
+         tile_corner_error_worst_nm,tile_margin_median_nm_per_pct,tile_margin_worst_nm_per_pct,tile_edge_sd_median_nm,tile_edge_sd_worst_nm,tile_narrowest_drawn_nm,tile_narrowest_printed_nm,tile_printed_area_nm2,tile_mean_dose,tile_seconds,\
+         overlap_shots,overlap_edge_error_mean_nm,overlap_edge_error_p95_nm,overlap_edge_error_worst_nm,overlap_prints_within_tolerance,\
+         overlap_corner_error_worst_nm,overlap_margin_median_nm_per_pct,overlap_margin_worst_nm_per_pct,overlap_edge_sd_median_nm,overlap_edge_sd_worst_nm,overlap_narrowest_drawn_nm,overlap_narrowest_printed_nm,overlap_printed_area_nm2,overlap_mean_dose,overlap_seconds,\
          flags\n\
-         1,3,12.5,-4,00112233445566ff,40,812.25,96,curved,,,,,,,12,-0.5,1.5,,true,0.25,,,,,,,broken_outline shot_limits_not_met\n"
+         1,3,12.5,-4,00112233445566ff,40,812.25,96,curved,,,,,,,,,,,,,,,,12,-0.5,1.5,,true,,,,,,,,,1.0625,0.25,,,,,,,,,,,,,,,,broken_outline shot_limits_not_met\n"
     );
 }
 

@@ -2,6 +2,7 @@
 
 use std::io;
 
+use crate::expose::RasterError;
 use crate::layout::LayoutError;
 use crate::mask::MaskError;
 use crate::profile::ProfileErrors;
@@ -72,6 +73,9 @@ pub enum CliError {
         /// Why.
         cause: TooManyPlaces,
     },
+    /// The second witness cannot be asked.
+    #[error("--raster-nm: {0}")]
+    Raster(#[from] RasterError),
     /// A file cannot be opened or written.
     #[error("{file}: {cause}")]
     File {

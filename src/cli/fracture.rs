@@ -9,8 +9,9 @@ use serde::Serialize;
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Prefer, Staircase, Tile};
 use crate::fracture::{FractureError, Fracturer};
-use crate::judge::Settings;
+use crate::judge::{Background, Settings};
 use crate::mask::Mask;
+use crate::quote::exposure::Exposed;
 use crate::quote::made::{self, Made};
 use crate::quote::result::{Count, FractureSummary};
 use crate::quote::{Setup, summary};
@@ -141,7 +142,13 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     let settings = Settings::new(setup.blur, setup.tolerance);
     let made = made::judge(&mask, shots, &settings, &tick);
     drop(bar);
-    let summary = summary::of_mask(&mask.figures, &made, setup.limits.sliver);
+    let summary = summary::of_mask(
+        &mask.figures,
+        &made,
+        &Exposed::as_fractured(&mask, &made),
+        Background::default(),
+        setup.limits.sliver,
+    );
 
     if let Some((path, mut out)) = file {
         let rows = write(&mask, &made, args.distinct, &mut out)

@@ -12,10 +12,12 @@ use crate::quote::result::FractureSummary;
 use crate::quote::shots::score;
 use crate::report::progress::Progress;
 use crate::report::shots_csv;
+use crate::units::Nm;
 
 use super::args::SetupArgs;
 use super::output::{aligned, file_error, print, print_json, scores};
-use super::{CliError, Outcome};
+use super::values::positive;
+use super::{CliError, Outcome, raster};
 
 /// Score a shot list against a layout.
 ///
@@ -32,6 +34,9 @@ pub(super) struct JudgeArgs {
     setup: SetupArgs,
     /// Shot list, CSV with a header.
     shots: PathBuf,
+    /// Judge a second time on a raster of shots with pixels of this side, nm, blurred there, and compare: at most half of sigma.
+    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    raster_nm: Option<f64>,
     /// Print JSON.
     #[arg(long)]
     json: bool,
@@ -45,6 +50,8 @@ struct Answer {
     stray_shots: u64,
     /// Shots with a side outside the limits.
     shots_beyond_limits: u64,
+    /// What the raster says; `None` if it was not asked.
+    raster: Option<raster::Second>,
 }
 
 /// Failing figures told one by one.
@@ -103,16 +110,24 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
             scored.beyond_limits, setup.limits.least_side.0, setup.limits.greatest_side.0
         );
     }
-    let prints = scored.summary.prints_within_tolerance == Some(true);
+    let second = match args.raster_nm {
+        Some(pixel) => Some(raster::ask(&mask, &list.shots, &settings, Nm(pixel))?),
+        None => None,
+    };
+    let prints = scored.summary.prints_within_tolerance == Some(true)
+        && second.as_ref().is_none_or(raster::Second::agrees);
     let outcome = Outcome::over_a_limit_if(!prints || scored.beyond_limits > 0);
     if args.json {
         print_json(&Answer {
             summary: scored.summary,
             stray_shots: scored.stray as u64,
             shots_beyond_limits: scored.beyond_limits as u64,
+            raster: second,
         })?;
     } else {
-        print(&aligned(&scores(&scored.summary)))?;
+        let mut lines = scores(&scored.summary);
+        lines.extend(second.iter().flat_map(raster::Second::lines));
+        print(&aligned(&lines))?;
     }
     Ok(outcome)
 }

@@ -2,6 +2,7 @@
 
 mod args;
 mod compare;
+mod correct;
 mod error;
 mod files;
 mod fracture;
@@ -13,6 +14,7 @@ mod output;
 mod pictures;
 mod profile;
 mod quote;
+mod raster;
 mod sweep;
 mod values;
 
@@ -60,6 +62,7 @@ enum Command {
     Hours(Box<hours::HoursArgs>),
     Sweep(Box<sweep::SweepArgs>),
     Compare(compare::CompareArgs),
+    Correct(Box<correct::CorrectArgs>),
     Profile(profile::ProfileArgs),
 }
 
@@ -81,6 +84,7 @@ pub fn run(cli: Cli) -> Result<Outcome, CliError> {
         Command::Hours(args) => hours::run(&args),
         Command::Sweep(args) => sweep::run(&args, threads),
         Command::Compare(args) => compare::run(&args),
+        Command::Correct(args) => correct::run(&args),
         Command::Profile(args) => profile::run(&args),
     }
 }

@@ -5,9 +5,10 @@ use std::path::Path;
 
 use rayon::prelude::*;
 
-use crate::expose::{LevelLine, level_at, level_lines, polish};
+use crate::blur;
+use crate::expose::{LevelLine, level_lines, polish};
 use crate::geom::Point;
-use crate::judge::{Settings, edge_samples};
+use crate::judge::{Background, Settings, edge_samples};
 use crate::mask::{Mask, Standings};
 use crate::quote::made::{Made, Scene, fractures_of};
 use crate::quote::result::Method;
@@ -63,6 +64,12 @@ impl Pictures<'_> {
             file: self.terms.profile.name().to_owned(),
             cause,
         })?;
+        let correction = answer.quote.dose_correction;
+        let background = Background {
+            ratio: correction.backscatter_ratio,
+            density: correction.density,
+        };
+        let flattening = background.flattening();
         let mut flagged: Vec<(u64, u64)> = Vec::new();
         for flag in &answer.quote.flags {
             let figure = (flag.clip, flag.figure);
@@ -98,12 +105,19 @@ impl Pictures<'_> {
                         return Ok(());
                     };
                     let scene = Scene::of(clip.mask, &standings, &fractures, *figure, setup.blur);
-                    figure_picture(clip.mask, *figure, method, made, &scene, &setup, path).map_err(
-                        |cause| CliError::Picture {
-                            file: path.display().to_string(),
-                            cause,
-                        },
+                    figure_picture(
+                        clip.mask,
+                        *figure,
+                        method,
+                        made,
+                        &scene,
+                        (&setup, flattening),
+                        path,
                     )
+                    .map_err(|cause| CliError::Picture {
+                        file: path.display().to_string(),
+                        cause,
+                    })
                 })?;
                 let recommended = answer.quote.recommended == Some(method);
                 for (figure, _, name) in asked {
@@ -175,7 +189,7 @@ fn figure_picture(
     method: Method,
     made: &Made,
     scene: &Scene,
-    setup: &Setup,
+    (setup, flattening): (&Setup, f64),
     path: &Path,
 ) -> Result<(), PlotError> {
     let figure = &mask.figures[number].figure;
@@ -185,7 +199,7 @@ fn figure_picture(
     let around = 3.0 * sigma;
     let window = [x0 - around, y0 - around, x1 + around, y1 + around];
     let lines = CHANGES.map(|(_, change)| {
-        let level = level_at(change);
+        let level = blur::level_at(change, flattening);
         let mut lines = level_lines(&scene.dose, window, 0.25 * sigma, level);
         polish(&scene.dose, &mut lines, level, sigma);
         lines.into_iter().map(closed).collect::<Vec<_>>()

@@ -4,21 +4,20 @@ use rayon::prelude::*;
 
 use crate::expose::uniform_correction;
 use crate::geom::{Point, Rect};
-use crate::mask::{DistinctFigure, Place};
 use crate::profile::{Key, Kind, Profile};
 use crate::units::{Dose, Nm};
 use crate::write_time::{
     self, Bound, Counts, Field, Pattern, Placed, StripeTime, WriteTime, WriteTimeError,
 };
 
-use super::made::{Made, MadeMask};
+use super::exposure::{Exposed, Portion};
 use super::result::{Count, Hours, MoreFlashes, RasterLine, Sensitivity, StripeRow};
 use super::{Clip, QuoteError, Terms};
 
-/// One dose for the whole mask that keeps a wide edge where it was drawn.
+/// The dose that keeps a wide edge where it was drawn if coverage is spread evenly over the mask.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Correction {
-    /// Multiplies the dose of every shot.
+    /// For the mean coverage.
     pub dose: Dose,
     /// Backscatter ratio η, all terms and fogging together.
     pub ratio: f64,
@@ -87,21 +86,19 @@ pub(super) struct Timed {
 }
 
 impl<'a> Written<'a> {
-    /// `made` by clip.
+    /// `exposed` by clip.
     pub(super) fn new(
-        clips: &[Clip<'a>],
-        made: &[&'a MadeMask],
-        correction: Correction,
+        clips: &[Clip<'_>],
+        exposed: &'a [Exposed<'_>],
         field: Option<Field>,
     ) -> Self {
-        let of_clip = |(clip, made): (&Clip<'a>, &&'a MadeMask)| -> Vec<_> {
-            let figures = clip.mask.figures.iter().zip(made.iter());
-            figures
-                .map(|(figure, made)| Some(placed(figure, made.as_ref().ok()?, correction.dose)))
+        let of_clip = |exposed: &'a Exposed<'_>| -> Vec<_> {
+            let portions = exposed.portions.iter();
+            portions
+                .map(|portions| Some(placed(portions.as_ref()?)))
                 .collect()
         };
-        let by_figure: Vec<Vec<Option<Vec<Placed<'a>>>>> =
-            clips.iter().zip(made).map(of_clip).collect();
+        let by_figure: Vec<Vec<Option<Vec<Placed<'a>>>>> = exposed.iter().map(of_clip).collect();
         Self {
             by_clip: by_figure
                 .iter()
@@ -243,14 +240,14 @@ fn travels(time: &WriteTime, asked: impl Fn(&StripeTime) -> bool) -> u64 {
         .sum()
 }
 
-fn placed<'a>(figure: &'a DistinctFigure, made: &'a Made, dose: Dose) -> Vec<Placed<'a>> {
-    let place = |place: &'a Place| Placed {
-        shots: &made.fracture.shots,
-        transform: place.transform,
-        repetition: &place.repetition,
-        dose,
+fn placed<'a>(portions: &'a [Portion<'_>]) -> Vec<Placed<'a>> {
+    let place = |portion: &'a Portion<'_>| Placed {
+        shots: &portion.shots,
+        transform: portion.transform,
+        repetition: &portion.repetition,
+        dose: portion.dose,
     };
-    figure.places.iter().map(place).collect()
+    portions.iter().map(place).collect()
 }
 
 /// The stripes as reports show them.

@@ -19,8 +19,8 @@ pub struct Kept {
     reused: u64,
 }
 
-/// All that a score depends on: the fracture, and the backscatter ratio and density under it.
-type MadeKey = (FractureKey, [u64; 2]);
+/// All that a score depends on: the fracture, the backscatter ratio and density under it, and the errors of the error budget.
+type MadeKey = (FractureKey, [u64; 5]);
 
 /// All that a fracture depends on. Numbers by their bits: equal numbers, equal keys.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
@@ -77,11 +77,16 @@ impl Kept {
         tick: &(dyn Fn() + Sync),
     ) -> Arc<MadeMask> {
         let fracture = FractureKey::new(number, method, terms, setup);
-        let background = settings.background;
-        let key = (
-            fracture,
-            [background.ratio, background.density].map(f64::to_bits),
-        );
+        let (background, errors) = (settings.background, settings.errors.unwrap_or_default());
+        let base_dose = errors.base_dose.map_or(0.0, |dose| dose.0);
+        let numbers = [
+            background.ratio,
+            background.density,
+            errors.edge.0,
+            errors.dose,
+            base_dose,
+        ];
+        let key = (fracture, numbers.map(f64::to_bits));
         let figures = mask.figures.len() as u64;
         let skip = |ticks: u64| (0..ticks).for_each(|_| tick());
         if let Some(made) = self.made.get(&key) {
@@ -90,7 +95,7 @@ impl Kept {
             return Arc::clone(made);
         }
         // The same shots may have been judged over another background.
-        let (from, to) = ((fracture, [0; 2]), (fracture, [u64::MAX; 2]));
+        let (from, to) = ((fracture, [0; 5]), (fracture, [u64::MAX; 5]));
         let fractures = match self.made.range(from..=to).next() {
             Some((_, made)) => {
                 self.reused += figures;

@@ -4,6 +4,7 @@
 //! on the dose that its shots and its neighbours' give, the shots are timed where they stand, and all is put side by side.
 
 pub mod compare;
+pub mod exposure;
 mod fingerprint;
 mod flags;
 pub mod hours;
@@ -15,6 +16,7 @@ pub mod summary;
 pub mod sweep;
 mod uncertain;
 mod verdict;
+pub mod witness;
 
 use std::sync::Arc;
 
@@ -24,7 +26,7 @@ pub use made::{Made, MadeMask, Setup};
 pub use result::Quote;
 
 use crate::blur::{Blur, BlurError, REACH};
-use crate::expose::CorrectionError;
+use crate::expose::{CorrectionError, DensityError};
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Staircase, Tile};
 use crate::fracture::{Effort, Fracturer};
@@ -36,6 +38,7 @@ use crate::profile::{Kind, Profile};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::{Field, WriteTimeError};
 
+use exposure::{Exposed, LongRange, shot_errors};
 use hours::Written;
 use result::{
     ByMethod, CAUTION, DoseCorrection, FigureFracture, FigureResult, FlagKind, Fractures, Method,
@@ -90,6 +93,9 @@ pub enum QuoteError {
     /// The dose cannot be corrected.
     #[error(transparent)]
     Correction(#[from] CorrectionError),
+    /// No density map can be made.
+    #[error(transparent)]
+    Density(#[from] DensityError),
     /// The writer model refuses the pattern.
     #[error(transparent)]
     WriteTime(#[from] WriteTimeError),
@@ -284,32 +290,43 @@ pub fn quote_again(
     let setup = terms.setup()?;
     check(clips, terms)?;
     let correction = Correction::new(clips, terms.profile)?;
+    let background = Background {
+        ratio: correction.ratio,
+        density: correction.density,
+    };
     let settings = Settings {
-        background: Background {
-            ratio: correction.ratio,
-            density: correction.density,
-        },
+        background,
+        errors: Some(shot_errors(terms.profile, correction.dose)),
         ..Settings::new(setup.blur, setup.tolerance)
     };
     let mut made: Vec<ByMethod<Arc<MadeMask>>> = vec![ByMethod::default(); clips.len()];
+    for method in Method::ALL {
+        for ((clip, &number), made) in clips.iter().zip(masks).zip(&mut made) {
+            let mask = (number, clip.mask);
+            let judged = kept.made(mask, method, (terms, &setup), &settings, tick);
+            *made.slot(method) = Some(judged);
+        }
+    }
+    let long_range = LongRange::new(terms.profile);
+    let mut exposed: ByMethod<Vec<Exposed<'_>>> = ByMethod::default();
     let mut fractures = Fractures::default();
     let mut stripes = ByMethod::default();
     let mut seconds: Vec<ByMethod<Vec<Option<f64>>>> = vec![ByMethod::default(); clips.len()];
     for method in Method::ALL {
-        let judged: Vec<Arc<MadeMask>> = clips
+        let lists: Vec<&MadeMask> = made
             .iter()
-            .zip(masks)
-            .map(|(clip, &number)| {
-                let mask = (number, clip.mask);
-                kept.made(mask, method, (terms, &setup), &settings, tick)
-            })
+            .filter_map(|made| made.get(method))
+            .map(AsRef::as_ref)
             .collect();
+        let doses = long_range.expose_clips(clips, &lists)?;
         let parts: Vec<summary::Part<'_>> = clips
             .iter()
-            .zip(&judged)
-            .map(|(clip, made)| summary::Part {
+            .zip(lists)
+            .zip(&doses)
+            .map(|((clip, made), exposed)| summary::Part {
                 figures: &clip.mask.figures,
                 made,
+                exposed,
                 weight: if clips.len() > 1 {
                     clip.copies(terms.field)
                 } else {
@@ -317,9 +334,8 @@ pub fn quote_again(
                 },
             })
             .collect();
-        let mut summary = summary::of_parts(&parts, setup.limits.sliver);
-        let lists: Vec<&MadeMask> = judged.iter().map(AsRef::as_ref).collect();
-        let written = Written::new(clips, &lists, correction, terms.field);
+        let mut summary = summary::of_parts(&parts, background, setup.limits.sliver);
+        let written = Written::new(clips, &doses, terms.field);
         let timed = written.time(terms.profile)?;
         let hours = uncertain::widened(timed.hours, &written, terms.profile, correction)?;
         summary.hours = Some(hours);
@@ -328,17 +344,14 @@ pub fn quote_again(
         for (all, of_clip) in seconds.iter_mut().zip(timed.seconds) {
             *all.slot(method) = Some(of_clip);
         }
-        for (all, of_clip) in made.iter_mut().zip(judged) {
-            *all.slot(method) = Some(of_clip);
-        }
+        *exposed.slot(method) = Some(doses);
     }
     let figures_distinct = clips.iter().map(|clip| clip.mask.figures.len()).sum();
     let choice = verdict::choose(&fractures, figures_distinct, terms.slot);
-    let recommended = choice.recommended.map(|method| {
-        let all = made.iter().filter_map(|made| made.get(method));
-        let lists: Vec<&MadeMask> = all.map(AsRef::as_ref).collect();
-        Written::new(clips, &lists, correction, terms.field)
-    });
+    let recommended = choice
+        .recommended
+        .and_then(|method| exposed.get(method))
+        .map(|doses| Written::new(clips, doses, terms.field));
     let sensitivity = match &recommended {
         Some(written) => uncertain::sensitivity(written, terms.profile, correction)?,
         None => Vec::new(),
@@ -365,8 +378,13 @@ pub fn quote_again(
         let numbers = 0..of_clip.mask.figures.len();
         let at = usize::try_from(clip - 1).unwrap_or(usize::MAX);
         figures.extend(numbers.map(|figure| {
-            let (made, seconds) = (&made[at], &seconds[at]);
-            figure_result((clip, of_clip.mask), figure, made, seconds, raised(figure))
+            let dose = |method| exposed.get(method)?.get(at)?.mean_dose(figure);
+            let found = (
+                &made[at],
+                &seconds[at],
+                &dose as &dyn Fn(Method) -> Option<Dose>,
+            );
+            figure_result((clip, of_clip.mask), figure, found, raised(figure))
         }));
     }
     let quote = Quote {
@@ -476,8 +494,11 @@ fn notes(clips: &[Clip<'_>], terms: &Terms<'_>) -> Vec<String> {
 fn figure_result(
     (clip, mask): (u64, &Mask),
     figure: usize,
-    made: &ByMethod<Arc<MadeMask>>,
-    seconds: &ByMethod<Vec<Option<f64>>>,
+    (made, seconds, dose): (
+        &ByMethod<Arc<MadeMask>>,
+        &ByMethod<Vec<Option<f64>>>,
+        &dyn Fn(Method) -> Option<Dose>,
+    ),
     flags: Vec<FlagKind>,
 ) -> FigureResult {
     let distinct = &mask.figures[figure];
@@ -490,6 +511,8 @@ fn figure_result(
             shots: made.fracture.shots.len() as u64,
             edge_error_nm: summary::edge_error(&scores),
             prints_within_tolerance: Some(scores.prints_within_tolerance),
+            scores: Some(scores),
+            mean_dose: dose(method).map(|dose| dose.0),
             seconds: seconds
                 .get(method)
                 .and_then(|all| all.get(figure).copied().flatten()),

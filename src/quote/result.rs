@@ -3,6 +3,7 @@
 //! Units are in the names (`_nm`, `_h`, `_s`, `_nm_per_pct`). What was not measured is `None` (`null` in JSON), never 0.
 
 mod comparison;
+mod exposure;
 mod sweep;
 
 use std::collections::BTreeMap;
@@ -11,7 +12,9 @@ use std::fmt;
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
 
+pub use crate::judge::{CHANGES, Narrowest, Quantiles, Summary as Scores, ThroughDose};
 pub use comparison::{Changed, Comparison, FigureChange, FigureShare, ShotShare, TimeChange};
+pub use exposure::DoseMap;
 pub use sweep::{Sweep, SweepPoint};
 
 /// Said in every report, word for word.
@@ -77,7 +80,7 @@ pub struct Quote {
     pub sigma_nm: f64,
     /// The field that the clips stand for; `None` for the layout alone.
     pub scaled_to_field: Option<ScaledToField>,
-    /// The one dose of the whole mask that keeps wide edges where they were drawn.
+    /// The dose of the mean coverage.
     pub dose_correction: DoseCorrection,
     /// What was assumed, repaired or left out, as sentences.
     pub notes: Vec<String>,
@@ -152,11 +155,11 @@ pub struct ScaledToField {
     pub coverage: f64,
 }
 
-/// One dose for the whole mask, from its mean coverage. It makes flashes longer or shorter and margins worse; the forward
-/// part of the dose, and so the contour, stays as it is.
+/// The dose that would suit the whole mask if its coverage were spread evenly. Contours at other doses and the shot noise are those
+/// at this dose; flashes and margins follow the dose of each place, see [`FractureSummary::dose_map`].
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct DoseCorrection {
-    /// Multiplies the dose of every shot.
+    /// For the mean coverage.
     pub dose: f64,
     /// Backscatter ratio η of the profile, all terms together.
     pub backscatter_ratio: f64,
@@ -264,6 +267,12 @@ pub struct FractureSummary {
     pub margin_nm_per_pct: Margin,
     /// Greatest dose anywhere, multiples of dose-to-size.
     pub peak_dose: Option<f64>,
+    /// All scores: corner zones, contours at other doses, error budget, widths, areas, pieces.
+    #[serde(default)]
+    pub scores: Option<Scores>,
+    /// The dose correction by place; `None` without a long range.
+    #[serde(default)]
+    pub dose_map: Option<DoseMap>,
     /// Hours to write the mask; `None` if they could not be computed.
     pub hours: Option<Hours>,
 }
@@ -511,6 +520,12 @@ pub struct FigureFracture {
     pub edge_error_nm: EdgeError,
     /// Whether it prints within tolerance; `None` if not checked.
     pub prints_within_tolerance: Option<bool>,
+    /// All its scores.
+    #[serde(default)]
+    pub scores: Option<Scores>,
+    /// Mean of the doses that its shots are multiplied by at all its places; `None` without a long range.
+    #[serde(default)]
+    pub mean_dose: Option<f64>,
     /// Seconds to flash and settle it at all its places; `None` if not computed.
     pub seconds: Option<f64>,
 }

@@ -232,6 +232,8 @@ mod tests {
             figures_out_of_tolerance: Some(u64::from(!prints)),
             margin_nm_per_pct: Margin::default(),
             peak_dose: None,
+            scores: None,
+            dose_map: None,
             hours: Some(Hours {
                 total_h,
                 flash_h: total_h,

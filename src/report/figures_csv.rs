@@ -21,12 +21,21 @@ const FIGURE: [&str; 9] = [
 ];
 
 /// Columns of each fracture, led by its name: `tile_shots`.
-const FRACTURE: [&str; 6] = [
+const FRACTURE: [&str; 15] = [
     "shots",
     "edge_error_mean_nm",
     "edge_error_p95_nm",
     "edge_error_worst_nm",
     "prints_within_tolerance",
+    "corner_error_worst_nm",
+    "margin_median_nm_per_pct",
+    "margin_worst_nm_per_pct",
+    "edge_sd_median_nm",
+    "edge_sd_worst_nm",
+    "narrowest_drawn_nm",
+    "narrowest_printed_nm",
+    "printed_area_nm2",
+    "mean_dose",
     "seconds",
 ];
 
@@ -87,6 +96,15 @@ fn cells(f: &FigureFracture) -> [String; FRACTURE.len()] {
         f.prints_within_tolerance
             .map(|yes| yes.to_string())
             .unwrap_or_default(),
+        number(f.scores.and_then(|s| s.corner_error_nm.worst)),
+        number(f.scores.and_then(|s| s.margin_nm_per_pct.median)),
+        number(f.scores.and_then(|s| s.margin_nm_per_pct.worst)),
+        number(f.scores.and_then(|s| s.edge_sd_nm.median)),
+        number(f.scores.and_then(|s| s.edge_sd_nm.worst)),
+        number(f.scores.and_then(|s| s.narrowest).map(|n| n.drawn_nm)),
+        number(f.scores.and_then(|s| s.narrowest?.printed_nm)),
+        number(f.scores.map(|s| s.printed_area_nm2)),
+        number(f.mean_dose),
         number(f.seconds),
     ]
 }

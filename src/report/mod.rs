@@ -3,9 +3,11 @@
 //! Everything here reads the nouns and [`crate::quote::result`]; nothing computes a result.
 
 pub mod comparison;
+mod fidelity;
 pub mod figure_plot;
 pub mod figures_csv;
 pub mod html;
+pub mod map_plot;
 pub mod overview_plot;
 mod plot;
 pub mod progress;

@@ -4,6 +4,7 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
+use super::fidelity;
 use crate::number::{self, UNMEASURED, brief};
 use crate::quote::result::{
     Count, Flag, FractureSummary, Hours, Method, Quote, RasterLine, Sensitivity, Source,
@@ -42,6 +43,11 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     heading(quote, &mut out);
     out.blank();
     out.text.push_str(&comparison(quote, width));
+    let fidelity = fidelity::table(quote);
+    if !fidelity.is_empty() {
+        out.blank();
+        out.text.push_str(&fidelity);
+    }
     out.blank();
     out.line(
         "staircase: the plain geometric one, as a flow without simulation writes it; the baseline",
@@ -113,7 +119,11 @@ fn heading(quote: &Quote, out: &mut Text) {
         "",
     );
     let correction = quote.dose_correction;
-    if correction.backscatter_ratio > 0.0 {
+    let doses = fidelity::doses(quote);
+    if !doses.is_empty() {
+        out.line("Against backscatter every place gets its own dose:");
+        doses.iter().for_each(|line| out.line(&format!("  {line}")));
+    } else if correction.backscatter_ratio > 0.0 {
         out.paragraph(
             &format!(
                 "Every dose times {} against backscatter ({} at a mean coverage of {}): one value for the whole mask.",
@@ -342,7 +352,7 @@ fn narrow(quote: &Quote) -> Table {
 }
 
 /// One line under the header, numbers to the right, a wider gap before the columns `gaps`, no space at the line ends.
-fn finished(mut table: Table, gaps: &[usize]) -> String {
+pub(super) fn finished(mut table: Table, gaps: &[usize]) -> String {
     table
         .load_style(comfy_table::presets::NOTHING)
         .set_content_arrangement(ContentArrangement::Disabled);
