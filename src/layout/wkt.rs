@@ -4,7 +4,7 @@
 //! a thousandth of a nanometre. Holes are keyholed: each hangs on the outer ring by an edge drawn both ways.
 
 use super::error::{Fault, Parsed, Place, Remarks};
-use super::{Cell, Layer, Layout, LayoutError, MAX_COORDINATE, Shape};
+use super::{Cell, Layer, Layout, LayoutError, MAX_COORDINATE, Shapes};
 use crate::geom::{Point, Repetition};
 use crate::units::Nm;
 
@@ -39,7 +39,7 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
     let mut parser = Parser {
         text,
         at: 0,
-        shapes: Vec::new(),
+        shapes: Shapes::default(),
         remarks: Remarks::default(),
     };
     while parser.peek().is_some() {
@@ -59,7 +59,7 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
 struct Parser<'a> {
     text: &'a str,
     at: usize,
-    shapes: Vec<Shape>,
+    shapes: Shapes,
     remarks: Remarks,
 }
 
@@ -93,11 +93,9 @@ impl<'a> Parser<'a> {
         })?;
         let mut rings = rings.into_iter();
         if let Some(outer) = rings.next() {
-            self.shapes.push(Shape {
-                layer: LAYER,
-                points: keyholed(outer, rings),
-                repetition: Repetition::Once,
-            });
+            let ring = keyholed(outer, rings);
+            self.shapes
+                .add(LAYER, &ring, Point::default(), Repetition::Once);
         }
         Ok(())
     }

@@ -3,7 +3,7 @@
 use super::super::error::{Fault, Parsed, Remarks};
 use super::super::hierarchy::Interner;
 use super::super::path::{self, End};
-use super::super::{CellId, Layer, Placement, Shape};
+use super::super::{CellId, Layer, Placement, Shapes};
 use super::record::{Record, Records, tag};
 use crate::geom::{Point, Repetition};
 
@@ -18,12 +18,11 @@ pub(super) struct Context {
     off_grid_places: u64,
 }
 
-/// One element.
-pub(super) enum Element {
-    Shape(Shape),
-    Placement(Placement),
-    /// Not geometry, or nothing left of it.
-    Nothing,
+/// Where elements go.
+#[derive(Debug, Default)]
+pub(super) struct Contents {
+    pub(super) shapes: Shapes,
+    pub(super) placements: Vec<Placement>,
 }
 
 /// The records an element may hold, as found.
@@ -102,7 +101,8 @@ pub(super) fn read<'a>(
     first: &Record<'a>,
     records: &mut Records<'a>,
     context: &mut Context,
-) -> Parsed<Element> {
+    contents: &mut Contents,
+) -> Parsed<()> {
     match first.tag {
         tag::BOUNDARY | tag::BOX => {
             let fields = Fields::read(records, true)?;
@@ -112,14 +112,19 @@ pub(super) fn read<'a>(
                 "DATATYPE"
             };
             let layer = fields.layer(first, kind)?;
-            Ok(boundary(layer, fields.points, context))
+            boundary(layer, &fields.points, context, &mut contents.shapes);
+            Ok(())
         }
         tag::PATH => {
             let fields = Fields::read(records, false)?;
             let layer = fields.layer(first, "DATATYPE")?;
-            path(first, layer, &fields, context)
+            path(first, layer, &fields, context, &mut contents.shapes)
         }
-        tag::SREF | tag::AREF => placement(first, &Fields::read(records, false)?, context),
+        tag::SREF | tag::AREF => {
+            let placed = placement(first, &Fields::read(records, false)?, context)?;
+            contents.placements.push(placed);
+            Ok(())
+        }
         tag::TEXT | tag::NODE => {
             Fields::read(records, false)?;
             context.remarks.add(if first.tag == tag::TEXT {
@@ -127,28 +132,26 @@ pub(super) fn read<'a>(
             } else {
                 "node skipped"
             });
-            Ok(Element::Nothing)
+            Ok(())
         }
         _ => Err(first.unexpected("BOUNDARY, PATH, SREF, AREF, TEXT, NODE, BOX or ENDSTR")),
     }
 }
 
-fn boundary(layer: Layer, mut points: Vec<Point>, context: &mut Context) -> Element {
+fn boundary(layer: Layer, mut points: &[Point], context: &mut Context, shapes: &mut Shapes) {
     // Continued in further XY records, the outline closes at the end of the last.
-    while points.len() > 1 && points.first() == points.last() {
-        points.pop();
+    while let [first, open @ .., last] = points
+        && first == last
+    {
+        points = &points[..=open.len()];
     }
     if points.len() < 3 {
         context
             .remarks
             .add("outline of fewer than three points skipped");
-        return Element::Nothing;
+        return;
     }
-    Element::Shape(Shape {
-        layer,
-        points,
-        repetition: Repetition::Once,
-    })
+    shapes.add(layer, points, Point::default(), Repetition::Once);
 }
 
 fn path(
@@ -156,7 +159,8 @@ fn path(
     layer: Layer,
     fields: &Fields<'_>,
     context: &mut Context,
-) -> Parsed<Element> {
+    shapes: &mut Shapes,
+) -> Parsed<()> {
     if fields.points.is_empty() {
         return Err(Fault::new(
             first.place(),
@@ -185,16 +189,13 @@ fn path(
     };
     let Some(points) = path::widen(&fields.points, half_width, start, end) else {
         context.remarks.add("path that covers nothing skipped");
-        return Ok(Element::Nothing);
+        return Ok(());
     };
-    Ok(Element::Shape(Shape {
-        layer,
-        points,
-        repetition: Repetition::Once,
-    }))
+    shapes.add(layer, &points, Point::default(), Repetition::Once);
+    Ok(())
 }
 
-fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> Parsed<Element> {
+fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> Parsed<Placement> {
     let name = fields.name.ok_or_else(|| {
         Fault::new(
             first.place(),
@@ -233,14 +234,14 @@ fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> 
             .remarks
             .add("placement with absolute magnification or angle: taken as relative");
     }
-    Ok(Element::Placement(Placement {
+    Ok(Placement {
         cell: CellId(context.names.number(name)),
         origin,
         mirror: fields.mirror,
         angle_deg,
         magnification: fields.magnification.unwrap_or(1.0),
         repetition,
-    }))
+    })
 }
 
 /// An array from its total spans. A turned array seldom has a pitch of whole units: its places are then listed, each rounded on its own.
