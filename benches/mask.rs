@@ -47,6 +47,7 @@ fn flat(shapes: Vec<Shape>) -> Layout {
     Layout {
         unit: Nm(1.0),
         cells: vec![cell],
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }
@@ -105,6 +106,7 @@ fn array(columns: u64) -> Layout {
     Layout {
         unit: Nm(1.0),
         cells: vec![top, cross],
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }

@@ -1,6 +1,7 @@
 //! The command line: arguments checked into plans before any work, results on stdout, talk on stderr.
 
 mod args;
+mod drawn;
 mod error;
 mod fracture;
 mod hours;

@@ -325,6 +325,7 @@ mod tests {
         Layout {
             unit: Nm(1.0),
             cells,
+            open_outlines: 0,
             notes: vec![],
         }
     }

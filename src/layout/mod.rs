@@ -205,6 +205,8 @@ pub struct Layout {
     pub unit: Nm,
     /// All cells; placements refer to them by index. No cycle: readers refuse it.
     pub cells: Vec<Cell>,
+    /// Outlines that the file leaves open where its format wants them closed: taken as closed by a straight edge.
+    pub open_outlines: u64,
     /// What was repaired or skipped while reading, as sentences.
     pub notes: Vec<String>,
 }

@@ -177,6 +177,11 @@ pub(super) fn convert(layout: &Layout, options: &MaskOptions) -> Result<Cells, M
         }
     }
     let top_count = tops.len();
+    if options.strict && layout.open_outlines > 0 {
+        return Err(MaskError::OpenOutlines {
+            count: layout.open_outlines,
+        });
+    }
     if let Some((id, polygon, defect)) = converter.repairs.first.filter(|_| options.strict) {
         let cell = layout.cells[id].name.clone();
         return Err(MaskError::Unsound {
@@ -378,7 +383,10 @@ impl Converter<'_> {
         let points = points
             .collect::<Option<_>>()
             .ok_or_else(|| ScaleError::Range.at(&cell.name, what()))?;
-        let (figures, defects) = sound(points);
+        let (figures, mut defects) = sound(points);
+        if !scaling.keeps(shape.points.iter()) {
+            defects.push(Defect::OffGrid);
+        }
         let repetition = scaling
             .repetition(shape.repetition)
             .map_err(|e| e.at(&cell.name, what()))?;

@@ -105,8 +105,10 @@ fn gdsii_beyond_the_letter_is_taken() {
     // By hand: 500 × 40 and 200 × 40, less the quarter they share, plus the outer corner.
     assert_eq!(path.area, 20_000.0 + 8_000.0 - 400.0 + 400.0);
     assert_eq!(flat["4/0"].area, 50.0);
-    assert_eq!(layout.notes.len(), 1, "{:?}", layout.notes);
-    assert!(layout.notes[0].starts_with("1 × path of absolute width"));
+    assert_eq!(layout.notes.len(), 2, "{:?}", layout.notes);
+    assert!(layout.notes[0].starts_with("1 × outline that was not closed"));
+    assert!(layout.notes[1].starts_with("1 × path of absolute width"));
+    assert_eq!(layout.open_outlines, 1);
 }
 
 #[test]
@@ -396,7 +398,10 @@ fn wkt_reads_holes_decimals_and_empties() {
         .map(|ring| ring.area_two() as f64 / 2e6)
         .collect();
     assert_eq!(areas, [5000.0 - 205.0, 50.0, 50.0]);
-    assert_eq!(layout.notes, ["1 × ring that was not closed: closed"]);
+    assert_eq!(
+        layout.notes,
+        ["1 × outline that was not closed: closed by a straight edge"]
+    );
     // The keyhole vanishes and the hole is real.
     let first = layout.cells[0].shapes.to_vec().swap_remove(0);
     let rings: Vec<_> = shotwright::geom::Ring::new(first.points)

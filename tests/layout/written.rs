@@ -142,6 +142,7 @@ fn every_kind() -> Layout {
                 placements.collect(),
             ),
         ],
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }

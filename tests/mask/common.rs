@@ -64,6 +64,7 @@ pub(crate) fn layout(cells: Vec<Cell>) -> Layout {
     Layout {
         unit: Nm(1.0),
         cells,
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }

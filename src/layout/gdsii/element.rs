@@ -1,6 +1,6 @@
 //! GDSII elements: everything between an element's first record and its ENDEL.
 
-use super::super::error::{Fault, Parsed, Remarks};
+use super::super::error::{Fault, OPEN, Parsed, Remarks};
 use super::super::hierarchy::Interner;
 use super::super::path::{self, End};
 use super::super::{CellId, Layer, Placement, Shapes};
@@ -45,12 +45,12 @@ struct Fields<'a> {
 
 impl<'a> Fields<'a> {
     #[inline]
-    fn read(records: &mut Records<'a>, outline: bool) -> Parsed<Self> {
+    fn read(records: &mut Records<'a>) -> Parsed<Self> {
         let mut f = Self::default();
         loop {
             let record = records.expect("ENDEL")?;
             match record.tag {
-                tag::XY => record.xy(&mut f.points, outline)?,
+                tag::XY => record.xy(&mut f.points)?,
                 tag::LAYER => f.layer = Some(record.u16()?),
                 tag::DATATYPE | tag::BOXTYPE | tag::TEXTTYPE | tag::NODETYPE => {
                     f.datatype = Some(record.u16()?);
@@ -105,7 +105,7 @@ pub(super) fn read<'a>(
 ) -> Parsed<()> {
     match first.tag {
         tag::BOUNDARY | tag::BOX => {
-            let fields = Fields::read(records, true)?;
+            let fields = Fields::read(records)?;
             let kind = if first.tag == tag::BOX {
                 "BOXTYPE"
             } else {
@@ -116,17 +116,17 @@ pub(super) fn read<'a>(
             Ok(())
         }
         tag::PATH => {
-            let fields = Fields::read(records, false)?;
+            let fields = Fields::read(records)?;
             let layer = fields.layer(first, "DATATYPE")?;
             path(first, layer, &fields, context, &mut contents.shapes)
         }
         tag::SREF | tag::AREF => {
-            let placed = placement(first, &Fields::read(records, false)?, context)?;
+            let placed = placement(first, &Fields::read(records)?, context)?;
             contents.placements.push(placed);
             Ok(())
         }
         tag::TEXT | tag::NODE => {
-            Fields::read(records, false)?;
+            Fields::read(records)?;
             context.remarks.add(if first.tag == tag::TEXT {
                 "text skipped"
             } else {
@@ -140,6 +140,7 @@ pub(super) fn read<'a>(
 
 fn boundary(layer: Layer, mut points: &[Point], context: &mut Context, shapes: &mut Shapes) {
     // Continued in further XY records, the outline closes at the end of the last.
+    let all = points.len();
     while let [first, open @ .., last] = points
         && first == last
     {
@@ -150,6 +151,9 @@ fn boundary(layer: Layer, mut points: &[Point], context: &mut Context, shapes: &
             .remarks
             .add("outline of fewer than three points skipped");
         return;
+    }
+    if points.len() == all {
+        context.remarks.add(OPEN);
     }
     shapes.add(layer, points, Point::default(), Repetition::Once);
 }

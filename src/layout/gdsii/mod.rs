@@ -67,6 +67,7 @@ pub(super) fn read(source: impl Read + Send, file: &str) -> Result<Layout, Layou
     Ok(Layout {
         unit,
         cells,
+        open_outlines: library.remarks.open_outlines(),
         notes: library.remarks.sentences(),
     })
 }

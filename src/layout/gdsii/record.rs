@@ -124,21 +124,18 @@ impl<'a> Record<'a> {
         Ok(&self.data[..end])
     }
 
-    /// Adds the points of an XY record; the first of an outline leaves out a last point that repeats the first.
+    /// Adds the points of an XY record.
     #[inline]
-    pub(super) fn xy(&self, points: &mut Vec<Point>, outline: bool) -> Parsed<()> {
+    pub(super) fn xy(&self, points: &mut Vec<Point>) -> Parsed<()> {
         if !self.data.len().is_multiple_of(8) || self.data.is_empty() {
             let found = format!("XY with {} data bytes", self.data.len());
             return Err(Fault::new(self.place(), found, "a multiple of 8, not 0"));
         }
-        let n = self.data.len();
-        let closed = outline && points.is_empty() && n > 8 && self.data[..8] == self.data[n - 8..];
-        let data = &self.data[..if closed { n - 8 } else { n }];
-        if points.len() + data.len() / 8 > MAX_OUTLINE {
+        if points.len() + self.data.len() / 8 > MAX_OUTLINE {
             let found = format!("an outline of more than {MAX_OUTLINE} points");
             return Err(Fault::new(self.place(), found, "fewer"));
         }
-        points.extend(data.chunks_exact(8).map(|c| {
+        points.extend(self.data.chunks_exact(8).map(|c| {
             Point::new(
                 i64::from(i32::from_be_bytes([c[0], c[1], c[2], c[3]])),
                 i64::from(i32::from_be_bytes([c[4], c[5], c[6], c[7]])),

@@ -38,6 +38,8 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
     Ok(Layout {
         unit: raw.unit,
         cells: link(raw.cells, &raw.targets, file)?,
+        // The format closes them all.
+        open_outlines: 0,
         notes: raw.remarks.sentences(),
     })
 }
