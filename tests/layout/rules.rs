@@ -1,5 +1,6 @@
 //! What the readers accept, repair and refuse, and how they say it.
 
+use shotwright::geom::{Point, Repetition};
 use shotwright::layout::{self, Layout, LayoutError, Place};
 
 use super::bytes::{boundary, library, oasis, record, short, sref, xy};
@@ -158,6 +159,32 @@ fn arrays_count_to_the_end_of_sixteen_bits() {
     .concat();
     let layout = read(&library(&[(b"AA", boundary(&SQUARE)), (b"BB", array)])).expect("reads");
     assert_eq!(layout.summary().placements, 65_535 * 40_000);
+}
+
+/// Found by fuzzing: some hundred bytes asked for a list of 3.7 million places.
+#[test]
+fn arrays_off_the_grid_list_columns_and_rows_and_not_their_product() {
+    let array = [
+        record(0x0B00, &[]),
+        record(0x1206, b"AA"),
+        record(0x1302, &[0x00, 0x44, 0xD6, 0x03]),
+        xy(&[(2, 7), (2 + 1001, 7 + 500), (2, 7 + 54_000)]),
+        record(0x1100, &[]),
+    ]
+    .concat();
+    let square = boundary(&[(0, 0), (1, 0), (1, 1), (0, 1)]);
+    let layout = read(&library(&[(b"AA", square), (b"BB", array)])).expect("reads");
+    let repetition = &layout.cells[1].placements[0].repetition;
+    assert_eq!(repetition.count(), 0x44 * 0xD603);
+    let Repetition::Nested(parts) = repetition else {
+        panic!("{repetition:?}");
+    };
+    let listed: u128 = parts.iter().map(Repetition::count).sum();
+    assert_eq!(listed, 0x44 + 0xD603);
+    // Each span is divided and rounded: column 30 of 68 over (1001, 500), row 27 406 of 54 787 over 54 000.
+    let places: Vec<Point> = repetition.displacements().take(0x44 * 27_407).collect();
+    let last = places[0x44 * 27_406 + 30];
+    assert_eq!(last, Point::new(442, 221 + 27_012));
 }
 
 #[test]

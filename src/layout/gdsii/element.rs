@@ -7,15 +7,15 @@ use super::super::{CellId, Layer, Placement, Shapes};
 use super::record::{Record, Records, tag};
 use crate::geom::{Point, Repetition};
 
-/// Places that arrays with a pitch off the grid may take in one stretch of file: they have to be listed one by one.
-const MAX_OFF_GRID_PLACES: u64 = 1 << 22;
+/// Columns and rows that arrays with a pitch off the grid may take in one stretch of file: they have to be listed one by one.
+const MAX_OFF_GRID: u64 = 1 << 22;
 
 /// What an element reader collects besides shapes and placements.
 #[derive(Debug, Default)]
 pub(super) struct Context {
     pub(super) remarks: Remarks,
     pub(super) names: Interner<Vec<u8>>,
-    off_grid_places: u64,
+    off_grid: u64,
 }
 
 /// Where elements go.
@@ -223,11 +223,12 @@ fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> 
         let along = fields.points[1] - origin;
         let up = fields.points[2] - origin;
         array(columns, rows, along, up, context).ok_or_else(|| {
-            let found = format!("{columns} × {rows} places at a pitch of a fraction of a unit");
+            let found =
+                format!("one more array of {columns} × {rows} places at a pitch off the grid");
             Fault::new(
                 first.place(),
                 found,
-                format!("at most {MAX_OFF_GRID_PLACES} of them"),
+                format!("at most {MAX_OFF_GRID} columns and rows of such in 2 MiB"),
             )
         })?
     } else {
@@ -248,7 +249,8 @@ fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> 
     })
 }
 
-/// An array from its total spans. A turned array seldom has a pitch of whole units: its places are then listed, each rounded on its own.
+/// An array from its total spans. A turned array seldom has a pitch of whole units: its columns and its rows are then listed, each rounded on
+/// its own, so that a place is the sum of two roundings whatever its neighbours.
 fn array(
     columns: u64,
     rows: u64,
@@ -266,20 +268,20 @@ fn array(
             b: Point::new(up.x / m, up.y / m),
         });
     }
-    context.off_grid_places += columns * rows;
-    if context.off_grid_places > MAX_OFF_GRID_PLACES {
+    context.off_grid += columns + rows;
+    if context.off_grid > MAX_OFF_GRID {
         return None;
     }
     let part = |span: i64, i: i64, of: i64| (2 * span * i + of).div_euclid(2 * of);
-    let places = (0..m).flat_map(|j| {
-        (0..n).map(move |i| {
-            Point::new(
-                part(along.x, i, n) + part(up.x, j, m),
-                part(along.y, i, n) + part(up.y, j, m),
-            )
-        })
-    });
-    Some(Repetition::List(places.collect()))
+    let list = |span: Point, count: i64| match count {
+        1 => Repetition::Once,
+        _ => Repetition::List(
+            (0..count)
+                .map(|i| Point::new(part(span.x, i, count), part(span.y, i, count)))
+                .collect(),
+        ),
+    };
+    Some(Repetition::nested(vec![list(along, n), list(up, m)]))
 }
 
 fn positive(record: &Record<'_>) -> Parsed<f64> {
