@@ -177,7 +177,7 @@ fn arrays_off_the_grid_list_columns_and_rows_and_not_their_product() {
     let repetition = &layout.cells[1].placements[0].repetition;
     assert_eq!(repetition.count(), 0x44 * 0xD603);
     let Repetition::Nested(parts) = repetition else {
-        panic!("{repetition:?}");
+        panic!("one list of all places");
     };
     let listed: u128 = parts.iter().map(Repetition::count).sum();
     assert_eq!(listed, 0x44 + 0xD603);
