@@ -5,6 +5,8 @@ use std::path::{Path, PathBuf};
 
 use assert_cmd::Command;
 use serde_json::Value;
+use shotwright::geom::{Orientation, Point, Rect, Ring};
+use shotwright::layout::{self, Layout};
 
 /// A disc of 24 edges, 200 nm across, and a square of 180 nm, 300 nm apart.
 const SHAPES: &str = "POLYGON ((100 0, 96.6 25.9, 86.6 50, 70.7 70.7, 50 86.6, 25.9 96.6, 0 100, -25.9 96.6, -50 86.6, -70.7 70.7, -86.6 50, -96.6 25.9, -100 0, -96.6 -25.9, -86.6 -50, -70.7 -70.7, -50 -86.6, -25.9 -96.6, 0 -100, 25.9 -96.6, 50 -86.6, 70.7 -70.7, 86.6 -50, 96.6 -25.9, 100 0))
@@ -383,6 +385,94 @@ fn fractured_shots_are_judged_alike_when_read_back() {
         assert!(text.starts_with("figure,place,x_nm,y_nm,w_nm,h_nm,dose\n"));
         assert_eq!(text.lines().count() as f64, 1.0 + number(&made, "/shots"));
     }
+}
+
+/// Lower-left corner and size, pm, of every shot in a layout written by the program, sorted.
+fn drawn_shots(layout: &Layout) -> Vec<[i64; 4]> {
+    let unit = (layout.unit.0 * 1000.0).round() as i64;
+    let top = &layout.cells[0];
+    let mut found = Vec::new();
+    for placement in &top.placements {
+        for by in placement.repetition.displacements() {
+            let at = |p: Point| {
+                let p = Point::new(p.x, if placement.mirror { -p.y } else { p.y });
+                let turns = (placement.angle_deg / 90.0) as u8;
+                Orientation::new(false, turns).apply(p) + placement.origin + by
+            };
+            for shape in layout.cells[placement.cell.0].shapes.iter() {
+                if shape.layer.layer != 1 {
+                    continue;
+                }
+                for d in shape.repetition.displacements() {
+                    let around = Rect::around(shape.points.iter().map(|p| at(p + d))).unwrap();
+                    let sides = [around.width(), around.height()];
+                    found.push([around.min.x, around.min.y, sides[0], sides[1]].map(|v| v * unit));
+                }
+            }
+        }
+    }
+    found.sort_unstable();
+    found
+}
+
+#[test]
+fn shots_go_into_a_layout_as_into_a_table() {
+    let (directory, layout) = with_shapes();
+    let fracture = |file: &str, more: &[&str]| {
+        let path = directory.path().join(file);
+        let mut command = shotwright();
+        command
+            .arg("fracture")
+            .arg(&layout)
+            .args(["--method", "tile"]);
+        command
+            .args(["--sigma-nm", "12", "-o"])
+            .arg(&path)
+            .args(more);
+        run(&mut command, 0);
+        path
+    };
+    let pm = |nm: &str| (nm.parse::<f64>().unwrap() * 1000.0).round() as i64;
+    let table = fs::read_to_string(fracture("shots.csv", &[])).unwrap();
+    let mut expected: Vec<[i64; 4]> = table
+        .lines()
+        .skip(1)
+        .map(|line| line.split(',').skip(2).take(4).map(pm).collect::<Vec<_>>())
+        .map(|four| four.try_into().unwrap())
+        .collect();
+    expected.sort_unstable();
+    assert!(expected.len() > 4);
+    for file in ["shots.oas", "shots.gds"] {
+        let written = layout::open(fracture(file, &["--contours"])).unwrap();
+        assert_eq!(drawn_shots(&written), expected, "{file}");
+        // Both figures have one contour, at most the tolerance of 2 nm and the corners off the drawn outline.
+        let contours: Vec<f64> = written
+            .cells
+            .iter()
+            .flat_map(|cell| cell.shapes.iter())
+            .filter(|shape| shape.layer.layer == 2)
+            .map(|shape| Ring::new(shape.points.iter().collect()).unwrap())
+            .map(|ring| ring.area_two() as f64 / 2.0 * written.unit.0.powi(2))
+            .collect();
+        let disc = 0.5 * 24.0 * 1e4 * 15_f64.to_radians().sin();
+        let drawn = [disc, 180.0 * 180.0];
+        assert_eq!(contours.len(), 2, "{file}");
+        for want in drawn {
+            let near = |found: &&f64| (**found - want).abs() < 0.04 * want;
+            assert!(
+                contours.iter().any(|c| near(&c)),
+                "{file}: {contours:?}, {want}"
+            );
+        }
+    }
+    let mut command = shotwright();
+    command
+        .arg("fracture")
+        .arg(&layout)
+        .args(["--method", "tile"]);
+    command.args(["--sigma-nm", "12", "--contours", "-o"]);
+    let (_, err) = run(command.arg(directory.path().join("shots.csv")), 2);
+    assert!(err.contains("--contours needs a layout"), "{err}");
 }
 
 /// A shot list with a gap, and one with a shot far off: both must fail.

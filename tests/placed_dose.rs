@@ -72,7 +72,9 @@ fn dense(listed: bool, more: &str) -> Layout {
     } else {
         array
     };
-    layout.cells[0].shapes[0].repetition = repetition;
+    let mut shapes = layout.cells[0].shapes.to_vec();
+    shapes[0].repetition = repetition;
+    layout.cells[0].shapes = shapes.into_iter().collect();
     layout
 }
 

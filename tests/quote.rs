@@ -80,12 +80,14 @@ fn squares(columns: u64, rows: u64, a: [f64; 2], b: [f64; 2]) -> Layout {
     let units = |nm: f64| Nm(nm).to_pm().unwrap() / layout.unit.to_pm().unwrap();
     let step = |[x, y]: [f64; 2]| Point::new(units(x), units(y));
     let (a, b) = (step(a), step(b));
-    layout.cells[0].shapes[0].repetition = Repetition::Lattice {
+    let mut shapes = layout.cells[0].shapes.to_vec();
+    shapes[0].repetition = Repetition::Lattice {
         columns,
         rows,
         a,
         b,
     };
+    layout.cells[0].shapes = shapes.into();
     layout
 }
 

@@ -1,6 +1,6 @@
 //! `shotwright fracture`: one fracture of a layout as a shot list.
 
-use std::io::{self, Write};
+use std::io::{self, BufWriter, Write};
 use std::path::PathBuf;
 
 use clap::{Args, ValueEnum};
@@ -23,6 +23,7 @@ use super::args::SetupArgs;
 use super::values::{EffortArg, stray};
 use crate::report::table::{grouped, significant};
 
+use super::drawn::{self, Drawn};
 use super::output::{aligned, create, file_error, print, print_json, scores};
 use super::{CliError, Outcome};
 
@@ -55,12 +56,16 @@ pub(super) struct FractureArgs {
     /// How hard to search.
     #[arg(long, value_enum, default_value_t)]
     effort: EffortArg,
-    /// Where the shots go, as CSV; - is standard output, and the summary then goes to standard error.
+    /// Where the shots go: CSV, or a layout if the name ends in .oas or .gds (layer 1, the dose in thousandths as datatype); - is CSV
+    /// on standard output, and the summary then goes to standard error.
     #[arg(short, long, value_name = "FILE")]
     output: Option<PathBuf>,
     /// Write the shots of each distinct figure once, at its first place, instead of at all its places.
     #[arg(long)]
     distinct: bool,
+    /// Draw the printed contours into the layout, too: layer 2/0, around holes 2/1.
+    #[arg(long)]
+    contours: bool,
     /// Print the summary as JSON.
     #[arg(long)]
     json: bool,
@@ -129,6 +134,13 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
             "--json and -o - both want standard output: give -o a file".to_owned(),
         ));
     }
+    let drawn = args.output.as_deref().and_then(drawn::format);
+    if args.contours && drawn.is_none() {
+        return Err(CliError::Arguments(
+            "--contours needs a layout to draw into: -o with a name that ends in .oas or .gds"
+                .to_owned(),
+        ));
+    }
     let file = args
         .output
         .as_ref()
@@ -150,7 +162,24 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
         setup.limits.sliver,
     );
 
-    if let Some((path, mut out)) = file {
+    if let (Some((path, out)), Some(format)) = (&file, drawn) {
+        let drawn = Drawn {
+            mask: &mask,
+            made: &made,
+            blur: setup.blur,
+            contours: args.contours,
+            distinct: args.distinct,
+        };
+        let (layout, shots) = drawn.layout();
+        layout
+            .write(format, BufWriter::new(out.get_ref()))
+            .map_err(|cause| file_error(path, io::Error::other(cause)))?;
+        eprintln!("{}: {shots} shots written as {format}", path.display());
+        let left_out = drawn::too_large(&mask, setup.blur);
+        if args.contours && left_out > 0 {
+            eprintln!("{left_out} figures are too large for their contour to be drawn");
+        }
+    } else if let Some((path, mut out)) = file {
         let rows = write(&mask, &made, args.distinct, &mut out)
             .map_err(|cause| file_error(path, cause))?;
         eprintln!("{}: {rows} shots written", path.display());

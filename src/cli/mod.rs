@@ -3,6 +3,7 @@
 mod args;
 mod compare;
 mod correct;
+mod drawn;
 mod error;
 mod files;
 mod fracture;

@@ -162,14 +162,16 @@ impl Chosen<'_> {
     /// # Errors
     /// As [`mask::build`].
     pub fn mask(&self, setup: &Setup) -> Result<Mask, MaskError> {
-        mask::build(
+        let mask = mask::build(
             self.layout,
             &MaskOptions {
                 reach: setup.blur.sigma() * REACH,
                 address: setup.limits.address,
                 ..self.options.clone()
             },
-        )
+        )?;
+        mask.check_size()?;
+        Ok(mask)
     }
 
     fn source(&self, mask: &Mask, coverage: Option<f64>) -> Source {
