@@ -4,7 +4,7 @@
 //! together, keeps tiles apart, and merges and drops tiles as long as the print stays within tolerance. What comes
 //! out mixes directions where a merge across slabs holds.
 
-use crate::fracture::fit::{Budget, Setting, Slabs, Stage, best_of};
+use crate::fracture::fit::{Budget, Setting, Slabs, best_of};
 use crate::fracture::{Effort, Fracture, Job};
 
 /// How far the outline may wander within a first slab, σ. Finer starts hardly ever fail to print and merge to the same counts or
@@ -45,31 +45,13 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
     };
     let slabs = Slabs::of(job, &setting.target);
     let [sliver, least] = setting.least_sides();
-    let stages = [
-        Stage {
-            start: sliver,
-            least: sliver,
-            mend: false,
-        },
-        // High slabs still, so that only those that must become slivers.
-        Stage {
-            start: sliver,
-            least,
-            mend: false,
-        },
-        Stage {
-            start: least,
-            least,
-            mend: true,
-        },
-    ];
-    setting.staged(&stages, |stage| {
-        let starts = SLACKS[..starts]
-            .iter()
-            .flat_map(|&slack| slabs.both(slack, stage.start));
-        let attempts = starts
-            .map(|start| setting.attempt(&start, true, stage.least, budget))
-            .collect();
-        best_of(attempts, stage.mend)
-    })
+    let starts = SLACKS[..starts].iter().flat_map(|&slack| {
+        let [a, b] = slabs.both(slack, sliver);
+        let [c, d] = slabs.mixed(slack, sliver);
+        [a, b, c, d]
+    });
+    let attempts = starts
+        .map(|start| setting.attempt(&start, true, [sliver, least], budget))
+        .collect();
+    setting.said(best_of(attempts, true))
 }
