@@ -67,7 +67,7 @@ pub(in crate::fracture) fn mend(
         }
         let places = worst(model, left.min(1 + model.flashes().count() / 16));
         if places.is_empty() {
-            return false;
+            return fit(model, solver, window, slim);
         }
         left -= places.len();
         for (place, must_print) in places {
@@ -126,6 +126,28 @@ impl Trial {
         solver.score(model, &self.removed, &self.flashes);
         solver.commit(model, &self.removed, &self.flashes);
     }
+}
+
+/// Takes away shots that are outside the limits or (tiles) on another, where the rule holds without them; with `slim`, lets those
+/// be slivers that do not. Whether that leaves nothing wrong.
+fn fit(model: &mut Model, solver: &mut Solver, window: usize, slim: bool) -> bool {
+    for slot in offenders(model, solver) {
+        let Some(flash) = model.get(slot) else {
+            continue;
+        };
+        let mut options = vec![Vec::new()];
+        if slim {
+            options.push(vec![Flash { slim, ..flash }]);
+        }
+        for added in options {
+            let trial = Trial::run(model, solver, &[slot], added, window);
+            if trial.outcome.solved {
+                trial.keep(model, solver);
+                break;
+            }
+        }
+    }
+    offenders(model, solver).is_empty()
 }
 
 /// Makes shots that may be slivers wide enough to be none, where the rule can be kept.

@@ -4,7 +4,7 @@
 //! together, keeps tiles apart, and merges and drops tiles as long as the print stays within tolerance. What comes
 //! out mixes directions where a merge across slabs holds.
 
-use crate::fracture::fit::{Budget, Setting, Slabs, best_of};
+use crate::fracture::fit::{Budget, Flash, Setting, Slabs, best_of};
 use crate::fracture::{Effort, Fracture, Job};
 
 /// How far the outline may wander within a first slab, σ. Finer starts hardly ever fail to print and merge to the same counts or
@@ -45,13 +45,20 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
     };
     let slabs = Slabs::of(job, &setting.target);
     let [sliver, least] = setting.least_sides();
-    let starts = SLACKS[..starts].iter().flat_map(|&slack| {
-        let [a, b] = slabs.both(slack, sliver);
-        let [c, d] = slabs.mixed(slack, sliver);
-        [a, b, c, d]
-    });
-    let attempts = starts
-        .map(|start| setting.attempt(&start, true, [sliver, least], budget))
-        .collect();
-    setting.said(best_of(attempts, true))
+    let slacks = &SLACKS[..starts];
+    let attempts = |starts: Vec<Vec<Flash>>| -> Vec<_> {
+        let from = |start: &Vec<Flash>| setting.attempt(start, true, [sliver, least], budget);
+        starts.iter().map(from).collect()
+    };
+    let mut found = attempts(slacks.iter().flat_map(|&s| slabs.both(s, sliver)).collect());
+    // Where slabs of one direction serve, those of both have not been found to save a tile.
+    if found.iter().all(|a| !a.holds) {
+        found.extend(attempts(
+            slacks
+                .iter()
+                .flat_map(|&s| slabs.mixed(s, sliver))
+                .collect(),
+        ));
+    }
+    setting.said(best_of(found, true))
 }

@@ -6,6 +6,9 @@ use super::{Branch, Rows};
 /// A side that wanders by less than this share of the height of a window is steep enough to be followed by slabs: 45°.
 const STEEP: f64 = 1.2;
 
+/// A part is cut across, not along: no slab is longer than this many times the chord through its middle the other way.
+const ALONG: f64 = 1.5;
+
 /// A slab is dropped when a side of it is under this share of the least one: its neighbours reach over.
 const TIP: f64 = 0.5;
 
@@ -20,7 +23,7 @@ impl Rows {
         let mut flashes = Vec::new();
         let mut covered = vec![Vec::new(); columns.crossings.len()];
         for branch in self.branches() {
-            for run in self.steep(&branch, slack, least) {
+            for run in self.steep(&branch, columns, slack, least) {
                 self.cover(&branch, &run, columns, &mut covered);
                 self.cut(&branch, run, slack, least, &mut flashes);
             }
@@ -33,10 +36,18 @@ impl Rows {
 
     /// The runs of lines of a branch about which its sides are steep or wander by little; no run and no gap between two is lower
     /// than the least slab.
-    fn steep(&self, branch: &Branch, slack: f64, least: f64) -> Vec<Run> {
+    fn steep(&self, branch: &Branch, columns: &Self, slack: f64, least: f64) -> Vec<Run> {
         let lines = self.lines(least.max(1.1 * self.sigma));
         let n = branch.spans.len();
         let half = lines.div_ceil(2);
+        let across = |i: usize| {
+            let [a, b] = branch.spans[i];
+            let middle = 0.5 * (a + b);
+            let y = self.level(branch.line + i) + 0.5 * self.pitch;
+            columns
+                .length_at(middle, y)
+                .is_none_or(|other| b - a <= ALONG * other)
+        };
         let follows = |i: usize| {
             let window = &branch.spans[i.saturating_sub(half)..(i + half + 1).min(n)];
             #[allow(clippy::cast_precision_loss, reason = "at most 1e7 lines")]
@@ -51,7 +62,7 @@ impl Rows {
             })
         };
         let mut runs: Vec<Run> = Vec::new();
-        for i in (0..n).filter(|&i| follows(i)) {
+        for i in (0..n).filter(|&i| across(i) && follows(i)) {
             match runs.last_mut() {
                 Some(run) if i - run.end < lines => run.end = i + 1,
                 _ => runs.push(i..i + 1),
@@ -87,6 +98,14 @@ impl Rows {
         for (column, from) in since {
             covered[column].push([from, y]);
         }
+    }
+
+    /// The length of the span of the line nearest to `at` that a place along it lies in.
+    fn length_at(&self, at: f64, place: f64) -> Option<f64> {
+        let line = self.between([at - self.pitch, at]).next()?;
+        let spans = self.crossings.get(line)?;
+        let after = spans.partition_point(|&c| c <= place);
+        (after % 2 == 1).then(|| spans[after] - spans[after - 1])
     }
 
     /// The lines whose middle lies in an interval.
