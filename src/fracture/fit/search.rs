@@ -33,7 +33,7 @@ pub(in crate::fracture) struct Fit {
 
 impl Fit {
     /// How much is wrong: nothing when it prints and can be written.
-    fn faults(&self) -> usize {
+    pub(in crate::fracture) fn faults(&self) -> usize {
         self.violations.len() + self.unfit.len()
     }
 }
@@ -182,34 +182,6 @@ impl<'a> Setting<'a> {
         solver.score(&model, &[], &start);
         solver.commit(&mut model, &[], &start);
         let holds = relax(&mut model, &mut solver, budget.window);
-        if let Ok(d) = std::env::var("DUMP") {
-            use std::io::Write;
-            let n = start.len();
-            let mut f = std::fs::File::create(format!("{d}/start-{n}-{holds}.csv")).unwrap();
-            writeln!(f, "x_nm,y_nm,w_nm,h_nm").unwrap();
-            for g in &start {
-                let s = g.side;
-                writeln!(f, "{},{},{},{}", s[0], s[1], s[2] - s[0], s[3] - s[1]).unwrap();
-            }
-            let mut f = std::fs::File::create(format!("{d}/relaxed-{n}-{holds}.csv")).unwrap();
-            writeln!(f, "x_nm,y_nm,w_nm,h_nm").unwrap();
-            for (_, g) in model.flashes() {
-                let s = g.side;
-                writeln!(f, "{},{},{},{}", s[0], s[1], s[2] - s[0], s[3] - s[1]).unwrap();
-            }
-            for o in offenders(&model, &solver) {
-                let s = model.get(o).unwrap().grown(-5.0).side;
-                writeln!(
-                    f,
-                    "{},{},{},{}",
-                    s[0],
-                    s[1],
-                    (s[2] - s[0]).max(3.0),
-                    (s[3] - s[1]).max(3.0)
-                )
-                .unwrap();
-            }
-        }
         Attempt {
             setting: self,
             model,
@@ -342,16 +314,7 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
             return None;
         }
         for attempt in &mut attempts {
-            let (c, w) = (attempt.count(), attempt.wrong());
             attempt.mend();
-            if std::env::var("DBG").is_ok() {
-                eprintln!(
-                    "  start {c} wrong {w} mended {} holds {} slivers {}",
-                    attempt.count(),
-                    attempt.holds,
-                    attempt.slivers()
-                );
-            }
             if attempt.holds && attempt.slivers() == 0 {
                 break;
             }
@@ -360,14 +323,7 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
     if attempts.iter().any(|a| a.holds) {
         attempts.retain(|a| a.holds);
     }
-    for a in &mut attempts {
-        let c = a.count();
-        let sl = a.slivers();
-        a.reduce();
-        if std::env::var("DBG").is_ok() {
-            eprintln!("  reduce {c}/{sl} -> {} slivers {}", a.count(), a.slivers());
-        }
-    }
+    attempts.iter_mut().for_each(Attempt::reduce);
     attempts.sort_by_key(|a| (a.slivers(), a.count()));
     let mut best: Option<Fit> = None;
     for attempt in attempts {
@@ -377,16 +333,7 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
         }) {
             break;
         }
-        let c = attempt.count();
         let fit = attempt.finish();
-        if std::env::var("DBG").is_ok() {
-            eprintln!(
-                "  finish {c} -> {} slivers {} faults {}",
-                fit.shots.len(),
-                fit.slivers,
-                fit.faults()
-            );
-        }
         let rank = |f: &Fit| (f.faults(), f.slivers, f.shots.len());
         if best.as_ref().is_none_or(|b| rank(&fit) < rank(b)) {
             best = Some(fit);

@@ -1,10 +1,11 @@
 //! Tiles of a curved figure: slabs whose levels and widths are fitted to the print, merged while it holds.
 //!
-//! The start is the figure in horizontal and in vertical slabs, finer than needed; [`crate::fracture::fit`] moves all sides
-//! together, keeps tiles apart, and merges and drops tiles as long as the print stays within tolerance. What comes
-//! out mixes directions where a merge across slabs holds.
+//! The start is the figure in horizontal and in vertical slabs, finer than needed; where neither follows the outline without slivers,
+//! also in slabs of both directions, each part cut across the way it runs. [`crate::fracture::fit`] moves all sides together, keeps
+//! tiles apart, and merges and drops tiles as long as the print stays within tolerance. Where it does not hold, shots are added; only
+//! where that does not help either, single shots may be slivers, and are made wider again if their neighbours allow it in the end.
 
-use crate::fracture::fit::{Budget, Flash, Setting, Slabs, best_of};
+use crate::fracture::fit::{Budget, Fit, Flash, Setting, Slabs, best_of};
 use crate::fracture::{Effort, Fracture, Job};
 
 /// How far the outline may wander within a first slab, σ. Finer starts hardly ever fail to print and merge to the same counts or
@@ -60,5 +61,24 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
                 .collect(),
         ));
     }
-    setting.said(best_of(found, true))
+    let mut fit = best_of(found, true);
+    // Shots that still fail somewhere: slivers anywhere, to be made wider where they can.
+    if fit.as_ref().is_none_or(|f| f.faults() > 0) {
+        let mut starts: Vec<Vec<Flash>> = SLACKS
+            .iter()
+            .flat_map(|&s| {
+                slabs
+                    .both(s, least)
+                    .into_iter()
+                    .chain(slabs.mixed(s, least))
+            })
+            .collect();
+        starts.iter_mut().flatten().for_each(|f| f.slim = true);
+        let slim = best_of(attempts(starts), true);
+        let faults = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, Fit::faults);
+        if faults(&slim) < faults(&fit) {
+            fit = slim;
+        }
+    }
+    setting.said(fit)
 }

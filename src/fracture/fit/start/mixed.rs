@@ -82,7 +82,7 @@ impl Rows {
     /// Enters the run of a branch in the lists of what is covered along each of the `columns`.
     fn cover(&self, branch: &Branch, run: &Run, columns: &Self, covered: &mut [Vec<[f64; 2]>]) {
         let span = |i: usize| columns.between(branch.spans[i]);
-        let mut since = vec![(0, 0.0); 0];
+        let mut since: Vec<(usize, f64)> = Vec::new();
         let mut open: Run = 0..0;
         for i in run.clone() {
             let y = self.level(branch.line + i);
