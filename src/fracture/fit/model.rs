@@ -1,6 +1,6 @@
 //! Shots with sides anywhere, the samples they are held to, and the dose at these; all indexed by place.
 
-use crate::blur::{PhiTable, THRESHOLD};
+use crate::blur::PhiTable;
 
 use super::samples::Sample;
 
@@ -9,12 +9,18 @@ use super::samples::Sample;
 pub(in crate::fracture) struct Flash {
     pub(in crate::fracture) side: [f64; 4],
     pub(in crate::fracture) dose: f64,
+    /// Whether it may be a sliver.
+    pub(in crate::fracture) slim: bool,
 }
 
 impl Flash {
     /// Dose 1 on the rectangle.
     pub(in crate::fracture) fn new(side: [f64; 4]) -> Self {
-        Self { side, dose: 1.0 }
+        Self {
+            side,
+            dose: 1.0,
+            slim: false,
+        }
     }
 
     /// Mirrored about the diagonal `x = y`.
@@ -22,7 +28,7 @@ impl Flash {
         let [x0, y0, x1, y1] = self.side;
         Self {
             side: [y0, x0, y1, x1],
-            dose: self.dose,
+            ..*self
         }
     }
 
@@ -51,6 +57,7 @@ impl Flash {
                 a[3].max(b[3]),
             ],
             dose: self.dose,
+            slim: false,
         }
     }
 
@@ -71,7 +78,7 @@ impl Flash {
             .flat_map(|(y0, y1)| {
                 cuts(0).map(move |(x0, x1)| Self {
                     side: [x0, y0, x1, y1],
-                    dose: self.dose,
+                    ..*self
                 })
             })
             .collect()
@@ -82,7 +89,7 @@ impl Flash {
         let s = self.side;
         Self {
             side: [s[0] - d, s[1] - d, s[2] + d, s[3] + d],
-            dose: self.dose,
+            ..*self
         }
     }
 
@@ -430,14 +437,5 @@ impl Model {
             }
         }
         self.slots[slot] = flash;
-    }
-
-    /// The worst miss of the rule over all samples, in dose; at most 0 where the rule holds.
-    pub(in crate::fracture) fn worst(&self) -> f64 {
-        self.samples
-            .iter()
-            .zip(&self.dose)
-            .map(|(s, d)| f64::from(s.sign) * (THRESHOLD - f64::from(*d)))
-            .fold(f64::NEG_INFINITY, f64::max)
     }
 }

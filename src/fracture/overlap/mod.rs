@@ -101,7 +101,7 @@ impl Overlap {
         });
         let mut fracture = setting.staged(&stages, |stage| {
             let tiles = cut.iter().filter(|_| long).map(|cut| {
-                let mut tiles = setting.attempt(cut, true, stage.least, TILES);
+                let mut tiles = setting.attempt(cut, true, [stage.least; 2], TILES);
                 tiles.reduce();
                 tiles.flashes()
             });
@@ -109,7 +109,7 @@ impl Overlap {
                 .iter()
                 .cloned()
                 .chain(tiles)
-                .map(|start| setting.attempt(&start, false, stage.least, budget));
+                .map(|start| setting.attempt(&start, false, [stage.least; 2], budget));
             best_of(attempts.collect(), stage.mend)
         });
         fracture.lower_bound = self.bound.then(|| {
