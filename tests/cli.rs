@@ -7,6 +7,7 @@ use assert_cmd::Command;
 use serde_json::Value;
 use shotwright::geom::{Orientation, Point, Rect, Ring};
 use shotwright::layout::{self, Layout};
+use shotwright::units::Nm;
 
 /// A disc of 24 edges, 200 nm across, and a square of 180 nm, 300 nm apart.
 const SHAPES: &str = "POLYGON ((100 0, 96.6 25.9, 86.6 50, 70.7 70.7, 50 86.6, 25.9 96.6, 0 100, -25.9 96.6, -50 86.6, -70.7 70.7, -86.6 50, -96.6 25.9, -100 0, -96.6 -25.9, -86.6 -50, -70.7 -70.7, -50 -86.6, -25.9 -96.6, 0 -100, 25.9 -96.6, 50 -86.6, 70.7 -70.7, 86.6 -50, 96.6 -25.9, 100 0))
@@ -389,15 +390,15 @@ fn fractured_shots_are_judged_alike_when_read_back() {
 
 /// Lower-left corner and size, pm, of every shot in a layout written by the program, sorted.
 fn drawn_shots(layout: &Layout) -> Vec<[i64; 4]> {
-    let unit = (layout.unit.0 * 1000.0).round() as i64;
+    let unit = layout.unit.to_pm().unwrap();
     let top = &layout.cells[0];
     let mut found = Vec::new();
     for placement in &top.placements {
         for by in placement.repetition.displacements() {
             let at = |p: Point| {
                 let p = Point::new(p.x, if placement.mirror { -p.y } else { p.y });
-                let turns = (placement.angle_deg / 90.0) as u8;
-                Orientation::new(false, turns).apply(p) + placement.origin + by
+                let turns = (0..4).find(|&q| f64::from(q) * 90.0 == placement.angle_deg);
+                Orientation::new(false, turns.unwrap()).apply(p) + placement.origin + by
             };
             for shape in layout.cells[placement.cell.0].shapes.iter() {
                 if shape.layer.layer != 1 {
@@ -432,7 +433,7 @@ fn shots_go_into_a_layout_as_into_a_table() {
         run(&mut command, 0);
         path
     };
-    let pm = |nm: &str| (nm.parse::<f64>().unwrap() * 1000.0).round() as i64;
+    let pm = |nm: &str| Nm(nm.parse().unwrap()).to_pm().unwrap();
     let table = fs::read_to_string(fracture("shots.csv", &[])).unwrap();
     let mut expected: Vec<[i64; 4]> = table
         .lines()

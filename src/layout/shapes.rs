@@ -390,7 +390,7 @@ mod tests {
 
     #[test]
     fn a_polygon_larger_than_a_block_stays_whole() {
-        let points: Vec<Point> = (0..BLOCK_POINTS as i64 + 5)
+        let points: Vec<Point> = (0..(1 << 17) + 5)
             .map(|i| Point::new(i, i * i % 7))
             .collect();
         let large = Shape {

@@ -406,10 +406,10 @@ mod tests {
             let value = u64::MAX >> bits & 0xA5A5_5A5A_F00F_1234;
             let mut rest = value;
             while rest > 0x7F {
-                bytes.push(0x80 | (rest & 0x7F) as u8);
+                bytes.push(0x80 | rest.to_le_bytes()[0]);
                 rest >>= 7;
             }
-            bytes.push(rest as u8);
+            bytes.push(rest.to_le_bytes()[0]);
             let length = bytes.len();
             for more in [0, 1, 9] {
                 bytes.resize(length + more, 0xFF);
