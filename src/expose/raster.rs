@@ -32,8 +32,8 @@ const BOUND: f64 = 6e-5 * 20.0 * 20.0;
 
 /// A blurred raster of shots.
 ///
-/// Averaging over a pixel of side h adds h²/12 to the variance, so it is blurred by that much less. What is left is the cubic
-/// between pixels.
+/// What lies on a pixel of side h counts as if at its middle, which takes h²/12 off the variance; it is blurred by that much more. What is
+/// left is the cubic between pixels and sides that do not lie between two of them.
 #[derive(Clone, Debug)]
 pub struct Raster {
     dose: Density,
@@ -121,7 +121,7 @@ impl Raster {
 
 /// Blurred by a Gaussian sampled at whole pixels and scaled to sum 1, rows then columns; `sigma` is that of the whole, in pixels.
 fn blurred(painted: &Density, sigma: f64) -> Density {
-    let sigma = (sigma * sigma - 1.0 / 12.0).sqrt();
+    let sigma = (sigma * sigma + 1.0 / 12.0).sqrt();
     let reach = super::dose::count(6.0 * sigma) + 1;
     #[allow(clippy::cast_precision_loss, reason = "a kernel is short")]
     let mut kernel: Vec<f64> = (0..=reach)
