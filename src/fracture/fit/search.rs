@@ -184,12 +184,11 @@ impl<'a> Setting<'a> {
         };
         let mut solver = Solver::new(self.sigma(), rules);
         let mut model = Model::new(self.target.bounds(), self.sigma(), self.samples.clone());
-        let start: Vec<Flash> = start
-            .iter()
-            .flat_map(|f| f.parts(rules.greatest_side))
-            .collect();
-        solver.score(&model, &[], &start);
-        solver.commit(&mut model, &[], &start);
+        // One by one: each then costs only what is near it.
+        let start = start.iter().flat_map(|f| f.parts(rules.greatest_side));
+        for (slot, flash) in start.enumerate() {
+            solver.set(&mut model, slot, Some(flash));
+        }
         let holds = relax(&mut model, &mut solver, budget.window);
         Attempt {
             setting: self,
