@@ -1,13 +1,16 @@
 //! The contract of every fracturer: one figure with its context in, shots that print it out.
 
 mod fit;
+mod frame;
 pub mod overlap;
 pub mod tile;
 
 use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
 
+use frame::{framed, oriented};
+
 use crate::blur::{Blur, NARROWEST_LINE};
-use crate::geom::{Figure, Orientation, Point, Transform};
+use crate::geom::{Figure, Point};
 use crate::shot::{ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
@@ -88,32 +91,6 @@ pub struct Miss {
     pub must_print: bool,
     /// Why, as far as known.
     pub reason: MissReason,
-}
-
-/// Fractures a job in a frame of its own, so that equal figures at different places give equal shots to the bit: the lower-left
-/// corner of the bounds goes to within one address unit of the origin.
-fn framed(
-    job: &Job<'_>,
-    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, FractureError>,
-) -> Result<Fracture, FractureError> {
-    let unit = job.limits.address.pm();
-    let low = job.figure.bounds().min;
-    let shift = Point::new(low.x.div_euclid(unit) * unit, low.y.div_euclid(unit) * unit);
-    let figure = job.figure.translated(-shift);
-    let context: Vec<Figure> = job.context.iter().map(|f| f.translated(-shift)).collect();
-    let mut found = fracture(&Job {
-        figure: &figure,
-        context: &context,
-        ..*job
-    })?;
-    found.shots = found.shots.transformed(Transform {
-        orientation: Orientation::IDENTITY,
-        shift,
-    });
-    for miss in &mut found.misses {
-        miss.place = miss.place + shift;
-    }
-    Ok(found)
 }
 
 impl Miss {

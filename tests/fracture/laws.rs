@@ -8,7 +8,7 @@ use shotwright::shot::ShotList;
 use super::kinds::arc;
 use super::print::wrong_pixels;
 use super::sets::{ASSIST, CURVY, figures, job};
-use super::{BOTH, Faults};
+use super::{BOTH, Faults, TILE};
 
 /// A few figures of different kinds with their σ.
 fn samples() -> Vec<(Figure, f64)> {
@@ -75,6 +75,30 @@ fn the_sense_and_the_start_of_a_ring_do_not_matter() {
         solid(points).normalized()
     };
     assert_unchanged("started elsewhere", turned, Point::new(0, 0));
+}
+
+#[test]
+fn a_mirrored_or_turned_figure_gives_the_mirrored_or_turned_tiles() {
+    // None of the samples is its own image, so the tiles are, too.
+    let mut seen = 0;
+    for (i, (figure, sigma)) in samples().iter().enumerate() {
+        let figure = figure.clone().normalized();
+        let expected = shots(&TILE, &figure, *sigma);
+        for orientation in Orientation::all() {
+            let turn = Transform {
+                orientation,
+                shift: Point::new(-12_300, 45_600),
+            };
+            let found = shots(&TILE, &figure.transformed(turn).normalized(), *sigma);
+            assert_eq!(
+                found,
+                expected.transformed(turn),
+                "sample {i} {orientation:?}"
+            );
+            seen += 1;
+        }
+    }
+    assert_eq!(seen, 6 * 8);
 }
 
 #[test]

@@ -18,5 +18,5 @@ mod start;
 
 pub(super) use model::Flash;
 pub(super) use reduce::Budget;
-pub(super) use search::{Setting, Stage, best_of};
+pub(super) use search::{Fit, Setting, Stage, best_of};
 pub(super) use start::{Slabs, cover};

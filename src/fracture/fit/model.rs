@@ -10,12 +10,18 @@ use super::samples::{ContextDose, Sample};
 pub(in crate::fracture) struct Flash {
     pub(in crate::fracture) side: [f64; 4],
     pub(in crate::fracture) dose: f64,
+    /// Whether it may be a sliver.
+    pub(in crate::fracture) slim: bool,
 }
 
 impl Flash {
     /// Dose 1 on the rectangle.
     pub(in crate::fracture) fn new(side: [f64; 4]) -> Self {
-        Self { side, dose: 1.0 }
+        Self {
+            side,
+            dose: 1.0,
+            slim: false,
+        }
     }
 
     /// Mirrored about the diagonal `x = y`.
@@ -23,7 +29,7 @@ impl Flash {
         let [x0, y0, x1, y1] = self.side;
         Self {
             side: [y0, x0, y1, x1],
-            dose: self.dose,
+            ..*self
         }
     }
 
@@ -52,6 +58,7 @@ impl Flash {
                 a[3].max(b[3]),
             ],
             dose: self.dose,
+            slim: false,
         }
     }
 
@@ -72,7 +79,7 @@ impl Flash {
             .flat_map(|(y0, y1)| {
                 cuts(0).map(move |(x0, x1)| Self {
                     side: [x0, y0, x1, y1],
-                    dose: self.dose,
+                    ..*self
                 })
             })
             .collect()
@@ -83,7 +90,7 @@ impl Flash {
         let s = self.side;
         Self {
             side: [s[0] - d, s[1] - d, s[2] + d, s[3] + d],
-            dose: self.dose,
+            ..*self
         }
     }
 

@@ -47,11 +47,14 @@ pub(in crate::fracture) fn relax(model: &mut Model, solver: &mut Solver, window:
 }
 
 /// Adds or splits shots where moving them does not do, at most `most`; whether the rule holds in the end.
+///
+/// With `slim`, the shots concerned may become slivers.
 pub(in crate::fracture) fn mend(
     model: &mut Model,
     solver: &mut Solver,
     window: usize,
     most: usize,
+    slim: bool,
 ) -> bool {
     let mut left = most;
     loop {
@@ -64,12 +67,13 @@ pub(in crate::fracture) fn mend(
         }
         let places = worst(model, left.min(1 + model.flashes().count() / 16));
         if places.is_empty() {
-            return false;
+            return fit(model, solver, window, slim);
         }
         left -= places.len();
         for (place, must_print) in places {
             let mut best: Option<Trial> = None;
-            for (removed, added) in options(model, place, must_print) {
+            for (removed, mut added) in options(model, place, must_print, slim) {
+                added.iter_mut().for_each(|f| f.slim |= slim);
                 let trial = Trial::run(model, solver, &removed, added, window);
                 // The first of equals stays.
                 if best.as_ref().is_none_or(|b| trial.gain() > b.gain()) {
@@ -124,8 +128,57 @@ impl Trial {
     }
 }
 
-/// Ways to have one shot more about a place.
-fn options(model: &Model, place: [f64; 2], must_print: bool) -> Vec<(Vec<usize>, Vec<Flash>)> {
+/// Takes away shots that are outside the limits or (tiles) on another, where the rule holds without them; with `slim`, lets those
+/// be slivers that do not. Whether that leaves nothing wrong.
+fn fit(model: &mut Model, solver: &mut Solver, window: usize, slim: bool) -> bool {
+    for slot in offenders(model, solver) {
+        let Some(flash) = model.get(slot) else {
+            continue;
+        };
+        let mut options = vec![Vec::new()];
+        if slim {
+            options.push(vec![Flash { slim, ..flash }]);
+        }
+        for added in options {
+            let trial = Trial::run(model, solver, &[slot], added, window);
+            if trial.outcome.solved {
+                trial.keep(model, solver);
+                break;
+            }
+        }
+    }
+    offenders(model, solver).is_empty()
+}
+
+/// Makes shots that may be slivers wide enough to be none, where the rule can be kept.
+pub(in crate::fracture) fn widen(model: &mut Model, solver: &mut Solver, window: usize) {
+    let slim: Vec<usize> = model
+        .flashes()
+        .filter(|(_, f)| f.slim)
+        .map(|(s, _)| s)
+        .collect();
+    for slot in slim {
+        let Some(flash) = model.get(slot) else {
+            continue;
+        };
+        let wide = Flash {
+            slim: false,
+            ..flash
+        };
+        let trial = Trial::run(model, solver, &[slot], vec![wide], window);
+        if trial.outcome.solved {
+            trial.keep(model, solver);
+        }
+    }
+}
+
+/// Ways to have one shot more about a place, and (`moved`) those that only move the nearest.
+fn options(
+    model: &Model,
+    place: [f64; 2],
+    must_print: bool,
+    moved: bool,
+) -> Vec<(Vec<usize>, Vec<Flash>)> {
     let sigma = model.sigma;
     let here = Flash::new([place[0], place[1], place[0], place[1]]);
     let mut near: Vec<(f64, usize)> = model
@@ -140,6 +193,9 @@ fn options(model: &Model, place: [f64; 2], must_print: bool) -> Vec<(Vec<usize>,
     }
     for &(_, slot) in near.iter().take(2) {
         let Some(f) = model.get(slot) else { continue };
+        if moved {
+            options.push((vec![slot], vec![f]));
+        }
         for (axis, at) in place.iter().enumerate() {
             let (low, high) = (f.side[axis], f.side[axis + 2]);
             let cut = at.clamp(low + 0.3 * (high - low), high - 0.3 * (high - low));
@@ -154,11 +210,11 @@ fn options(model: &Model, place: [f64; 2], must_print: bool) -> Vec<(Vec<usize>,
 
 /// Slots of shots that come nearest to a sample where the rule is broken, and of those outside the limits or (tiles) on another,
 /// ascending.
-fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
+pub(super) fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
     let reach = 3.0 * model.sigma;
     let unfit = |slot: usize, f: &Flash| {
         let off = |axis: usize| {
-            f.length(axis) < solver.rules.least_side - UNFIT
+            f.length(axis) < solver.rules.least(f) - UNFIT
                 || f.length(axis) > solver.rules.greatest_side + UNFIT
         };
         off(0)

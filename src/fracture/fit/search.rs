@@ -7,7 +7,7 @@ use crate::units::Dose;
 
 use super::model::{Flash, Model};
 use super::reduce::{Budget, reduce};
-use super::relax::{mend, relax};
+use super::relax::{mend, offenders, relax, widen};
 use super::samples::{ContextDose, Sample, samples_of};
 use super::snap::{check, shots, snap, unfit};
 use super::solve::{Rules, Solver};
@@ -27,11 +27,13 @@ pub(in crate::fracture) struct Fit {
     pub(in crate::fracture) violations: Vec<Violation>,
     /// Shots outside the limits, or tiles on another.
     pub(in crate::fracture) unfit: Vec<Flash>,
+    /// Shots let be slivers, and that are.
+    pub(in crate::fracture) slivers: usize,
 }
 
 impl Fit {
     /// How much is wrong: nothing when it prints and can be written.
-    fn faults(&self) -> usize {
+    pub(in crate::fracture) fn faults(&self) -> usize {
         self.violations.len() + self.unfit.len()
     }
 }
@@ -68,8 +70,8 @@ impl<'a> Setting<'a> {
             model.place(
                 slot,
                 Some(Flash {
-                    side: [x0, y0, x1, y1],
                     dose: dose.0,
+                    ..Flash::new([x0, y0, x1, y1])
                 }),
             );
         }
@@ -79,6 +81,7 @@ impl<'a> Setting<'a> {
             shots,
             violations,
             unfit,
+            slivers: 0,
         }))
     }
 
@@ -88,6 +91,7 @@ impl<'a> Setting<'a> {
             shots: ShotList::new(self.job.limits.address, Vec::new()),
             violations: self.samples.iter().filter_map(Sample::unprinted).collect(),
             unfit: Vec::new(),
+            slivers: 0,
         });
         let broken = fit
             .violations
@@ -125,7 +129,12 @@ impl<'a> Setting<'a> {
                 break;
             }
         }
-        let mut fracture = self.reported(best);
+        self.said(best)
+    }
+
+    /// A fit as the result of a fracture, with the slivers left in it said in a note.
+    pub(in crate::fracture) fn said(&self, fit: Option<Fit>) -> Fracture {
+        let mut fracture = self.reported(fit);
         let slivers = fracture.shots.slivers(self.job.limits.sliver);
         if slivers > 0 {
             fracture.notes.push(format!(
@@ -145,17 +154,20 @@ impl<'a> Setting<'a> {
         ]
     }
 
-    /// Shots that start as `start`, no side under `least` nm, moved to where the rule holds if moving them can bring that about.
+    /// Shots that start as `start`, moved to where the rule holds if moving them can bring that about.
+    ///
+    /// No side is under the first of `least` (nm), and under the second only of shots let be slivers where nothing else mends a place.
     pub(in crate::fracture) fn attempt(
         &self,
         start: &[Flash],
         disjoint: bool,
-        least: f64,
+        least: [f64; 2],
         budget: Budget,
     ) -> Attempt<'_> {
         let limits = &self.job.limits;
         let rules = Rules {
-            least_side: least,
+            least_side: least[0],
+            slim_side: least[1],
             // One address off, so that rounding cannot overstep it; `least` likewise.
             greatest_side: limits.greatest_side.0 - limits.address.nm().0,
             disjoint,
@@ -196,20 +208,39 @@ impl Attempt<'_> {
         self.model.flashes().count()
     }
 
-    /// The worst miss of the rule at the samples, in dose.
-    pub(in crate::fracture) fn worst(&self) -> f64 {
-        self.model.worst()
+    /// How many shots would have to do better for the rule to hold at all samples.
+    pub(in crate::fracture) fn wrong(&self) -> usize {
+        offenders(&self.model, &self.solver).len()
     }
 
-    /// Adds shots until the rule holds at the samples, as far as a few can bring that about.
+    /// How many shots may be slivers and are.
+    pub(in crate::fracture) fn slivers(&self) -> usize {
+        let least = self.solver.rules.least_side;
+        let slim = |f: &Flash| f.length(0).min(f.length(1)) < least;
+        self.model
+            .flashes()
+            .filter(|(_, f)| f.slim && slim(f))
+            .count()
+    }
+
+    /// Adds shots until the rule holds at the samples, as far as a few can bring that about; slivers only if nothing else does.
     pub(in crate::fracture) fn mend(&mut self) {
-        let most = 4 + self.count() / 4;
-        self.holds = mend(&mut self.model, &mut self.solver, self.budget.window, most);
+        let Self {
+            model,
+            solver,
+            budget,
+            ..
+        } = self;
+        let most = 4 + model.flashes().count() / 4;
+        let slim = solver.rules.slim_side < solver.rules.least_side;
+        self.holds = mend(model, solver, budget.window, most, false)
+            || (slim && mend(model, solver, budget.window, most, true));
     }
 
-    /// Takes shots away where the rule holds around them.
+    /// Takes shots away where the rule holds around them, and makes slivers wider where it does.
     pub(in crate::fracture) fn reduce(&mut self) {
         reduce(&mut self.model, &mut self.solver, self.budget);
+        widen(&mut self.model, &mut self.solver, self.budget.window);
     }
 
     /// Check, repair what the samples did not see, snap, and check again what is then really flashed.
@@ -233,6 +264,7 @@ impl Attempt<'_> {
                 shots: shots(&snapped, address),
                 violations,
                 unfit,
+                slivers: self.slivers(),
             };
             let holds = fit.faults() == 0;
             if best.as_ref().is_none_or(|b| fit.faults() < b.faults()) {
@@ -247,9 +279,14 @@ impl Attempt<'_> {
                 budget,
                 ..
             } = &mut self;
-            if !relax(model, solver, budget.window.max(10)) && mend(model, solver, budget.window, 2)
-            {
-                reduce(model, solver, *budget);
+            if !relax(model, solver, budget.window.max(10)) {
+                let slim = solver.rules.slim_side < solver.rules.least_side;
+                if mend(model, solver, budget.window, 2, false)
+                    || (slim && mend(model, solver, budget.window, 4, true))
+                {
+                    reduce(model, solver, *budget);
+                    widen(model, solver, budget.window);
+                }
             }
         }
         best.unwrap_or_else(|| unreachable!("at least one round was made"))
@@ -271,14 +308,14 @@ pub(in crate::fracture) struct Stage {
 ///
 /// Those that do not hold are mended only when none does, the nearest first and until one holds; `None` if that is not wanted.
 pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -> Option<Fit> {
-    attempts.sort_by(|a, b| b.holds.cmp(&a.holds).then(a.worst().total_cmp(&b.worst())));
+    attempts.sort_by_cached_key(|a| (!a.holds, a.wrong()));
     if attempts.first().is_some_and(|a| !a.holds) {
         if !mend {
             return None;
         }
         for attempt in &mut attempts {
             attempt.mend();
-            if attempt.holds {
+            if attempt.holds && attempt.slivers() == 0 {
                 break;
             }
         }
@@ -287,18 +324,17 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
         attempts.retain(|a| a.holds);
     }
     attempts.iter_mut().for_each(Attempt::reduce);
-    attempts.sort_by_key(Attempt::count);
+    attempts.sort_by_key(|a| (a.slivers(), a.count()));
     let mut best: Option<Fit> = None;
     for attempt in attempts {
         // Repairs may have added shots: only an attempt with fewer can still do better.
-        if best
-            .as_ref()
-            .is_some_and(|b| b.faults() == 0 && b.shots.len() <= attempt.count())
-        {
+        if best.as_ref().is_some_and(|b| {
+            b.faults() == 0 && (b.slivers, b.shots.len()) <= (attempt.slivers(), attempt.count())
+        }) {
             break;
         }
         let fit = attempt.finish();
-        let rank = |f: &Fit| (f.faults(), f.shots.len());
+        let rank = |f: &Fit| (f.faults(), f.slivers, f.shots.len());
         if best.as_ref().is_none_or(|b| rank(&fit) < rank(b)) {
             best = Some(fit);
         }

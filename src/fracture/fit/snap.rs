@@ -125,7 +125,7 @@ fn nudge(model: &mut Model, solver: &mut Solver, slot: usize, unit: f64) -> bool
             moved.side[side] += by;
             let fits = (0..2).all(|axis| {
                 let length = moved.length(axis);
-                length >= solver.rules.least_side - 1e-6
+                length >= solver.rules.least(&moved) - 1e-6
                     && length <= solver.rules.greatest_side + 1e-6
             });
             let apart = !solver.rules.disjoint

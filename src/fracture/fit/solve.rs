@@ -12,14 +12,27 @@ use super::model::{Band, Flash, Model};
 /// What shots must keep besides the print rule.
 #[derive(Clone, Copy, Debug)]
 pub(in crate::fracture) struct Rules {
-    /// nm.
+    /// Of a shot that may not be a sliver, nm.
     pub(in crate::fracture) least_side: f64,
+    /// Of one that may, nm.
+    pub(in crate::fracture) slim_side: f64,
     /// nm.
     pub(in crate::fracture) greatest_side: f64,
     /// No two shots may overlap.
     pub(in crate::fracture) disjoint: bool,
     /// Dose to spare at every sample: covers rounding to the address grid and what lies between samples.
     pub(in crate::fracture) guard: f32,
+}
+
+impl Rules {
+    /// The least side that holds for a shot, nm.
+    pub(super) fn least(&self, flash: &Flash) -> f64 {
+        if flash.slim {
+            self.slim_side
+        } else {
+            self.least_side
+        }
+    }
 }
 
 /// How a fit ended.
@@ -37,6 +50,7 @@ pub(in crate::fracture) struct Outcome {
 #[derive(Clone, Copy)]
 struct Local {
     side: [f64; 4],
+    least: f64,
     dose: f32,
 }
 
@@ -172,7 +186,7 @@ impl Solver {
                             .zip(self.step.chunks_exact(4))
                             .map(|(f, s)| Local {
                                 side: std::array::from_fn(|i| f.side[i] + s[i]),
-                                dose: f.dose,
+                                ..*f
                             }),
                     );
                 let upright = self
@@ -314,6 +328,7 @@ impl Solver {
         )]
         Local {
             side: std::array::from_fn(|i| (flash.side[i] - self.origin[i % 2]) / self.sigma),
+            least: self.rules.least(flash) / self.sigma,
             dose: flash.dose as f32,
         }
     }
@@ -373,17 +388,14 @@ impl Solver {
     /// Inequalities on sides: least, greatest, and for tiles no overlap among the window or with what stays.
     fn link(&mut self) {
         self.links.clear();
-        let (least, greatest) = (
-            self.rules.least_side / self.sigma,
-            self.rules.greatest_side / self.sigma,
-        );
+        let greatest = self.rules.greatest_side / self.sigma;
         for (k, f) in self.local.iter().enumerate() {
             for axis in 0..2 {
                 let (low, high) = (4 * k + axis, 4 * k + axis + 2);
                 self.links.push(Link {
                     plus: Some(low),
                     minus: Some(high),
-                    limit: -least,
+                    limit: -f.least,
                 });
                 if f.side[axis + 2] - f.side[axis] > greatest - 1.0 {
                     self.links.push(Link {

@@ -6,9 +6,12 @@ use crate::target::Target;
 
 use std::cmp::Reverse;
 use std::collections::BinaryHeap;
+use std::ops::Range;
 
 use super::model::{Bins, Flash};
 use super::samples::Sample;
+
+mod mixed;
 
 /// Horizontal scan lines through a figure, evenly spaced over its height.
 struct Rows {
@@ -105,34 +108,45 @@ impl Rows {
     /// Cuts every branch of the figure into slabs as high as its two sides wander by at most `slack` σ within them (but no lower
     /// than `least` nm and about σ), each as wide as the branch is there on average.
     fn slabs(&self, slack: f64, least: f64) -> Vec<Flash> {
-        let least = self.lines(least.max(1.1 * self.sigma));
-        let limit = slack * self.sigma;
         let mut flashes = Vec::new();
         for branch in self.branches() {
-            let n = branch.spans.len();
-            let mut from = 0;
-            while from < n {
-                let (mut low, mut high) = (branch.spans[from], branch.spans[from]);
-                let mut to = from + 1;
-                while to < n {
-                    for side in 0..2 {
-                        low[side] = low[side].min(branch.spans[to][side]);
-                        high[side] = high[side].max(branch.spans[to][side]);
-                    }
-                    if to - from >= least && (0..2).any(|side| high[side] - low[side] > limit) {
-                        break;
-                    }
-                    to += 1;
-                }
-                // No low slab at the end.
-                if 10 * (n - to) < 7 * least {
-                    to = n;
-                }
-                flashes.extend(self.slab(&branch, from, to));
-                from = to;
-            }
+            self.cut(&branch, 0..branch.spans.len(), slack, least, &mut flashes);
         }
         flashes
+    }
+
+    /// Cuts some lines of a branch into slabs; see [`Rows::slabs`].
+    fn cut(
+        &self,
+        branch: &Branch,
+        lines: Range<usize>,
+        slack: f64,
+        least: f64,
+        flashes: &mut Vec<Flash>,
+    ) {
+        let least = self.lines(least.max(1.1 * self.sigma));
+        let limit = slack * self.sigma;
+        let mut from = lines.start;
+        while from < lines.end {
+            let (mut low, mut high) = (branch.spans[from], branch.spans[from]);
+            let mut to = from + 1;
+            while to < lines.end {
+                for side in 0..2 {
+                    low[side] = low[side].min(branch.spans[to][side]);
+                    high[side] = high[side].max(branch.spans[to][side]);
+                }
+                if to - from >= least && (0..2).any(|side| high[side] - low[side] > limit) {
+                    break;
+                }
+                to += 1;
+            }
+            // No low slab at the end.
+            if 10 * (lines.end - to) < 7 * least {
+                to = lines.end;
+            }
+            flashes.extend(self.slab(branch, from, to));
+            from = to;
+        }
     }
 
     /// Lines `from..to` of a branch as one shot, unless it is too small to matter.
@@ -208,7 +222,7 @@ impl Rows {
         }
         Flash {
             side: [x0, self.level(from).min(y0), x1, self.level(to + 1).max(y1)],
-            dose: flash.dose,
+            ..*flash
         }
     }
 }
@@ -244,6 +258,16 @@ impl Slabs {
                 .map(Flash::flipped)
                 .collect(),
         ]
+    }
+
+    /// Slabs of both directions, each part of the figure cut across the way its outline runs: first the horizontal ones where they
+    /// serve, then the other way round; see [`Rows::mixed`].
+    pub(in crate::fracture) fn mixed(&self, slack: f64, least: f64) -> [Vec<Flash>; 2] {
+        let mut upright = self.columns.mixed(&self.rows, slack, least);
+        for flash in &mut upright {
+            *flash = flash.flipped();
+        }
+        [self.rows.mixed(&self.columns, slack, least), upright]
     }
 
     /// The slabs of both directions, each grown across as far as the figure allows; see [`Rows::grown`].

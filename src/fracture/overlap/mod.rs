@@ -94,7 +94,7 @@ impl Overlap {
         let mut fracture = setting.staged(&stages, |stage| {
             let attempts = starts
                 .iter()
-                .map(|start| setting.attempt(start, false, stage.least, budget));
+                .map(|start| setting.attempt(start, false, [stage.least; 2], budget));
             best_of(attempts.collect(), stage.mend)
         });
         fracture.lower_bound = self.bound.then(|| {

@@ -1,10 +1,11 @@
 //! Tiles of a curved figure: slabs whose levels and widths are fitted to the print, merged while it holds.
 //!
-//! The start is the figure in horizontal and in vertical slabs, finer than needed; [`crate::fracture::fit`] moves all sides
-//! together, keeps tiles apart, and merges and drops tiles as long as the print stays within tolerance. What comes
-//! out mixes directions where a merge across slabs holds.
+//! The start is the figure in horizontal and in vertical slabs, finer than needed; where neither follows the outline without slivers,
+//! also in slabs of both directions, each part cut across the way it runs. [`crate::fracture::fit`] moves all sides together, keeps
+//! tiles apart, and merges and drops tiles as long as the print stays within tolerance. Where it does not hold, shots are added; only
+//! where that does not help either, single shots may be slivers, and are made wider again if their neighbours allow it in the end.
 
-use crate::fracture::fit::{Budget, Setting, Slabs, Stage, best_of};
+use crate::fracture::fit::{Budget, Fit, Flash, Setting, Slabs, best_of};
 use crate::fracture::{Effort, Fracture, Job};
 
 /// How far the outline may wander within a first slab, σ. Finer starts hardly ever fail to print and merge to the same counts or
@@ -45,31 +46,39 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
     };
     let slabs = Slabs::of(job, &setting.target);
     let [sliver, least] = setting.least_sides();
-    let stages = [
-        Stage {
-            start: sliver,
-            least: sliver,
-            mend: false,
-        },
-        // High slabs still, so that only those that must become slivers.
-        Stage {
-            start: sliver,
-            least,
-            mend: false,
-        },
-        Stage {
-            start: least,
-            least,
-            mend: true,
-        },
-    ];
-    setting.staged(&stages, |stage| {
-        let starts = SLACKS[..starts]
+    let slacks = &SLACKS[..starts];
+    let attempts = |starts: Vec<Vec<Flash>>| -> Vec<_> {
+        let from = |start: &Vec<Flash>| setting.attempt(start, true, [sliver, least], budget);
+        starts.iter().map(from).collect()
+    };
+    let mut found = attempts(slacks.iter().flat_map(|&s| slabs.both(s, sliver)).collect());
+    // Where slabs of one direction serve, those of both have not been found to save a tile.
+    if found.iter().all(|a| !a.holds) {
+        found.extend(attempts(
+            slacks
+                .iter()
+                .flat_map(|&s| slabs.mixed(s, sliver))
+                .collect(),
+        ));
+    }
+    let mut fit = best_of(found, true);
+    // Shots that still fail somewhere: slivers anywhere, to be made wider where they can.
+    if fit.as_ref().is_none_or(|f| f.faults() > 0) {
+        let mut starts: Vec<Vec<Flash>> = SLACKS
             .iter()
-            .flat_map(|&slack| slabs.both(slack, stage.start));
-        let attempts = starts
-            .map(|start| setting.attempt(&start, true, stage.least, budget))
+            .flat_map(|&s| {
+                slabs
+                    .both(s, least)
+                    .into_iter()
+                    .chain(slabs.mixed(s, least))
+            })
             .collect();
-        best_of(attempts, stage.mend)
-    })
+        starts.iter_mut().flatten().for_each(|f| f.slim = true);
+        let slim = best_of(attempts(starts), true);
+        let faults = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, Fit::faults);
+        if faults(&slim) < faults(&fit) {
+            fit = slim;
+        }
+    }
+    setting.said(fit)
 }

@@ -25,7 +25,7 @@ pub use snap::{Snapped, snap};
 pub use staircase::{StaircaseError, StaircaseFracture, fracture_staircase, staircase};
 
 use super::fit::Setting;
-use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
+use super::{Effort, Fracture, FractureError, Fracturer, Job, oriented};
 use crate::geom::Rect;
 use crate::shot::{AddressUnit, Shot, ShotList};
 use crate::units::{Dose, Nm};
@@ -47,7 +47,7 @@ impl Fracturer for Tile {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
-        framed(job, |job| self.either(job))
+        oriented(job, |job| self.either(job))
     }
 }
 
@@ -112,7 +112,7 @@ impl Fracturer for Staircase {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
-        framed(job, |job| self.walk(job))
+        oriented(job, |job| self.walk(job))
     }
 }
 
