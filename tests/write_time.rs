@@ -306,6 +306,42 @@ fn shots_across_borders_are_cut_and_counted() {
 }
 
 #[test]
+fn a_border_near_a_side_cuts_off_a_sliver_unless_shots_may_reach_over_it() {
+    // Sub-fields of 5 µm, slivers under 20 nm. By hand: 100 nm with 15 nm over a border gives a piece of 15 nm; 30 nm cut in the
+    // middle gives two of 15; a corner 15 nm off both borders gives one piece of 85 × 85 and three slivers.
+    for (rect, reach, expected) in [
+        ((4_915, 100, 5_015, 200), 0.0, (2, 1)),
+        ((4_985, 100, 5_015, 200), 0.0, (2, 2)),
+        ((4_915, 4_915, 5_015, 5_015), 0.0, (4, 3)),
+        ((4_980, 100, 5_080, 200), 0.0, (2, 0)),
+        ((4_985, 100, 5_000, 200), 0.0, (1, 0)),
+        ((4_990, 100, 5_005, 200), 0.0, (2, 0)), // a sliver before
+        ((4_915, 100, 5_015, 200), 10.0, (2, 1)),
+        ((4_915, 100, 5_015, 200), 15.0, (1, 0)),
+        ((4_985, 100, 5_015, 200), 20.0, (1, 0)),
+        ((4_915, 4_915, 5_015, 5_015), 20.0, (1, 0)),
+        ((4_950, 100, 5_050, 200), 20.0, (2, 0)),
+    ] {
+        let profile = shaped(&[
+            CURRENT,
+            DOSE,
+            ("subfield_um", 5.0),
+            ("sliver_nm", 20.0),
+            ("border_reach_nm", reach),
+        ]);
+        let shot = list(&[rect]);
+        let one = [placed(&shot, &Repetition::Once)];
+        let pattern = Pattern::Placed {
+            placed: &one,
+            frame: frame_nm(20_000, 20_000),
+        };
+        let time = WriteTime::new(&profile, &pattern).unwrap();
+        let found = (time.flashes, time.cuts.border_slivers);
+        assert_eq!(found, expected, "{rect:?}, reach {reach} nm");
+    }
+}
+
+#[test]
 fn a_shifted_grid_cuts_elsewhere() {
     // Across a stripe border of the first pass only: 2 + 1 flashes. The shifted grid has one stripe more.
     let profile = shaped(&[
@@ -627,6 +663,10 @@ struct Scene {
     rows: i64,
     passes: u32,
     shift: f64,
+    /// nm.
+    reach: i64,
+    /// nm.
+    sliver: i64,
 }
 
 fn point(reach: i64) -> impl Strategy<Value = Point> {
@@ -658,17 +698,22 @@ fn scene() -> impl Strategy<Value = Scene> {
         1i64..4,
         1u32..4,
         prop::sample::select(vec![0.0, 0.5, 0.25]),
+        (prop::sample::select(vec![0i64, 20, 400]), 0i64..600),
     )
         .prop_map(
-            |(rects, lattice, orientation, dose, cell, rows, passes, shift)| Scene {
-                rects,
-                lattice,
-                orientation,
-                dose,
-                stripe: cell * rows * PM * PM,
-                rows,
-                passes,
-                shift,
+            |(rects, lattice, orientation, dose, cell, rows, passes, shift, (reach, sliver))| {
+                Scene {
+                    rects,
+                    lattice,
+                    orientation,
+                    dose,
+                    stripe: cell * rows * PM * PM,
+                    rows,
+                    passes,
+                    shift,
+                    reach,
+                    sliver,
+                }
             },
         )
 }
@@ -712,6 +757,8 @@ impl Scene {
             ("turn_s", 0.01),
             ("passes", f64::from(self.passes)),
             ("pass_shift", self.shift),
+            ("border_reach_nm", self.reach as f64),
+            ("sliver_nm", self.sliver as f64),
         ])
     }
 
@@ -732,14 +779,16 @@ impl Scene {
         WriteTime::new(profile, &pattern).unwrap()
     }
 
-    /// Pieces of one shot in one pass as (stripe, pieces): borders are looked at one by one.
-    fn pieces(&self, rect: Rect, pass: u32) -> Vec<(i64, u128)> {
+    /// Pieces of one shot in one pass as (stripe, pieces, slivers): borders are looked at one by one.
+    fn pieces(&self, rect: Rect, pass: u32) -> Vec<(i64, u128, u128)> {
         let part = (f64::from(pass) * self.shift).fract();
         let before = |length: i64| (Nm::from_pm(length) * part).to_pm().unwrap();
         let (bottom, left) = (-before(self.stripe), -before(self.cell()));
+        let reach = self.reach * PM;
         let cut = |from: i64, to: i64, start: i64, cell: i64, least: i64, most: i64| {
             let borders = (-100..200).map(|k| start + k * cell);
-            let inside = borders.filter(|&b| b > from && b < to && b > least && b < most);
+            let inside =
+                borders.filter(|&b| b - from > reach && to - b > reach && b > least && b < most);
             let mut ends = vec![from];
             ends.extend(inside);
             ends.push(to);
@@ -754,15 +803,24 @@ impl Scene {
             self.cell(),
             i64::MIN,
             i64::MAX,
-        )
-        .len()
-            - 1;
+        );
+        let thin = |ends: &[i64]| ends[1] - ends[0] < self.sliver * PM;
+        let is_sliver = rect.width().min(rect.height()) < self.sliver * PM;
         let rows = cut(rect.min.y, rect.max.y, bottom, self.cell(), bottom, top);
         rows.windows(2)
             .map(|ends| {
                 let middle = (ends[0] + ends[1]).div_euclid(2);
+                // A shot flashed whole is written where its middle lies.
                 let stripe = (middle - bottom).div_euclid(self.stripe);
-                (stripe.clamp(0, stripes - 1), columns as u128)
+                let slim = columns
+                    .windows(2)
+                    .filter(|&c| !is_sliver && (thin(c) || thin(ends)))
+                    .count();
+                (
+                    stripe.clamp(0, stripes - 1),
+                    columns.len() as u128 - 1,
+                    slim as u128,
+                )
             })
             .collect()
     }
@@ -781,13 +839,14 @@ proptest! {
         let copies: Vec<_> = scene.lattice.displacements().collect();
         let shots = scene.shots();
         let stripes: usize = time.stripes.iter().map(|s| s.count * usize::try_from(s.passes).unwrap()).sum();
-        let (mut flashes, mut dose) = (0, 0.0);
+        let (mut flashes, mut slivers, mut dose) = (0, 0, 0.0);
         let mut by_stripe = std::collections::BTreeMap::new();
         for pass in 0..scene.passes {
             for (rect, shot_dose) in shots.rects() {
                 for &copy in &copies {
                     let rect = scene.transform().apply_rect(rect).translated(copy);
-                    for (stripe, pieces) in scene.pieces(rect, pass) {
+                    for (stripe, pieces, slim) in scene.pieces(rect, pass) {
+                        slivers += slim;
                         flashes += pieces;
                         dose += pieces as f64 * shot_dose.0 * scene.dose;
                         *by_stripe.entry((pass, stripe)).or_insert(0) += pieces;
@@ -800,6 +859,10 @@ proptest! {
         prop_assert!(near(time.flash_h.0 * 3600.0, dose * 62.5e-9 / f64::from(scene.passes)));
         prop_assert_eq!(time.shots, copies.len() as u128 * shots.len() as u128);
         prop_assert_eq!(time.cuts.border, flashes - u128::from(scene.passes) * time.shots);
+        prop_assert_eq!(time.cuts.border_slivers, slivers);
+        if scene.reach >= scene.sliver {
+            prop_assert_eq!(slivers, 0);
+        }
 
         // Stripe by stripe: the multiset of non-empty stripes is the same.
         let mut found: Vec<u128> = time.stripes.iter()

@@ -10,6 +10,8 @@ use crate::units::{Amperes, Area, Dose, Nm, Seconds};
 pub struct Cuts {
     /// More because a stripe or sub-field border cuts a shot.
     pub border: u128,
+    /// Slivers that such cuts leave of shots that are none.
+    pub border_slivers: u128,
     /// More because a shot is too large for the beam current.
     pub beam: u128,
     /// More because a shot needs a greater dose than one flash may give.

@@ -1,4 +1,8 @@
 //! Stripes and sub-fields as a grid over the frame, and counts of cells by arithmetic.
+//!
+//! The one rule for cuts: a border cuts a shot that reaches over it by more than the profile's border reach on both sides; any
+//! other shot is flashed whole from the side that holds most of it, since neighbouring fields overlap by that much. So with a
+//! reach of the sliver limit no cut leaves a sliver; with less, the slivers that cuts leave are counted.
 
 use crate::geom::{Point, Rect, Repetition};
 use crate::profile::{Key, Profile};
@@ -13,6 +17,10 @@ pub(super) struct Grid {
     stripe: i64,
     rows_per_stripe: i64,
     column: Option<i64>,
+    /// How far a shot may reach over a border uncut.
+    reach: i64,
+    /// A piece thinner than this is a sliver.
+    sliver: i64,
     /// How many stripes touch the frame.
     pub(super) stripes: i64,
 }
@@ -23,6 +31,13 @@ pub(super) struct Run {
     pub(super) start: Point,
     pub(super) step: i64,
     pub(super) count: u64,
+}
+
+/// What borders make of a shot: pieces, and how many of them are slivers though the shot is none.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub(super) struct Pieces<T> {
+    pub(super) all: T,
+    pub(super) slivers: T,
 }
 
 impl Grid {
@@ -50,6 +65,7 @@ impl Grid {
         let stated = pm_of(Key::Stripe);
         let stripe = stated.unwrap_or(frame.height());
         let column = pm_of(Key::Subfield);
+        let plain_pm = |key| Nm(profile.plain(key)).to_pm().unwrap_or(0);
         let bottom = frame.min.y - stated.map_or(0, before);
         Self {
             frame,
@@ -59,6 +75,8 @@ impl Grid {
             // Sub-fields share the stripe evenly, so that stripe borders are sub-field borders too.
             rows_per_stripe: column.map_or(1, |side| ceil_div(stripe, side)),
             column,
+            reach: plain_pm(Key::BorderReach),
+            sliver: plain_pm(Key::Sliver),
             stripes: ceil_div(frame.max.y - bottom, stripe),
         }
     }
@@ -86,51 +104,107 @@ impl Grid {
     /// the nearest stripe.
     pub(super) fn rows(&self, rect: Rect) -> impl Iterator<Item = (i64, u128)> + use<> {
         let per = self.rows_per_stripe;
-        let last_row = self.stripes * per - 1;
-        let row = |y: i64| {
-            ((y - self.bottom) * per)
-                .div_euclid(self.stripe)
-                .clamp(0, last_row)
-        };
-        // The upper side belongs to the row under it.
-        let above = ceil_div((rect.max.y - self.bottom) * per, self.stripe) - 1;
-        let (first, last) = (row(rect.min.y), above.clamp(0, last_row));
+        let (low, high) = self.uncut(rect.min.y, rect.max.y);
+        let (first, last) = self.row_span(low, high);
         (first / per..=last / per).map(move |stripe| {
             let rows = last.min(stripe * per + per - 1) - first.max(stripe * per) + 1;
             (stripe, u128::from(rows.unsigned_abs()))
         })
     }
 
+    /// The first and the last row of sub-fields that an interval of heights lies in.
+    fn row_span(&self, low: i64, high: i64) -> (i64, i64) {
+        let per = self.rows_per_stripe;
+        let last_row = self.stripes * per - 1;
+        let first = ((low - self.bottom) * per).div_euclid(self.stripe);
+        // The upper side belongs to the row under it.
+        let last = ceil_div((high - self.bottom) * per, self.stripe) - 1;
+        (first.clamp(0, last_row), last.clamp(0, last_row))
+    }
+
+    /// The part of a side within which borders cut it; where there is none, its middle.
+    fn uncut(&self, low: i64, high: i64) -> (i64, i64) {
+        if high - low > 2 * self.reach {
+            (low + self.reach, high - self.reach)
+        } else {
+            let middle = (low + high).div_euclid(2);
+            (middle, middle + 1)
+        }
+    }
+
+    /// The parts of a side within which a border leaves a sliver.
+    fn slim(&self, low: i64, high: i64) -> [(i64, i64); 2] {
+        let (from, to) = (low + self.reach, high - self.reach);
+        [
+            (from, (low + self.sliver).min(to)),
+            ((high - self.sliver).max(from), to),
+        ]
+    }
+
     /// Columns of sub-fields over which all copies of `rect` in a run are cut, summed.
-    pub(super) fn columns(&self, rect: Rect, run: Run) -> u128 {
-        let Some(side) = self.column else {
-            return u128::from(run.count);
+    pub(super) fn columns(&self, rect: Rect, run: Run) -> Pieces<u128> {
+        let (low, high) = self.uncut(rect.min.x, rect.max.x);
+        let slim = self.slim(rect.min.x, rect.max.x);
+        Pieces {
+            all: self.borders(low, high, run) + u128::from(run.count),
+            slivers: slim.iter().map(|s| self.borders(s.0, s.1, run)).sum(),
+        }
+    }
+
+    /// Borders of columns strictly between two places, over all copies in a run.
+    fn borders(&self, low: i64, high: i64, run: Run) -> u128 {
+        let Some(side) = self.column.filter(|_| high > low) else {
+            return 0;
         };
-        let from = rect.min.x + run.start.x - self.left;
-        let to = rect.max.x + run.start.x - self.left - 1;
+        let from = low + run.start.x - self.left;
+        let to = high + run.start.x - self.left - 1;
         if run.count == 1 {
-            let borders = to.div_euclid(side) - from.div_euclid(side);
-            return u128::from(borders.unsigned_abs()) + 1;
+            return u128::from((to.div_euclid(side) - from.div_euclid(side)).unsigned_abs());
         }
         let cells = |x: i64| floor_sum(run.count, side, run.step, x);
-        (cells(to) - cells(from)).unsigned_abs() + u128::from(run.count)
+        (cells(to) - cells(from)).unsigned_abs()
+    }
+
+    /// Slivers that borders make of all copies of `rect` in a run, which `columns` cut it into so many columns.
+    pub(super) fn slivers(&self, rect: Rect, run: Run, columns: Pieces<u128>) -> u128 {
+        if rect.width().min(rect.height()) < self.sliver {
+            return 0;
+        }
+        let (bottom, top) = (rect.min.y + run.start.y, rect.max.y + run.start.y);
+        let borders = |(low, high): (i64, i64)| {
+            let (first, last) = self.row_span(low, high);
+            u128::from(if high > low { last - first } else { 0 }.unsigned_abs())
+        };
+        let rows = borders(self.uncut(bottom, top)) + 1;
+        let slim: u128 = self.slim(bottom, top).into_iter().map(borders).sum();
+        rows * columns.all - (rows - slim) * (columns.all - columns.slivers)
     }
 
     /// Cells that a rectangle of this size is cut into on average over all its positions.
-    pub(super) fn expected_cells(&self, rect: Rect) -> f64 {
-        let crossings = |length: i64, cell: f64| Nm::from_pm(length).0 / cell;
-        let height = Nm::from_pm(self.stripe).0 / self.rows_per_stripe as f64;
-        let rows = 1.0
-            + if self.stripes > 1 || self.rows_per_stripe > 1 {
-                crossings(rect.height(), height)
+    pub(super) fn expected_cells(&self, rect: Rect) -> Pieces<f64> {
+        let nm = |pm: i64| Nm::from_pm(pm.max(0)).0;
+        let along = |length: i64, cell: Option<f64>| {
+            let slim: f64 = self.slim(0, length).iter().map(|s| nm(s.1 - s.0)).sum();
+            cell.map_or((1.0, 0.0), |cell| {
+                (1.0 + nm(length - 2 * self.reach) / cell, slim / cell)
+            })
+        };
+        let height = nm(self.stripe) / self.rows_per_stripe as f64;
+        let (rows, slim_rows) = along(
+            rect.height(),
+            (self.stripes > 1 || self.rows_per_stripe > 1).then_some(height),
+        );
+        let (columns, slim_columns) = along(rect.width(), self.column.map(nm));
+        let all = rows * columns;
+        let wide = rect.width().min(rect.height()) >= self.sliver;
+        Pieces {
+            all,
+            slivers: if wide {
+                all - (rows - slim_rows) * (columns - slim_columns)
             } else {
                 0.0
-            };
-        let columns = 1.0
-            + self
-                .column
-                .map_or(0.0, |side| crossings(rect.width(), Nm::from_pm(side).0));
-        rows * columns
+            },
+        }
     }
 }
 

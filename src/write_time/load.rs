@@ -6,7 +6,7 @@ use crate::units::{Area, Nm};
 
 use super::WriteTimeError;
 use super::flash::{Cuts, FlashLimits, Flashing, count};
-use super::grid::{Grid, runs};
+use super::grid::{Grid, Pieces, runs};
 use super::pattern::{Counts, Field, Pattern, Placed, check_frame, spacing};
 
 /// Most shots and flashes: beyond any mask, and exact in `u128` when multiplied by heights.
@@ -94,7 +94,7 @@ impl Load {
             .into_iter()
             .any(|limit| profile.value(limit).is_some());
         match key {
-            Key::Passes | Key::PassShift | Key::Stripe | Key::Subfield => true,
+            Key::Passes | Key::PassShift | Key::Stripe | Key::Subfield | Key::BorderReach => true,
             Key::GreatestFlash | Key::GreatestBeam | Key::ShortestFlash => true,
             Key::Current | Key::BaseDose => limited,
             _ => false,
@@ -166,9 +166,15 @@ impl Load {
             placed.check()?;
             let n = placed.repetition.count() as f64 * copies;
             for (rect, flashing) in placed.flashings(limits, spacing) {
-                let cells = grid.map_or(1.0, |grid| grid.expected_cells(rect));
-                let (shots, pieces) = (count(n.round()), count((n * cells).round()));
+                let whole_shot = Pieces {
+                    all: 1.0,
+                    slivers: 0.0,
+                };
+                let cells = grid.map_or(whole_shot, |grid| grid.expected_cells(rect));
+                let (shots, pieces) = (count(n.round()), count((n * cells.all).round()));
                 whole.add(profile.passes(), shots, pieces, &flashing);
+                let slivers = count((n * cells.slivers * f64::from(profile.passes())).round());
+                whole.cuts.border_slivers = whole.cuts.border_slivers.saturating_add(slivers);
             }
         }
         whole.spread(profile, Some(frame))
@@ -202,7 +208,9 @@ impl Load {
                 for (rect, flashing) in placed.flashings(limits, spacing) {
                     let pieces = spread(&grid, rect, placed.repetition, &flashing, &mut stripes);
                     load.cuts
-                        .add(times, placed.repetition.count(), pieces, &flashing);
+                        .add(times, placed.repetition.count(), pieces.all, &flashing);
+                    let slivers = pieces.slivers.saturating_mul(u128::from(times));
+                    load.cuts.border_slivers = load.cuts.border_slivers.saturating_add(slivers);
                 }
             }
             for (stripe, index) in stripes.iter_mut().zip(0..) {
@@ -285,15 +293,15 @@ fn empty_stripes(grid: &Grid) -> Vec<StripeLoad> {
         .collect()
 }
 
-/// Gives every copy of a shot to the stripes it lies in, cut at sub-field borders; returns the number of pieces.
+/// Gives every copy of a shot to the stripes it lies in, cut at sub-field borders; returns the pieces.
 fn spread(
     grid: &Grid,
     rect: Rect,
     repetition: &Repetition,
     flashing: &Flashing,
     stripes: &mut [StripeLoad],
-) -> u128 {
-    let mut pieces = 0;
+) -> Pieces<u128> {
+    let mut pieces = Pieces::default();
     // Rows of an upright lattice start at the same x, so their cuts are counted once.
     let mut counted = None;
     for run in runs(repetition) {
@@ -307,10 +315,11 @@ fn spread(
                 .ok()
                 .and_then(|i| stripes.get_mut(i))
             {
-                stripe.add(rows * columns, flashing);
-                pieces += rows * columns;
+                stripe.add(rows * columns.all, flashing);
+                pieces.all += rows * columns.all;
             }
         }
+        pieces.slivers += grid.slivers(rect, run, columns);
     }
     pieces
 }
