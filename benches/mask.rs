@@ -3,7 +3,7 @@
 use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
 
 use shotwright::geom::{Point, Repetition};
-use shotwright::layout::{self, Cell, CellId, Layer, Layout, Placement, Shape};
+use shotwright::layout::{self, Cell, CellId, Layer, Layout, Placement, Shape, Shapes};
 use shotwright::mask::{self, MaskOptions};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
@@ -41,12 +41,13 @@ fn rect(x: i64, y: i64, w: i64, h: i64) -> Shape {
 fn flat(shapes: Vec<Shape>) -> Layout {
     let cell = Cell {
         name: "top".to_owned(),
-        shapes,
+        shapes: shapes.into(),
         placements: Vec::new(),
     };
     Layout {
         unit: Nm(1.0),
         cells: vec![cell],
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }
@@ -94,17 +95,18 @@ fn array(columns: u64) -> Layout {
     };
     let top = Cell {
         name: "top".to_owned(),
-        shapes: Vec::new(),
+        shapes: Shapes::default(),
         placements: vec![placement],
     };
     let cross = Cell {
         name: "cross".to_owned(),
-        shapes: vec![rect(0, 100, 300, 100), rect(100, 0, 100, 300)],
+        shapes: vec![rect(0, 100, 300, 100), rect(100, 0, 100, 300)].into(),
         placements: Vec::new(),
     };
     Layout {
         unit: Nm(1.0),
         cells: vec![top, cross],
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }

@@ -22,6 +22,16 @@ pub const NARROWEST_SQUARE: f64 = 2.103_590;
 /// The level of the contour.
 pub const THRESHOLD: f64 = 0.5;
 
+/// The level of the forward dose at which the contour runs when all doses change by a share (+0.05 for +5 %).
+///
+/// With backscatter η·B under it a place prints where `(1 + change)·(D·F + η·B) = (1 + η)/2`; after correction `η·B = (1 + η − D)/2`,
+/// so `F = ½ − ½·(1 + η)/D·change/(1 + change)`. `flattening` is `(1 + η)/D`, which is `1 + 2ηU` where the density U is uniform, and 1
+/// without backscatter: then the level is `½/(1 + change)`.
+#[must_use]
+pub fn level_at(change: f64, flattening: f64) -> f64 {
+    THRESHOLD * (1.0 - flattening * change / (1.0 + change))
+}
+
 /// Beyond this many σ a shot's edge has no influence: `Φ(−5) = 2.9e-7`.
 pub const REACH: f64 = 5.0;
 

@@ -45,10 +45,12 @@
 //!
 //! # The modules, in the order of the flow
 //!
-//! Nouns: [`units`], [`geom`], [`shot`], [`blur`], [`target`], [`profile`]. Stages: [`layout`], [`mask`], [`fracture`], [`expose`],
+//! Nouns: [`units`], [`number`], [`geom`], [`shot`], [`blur`], [`target`], [`profile`]. Stages: [`layout`], [`mask`], [`fracture`], [`expose`],
 //! [`judge`], [`write_time`]. The join: [`quote`]. Showing: [`report`], [`cli`].
 
 pub mod units;
+
+pub mod number;
 
 pub mod geom;
 

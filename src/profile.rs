@@ -157,6 +157,30 @@ impl Profile {
         read::profile(text, source)
     }
 
+    /// From a table of another TOML text; `source` names the text in errors.
+    ///
+    /// # Errors
+    /// As [`Profile::parse`], with lines of the whole text; also when there is no such table.
+    pub fn parse_within(
+        text: &str,
+        source: &str,
+        table: &'static str,
+    ) -> Result<Self, ProfileErrors> {
+        read::profile_within(text, source, table)
+    }
+
+    /// The numbers in a table of another TOML text as they stand, each with its place; none where there is no such table.
+    ///
+    /// # Errors
+    /// Values that are no numbers. Keys and bounds are looked at by [`Profile::set_from`].
+    pub fn numbers_within(
+        text: &str,
+        source: &str,
+        table: &str,
+    ) -> Result<Vec<(String, Number, String)>, ProfileErrors> {
+        read::numbers_within(text, source, table)
+    }
+
     /// From numbers alone, by the keys of the files; what is not given takes its default.
     ///
     /// # Errors
@@ -209,19 +233,30 @@ impl Profile {
         &mut self,
         numbers: impl IntoIterator<Item = (&'a str, f64)>,
     ) -> Result<(), ProfileErrors> {
-        let mut changed = self.clone();
         let place = format!("profile {}", self.name);
+        let numbers = numbers
+            .into_iter()
+            .map(|(key, value)| (key, value.into(), place.clone()));
+        self.set_from(numbers, &place)
+    }
+
+    /// Overrides numbers, each with the place that its faults name; `at` names the place of faults of the whole.
+    ///
+    /// # Errors
+    /// As [`Profile::set`].
+    pub fn set_from<'a>(
+        &mut self,
+        numbers: impl IntoIterator<Item = (&'a str, Number, String)>,
+        at: &str,
+    ) -> Result<(), ProfileErrors> {
+        let mut changed = self.clone();
         let mut errors: Vec<_> = numbers
             .into_iter()
-            .filter_map(|(key, value)| changed.insert(key, value.into(), &place).err())
+            .filter_map(|(key, number, place)| changed.insert(key, number, &place).err())
             .collect();
         if errors.is_empty() {
-            errors.extend(
-                changed
-                    .faults(&|_| place.clone())
-                    .into_iter()
-                    .map(|(_, e)| e),
-            );
+            let faults = changed.faults(&|_| at.to_owned());
+            errors.extend(faults.into_iter().map(|(_, fault)| fault));
         }
         if !errors.is_empty() {
             return Err(ProfileErrors(errors));
@@ -274,13 +309,17 @@ impl Profile {
     /// The same profile with one value changed, kept within the bounds of its key: for one-at-a-time studies.
     #[must_use]
     pub fn with(&self, key: Key, value: f64) -> Self {
-        let mut changed = self.clone();
         let KeyInfo {
             least, greatest, ..
         } = key.info();
-        changed
-            .numbers
-            .insert(key, value.clamp(least, greatest).into());
+        self.with_number(key, value.clamp(least, greatest).into())
+    }
+
+    /// The same profile with one number of another, ± included.
+    #[must_use]
+    pub(crate) fn with_number(&self, key: Key, number: Number) -> Self {
+        let mut changed = self.clone();
+        changed.numbers.insert(key, number);
         changed
     }
 

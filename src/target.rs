@@ -55,6 +55,24 @@ impl Edge {
         ]
     }
 
+    /// Where a ray meets the edge, and how squarely: the cosine between the ray and the outward normal.
+    fn crossed(&self, p: [f64; 2], direction: [f64; 2]) -> Option<(f64, f64)> {
+        let n = self.outward();
+        let facing = n[0] * direction[0] + n[1] * direction[1];
+        if facing == 0.0 {
+            return None;
+        }
+        let t = (n[0] * (self.a[0] - p[0]) + n[1] * (self.a[1] - p[1])) / facing;
+        let q = [
+            p[0] + t * direction[0] - self.a[0],
+            p[1] + t * direction[1] - self.a[1],
+        ];
+        let along = q[1] * n[0] - q[0] * n[1];
+        (-1e-9..=self.length() + 1e-9)
+            .contains(&along)
+            .then_some((t, facing))
+    }
+
     fn distance_squared(&self, p: [f64; 2]) -> f64 {
         let (dx, dy) = (self.b[0] - self.a[0], self.b[1] - self.a[1]);
         let (px, py) = (p[0] - self.a[0], p[1] - self.a[1]);
@@ -82,6 +100,38 @@ pub trait DoseField {
             x += step;
         }
     }
+
+    /// Doses at places that follow one another closely; `out` is as long as `places`.
+    fn doses(&self, places: &[[f64; 2]], out: &mut [f64]) {
+        for (value, &p) in out.iter_mut().zip(places) {
+            *value = self.dose(p);
+        }
+    }
+}
+
+/// Part of the plane in which a dose is held to the rule; lengths in nm.
+pub trait Zone {
+    /// Whether the part may have places in common with a box.
+    fn touches(&self, side: [f64; 4]) -> bool;
+
+    /// Stretches of the horizontal at `y` that belong to the part, sorted and disjoint; asked with `y` rising. The outline crosses the
+    /// horizontal at `crossings` (sorted; inside is between each first and second).
+    fn spans(&mut self, y: f64, crossings: &[f64], out: &mut Vec<[f64; 2]>);
+}
+
+/// The whole plane.
+#[derive(Clone, Copy, Debug)]
+pub struct Everywhere;
+
+impl Zone for Everywhere {
+    fn touches(&self, _: [f64; 4]) -> bool {
+        true
+    }
+
+    fn spans(&mut self, _: f64, _: &[f64], out: &mut Vec<[f64; 2]>) {
+        out.clear();
+        out.push([f64::NEG_INFINITY, f64::INFINITY]);
+    }
 }
 
 /// A dose that can be judged: it knows its own contour. The judge sees nothing else of the shots.
@@ -93,7 +143,12 @@ pub trait Printed: DoseField {
     ///
     /// From a place that prints it looks outward, from one that does not inward, for the first change: so the
     /// contour found has the print behind it. `None` where there is none in range (never 0).
-    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64>;
+    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64> {
+        self.crossing_at(p, outward, range, THRESHOLD)
+    }
+
+    /// As [`Printed::crossing`], for the line where the dose is `level`.
+    fn crossing_at(&self, p: [f64; 2], outward: [f64; 2], range: f64, level: f64) -> Option<f64>;
 
     /// Least x, least y, greatest x, greatest y (nm) of all that is flashed; `None` where nothing is.
     fn extent(&self) -> Option<[f64; 4]>;
@@ -298,6 +353,34 @@ impl Target {
             .any(|e| self.edges[e as usize].distance_squared(p) <= limit2)
     }
 
+    /// How far it is (nm) from a place in the figure along the unit vector `direction` to the first outline that faces it (within 60°).
+    ///
+    /// `None` if there is none within `limit`, or the first one met is grazed.
+    #[must_use]
+    pub fn way_out(&self, p: [f64; 2], direction: [f64; 2], limit: f64) -> Option<f64> {
+        let step = self.cells.size;
+        let mut from = 0.0;
+        while from <= limit {
+            // Cells around one step of the way hold every edge that it crosses.
+            let to = from + step;
+            let middle = [
+                p[0] + (from + 0.5 * step) * direction[0],
+                p[1] + (from + 0.5 * step) * direction[1],
+            ];
+            let met = self
+                .cells
+                .near(middle, 0.5 * step)
+                .filter_map(|e| self.edges[e as usize].crossed(p, direction))
+                .filter(|(t, _)| *t > 1e-6 && *t <= to)
+                .min_by(|a, b| a.0.total_cmp(&b.0));
+            if let Some((t, facing)) = met {
+                return (t <= limit && facing > 0.5).then_some(t);
+            }
+            from = to;
+        }
+        None
+    }
+
     /// Distance to the outline, nm, if it is at most `limit`.
     #[must_use]
     pub fn distance(&self, p: [f64; 2], limit: f64) -> Option<f64> {
@@ -336,7 +419,21 @@ impl Target {
     /// At most `step` nm apart along every edge and around every vertex; each is given with its need (never
     /// [`Need::Free`]). `beyond` (nm, small) pushes them that much further out than the tolerance; `creases` adds, at every
     /// vertex, the point where the lines beside its two edges meet.
-    pub fn rim(&self, step: f64, beyond: f64, creases: bool, mut each: impl FnMut([f64; 2], Need)) {
+    pub fn rim(&self, step: f64, beyond: f64, creases: bool, each: impl FnMut([f64; 2], Need)) {
+        self.rim_in(&Everywhere, step, beyond, creases, each);
+    }
+
+    /// As [`Target::rim`], of the edges whose rim may reach into a zone.
+    fn rim_in(
+        &self,
+        part: &impl Zone,
+        step: f64,
+        beyond: f64,
+        creases: bool,
+        mut each: impl FnMut([f64; 2], Need),
+    ) {
+        // The crease of a quarter turn is 1.42 tolerances away.
+        let away = 1.5 * (self.corner_tolerance() + beyond);
         let mut offer = |q: [f64; 2], n: [f64; 2], tolerance: f64, sides: &[f64]| {
             for side in sides {
                 let reach = side * (tolerance + beyond);
@@ -363,6 +460,17 @@ impl Target {
             if previous.is_none() {
                 ring_start = i;
             }
+            let ends_ring = i + 1 == self.edges.len() || self.edges[i + 1].a != edge.b;
+            previous = (!ends_ring).then_some((*edge, i));
+            let (a, b) = (edge.a, edge.b);
+            if !part.touches([
+                a[0].min(b[0]) - away,
+                a[1].min(b[1]) - away,
+                a[0].max(b[0]) + away,
+                a[1].max(b[1]) + away,
+            ]) {
+                continue;
+            }
             let normal = edge.outward();
             #[allow(
                 clippy::cast_possible_truncation,
@@ -378,14 +486,12 @@ impl Target {
                     offer(q, normal, self.corner_tolerance(), &BOTH);
                 }
             }
-            let ends_ring = i + 1 == self.edges.len() || self.edges[i + 1].a != edge.b;
             let next = if ends_ring {
                 self.edges[ring_start]
             } else {
                 self.edges[i + 1]
             };
             self.fan(edge, &next, step, creases, &mut offer);
-            previous = if ends_ring { None } else { Some((*edge, i)) };
         }
     }
 
@@ -448,6 +554,23 @@ impl Target {
         margin: f64,
         spare: f64,
     ) -> Vec<Violation> {
+        let mesh = Mesh {
+            rim_step,
+            lattice_step,
+            margin,
+        };
+        self.violations_in(&mut Everywhere, dose, mesh, spare)
+    }
+
+    /// As [`Target::violations`], in a part of the plane only. Places along the rim may lie somewhat outside of it.
+    #[must_use]
+    pub fn violations_in(
+        &self,
+        part: &mut impl Zone,
+        dose: &impl DoseField,
+        mesh: Mesh,
+        spare: f64,
+    ) -> Vec<Violation> {
         let mut found = Vec::new();
         let breaks = |print: bool, dose: f64| {
             if print {
@@ -456,12 +579,27 @@ impl Target {
                 dose >= THRESHOLD - spare
             }
         };
-        self.rim(rim_step, 0.0, true, |place, need| {
-            let dose = dose.dose(place);
-            if breaks(need == Need::Print, dose) {
-                found.push(Violation { place, need, dose });
+        let (mut places, mut needs) = (Vec::with_capacity(BATCH), Vec::with_capacity(BATCH));
+        let mut values = vec![0.0; BATCH];
+        let mut look = |places: &mut Vec<[f64; 2]>, needs: &mut Vec<Need>| {
+            dose.doses(places, &mut values[..places.len()]);
+            for ((&place, &need), &dose) in places.iter().zip(needs.iter()).zip(&values) {
+                if breaks(need == Need::Print, dose) {
+                    found.push(Violation { place, need, dose });
+                }
+            }
+            places.clear();
+            needs.clear();
+        };
+        self.rim_in(part, mesh.rim_step, 0.0, true, |place, need| {
+            places.push(place);
+            needs.push(need);
+            if places.len() == BATCH {
+                look(&mut places, &mut needs);
             }
         });
+        look(&mut places, &mut needs);
+        let (step, margin) = (mesh.lattice_step, mesh.margin);
         let [x0, y0, x1, y1] = self.bounds;
         let (x0, y0) = (x0 - margin, y0 - margin);
         #[allow(
@@ -469,38 +607,66 @@ impl Target {
             clippy::cast_sign_loss,
             reason = "positive; bounds are at most 4.5e12 nm"
         )]
-        let (columns, rows) = (
-            ((x1 + margin - x0) / lattice_step) as usize + 1,
-            ((y1 + margin - y0) / lattice_step) as usize + 1,
-        );
-        let mut values = vec![0.0; columns];
-        let mut crossings = Vec::new();
+        let count = |length: f64| (length.max(0.0) / step) as usize;
+        let (columns, rows) = (count(x1 + margin - x0) + 1, count(y1 + margin - y0) + 1);
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        let at = |low: f64, i: usize| low + i as f64 * step;
+        let (mut crossings, mut spans) = (Vec::new(), Vec::new());
         for j in 0..rows {
-            #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-            let y = y0 + j as f64 * lattice_step;
-            dose.row(y, x0, lattice_step, &mut values);
+            let y = at(y0, j);
             self.crossings(y, &mut crossings);
+            part.spans(y, &crossings, &mut spans);
             let mut passed = 0;
-            for (i, &value) in values.iter().enumerate() {
-                #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-                let x = x0 + i as f64 * lattice_step;
-                while passed < crossings.len() && crossings[passed] <= x {
-                    passed += 1;
+            for &[from, to] in &spans {
+                let first = count(from - x0 + step * (1.0 - 1e-9)).min(columns);
+                let end = if to < x0 {
+                    0
+                } else {
+                    (count(to - x0) + 1).min(columns)
+                };
+                if first >= end {
+                    continue;
                 }
-                let inside = passed % 2 == 1;
-                if breaks(inside, value) && !self.outline_within([x, y], self.tolerance_at([x, y]))
-                {
-                    found.push(Violation {
-                        place: [x, y],
-                        need: if inside { Need::Print } else { Need::Clear },
-                        dose: value,
-                    });
+                if values.len() < end - first {
+                    values.resize(end - first, 0.0);
+                }
+                let values = &mut values[..end - first];
+                dose.row(y, at(x0, first), step, values);
+                for (i, &value) in (first..end).zip(values.iter()) {
+                    let x = at(x0, i);
+                    while passed < crossings.len() && crossings[passed] <= x {
+                        passed += 1;
+                    }
+                    let inside = passed % 2 == 1;
+                    if breaks(inside, value)
+                        && !self.outline_within([x, y], self.tolerance_at([x, y]))
+                    {
+                        found.push(Violation {
+                            place: [x, y],
+                            need: if inside { Need::Print } else { Need::Clear },
+                            dose: value,
+                        });
+                    }
                 }
             }
         }
         found
     }
 }
+
+/// How densely a dose is looked at, nm.
+#[derive(Clone, Copy, Debug)]
+pub struct Mesh {
+    /// Along the rim.
+    pub rim_step: f64,
+    /// Of the lattice in and about the figure.
+    pub lattice_step: f64,
+    /// How far beyond the bounds the lattice goes.
+    pub margin: f64,
+}
+
+/// Places along the rim whose dose is asked for at once.
+const BATCH: usize = 64;
 
 fn corners_of(ring: &[Edge], sigma: f64) -> impl Iterator<Item = [f64; 2]> + '_ {
     let n = ring.len();

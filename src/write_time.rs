@@ -22,7 +22,7 @@ use crate::profile::{Key, Kind, Profile};
 use crate::units::{Amperes, BaseDose, CurrentDensity, Dose, Hours, Nm, Seconds};
 
 pub use flash::Cuts;
-pub use pattern::{Counts, Field, Pattern, Placed};
+pub use pattern::{Clip, Counts, Field, Pattern, Placed};
 pub use study::{Interval, Sensitivity, interval, sensitivity, tie};
 
 use load::{Load, StripeLoad};
@@ -36,8 +36,8 @@ pub enum WriteTimeError {
         /// As given.
         found: Nm,
     },
-    /// A share that is none.
-    #[error("coverage is {found}, expected over 0, up to 1")]
+    /// A share that is none, or shares of more than the whole.
+    #[error("coverage is {found}, expected over 0, up to 1 for all clips together")]
     Coverage {
         /// As given.
         found: f64,
@@ -152,6 +152,9 @@ pub struct WriteTime {
     pub flashes: u128,
     /// Where flashes beyond shots × passes come from.
     pub cuts: Cuts,
+    /// The mean flash, and how many there are in one pass; `None` for a raster writer and for a pattern without flashes.
+    #[serde(skip)]
+    pub mean_flash: Option<Counts>,
     /// Calibrations.
     pub calibrations: u64,
     /// Upward, alike ones together; each grid that passes are shifted to starts anew at stripe 0.
@@ -227,6 +230,7 @@ impl WriteTime {
             shots: load.shots,
             flashes: load.flashes(),
             cuts: load.cuts,
+            mean_flash: load.mean_flash(),
             calibrations,
             stripes,
         }

@@ -5,6 +5,8 @@ use std::path::{Path, PathBuf};
 
 use assert_cmd::Command;
 use serde_json::Value;
+use shotwright::geom::{Orientation, Point, Rect, Ring};
+use shotwright::layout::{self, Layout};
 
 /// A disc of 24 edges, 200 nm across, and a square of 180 nm, 300 nm apart.
 const SHAPES: &str = "POLYGON ((100 0, 96.6 25.9, 86.6 50, 70.7 70.7, 50 86.6, 25.9 96.6, 0 100, -25.9 96.6, -50 86.6, -70.7 70.7, -86.6 50, -96.6 25.9, -100 0, -96.6 -25.9, -86.6 -50, -70.7 -70.7, -50 -86.6, -25.9 -96.6, 0 -100, 25.9 -96.6, 50 -86.6, 70.7 -70.7, 86.6 -50, 96.6 -25.9, 100 0))
@@ -85,6 +87,124 @@ fn hours_without_a_layout() {
         assert!((parts - total).abs() < 1e-12 * total);
         let (out, _) = run(shotwright().args(args), 0);
         assert!(out.contains(&format!("{expected:.3} h")), "{out}");
+    }
+}
+
+/// The other rows of CHECKS 5 through the command line. Flash times: with one pass and no settling, hours are shots × flash time.
+#[test]
+fn hours_of_flashes_stages_and_beams_are_those_of_the_table() {
+    let hours = |arguments: &str| {
+        let arguments = arguments.split(' ');
+        let (out, _) = run(shotwright().arg("hours").args(arguments).arg("--json"), 0);
+        json(&out)
+    };
+    for (dose, current, flash_ns) in [
+        (10, 20, 500.0),
+        (20, 200, 100.0),
+        (25, 400, 62.5),
+        (30, 1200, 25.0),
+        (75, 1200, 62.5),
+    ] {
+        let found = hours(&format!(
+            "--shots 1e9 --base-dose-uc-cm2 {dose} --current-a-cm2 {current}"
+        ));
+        let ns = number(&found, "/flash_h") * 3600.0 / 1e9 * 1e9;
+        assert!((ns - flash_ns).abs() < 1e-9 * flash_ns, "{ns} ns");
+        assert_eq!(number(&found, "/total_h"), number(&found, "/flash_h"));
+    }
+    for (arguments, expected, digits) in [
+        // Gaussian-beam rule t = D·A/I, published clean-room figures: 34.7 h, 16.7 min.
+        (
+            "--shots 0 --beam-na 2 --base-dose-uc-cm2 250 --field-mm 10x10",
+            34.7,
+            0.05,
+        ),
+        (
+            "--shots 0 --beam-na 1 --base-dose-uc-cm2 100 --field-mm 1x1",
+            16.7 / 60.0,
+            0.05 / 60.0,
+        ),
+        // 1300 stripes of 132 mm at 20 mm/s and 0.5 s a turn; at 50 mm/s the travel is (2.564 − 0.181) · 20/50 h.
+        (
+            "--shots 0 --base-dose-uc-cm2 25 --current-a-cm2 400 --field-mm 132x104 --stripe-um 80 --stage-mm-s 20 --turn-s 0.5",
+            2.564,
+            5e-4,
+        ),
+        (
+            "--shots 0 --base-dose-uc-cm2 25 --current-a-cm2 400 --field-mm 132x104 --stripe-um 80 --stage-mm-s 50 --turn-s 0.5",
+            1.134,
+            5e-4,
+        ),
+        (
+            "--shots 0 --beam-na 1000 --base-dose-uc-cm2 100 --field-mm 104x132",
+            3.813,
+            5e-4,
+        ),
+    ] {
+        let found = hours(arguments);
+        let total = number(&found, "/total_h");
+        assert!((total - expected).abs() <= digits, "{arguments}: {total} h");
+    }
+}
+
+/// By hand from 15.208 h (5.208 h of flashes, 10 h of settling; CHECKS 5): every number of the writer model that needs no place.
+#[test]
+fn each_number_of_the_writer_model_costs_what_it_says() {
+    let base = "--shots 3e11 --base-dose-uc-cm2 25 --current-a-cm2 400 --settle-ns 60 --passes 2";
+    let (flash, settle) = (3e11 * 62.5e-9 / 3600.0, 2.0 * 3e11 * 60e-9 / 3600.0);
+    for (more, part, expected) in [
+        // 30 whole intervals of half an hour in 15.208 h, a minute each.
+        (
+            " --calibration-every-min 30 --calibration-s 60",
+            "overhead_h",
+            0.5,
+        ),
+        (
+            " --load-min 10 --soak-min 30 --align-min 5 --unload-min 5",
+            "overhead_h",
+            50.0 / 60.0,
+        ),
+        // 12.5 µC/cm² a pass in flashes of 10 at most: two each.
+        (" --greatest-flash-uc-cm2 10", "settle_h", 2.0 * settle),
+        (" --mean-dose 1.2", "flash_h", 1.2 * flash),
+        // A stripe for every 100 µm of 104 mm, twice.
+        (
+            " --field-mm 132x104 --stripe-um 100 --turn-s 0.4",
+            "stage_h",
+            2.0 * 1040.0 * 0.4 / 3600.0,
+        ),
+        // Beam-bound: 15.208 h over 2080 stripes is 26 s each, and the stage needs 3.3 s.
+        (
+            " --field-mm 132x104 --stripe-um 100 --stage-mm-s 40",
+            "stage_h",
+            0.0,
+        ),
+        // Stage-bound: at 4 mm/s it needs 33 s, so it alone counts.
+        (
+            " --field-mm 132x104 --stripe-um 100 --stage-mm-s 4",
+            "total_h",
+            2080.0 * 33.0 / 3600.0,
+        ),
+        // 6.6 million sub-fields a pass in columns of 20 µm and 5 rows a stripe, 0.6 µs each.
+        (
+            " --field-mm 132x104 --stripe-um 100 --subfield-um 20 --subfield-us 0.6",
+            "subfield_h",
+            2.0 * 6600.0 * 5200.0 * 0.6e-6 / 3600.0,
+        ),
+    ] {
+        let arguments = format!("{base}{more}");
+        let (out, _) = run(
+            shotwright()
+                .arg("hours")
+                .args(arguments.split(' '))
+                .arg("--json"),
+            0,
+        );
+        let found = number(&json(&out), &format!("/{part}"));
+        assert!(
+            (found - expected).abs() <= 1e-9 * expected,
+            "{more}: {found}, expected {expected}"
+        );
     }
 }
 
@@ -267,6 +387,94 @@ fn fractured_shots_are_judged_alike_when_read_back() {
     }
 }
 
+/// Lower-left corner and size, pm, of every shot in a layout written by the program, sorted.
+fn drawn_shots(layout: &Layout) -> Vec<[i64; 4]> {
+    let unit = (layout.unit.0 * 1000.0).round() as i64;
+    let top = &layout.cells[0];
+    let mut found = Vec::new();
+    for placement in &top.placements {
+        for by in placement.repetition.displacements() {
+            let at = |p: Point| {
+                let p = Point::new(p.x, if placement.mirror { -p.y } else { p.y });
+                let turns = (placement.angle_deg / 90.0) as u8;
+                Orientation::new(false, turns).apply(p) + placement.origin + by
+            };
+            for shape in layout.cells[placement.cell.0].shapes.iter() {
+                if shape.layer.layer != 1 {
+                    continue;
+                }
+                for d in shape.repetition.displacements() {
+                    let around = Rect::around(shape.points.iter().map(|p| at(p + d))).unwrap();
+                    let sides = [around.width(), around.height()];
+                    found.push([around.min.x, around.min.y, sides[0], sides[1]].map(|v| v * unit));
+                }
+            }
+        }
+    }
+    found.sort_unstable();
+    found
+}
+
+#[test]
+fn shots_go_into_a_layout_as_into_a_table() {
+    let (directory, layout) = with_shapes();
+    let fracture = |file: &str, more: &[&str]| {
+        let path = directory.path().join(file);
+        let mut command = shotwright();
+        command
+            .arg("fracture")
+            .arg(&layout)
+            .args(["--method", "tile"]);
+        command
+            .args(["--sigma-nm", "12", "-o"])
+            .arg(&path)
+            .args(more);
+        run(&mut command, 0);
+        path
+    };
+    let pm = |nm: &str| (nm.parse::<f64>().unwrap() * 1000.0).round() as i64;
+    let table = fs::read_to_string(fracture("shots.csv", &[])).unwrap();
+    let mut expected: Vec<[i64; 4]> = table
+        .lines()
+        .skip(1)
+        .map(|line| line.split(',').skip(2).take(4).map(pm).collect::<Vec<_>>())
+        .map(|four| four.try_into().unwrap())
+        .collect();
+    expected.sort_unstable();
+    assert!(expected.len() > 4);
+    for file in ["shots.oas", "shots.gds"] {
+        let written = layout::open(fracture(file, &["--contours"])).unwrap();
+        assert_eq!(drawn_shots(&written), expected, "{file}");
+        // Both figures have one contour, at most the tolerance of 2 nm and the corners off the drawn outline.
+        let contours: Vec<f64> = written
+            .cells
+            .iter()
+            .flat_map(|cell| cell.shapes.iter())
+            .filter(|shape| shape.layer.layer == 2)
+            .map(|shape| Ring::new(shape.points.iter().collect()).unwrap())
+            .map(|ring| ring.area_two() as f64 / 2.0 * written.unit.0.powi(2))
+            .collect();
+        let disc = 0.5 * 24.0 * 1e4 * 15_f64.to_radians().sin();
+        let drawn = [disc, 180.0 * 180.0];
+        assert_eq!(contours.len(), 2, "{file}");
+        for want in drawn {
+            let near = |found: &&f64| (**found - want).abs() < 0.04 * want;
+            assert!(
+                contours.iter().any(|c| near(&c)),
+                "{file}: {contours:?}, {want}"
+            );
+        }
+    }
+    let mut command = shotwright();
+    command
+        .arg("fracture")
+        .arg(&layout)
+        .args(["--method", "tile"]);
+    command.args(["--sigma-nm", "12", "--contours", "-o"]);
+    let (_, err) = run(command.arg(directory.path().join("shots.csv")), 2);
+    assert!(err.contains("--contours needs a layout"), "{err}");
+}
+
 /// A shot list with a gap, and one with a shot far off: both must fail.
 #[test]
 fn judge_sees_what_is_missing_and_what_is_too_much() {
@@ -428,10 +636,10 @@ fn a_quote_says_how_the_layout_went_onto_the_mask() {
     assert!(text.contains(said), "{text}");
     let (out, _) = run(command.arg("--json"), 0);
     let quote = json(&out);
-    assert_eq!(number(&quote, "/source/bias_nm"), 3.0);
+    assert_eq!(number(&quote, "/sources/0/bias_nm"), 3.0);
     // Of the two figures only the square of 180 nm is in the window.
-    assert_eq!(number(&quote, "/source/extent_nm/0"), 186.0);
-    assert_eq!(quote["source"]["window_nm"][2], -350.0);
+    assert_eq!(number(&quote, "/sources/0/extent_nm/0"), 186.0);
+    assert_eq!(quote["sources"][0]["window_nm"][2], -350.0);
 }
 
 #[test]
@@ -721,7 +929,9 @@ fn a_raster_writer_has_hours_but_no_shots() {
 fn help_and_version_go_to_standard_output() {
     let (out, _) = run(shotwright().arg("--version"), 0);
     assert!(out.starts_with("shotwright "), "{out}");
-    for command in ["quote", "inspect", "fracture", "judge", "hours", "profile"] {
+    for command in [
+        "quote", "sweep", "compare", "inspect", "fracture", "judge", "hours", "profile",
+    ] {
         let (out, err) = run(shotwright().args([command, "--help"]), 0);
         assert!(
             out.contains("Usage: shotwright") && out.contains("Examples:"),

@@ -84,6 +84,20 @@ fn dose_is_within_1e_7_of_scipy() {
     }
 }
 
+/// Source: `scipy.optimize.brentq` on products of `scipy.special.ndtr`, scipy 1.17 (`make_contour.py` beside the data).
+#[test]
+fn contours_are_within_0_01_nm_of_scipy() {
+    let e = expose(10.0, &published().0);
+    let mut seen = 0;
+    for line in include_str!("data/expose/contour.csv").lines().skip(2) {
+        let v: Vec<f64> = line.split(',').map(|v| v.parse().unwrap()).collect();
+        let found = e.crossing([v[0], v[1]], [v[2].cos(), v[2].sin()], 60.0);
+        near(found.unwrap(), v[3], 0.001);
+        seen += 1;
+    }
+    assert_eq!(seen, 300);
+}
+
 #[test]
 fn a_row_is_the_dose_at_its_places() {
     let e = expose(10.0, &published().0);

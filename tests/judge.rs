@@ -452,3 +452,121 @@ fn samples_tell_where_they_are() {
             .all(|x| x.error.is_some() && x.length_pm == 2500)
     );
 }
+
+/// Derived: a wide edge moves by −0.13971, −0.06601, +0.05972, +0.11419 σ at −10, −5, +5, +10 % of dose.
+#[test]
+fn contours_through_dose_move_as_derived() {
+    let r = rect(0, 0, 400, 400);
+    let s = settings(10.0, 2.0);
+    let scores = score(&Figure::from_rect(r), &flash(&[r]), &s).summary();
+    for (through, (change, shift)) in scores.through_dose.iter().zip([
+        (-10.0, -1.3971),
+        (-5.0, -0.6601),
+        (5.0, 0.5972),
+        (10.0, 1.1419),
+    ]) {
+        assert!((through.change_pct - change).abs() < 1e-9);
+        // Two σ from a corner the contour is up to 0.03 σ back.
+        let mean = through.edge_error_nm.mean.unwrap();
+        assert!((mean - shift).abs() < 0.03, "{change} %: {mean}");
+        assert_eq!(through.unmeasured_share, Some(0.0));
+    }
+    // Over backscatter all dose changes, so the contour moves further: to first order by (1 + 2ηU).
+    let mut over = s;
+    over.background = Background {
+        ratio: 0.6,
+        density: 0.5,
+    };
+    let flat = score(&Figure::from_rect(r), &flash(&[r]), &over).summary();
+    let of = |s: &shotwright::judge::Summary| s.through_dose[2].edge_error_nm.mean.unwrap();
+    assert!(
+        (of(&flat) / of(&scores) - 1.6).abs() < 0.05,
+        "{} {}",
+        of(&flat),
+        of(&scores)
+    );
+}
+
+/// A line of 1.5 σ that widens to 100 nm; derived: it prints 0.929947 σ wide, and the wide part 3.999841 σ and more.
+#[test]
+fn the_narrowest_place_is_measured() {
+    let points = [
+        (0, 0),
+        (1000, 0),
+        (1000, 30),
+        (2000, 30),
+        (2000, 0),
+        (3000, 0),
+        (3000, 200),
+        (2000, 200),
+        (2000, 60),
+        (1000, 60),
+        (1000, 200),
+        (0, 200),
+    ];
+    let ring = Ring::new(points.iter().map(|&(x, y)| Point::from_nm(x, y)).collect()).unwrap();
+    let figure = Figure::new(ring, Vec::new());
+    let shots = flash(&[
+        rect(0, 0, 1000, 200),
+        rect(1000, 30, 2000, 60),
+        rect(2000, 0, 3000, 200),
+    ]);
+    let scores = score(&figure, &shots, &settings(20.0, 2.0)).summary();
+    let narrowest = scores.narrowest.unwrap();
+    assert!((narrowest.drawn_nm - 30.0).abs() < 1e-9, "{narrowest:?}");
+    assert!(
+        (narrowest.printed_nm.unwrap() - 0.929_947 * 20.0).abs() < 1e-3,
+        "{narrowest:?}"
+    );
+    let [x, y] = narrowest.place_nm.unwrap();
+    assert!(
+        (1000.0..2000.0).contains(&x) && (y - 45.0).abs() < 1e-9,
+        "{narrowest:?}"
+    );
+    // A line that does not print has no width there, not the width 0.
+    let shots = flash(&[rect(0, 0, 1000, 200), rect(2000, 0, 3000, 200)]);
+    let gone = score(&figure, &shots, &settings(20.0, 2.0)).summary();
+    assert_eq!(gone.narrowest.unwrap().printed_nm, None);
+    // Of many figures the one furthest from its drawn width is kept, in any order.
+    let good = score(
+        &Figure::from_rect(rect(0, 0, 400, 400)),
+        &flash(&[rect(0, 0, 400, 400)]),
+        &settings(20.0, 2.0),
+    );
+    let bad = score(
+        &Figure::from_rect(rect(0, 0, 400, 40)),
+        &flash(&[rect(0, 0, 400, 46)]),
+        &settings(20.0, 2.0),
+    );
+    let (mut a, mut b) = (Fidelity::default(), Fidelity::default());
+    a.merge(&good, 2);
+    a.merge(&bad, 1);
+    b.merge(&bad, 1);
+    b.merge(&good, 2);
+    assert_eq!(a, b);
+    assert!((a.summary().narrowest.unwrap().drawn_nm - 40.0).abs() < 1e-9);
+}
+
+#[test]
+fn margins_grow_where_the_background_is_flatter() {
+    let s = settings(10.0, 2.0);
+    let one = score(
+        &Figure::from_rect(rect(0, 0, 400, 400)),
+        &flash(&[rect(0, 0, 400, 400)]),
+        &s,
+    );
+    let (mut plain, mut flat) = (Fidelity::default(), Fidelity::default());
+    plain.merge(&one, 3);
+    flat.merge_flattened(&one, 3, 1.5);
+    let (plain, flat) = (
+        plain.summary().margin_nm_per_pct,
+        flat.summary().margin_nm_per_pct,
+    );
+    for (a, b) in [
+        (plain.median, flat.median),
+        (plain.p95, flat.p95),
+        (plain.worst, flat.worst),
+    ] {
+        assert!((b.unwrap() / a.unwrap() - 1.5).abs() < 2e-3, "{a:?} {b:?}");
+    }
+}

@@ -4,7 +4,9 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// Modules that others may import.
-const NOUNS: &[&str] = &["units", "geom", "shot", "blur", "target", "profile"];
+const NOUNS: &[&str] = &[
+    "units", "number", "geom", "shot", "blur", "target", "profile",
+];
 /// Modules that may import nouns, and the others named.
 const STAGES: &[(&str, &[&str])] = &[
     ("layout", &[]),

@@ -235,13 +235,14 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
             worst: Some(0.78),
         },
         peak_dose: Some(1.9),
+        scores: None,
+        dose_map: None,
         hours: Some(hours(total_h)),
     }
 }
 
 fn hours(total_h: f64) -> Hours {
     Hours {
-        shots_written: Count(0),
         total_h,
         flash_h: 0.5 * total_h,
         settle_h: 0.25 * total_h,
@@ -250,6 +251,7 @@ fn hours(total_h: f64) -> Hours {
         overhead_h: 0.125 * total_h,
         low_h: total_h,
         high_h: total_h,
+        ..Hours::default()
     }
 }
 
@@ -266,7 +268,7 @@ fn quote() -> Quote {
         ..summary(0, 0.0)
     };
     Quote {
-        source: Source {
+        sources: vec![Source {
             name: "elbow.oas".to_owned(),
             layers: vec!["1/0".to_owned()],
             minus: Vec::new(),
@@ -277,9 +279,10 @@ fn quote() -> Quote {
             background_of_nm: None,
             window_nm: None,
             extent_nm: Some([20_000.0, 8_400.0]),
+            coverage: None,
             figures_distinct: 14,
             figures_placed: Count(1_200_000),
-        },
+        }],
         profile: ProfileUsed {
             name: "example".to_owned(),
             numbers: BTreeMap::from([("base_dose_uc_cm2".to_owned(), 25.0)]),
@@ -312,8 +315,11 @@ fn quote() -> Quote {
         },
         recommended: Some(Method::Overlap),
         reason: "It is the only fracture that is written within the slot, and it prints within tolerance.".to_owned(),
+        sensitivity: Vec::new(),
+        raster: None,
         flags: vec![
             Flag {
+                clip: 1,
                 figure: 7,
                 place_nm: [1200.25, -40.0],
                 kind: FlagKind::ToleranceNotReached,
@@ -323,6 +329,7 @@ fn quote() -> Quote {
                 picture: Some("figure-7.png".to_owned()),
             },
             Flag {
+                clip: 1,
                 figure: 9,
                 place_nm: [0.0, 0.0],
                 kind: FlagKind::BrokenOutline,
@@ -467,8 +474,10 @@ fn unmeasured_is_never_zero() {
 #[test]
 fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     let figure = FigureResult {
+        clip: 1,
         figure: 3,
         place_nm: [12.5, -4.0],
+        fingerprint: "00112233445566ff".to_owned(),
         places: Count(40),
         outline_nm: 812.25,
         vertices: 96,
@@ -483,6 +492,8 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
                     worst: None,
                 },
                 prints_within_tolerance: Some(true),
+                scores: None,
+                mean_dose: Some(1.0625),
                 seconds: Some(0.25),
             }),
             overlap: None,
@@ -493,12 +504,15 @@ fn figures_csv_has_one_line_per_figure_and_empty_cells() {
     figures_csv::write(&mut out, [&figure]).unwrap();
     assert_eq!(
         String::from_utf8(out).unwrap(),
-        "figure,x_nm,y_nm,places,outline_nm,vertices,shape,\
-         staircase_shots,staircase_edge_error_mean_nm,staircase_edge_error_p95_nm,staircase_edge_error_worst_nm,staircase_prints_within_tolerance,staircase_seconds,\
-         tile_shots,tile_edge_error_mean_nm,tile_edge_error_p95_nm,tile_edge_error_worst_nm,tile_prints_within_tolerance,tile_seconds,\
-         overlap_shots,overlap_edge_error_mean_nm,overlap_edge_error_p95_nm,overlap_edge_error_worst_nm,overlap_prints_within_tolerance,overlap_seconds,\
+        "clip,figure,x_nm,y_nm,fingerprint,places,outline_nm,vertices,shape,\
+         staircase_shots,staircase_edge_error_mean_nm,staircase_edge_error_p95_nm,staircase_edge_error_worst_nm,staircase_prints_within_tolerance,\
+         staircase_corner_error_worst_nm,staircase_margin_median_nm_per_pct,staircase_margin_worst_nm_per_pct,staircase_edge_sd_median_nm,staircase_edge_sd_worst_nm,staircase_narrowest_drawn_nm,staircase_narrowest_printed_nm,staircase_printed_area_nm2,staircase_mean_dose,staircase_seconds,\
+         tile_shots,tile_edge_error_mean_nm,tile_edge_error_p95_nm,tile_edge_error_worst_nm,tile_prints_within_tolerance,\
+         tile_corner_error_worst_nm,tile_margin_median_nm_per_pct,tile_margin_worst_nm_per_pct,tile_edge_sd_median_nm,tile_edge_sd_worst_nm,tile_narrowest_drawn_nm,tile_narrowest_printed_nm,tile_printed_area_nm2,tile_mean_dose,tile_seconds,\
+         overlap_shots,overlap_edge_error_mean_nm,overlap_edge_error_p95_nm,overlap_edge_error_worst_nm,overlap_prints_within_tolerance,\
+         overlap_corner_error_worst_nm,overlap_margin_median_nm_per_pct,overlap_margin_worst_nm_per_pct,overlap_edge_sd_median_nm,overlap_edge_sd_worst_nm,overlap_narrowest_drawn_nm,overlap_narrowest_printed_nm,overlap_printed_area_nm2,overlap_mean_dose,overlap_seconds,\
          flags\n\
-         3,12.5,-4,40,812.25,96,curved,,,,,,,12,-0.5,1.5,,true,0.25,,,,,,,broken_outline shot_limits_not_met\n"
+         1,3,12.5,-4,00112233445566ff,40,812.25,96,curved,,,,,,,,,,,,,,,,12,-0.5,1.5,,true,,,,,,,,,1.0625,0.25,,,,,,,,,,,,,,,,broken_outline shot_limits_not_met\n"
     );
 }
 

@@ -8,7 +8,7 @@ use shotwright::profile::{Key, Kind, Profile};
 use shotwright::shot::{AddressUnit, Shot, ShotList};
 use shotwright::units::{Amperes, Area, BaseDose, CurrentDensity, Dose, Hours, Nm};
 use shotwright::write_time::{
-    Bound, Counts, Field, Pattern, Placed, WriteTime, WriteTimeError, flash_time, interval,
+    Bound, Clip, Counts, Field, Pattern, Placed, WriteTime, WriteTimeError, flash_time, interval,
     sensitivity, tie,
 };
 
@@ -449,14 +449,17 @@ fn a_clip_stands_for_a_field() {
         b: Point::from_nm(0, 500),
     };
     let all = [placed(&square, &lattice)];
-    let pattern = Pattern::Sample {
+    let clip = Clip {
         placed: &all,
-        clip: frame_nm(10_000, 10_000),
+        frame: frame_nm(10_000, 10_000),
+        coverage: 0.6,
+    };
+    let pattern = Pattern::Sample {
+        clips: &[clip],
         field: Field {
             width: Nm::from_mm(10.0),
             height: Nm::from_mm(10.0),
         },
-        coverage: 0.6,
     };
     let profile = shaped(&[
         CURRENT,
@@ -542,11 +545,14 @@ fn impossible_patterns_are_refused() {
     }
     for coverage in [0.0, -0.5, 1.01, f64::NAN] {
         let one = [placed(&square, &once)];
-        let pattern = Pattern::Sample {
+        let clip = Clip {
             placed: &one,
-            clip: frame,
-            field: FIELD,
+            frame,
             coverage,
+        };
+        let pattern = Pattern::Sample {
+            clips: &[clip],
+            field: FIELD,
         };
         let error = WriteTime::new(&profile, &pattern).unwrap_err();
         assert!(matches!(error, WriteTimeError::Coverage { .. }), "{error}");

@@ -1,99 +1,139 @@
-//! Arguments that several commands share, and the parsers of their values.
+//! Arguments that several commands share: which part of which layout, the limits of a writer, numbers of a profile.
 
 use std::path::{Path, PathBuf};
 
-use clap::{Arg, ArgMatches, Args, Command, FromArgMatches, ValueEnum};
+use clap::{Arg, ArgMatches, Args, Command, FromArgMatches};
+use serde::{Deserialize, Serialize};
 
-use crate::fracture::Effort;
-use crate::geom::{Point, Rect};
-use crate::layout::{self, Layer, Layout};
+use crate::blur::Blur;
+use crate::layout::{self, Layout};
 use crate::mask::{Expose, Mask, MaskOptions};
 use crate::profile::{Key, Profile, ProfileErrors};
 use crate::quote::{Chosen, QuoteError, Setup};
 use crate::shot::{AddressUnit, ShotLimits};
 use crate::units::Nm;
-use crate::write_time::Field;
 
 use super::CliError;
+use super::values::{
+    ExposeArg, Finite, LayerName, PlaceNm, Positive, RectNm, Share, not_negative, positive, stray,
+};
 
-/// Which part of which layout.
-#[derive(Debug, Args)]
+/// Which part of which layout: flags of every command that reads one, and the keys of a `[[clip]]` in a job file.
+#[derive(Args, Clone, Debug, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
 pub(super) struct LayoutArgs {
     /// Layout to read: GDSII (also gzip-compressed), OASIS, or WKT (polygons in nm); told by its content.
     pub(super) layout: PathBuf,
+    /// What reports call it, in job files; its path unless given.
+    #[arg(skip)]
+    pub(super) name: Option<String>,
+    /// The share of the field that copies of it fill, in job files.
+    #[arg(skip)]
+    pub(super) coverage: Option<Share>,
+    /// CRC-32 of its bytes, in job files; refused if it is another.
+    #[arg(skip)]
+    pub(super) crc32: Option<u32>,
     /// Layer to take, as layer/datatype; repeat to unite several. Default: the only layer there is.
-    #[arg(long = "layer", value_name = "L/D", value_parser = layer)]
-    pub(super) layers: Vec<Layer>,
-    /// Mask length per layout length: 4 for wafer-scale data of a 4:1 mask.
-    #[arg(long, value_name = "K", default_value_t = 1.0, value_parser = positive, allow_negative_numbers = true)]
-    pub(super) scale: f64,
+    #[arg(long, value_name = "L/D")]
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub(super) layer: Vec<LayerName>,
+    /// Mask length per layout length: 4 for wafer-scale data of a 4:1 mask. Default: 1.
+    #[arg(long, value_name = "K", allow_negative_numbers = true)]
+    pub(super) scale: Option<Positive>,
     /// Layer to subtract, as layer/datatype; repeat for several.
-    #[arg(long, value_name = "L/D", value_parser = layer, help_heading = TRANSFER)]
-    minus: Vec<Layer>,
+    #[arg(long, value_name = "L/D", help_heading = TRANSFER)]
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub(super) minus: Vec<LayerName>,
     /// Mirror about the y axis (x becomes -x), as a mask seen from its other side.
-    #[arg(long, help_heading = TRANSFER)]
-    mirror: bool,
-    /// Then move by this, nm at mask scale.
-    #[arg(long, value_name = "X,Y", value_parser = place, allow_hyphen_values = true, help_heading = TRANSFER)]
-    shift_nm: Option<Point>,
-    /// Move every drawn edge outward from what is exposed, nm; inward if negative.
-    #[arg(long, value_name = "NM", default_value_t = 0.0, value_parser = number, allow_negative_numbers = true, help_heading = TRANSFER)]
-    bias_nm: f64,
-    /// What is exposed.
-    #[arg(long, value_enum, default_value_t, help_heading = TRANSFER)]
-    expose: ExposeArg,
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true", help_heading = TRANSFER)]
+    pub(super) mirror: Option<bool>,
+    /// Then move by this, nm at mask scale. Default: 0,0.
+    #[arg(long, value_name = "X,Y", allow_hyphen_values = true, help_heading = TRANSFER)]
+    pub(super) shift_nm: Option<PlaceNm>,
+    /// Move every drawn edge outward from what is exposed, nm; inward if negative. Default: 0.
+    #[arg(long, value_name = "NM", allow_negative_numbers = true, help_heading = TRANSFER)]
+    pub(super) bias_nm: Option<Finite>,
+    /// What is exposed. Default: figures.
+    #[arg(long, value_enum, help_heading = TRANSFER)]
+    pub(super) expose: Option<ExposeArg>,
     /// Frame whose background is exposed, two corners in nm at mask scale.
-    #[arg(long, value_name = "X0,Y0,X1,Y1", value_parser = rectangle, allow_hyphen_values = true, required_if_eq("expose", "background"), help_heading = TRANSFER)]
-    frame: Option<Rect>,
+    #[arg(long, value_name = "X0,Y0,X1,Y1", allow_hyphen_values = true, help_heading = TRANSFER)]
+    pub(super) frame: Option<RectNm>,
     /// Take only what lies in this window, cut at its border; two corners in nm at mask scale.
-    #[arg(long, value_name = "X0,Y0,X1,Y1", value_parser = rectangle, allow_hyphen_values = true, help_heading = TRANSFER)]
-    window: Option<Rect>,
+    #[arg(long, value_name = "X0,Y0,X1,Y1", allow_hyphen_values = true, help_heading = TRANSFER)]
+    pub(super) window: Option<RectNm>,
     /// Refuse a polygon that needs repair instead of repairing it.
-    #[arg(long, help_heading = TRANSFER)]
-    strict: bool,
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true", help_heading = TRANSFER)]
+    pub(super) strict: Option<bool>,
 }
 
 const TRANSFER: &str = "How the layout goes onto the mask, in this order";
 
-/// What is exposed.
-#[derive(Clone, Copy, Debug, Default, ValueEnum)]
-enum ExposeArg {
-    /// What is drawn.
-    #[default]
-    Figures,
-    /// What is not drawn of the --frame.
-    Background,
-}
-
 impl LayoutArgs {
     /// What is taken; reach and address unit are left to who knows the blur and the writer.
     pub(super) fn options(&self) -> Result<MaskOptions, CliError> {
-        let expose = match (self.expose, self.frame) {
+        let frame = self.frame.and_then(RectNm::rect);
+        let expose = match (self.expose.unwrap_or_default(), frame) {
             (ExposeArg::Figures, None) => Expose::Figures,
             (ExposeArg::Background, Some(frame)) => Expose::Background { frame },
-            (ExposeArg::Background, None) | (ExposeArg::Figures, Some(_)) => {
+            (ExposeArg::Background, None) => {
+                return Err(CliError::Arguments(
+                    "--expose background needs a --frame, expected two corners in nm".to_owned(),
+                ));
+            }
+            (ExposeArg::Figures, Some(_)) => {
                 return Err(CliError::Arguments(
                     "--frame is for --expose background".to_owned(),
                 ));
             }
         };
+        let layers = |names: &[LayerName]| names.iter().map(|name| name.0).collect();
         Ok(MaskOptions {
-            layers: self.layers.clone(),
-            minus: self.minus.clone(),
-            scale: self.scale,
-            mirror: self.mirror,
-            shift: self.shift_nm.unwrap_or_default(),
-            bias: Nm(self.bias_nm),
+            layers: layers(&self.layer),
+            minus: layers(&self.minus),
+            scale: self.scale(),
+            mirror: self.mirror.unwrap_or(false),
+            shift: self.shift_nm.map(PlaceNm::point).unwrap_or_default(),
+            bias: Nm(self.bias_nm.map_or(0.0, |Finite(nm)| nm)),
             expose,
-            window: self.window,
-            strict: self.strict,
+            window: self.window.and_then(RectNm::rect),
+            strict: self.strict.unwrap_or(false),
             ..MaskOptions::new(Nm(0.0), AddressUnit::FINEST)
         })
     }
 
+    /// Mask length per layout length.
+    pub(super) fn scale(&self) -> f64 {
+        self.scale.map_or(1.0, |Positive(scale)| scale)
+    }
+
+    /// What this says, and where it says nothing what a file says; the layout is that of the file.
+    pub(super) fn over(&self, file: &Self) -> Self {
+        let list = |own: &Vec<LayerName>, other: &Vec<LayerName>| {
+            if own.is_empty() { other } else { own }.clone()
+        };
+        Self {
+            layout: file.layout.clone(),
+            name: file.name.clone(),
+            coverage: self.coverage.or(file.coverage),
+            crc32: file.crc32,
+            layer: list(&self.layer, &file.layer),
+            scale: self.scale.or(file.scale),
+            minus: list(&self.minus, &file.minus),
+            mirror: self.mirror.or(file.mirror),
+            shift_nm: self.shift_nm.or(file.shift_nm),
+            bias_nm: self.bias_nm.or(file.bias_nm),
+            expose: self.expose.or(file.expose),
+            frame: self.frame.or(file.frame),
+            window: self.window.or(file.window),
+            strict: self.strict.or(file.strict),
+        }
+    }
+
     /// Its name for messages.
     pub(super) fn file(&self) -> String {
-        self.layout.display().to_string()
+        let path = || self.layout.display().to_string();
+        self.name.clone().unwrap_or_else(path)
     }
 
     /// Reads it and tells what was repaired.
@@ -103,6 +143,55 @@ impl LayoutArgs {
             eprintln!("note: {}: {note}", self.file());
         }
         Ok(layout)
+    }
+}
+
+/// A layout under a blur and the limits of a writer: what `fracture` and `judge` need.
+#[derive(Debug, Args)]
+pub(super) struct SetupArgs {
+    #[command(flatten)]
+    pub(super) layout: LayoutArgs,
+    /// Standard deviation of the blur, nm.
+    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
+    sigma_nm: f64,
+    /// How far the printed contour may stray from the drawn outline, nm.
+    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
+    pub(super) tolerance_nm: f64,
+    #[command(flatten)]
+    limits: LimitArgs,
+}
+
+/// What [`SetupArgs`] ask, checked before the layout is read.
+pub(super) struct SetupPlan {
+    pub(super) setup: Setup,
+    options: MaskOptions,
+    /// The layout's name for messages.
+    pub(super) name: String,
+}
+
+impl SetupArgs {
+    pub(super) fn plan(&self) -> Result<SetupPlan, CliError> {
+        Ok(SetupPlan {
+            setup: Setup {
+                blur: Blur::new(Nm(self.sigma_nm))
+                    .map_err(|error| CliError::Arguments(format!("--sigma-nm: {error}")))?,
+                tolerance: Nm(self.tolerance_nm),
+                limits: self.limits.limits()?,
+            },
+            options: self.layout.options()?,
+            name: self.layout.file(),
+        })
+    }
+
+    /// Reads the layout and makes the mask, which holds a figure.
+    pub(super) fn mask(&self, plan: &SetupPlan) -> Result<Mask, CliError> {
+        let layout = self.layout.open()?;
+        let chosen = Chosen {
+            name: &plan.name,
+            layout: &layout,
+            options: &plan.options,
+        };
+        mask(&chosen, &plan.setup)
     }
 }
 
@@ -122,23 +211,23 @@ pub(super) fn mask(chosen: &Chosen<'_>, setup: &Setup) -> Result<Mask, CliError>
 
 /// What a writer can flash, without a profile.
 #[derive(Debug, Args)]
-pub(super) struct LimitArgs {
+struct LimitArgs {
     /// Least side of a shot, nm.
     #[arg(long, value_name = "NM", default_value_t = 10.0, value_parser = positive, allow_negative_numbers = true)]
-    pub(super) min_side_nm: f64,
+    min_side_nm: f64,
     /// Greatest side of a shot, nm.
     #[arg(long, value_name = "NM", default_value_t = 1000.0, value_parser = positive, allow_negative_numbers = true)]
-    pub(super) max_side_nm: f64,
+    max_side_nm: f64,
     /// A shot whose short side is under this is counted as a sliver, nm.
     #[arg(long, value_name = "NM", default_value_t = 20.0, value_parser = not_negative, allow_negative_numbers = true)]
-    pub(super) sliver_nm: f64,
+    sliver_nm: f64,
     /// Address unit: all shot sides lie on multiples of it, nm.
     #[arg(long, value_name = "NM", default_value_t = 0.1, value_parser = positive, allow_negative_numbers = true)]
-    pub(super) address_nm: f64,
+    address_nm: f64,
 }
 
 impl LimitArgs {
-    pub(super) fn limits(&self) -> Result<ShotLimits, CliError> {
+    fn limits(&self) -> Result<ShotLimits, CliError> {
         if self.min_side_nm > self.max_side_nm {
             return Err(CliError::Arguments(format!(
                 "--min-side-nm is {}, expected at most the {} of --max-side-nm",
@@ -154,30 +243,8 @@ impl LimitArgs {
     }
 }
 
-/// How hard to search.
-#[derive(Clone, Copy, Debug, Default, ValueEnum)]
-pub(super) enum EffortArg {
-    /// One start, few trials.
-    Quick,
-    /// What a quote needs.
-    #[default]
-    Normal,
-    /// All starts: several times the work for a shot less now and then.
-    Thorough,
-}
-
-impl From<EffortArg> for Effort {
-    fn from(effort: EffortArg) -> Self {
-        match effort {
-            EffortArg::Quick => Self::Quick,
-            EffortArg::Normal => Self::Normal,
-            EffortArg::Thorough => Self::Thorough,
-        }
-    }
-}
-
 /// Numbers of a profile given on the command line, by their keys in files.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Default)]
 pub(super) struct Overrides(pub(super) Vec<(&'static str, f64)>);
 
 impl Overrides {
@@ -241,8 +308,9 @@ fn argument(key: Key) -> Arg {
     let parse = move |text: &str| {
         let within = |x: &f64| (info.least..=info.greatest).contains(x);
         let whole = |x: &f64| !key.is_count() || x.fract() == 0.0;
-        number(text)
+        text.parse()
             .ok()
+            .map(|Finite(x)| x)
             .filter(within)
             .filter(whole)
             .ok_or_else(|| format!("expected {}", key.expected()))
@@ -260,107 +328,4 @@ fn argument(key: Key) -> Arg {
         Key::GreatestSide => arg.visible_alias("max-side-nm"),
         _ => arg,
     }
-}
-
-fn number(text: &str) -> Result<f64, String> {
-    text.parse::<f64>()
-        .ok()
-        .filter(|x| x.is_finite())
-        .ok_or_else(|| "expected a finite number".to_owned())
-}
-
-/// A finite number over 0.
-pub(super) fn positive(text: &str) -> Result<f64, String> {
-    number(text)
-        .ok()
-        .filter(|x| *x > 0.0)
-        .ok_or_else(|| "expected a finite number over 0".to_owned())
-}
-
-/// A length by which contours may stray, nm: beyond a thousand it says nothing of a blur.
-pub(super) fn stray(text: &str) -> Result<f64, String> {
-    number(text)
-        .ok()
-        .filter(|x| *x > 0.0 && *x <= 1000.0)
-        .ok_or_else(|| "expected a number over 0, up to 1000".to_owned())
-}
-
-/// A finite number of 0 or more.
-pub(super) fn not_negative(text: &str) -> Result<f64, String> {
-    number(text)
-        .ok()
-        .filter(|x| *x >= 0.0)
-        .ok_or_else(|| "expected a finite number of 0 or more".to_owned())
-}
-
-/// A share over 0, up to 1.
-pub(super) fn share(text: &str) -> Result<f64, String> {
-    number(text)
-        .ok()
-        .filter(|x| *x > 0.0 && *x <= 1.0)
-        .ok_or_else(|| "expected a number over 0, up to 1".to_owned())
-}
-
-/// `104x132` in millimetres.
-pub(super) fn field_mm(text: &str) -> Result<Field, String> {
-    let sides = text.split_once(['x', '×']);
-    let sides = sides.and_then(|(w, h)| Some((positive(w).ok()?, positive(h).ok()?)));
-    let (width, height) = sides.ok_or("expected two lengths over 0 in mm, as 104x132")?;
-    Ok(Field {
-        width: Nm::from_mm(width),
-        height: Nm::from_mm(height),
-    })
-}
-
-/// `N` lengths in nm, separated by commas, as picometres.
-fn lengths<const N: usize>(text: &str) -> Option<[i64; N]> {
-    let pm = |text: &str| Nm(number(text.trim()).ok()?).to_pm();
-    let all = text.split(',').map(pm).collect::<Option<Vec<_>>>()?;
-    all.try_into().ok()
-}
-
-/// `100,-50` in nm.
-fn place(text: &str) -> Result<Point, String> {
-    let [x, y] = lengths(text).ok_or("expected two lengths in nm, as 100,-50")?;
-    Ok(Point::new(x, y))
-}
-
-/// `0,0,1000,500` in nm.
-fn rectangle(text: &str) -> Result<Rect, String> {
-    lengths(text)
-        .map(|[x0, y0, x1, y1]| Rect::new(Point::new(x0, y0), Point::new(x1, y1)))
-        .filter(|rect| rect.width() > 0 && rect.height() > 0)
-        .ok_or_else(|| "expected two corners of a rectangle in nm, as 0,0,1000,500".to_owned())
-}
-
-/// `1/0`, or `1` for datatype 0.
-fn layer(text: &str) -> Result<Layer, String> {
-    let (layer, datatype) = text.split_once('/').unwrap_or((text, "0"));
-    let number = |text: &str| {
-        text.parse()
-            .map_err(|_| "expected layer/datatype, two whole numbers as 1/0".to_owned())
-    };
-    Ok(Layer {
-        layer: number(layer)?,
-        datatype: number(datatype)?,
-    })
-}
-
-/// A count, also written as 3e11.
-pub(super) fn count(text: &str) -> Result<u128, String> {
-    let expected = || "expected a whole number of 0 or more, up to 1e24".to_owned();
-    if let Ok(count) = text.parse() {
-        return Ok(count);
-    }
-    let value = number(text).map_err(|_| expected())?;
-    if !(0.0..=1e24).contains(&value) || value.fract() != 0.0 {
-        return Err(expected());
-    }
-    #[allow(
-        clippy::cast_possible_truncation,
-        clippy::cast_sign_loss,
-        reason = "whole and within range"
-    )]
-    let count = value as u128;
-    Ok(count)
 }

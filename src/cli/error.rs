@@ -2,6 +2,7 @@
 
 use std::io;
 
+use crate::expose::RasterError;
 use crate::layout::LayoutError;
 use crate::mask::MaskError;
 use crate::profile::ProfileErrors;
@@ -39,6 +40,14 @@ pub enum CliError {
     /// The profile cannot be used.
     #[error(transparent)]
     Profile(#[from] ProfileErrors),
+    /// A job file cannot be used.
+    #[error("{place}: {message}")]
+    Job {
+        /// File and line.
+        place: String,
+        /// Found and expected.
+        message: String,
+    },
     /// Numbers that contradict each other.
     #[error("{0}")]
     Arguments(String),
@@ -64,6 +73,9 @@ pub enum CliError {
         /// Why.
         cause: TooManyPlaces,
     },
+    /// The second witness cannot be asked.
+    #[error("--raster-nm: {0}")]
+    Raster(#[from] RasterError),
     /// A file cannot be opened or written.
     #[error("{file}: {cause}")]
     File {

@@ -1,27 +1,29 @@
 //! `shotwright fracture`: one fracture of a layout as a shot list.
 
-use std::io::{self, Write};
+use std::io::{self, BufWriter, Write};
 use std::path::PathBuf;
 
 use clap::{Args, ValueEnum};
 use serde::Serialize;
 
-use crate::blur::Blur;
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Prefer, Staircase, Tile};
 use crate::fracture::{FractureError, Fracturer};
-use crate::judge::Settings;
+use crate::judge::{Background, Settings};
 use crate::mask::Mask;
+use crate::quote::exposure::Exposed;
 use crate::quote::made::{self, Made};
 use crate::quote::result::{Count, FractureSummary};
-use crate::quote::{Chosen, Setup, summary};
+use crate::quote::{Setup, summary};
 use crate::report::progress::Progress;
 use crate::report::shots_csv::{Rows, ShotWriter};
 use crate::units::Nm;
 
-use super::args::{EffortArg, LayoutArgs, LimitArgs, mask, positive, stray};
+use super::args::SetupArgs;
+use super::values::{EffortArg, stray};
 use crate::report::table::{grouped, significant};
 
+use super::drawn::{self, Drawn};
 use super::output::{aligned, create, file_error, print, print_json, scores};
 use super::{CliError, Outcome};
 
@@ -35,18 +37,10 @@ use super::{CliError, Outcome};
   shotwright fracture sample-masks/array-block.gds --method tile --exact --sigma-nm 12 -o -")]
 pub(super) struct FractureArgs {
     #[command(flatten)]
-    layout: LayoutArgs,
+    setup: SetupArgs,
     /// How to fracture.
     #[arg(long, value_enum)]
     method: MethodArg,
-    /// Standard deviation of the blur, nm.
-    #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
-    sigma_nm: f64,
-    /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
-    tolerance_nm: f64,
-    #[command(flatten)]
-    limits: LimitArgs,
     /// How far the plain staircase may stray from the outline, nm. Default: the tolerance.
     #[arg(long, value_name = "NM", value_parser = stray, allow_negative_numbers = true)]
     within_nm: Option<f64>,
@@ -62,12 +56,16 @@ pub(super) struct FractureArgs {
     /// How hard to search.
     #[arg(long, value_enum, default_value_t)]
     effort: EffortArg,
-    /// Where the shots go, as CSV; - is standard output, and the summary then goes to standard error.
+    /// Where the shots go: CSV, or a layout if the name ends in .oas or .gds (layer 1, the dose in thousandths as datatype); - is CSV
+    /// on standard output, and the summary then goes to standard error.
     #[arg(short, long, value_name = "FILE")]
     output: Option<PathBuf>,
     /// Write the shots of each distinct figure once, at its first place, instead of at all its places.
     #[arg(long)]
     distinct: bool,
+    /// Draw the printed contours into the layout, too: layer 2/0, around holes 2/1.
+    #[arg(long)]
+    contours: bool,
     /// Print the summary as JSON.
     #[arg(long)]
     json: bool,
@@ -120,13 +118,8 @@ struct Failing {
 const MOST_TOLD: usize = 20;
 
 pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
-    let setup = Setup {
-        blur: Blur::new(Nm(args.sigma_nm))
-            .map_err(|error| CliError::Arguments(format!("--sigma-nm: {error}")))?,
-        tolerance: Nm(args.tolerance_nm),
-        limits: args.limits.limits()?,
-    };
-    let options = args.layout.options()?;
+    let plan = args.setup.plan()?;
+    let setup = plan.setup;
     if args.bound && !matches!(args.method, MethodArg::Overlap) {
         return Err(CliError::Arguments(
             "--bound is for --method overlap".to_owned(),
@@ -141,29 +134,52 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
             "--json and -o - both want standard output: give -o a file".to_owned(),
         ));
     }
+    let drawn = args.output.as_deref().and_then(drawn::format);
+    if args.contours && drawn.is_none() {
+        return Err(CliError::Arguments(
+            "--contours needs a layout to draw into: -o with a name that ends in .oas or .gds"
+                .to_owned(),
+        ));
+    }
     let file = args
         .output
         .as_ref()
         .filter(|_| !to_stdout)
         .map(|path| Ok::<_, CliError>((path, create(path)?)))
         .transpose()?;
-    let layout = args.layout.open()?;
-    let name = args.layout.file();
-    let chosen = Chosen {
-        name: &name,
-        layout: &layout,
-        options: &options,
-    };
-    let mask = mask(&chosen, &setup)?;
+    let mask = args.setup.mask(&plan)?;
     let bar = Progress::new("figures", 2 * mask.figures.len() as u64);
     let tick = || bar.inc();
     let shots = made::fracture(&mask, args.fracturer().as_ref(), &setup, &tick);
     let settings = Settings::new(setup.blur, setup.tolerance);
     let made = made::judge(&mask, shots, &settings, &tick);
     drop(bar);
-    let summary = summary::of_mask(&mask.figures, &made, setup.limits.sliver);
+    let summary = summary::of_mask(
+        &mask.figures,
+        &made,
+        &Exposed::as_fractured(&mask, &made),
+        Background::default(),
+        setup.limits.sliver,
+    );
 
-    if let Some((path, mut out)) = file {
+    if let (Some((path, out)), Some(format)) = (&file, drawn) {
+        let drawn = Drawn {
+            mask: &mask,
+            made: &made,
+            blur: setup.blur,
+            contours: args.contours,
+            distinct: args.distinct,
+        };
+        let (layout, shots) = drawn.layout();
+        layout
+            .write(format, BufWriter::new(out.get_ref()))
+            .map_err(|cause| file_error(path, io::Error::other(cause)))?;
+        eprintln!("{}: {shots} shots written as {format}", path.display());
+        let left_out = drawn::too_large(&mask, setup.blur);
+        if args.contours && left_out > 0 {
+            eprintln!("{left_out} figures are too large for their contour to be drawn");
+        }
+    } else if let Some((path, mut out)) = file {
         let rows = write(&mask, &made, args.distinct, &mut out)
             .map_err(|cause| file_error(path, cause))?;
         eprintln!("{}: {rows} shots written", path.display());
@@ -201,7 +217,7 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     if answer.shots_beyond_limits.0 > 0 {
         eprintln!(
             "{} shots have a side outside {} to {} nm",
-            answer.shots_beyond_limits, args.limits.min_side_nm, args.limits.max_side_nm
+            answer.shots_beyond_limits, setup.limits.least_side.0, setup.limits.greatest_side.0
         );
     }
     if args.json {
@@ -223,7 +239,7 @@ impl FractureArgs {
         let effort = self.effort.into();
         match self.method {
             MethodArg::Staircase => Box::new(Staircase {
-                within: Nm(self.within_nm.unwrap_or(self.tolerance_nm)),
+                within: Nm(self.within_nm.unwrap_or(self.setup.tolerance_nm)),
             }),
             MethodArg::Tile => Box::new(Tile {
                 effort,

@@ -8,10 +8,11 @@ use crate::quote::hours::of_time;
 use crate::quote::result::Hours;
 use crate::report::table::{grouped, significant};
 use crate::units::Dose;
-use crate::write_time::{self, Bound, Counts, Field, Pattern, WriteTime};
+use crate::write_time::{self, Bound, Counts, Pattern, WriteTime};
 
-use super::args::{Overrides, count, field_mm, positive};
+use super::args::Overrides;
 use super::output::{aligned, print, print_json};
+use super::values::{FieldMm, count, positive};
 use super::{CliError, Outcome};
 
 /// Hours from a number of shots, without a layout.
@@ -34,8 +35,8 @@ pub(super) struct HoursArgs {
     #[arg(long, value_name = "D", default_value_t = 1.0, value_parser = positive, allow_negative_numbers = true)]
     mean_dose: f64,
     /// Field that the stage travels over, width x height in mm; without it there is neither stage travel nor turn.
-    #[arg(long, value_name = "WxH", value_parser = field_mm)]
-    field_mm: Option<Field>,
+    #[arg(long, value_name = "WxH")]
+    field_mm: Option<FieldMm>,
     /// Print JSON.
     #[arg(long)]
     json: bool,
@@ -81,7 +82,7 @@ pub(super) fn run(args: &HoursArgs) -> Result<Outcome, CliError> {
             mean_dose: Dose(args.mean_dose),
             ..Counts::of(args.shots)
         },
-        field: args.field_mm,
+        field: args.field_mm.map(FieldMm::field),
     };
     let time = WriteTime::new(&profile, &pattern)?;
     let interval = write_time::interval(&profile, &pattern)?;

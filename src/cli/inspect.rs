@@ -118,7 +118,7 @@ fn contents(args: &InspectArgs, layout: &Layout) -> Result<Contents, CliError> {
     Ok(Contents {
         file: args.layout.file(),
         database_unit_nm: layout.unit.0,
-        scale: args.layout.scale,
+        scale: args.layout.scale(),
         cells: layout.cells.len() as u64,
         top_cells: summary
             .top_cells

@@ -7,18 +7,17 @@ use std::path::PathBuf;
 use clap::Args;
 use serde::Serialize;
 
-use crate::blur::Blur;
 use crate::judge::Settings;
 use crate::quote::result::FractureSummary;
 use crate::quote::shots::score;
-use crate::quote::{Chosen, Setup};
 use crate::report::progress::Progress;
 use crate::report::shots_csv;
 use crate::units::Nm;
 
-use super::args::{LayoutArgs, LimitArgs, mask, positive, stray};
+use super::args::SetupArgs;
 use super::output::{aligned, file_error, print, print_json, scores};
-use super::{CliError, Outcome};
+use super::values::positive;
+use super::{CliError, Outcome, raster};
 
 /// Score a shot list against a layout.
 ///
@@ -32,17 +31,12 @@ use super::{CliError, Outcome};
 The shot list needs the columns x_nm, y_nm (lower-left corner), w_nm and h_nm; dose is 1 where there is no such column.")]
 pub(super) struct JudgeArgs {
     #[command(flatten)]
-    layout: LayoutArgs,
+    setup: SetupArgs,
     /// Shot list, CSV with a header.
     shots: PathBuf,
-    /// Standard deviation of the blur, nm.
+    /// Judge a second time on a raster of shots with pixels of this side, nm, blurred there, and compare: at most half of sigma.
     #[arg(long, value_name = "NM", value_parser = positive, allow_negative_numbers = true)]
-    sigma_nm: f64,
-    /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
-    tolerance_nm: f64,
-    #[command(flatten)]
-    limits: LimitArgs,
+    raster_nm: Option<f64>,
     /// Print JSON.
     #[arg(long)]
     json: bool,
@@ -56,28 +50,18 @@ struct Answer {
     stray_shots: u64,
     /// Shots with a side outside the limits.
     shots_beyond_limits: u64,
+    /// What the raster says; `None` if it was not asked.
+    raster: Option<raster::Second>,
 }
 
 /// Failing figures told one by one.
 const MOST_TOLD: usize = 20;
 
 pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
-    let setup = Setup {
-        blur: Blur::new(Nm(args.sigma_nm))
-            .map_err(|error| CliError::Arguments(format!("--sigma-nm: {error}")))?,
-        tolerance: Nm(args.tolerance_nm),
-        limits: args.limits.limits()?,
-    };
-    let options = args.layout.options()?;
+    let plan = args.setup.plan()?;
+    let setup = plan.setup;
     let input = File::open(&args.shots).map_err(|cause| file_error(&args.shots, cause))?;
-    let layout = args.layout.open()?;
-    let name = args.layout.file();
-    let chosen = Chosen {
-        name: &name,
-        layout: &layout,
-        options: &options,
-    };
-    let mask = mask(&chosen, &setup)?;
+    let mask = args.setup.mask(&plan)?;
     let file = args.shots.display().to_string();
     let list = shots_csv::read(BufReader::new(input), setup.limits.address)
         .map_err(|cause| CliError::Shots { file, cause })?;
@@ -87,8 +71,13 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
     let places = u64::try_from(mask.place_count()).unwrap_or(u64::MAX);
     let bar = Progress::new("figures", places);
     let settings = Settings::new(setup.blur, setup.tolerance);
-    let scored = score(&mask, &list.shots, &settings, &setup.limits, &|| bar.inc())
-        .map_err(|cause| CliError::TooManyPlaces { file: name, cause })?;
+    let scored =
+        score(&mask, &list.shots, &settings, &setup.limits, &|| bar.inc()).map_err(|cause| {
+            CliError::TooManyPlaces {
+                file: plan.name,
+                cause,
+            }
+        })?;
     drop(bar);
     for (figure, transform, fidelity) in scored.failing.iter().take(MOST_TOLD) {
         let bounds = transform.apply_rect(mask.figures[*figure].figure.bounds());
@@ -118,19 +107,27 @@ pub(super) fn run(args: &JudgeArgs) -> Result<Outcome, CliError> {
     if scored.beyond_limits > 0 {
         eprintln!(
             "{} shots have a side outside {} to {} nm",
-            scored.beyond_limits, args.limits.min_side_nm, args.limits.max_side_nm
+            scored.beyond_limits, setup.limits.least_side.0, setup.limits.greatest_side.0
         );
     }
-    let prints = scored.summary.prints_within_tolerance == Some(true);
+    let second = match args.raster_nm {
+        Some(pixel) => Some(raster::ask(&mask, &list.shots, &settings, Nm(pixel))?),
+        None => None,
+    };
+    let prints = scored.summary.prints_within_tolerance == Some(true)
+        && second.as_ref().is_none_or(raster::Second::agrees);
     let outcome = Outcome::over_a_limit_if(!prints || scored.beyond_limits > 0);
     if args.json {
         print_json(&Answer {
             summary: scored.summary,
             stray_shots: scored.stray as u64,
             shots_beyond_limits: scored.beyond_limits as u64,
+            raster: second,
         })?;
     } else {
-        print(&aligned(&scores(&scored.summary)))?;
+        let mut lines = scores(&scored.summary);
+        lines.extend(second.iter().flat_map(raster::Second::lines));
+        print(&aligned(&lines))?;
     }
     Ok(outcome)
 }

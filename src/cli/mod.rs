@@ -1,15 +1,23 @@
 //! The command line: arguments checked into plans before any work, results on stdout, talk on stderr.
 
 mod args;
+mod compare;
+mod correct;
+mod drawn;
 mod error;
+mod files;
 mod fracture;
 mod hours;
 mod inspect;
+mod job;
 mod judge;
 mod output;
 mod pictures;
 mod profile;
 mod quote;
+mod raster;
+mod sweep;
+mod values;
 
 use clap::{Parser, Subcommand};
 
@@ -53,6 +61,9 @@ enum Command {
     Fracture(fracture::FractureArgs),
     Judge(judge::JudgeArgs),
     Hours(Box<hours::HoursArgs>),
+    Sweep(Box<sweep::SweepArgs>),
+    Compare(compare::CompareArgs),
+    Correct(Box<correct::CorrectArgs>),
     Profile(profile::ProfileArgs),
 }
 
@@ -61,20 +72,33 @@ enum Command {
 /// # Errors
 /// When it cannot be done: the reason with its place, what was found and what was expected.
 pub fn run(cli: Cli) -> Result<Outcome, CliError> {
-    if let Some(threads) = cli.threads {
-        rayon::ThreadPoolBuilder::new()
-            .num_threads(threads.into())
-            .build_global()
-            .map_err(|cause| CliError::Threads(cause.to_string()))?;
+    let threads = cli.threads;
+    // A job file may say how many.
+    if !matches!(cli.command, Command::Quote(_) | Command::Sweep(_)) {
+        start_threads(threads)?;
     }
     match cli.command {
-        Command::Quote(args) => quote::run(&args),
+        Command::Quote(args) => quote::run(&args, threads),
         Command::Inspect(args) => inspect::run(&args),
         Command::Fracture(args) => fracture::run(&args),
         Command::Judge(args) => judge::run(&args),
         Command::Hours(args) => hours::run(&args),
+        Command::Sweep(args) => sweep::run(&args, threads),
+        Command::Compare(args) => compare::run(&args),
+        Command::Correct(args) => correct::run(&args),
         Command::Profile(args) => profile::run(&args),
     }
+}
+
+/// Sets the number of threads if one is given; once.
+fn start_threads(threads: Option<u16>) -> Result<(), CliError> {
+    let Some(threads) = threads else {
+        return Ok(());
+    };
+    rayon::ThreadPoolBuilder::new()
+        .num_threads(threads.into())
+        .build_global()
+        .map_err(|cause| CliError::Threads(cause.to_string()))
 }
 
 #[cfg(test)]

@@ -6,7 +6,7 @@ use std::path::Path;
 
 use serde::Serialize;
 
-use crate::quote::result::FractureSummary;
+use crate::quote::result::{Count, FractureSummary, Scores};
 use crate::report::table::{grouped, significant};
 
 use super::CliError;
@@ -77,8 +77,64 @@ pub(super) fn scores(summary: &FractureSummary) -> Vec<(&'static str, String)> {
             format!("{} nm/%", number(summary.margin_nm_per_pct.worst)),
         ),
     ];
+    if let Some(scores) = summary.scores {
+        lines.extend(further(&scores));
+    }
     if let Some(peak) = summary.peak_dose {
         lines.push(("peak dose", format!("{} × dose-to-size", significant(peak))));
+    }
+    lines
+}
+
+/// What the judge says beyond the edge error; what was not measured is left out.
+fn further(scores: &Scores) -> Vec<(&'static str, String)> {
+    let mut lines = Vec::new();
+    let mut line = |label, value: Option<f64>, unit: &str| {
+        lines.extend(value.map(|x| (label, format!("{} {unit}", significant(x)))));
+    };
+    line("corner zones, 95 %", scores.corner_error_nm.p95, "nm");
+    line("corner zones, worst", scores.corner_error_nm.worst, "nm");
+    line("margin, worst 5 %", scores.margin_nm_per_pct.p95, "nm/%");
+    line(
+        "error budget, median",
+        scores.edge_sd_nm.median,
+        "nm (1 sd)",
+    );
+    line(
+        "error budget, worst 5 %",
+        scores.edge_sd_nm.p95,
+        "nm (1 sd)",
+    );
+    let labels = [
+        "edge error at -10 % dose, 95 %",
+        "edge error at -5 % dose, 95 %",
+        "edge error at +5 % dose, 95 %",
+        "edge error at +10 % dose, 95 %",
+    ];
+    for (label, through) in labels.into_iter().zip(&scores.through_dose) {
+        line(label, through.edge_error_nm.p95, "nm");
+    }
+    if let Some(narrowest) = scores.narrowest {
+        line("narrowest place, drawn", Some(narrowest.drawn_nm), "nm");
+        line("narrowest place, printed", narrowest.printed_nm, "nm");
+    }
+    let area = 100.0 * scores.printed_area_nm2 / scores.drawn_area_nm2;
+    line(
+        "area printed of that drawn",
+        Some(area).filter(|a| a.is_finite()),
+        "%",
+    );
+    let pieces = scores.pieces;
+    for (label, n) in [
+        ("figures lost", pieces.lost),
+        ("figures in several pieces", pieces.split),
+        ("figures bridged", pieces.bridged),
+        ("figures with extra pieces", pieces.extra),
+        ("figures with other holes", pieces.holes),
+    ] {
+        if n > 0 {
+            lines.push((label, grouped(Count(n))));
+        }
     }
     lines
 }

@@ -1,126 +1,121 @@
 //! `shotwright quote`: the whole job.
 
-use std::fs;
 use std::io::Write;
-use std::path::{Path, PathBuf};
 
 use clap::Args;
 
 use crate::mask::Mask;
 use crate::quote::result::{Fits, FlagKind, Method};
-use crate::quote::{self, Answer, Chosen, Share, Terms};
+use crate::quote::{self, Answer, Chosen, Clip, Terms};
 use crate::report::figures_csv;
+use crate::report::html::{self, Beside};
 use crate::report::progress::Progress;
+use crate::report::stripes_csv;
 use crate::report::table::{self, TextOptions};
-use crate::units::{Dose, Hours, Nm};
-use crate::write_time::Field;
 
-use super::args::{EffortArg, LayoutArgs, Overrides, field_mm, mask, positive, share, stray};
+use super::args::mask;
+use super::files::{Output, Sink};
 use super::fracture::write;
-use super::output::{create, file_error, print, print_json};
+use super::job::{Plan, RequestArgs};
+use super::output::{print, print_json};
 use super::pictures::Pictures;
-use super::{CliError, Outcome};
+use super::{CliError, Outcome, start_threads};
 
 /// Say how many hours a layout takes to write, whether that fits the slot, which fracture to order and which figures to send back.
 ///
-/// Every distinct figure is fractured in three ways (plain staircase, tile, overlap) and judged on its simulated dose.
-/// Exit status 1 if the recommended fracture does not surely fit the slot, or a dose is over --peak-dose.
+/// Every distinct figure is fractured in three ways (plain staircase, tile, overlap) and judged on its simulated dose. LAYOUT may
+/// be a job file (.toml): every long flag, with _ for -, is a key of it; see `job.toml` of any --out for all of them. Flags
+/// override the file. Exit status 1 if the recommended fracture does not surely fit the slot, or a dose is over --peak-dose.
 #[derive(Debug, Args)]
 #[command(after_long_help = "Examples:
   shotwright quote sample-masks/mixed.oas --slot-h 24 --out quote-mixed
   shotwright quote clip.oas --layer 1/0 --slot-h 24 --field-mm 104x132 --coverage 0.6
-  shotwright quote clip.gds --slot-h 10 --profile mine.toml --settle-ns 50 --json
+  shotwright quote job.toml --slot-h 10 --settle-ns 50 --json
+
+A job file:
+  slot_h = 24
+  profile = \"shaped-400\"        # a built-in name, a file, or a table [profile]
+  field_mm = [104, 132]         # with a coverage for each clip; leave both out for one layout alone
+  [numbers]                     # in place of the profile's own
+  settle_ns = { value = 50, plus_minus = 5 }
+  [[clip]]                      # one or more; files are named as seen from the job file
+  layout = \"dense.oas\"
+  layer = [\"1/0\"]
+  coverage = 0.4
+  [[clip]]
+  layout = \"iso.oas\"
+  coverage = 0.2
 
 It is an estimate. The mask shop's own calibrated model and its written acceptance decide.")]
 pub(super) struct QuoteArgs {
     #[command(flatten)]
-    layout: LayoutArgs,
-    /// Hours the writer is booked for.
-    #[arg(long, value_name = "H", value_parser = positive, allow_negative_numbers = true)]
-    slot_h: Option<f64>,
-    /// Writer and process numbers: a built-in name (see `shotwright profile`) or a TOML file.
-    #[arg(long, value_name = "NAME|FILE", default_value = "shaped-400")]
-    profile: String,
-    /// How far the printed contour may stray from the drawn outline, nm.
-    #[arg(long, value_name = "NM", default_value_t = 2.0, value_parser = stray, allow_negative_numbers = true)]
-    tolerance_nm: f64,
-    /// How far the plain staircase may stray from the outline, nm. Default: the tolerance.
-    #[arg(long, value_name = "NM", value_parser = stray, allow_negative_numbers = true)]
-    within_nm: Option<f64>,
-    /// How hard to search for fewer shots.
-    #[arg(long, value_enum, default_value_t)]
-    effort: EffortArg,
-    /// Field that the layout is a clip of, width x height in mm. Default: the layout alone.
-    #[arg(long, value_name = "WxH", value_parser = field_mm, requires = "coverage")]
-    field_mm: Option<Field>,
-    /// Share of the field that is filled with copies of the clip, over 0, up to 1.
-    #[arg(long, value_name = "C", value_parser = share, allow_negative_numbers = true, requires = "field_mm")]
-    coverage: Option<f64>,
-    /// Flag figures whose dose piles up above this multiple of dose-to-size.
-    #[arg(long, value_name = "D", value_parser = positive, allow_negative_numbers = true)]
-    peak_dose: Option<f64>,
-    /// Directory for quote.json, figures.csv, shot lists and pictures; made if it is not there. Default: no files.
-    #[arg(long, value_name = "DIR")]
-    out: Option<PathBuf>,
-    /// Flagged figures listed and drawn before the rest is only counted.
-    #[arg(long, value_name = "N", default_value_t = 10)]
-    flags: usize,
-    /// Print the quote as JSON.
-    #[arg(long)]
-    json: bool,
-    #[command(flatten)]
-    numbers: Overrides,
+    request: RequestArgs,
 }
 
 /// Lines of a shot list beyond which distinct figures are written once instead of at all their places.
 const MOST_LINES: u128 = 1_000_000_000;
 
-pub(super) fn run(args: &QuoteArgs) -> Result<Outcome, CliError> {
-    let profile = args.numbers.profile(&args.profile)?;
-    let terms = Terms {
-        profile: &profile,
-        tolerance: Nm(args.tolerance_nm),
-        within: Nm(args.within_nm.unwrap_or(args.tolerance_nm)),
-        effort: args.effort.into(),
-        share: args
-            .field_mm
-            .zip(args.coverage)
-            .map(|(field, coverage)| Share { field, coverage }),
-        slot: args.slot_h.map(Hours),
-        peak_dose: args.peak_dose.map(Dose),
-    };
-    let options = args.layout.options()?;
-    let name = args.layout.file();
-    let failed = |cause| CliError::Quote {
-        file: name.clone(),
+pub(super) fn run(args: &QuoteArgs, threads: Option<u16>) -> Result<Outcome, CliError> {
+    let plan = args.request.plan()?;
+    start_threads(threads.or(plan.threads))?;
+    let terms = plan.terms();
+    let of_profile = |cause| CliError::Quote {
+        file: plan.profile.name().to_owned(),
         cause,
     };
-    let setup = terms.setup().map_err(|cause| CliError::Quote {
-        file: args.profile.clone(),
+    let setup = terms.setup().map_err(of_profile)?;
+    let files = match &plan.out {
+        Some(out) => Some(Files::create(Output::create(out)?, &plan)?),
+        None => None,
+    };
+    let layouts = plan
+        .clips
+        .iter()
+        .map(|clip| clip.open())
+        .collect::<Result<Vec<_>, _>>()?;
+    let chosen: Vec<Chosen<'_>> = plan
+        .clips
+        .iter()
+        .zip(&layouts)
+        .map(|(clip, layout)| Chosen {
+            name: &clip.name,
+            layout,
+            options: &clip.options,
+        })
+        .collect();
+    let masks = chosen
+        .iter()
+        .map(|chosen| mask(chosen, &setup))
+        .collect::<Result<Vec<Mask>, _>>()?;
+    let clips: Vec<Clip<'_>> = plan
+        .clips
+        .iter()
+        .zip(chosen.iter().zip(&masks))
+        .map(|(clip, (&chosen, mask))| Clip {
+            chosen,
+            mask,
+            coverage: clip.coverage,
+        })
+        .collect();
+    let bar = Progress::new("figures", quote::ticks(&masks));
+    let answer = quote::quote(&clips, &terms, &|| bar.inc());
+    drop(bar);
+    let names: Vec<&str> = plan.clips.iter().map(|clip| clip.name.as_str()).collect();
+    let mut answer = answer.map_err(|cause| CliError::Quote {
+        file: names.join(", "),
         cause,
     })?;
-    let files = args.out.as_deref().map(Files::create).transpose()?;
-    let layout = args.layout.open()?;
-    let chosen = Chosen {
-        name: &name,
-        layout: &layout,
-        options: &options,
-    };
-    let mask = mask(&chosen, &setup)?;
-    let bar = Progress::new("figures", quote::ticks(&mask));
-    let mut answer = quote::quote(&chosen, &mask, &terms, &|| bar.inc()).map_err(failed)?;
-    drop(bar);
     match files {
-        Some(files) => files.write(&mask, &mut answer, &terms, args.flags)?,
+        Some(files) => files.write(&clips, &mut answer, &terms, &plan)?,
         None => {
             eprintln!("no files written; --out DIR writes quote.json, figures, shots and pictures")
         }
     }
-    if args.json {
+    if plan.json {
         print_json(&answer.quote)?;
     } else {
         let options = TextOptions {
-            flags: args.flags,
+            flags: plan.flags,
             ..TextOptions::default()
         };
         print(&table::text(&answer.quote, options))?;
@@ -136,67 +131,115 @@ pub(super) fn run(args: &QuoteArgs) -> Result<Outcome, CliError> {
 
 /// The files of a quote, opened before the work.
 struct Files {
-    directory: PathBuf,
+    output: Output,
+    job: Sink,
     quote: Sink,
     figures: Sink,
-    tile: Sink,
-    overlap: Sink,
+    stripes: Sink,
+    page: Sink,
+    /// By clip: tile and overlap, with their names.
+    shots: Vec<[(Method, String, Sink); 2]>,
 }
 
-type Sink = (PathBuf, std::io::BufWriter<fs::File>);
+/// What the page links to.
+const BESIDE: [Beside<'static>; 4] = [
+    Beside {
+        name: "quote.json",
+        about: "the whole result",
+    },
+    Beside {
+        name: "figures.csv",
+        about: "a line for each distinct figure",
+    },
+    Beside {
+        name: "stripes.csv",
+        about: "the time of each stripe by cause",
+    },
+    Beside {
+        name: "job.toml",
+        about: "all that was asked, to quote again",
+    },
+];
+
+/// What the files of a clip begin with: nothing where there is one, else its number.
+pub(super) fn prefix(clip: usize, clips: usize) -> String {
+    if clips > 1 {
+        format!("clip-{}-", clip + 1)
+    } else {
+        String::new()
+    }
+}
 
 impl Files {
-    fn create(directory: &Path) -> Result<Self, CliError> {
-        fs::create_dir_all(directory).map_err(|cause| file_error(directory, cause))?;
-        let sink = |name: &str| {
-            let path = directory.join(name);
-            let file = create(&path)?;
-            Ok::<_, CliError>((path, file))
-        };
+    fn create(mut output: Output, plan: &Plan) -> Result<Self, CliError> {
+        let clips = plan.clips.len();
+        let mut shots = Vec::with_capacity(clips);
+        for clip in 0..clips {
+            let mut of = |method: Method| {
+                let name = format!("{}shots-{}.csv", prefix(clip, clips), method.name());
+                let sink = output.sink(&name)?;
+                Ok::<_, CliError>((method, name, sink))
+            };
+            shots.push([of(Method::Tile)?, of(Method::Overlap)?]);
+        }
         Ok(Self {
-            directory: directory.to_owned(),
-            quote: sink("quote.json")?,
-            figures: sink("figures.csv")?,
-            tile: sink("shots-tile.csv")?,
-            overlap: sink("shots-overlap.csv")?,
+            job: output.sink("job.toml")?,
+            quote: output.sink("quote.json")?,
+            figures: output.sink("figures.csv")?,
+            stripes: output.sink("stripes.csv")?,
+            page: output.sink("report.html")?,
+            shots,
+            output,
         })
     }
 
     fn write(
-        self,
-        mask: &Mask,
+        mut self,
+        clips: &[Clip<'_>],
         answer: &mut Answer,
         terms: &Terms<'_>,
-        most: usize,
+        plan: &Plan,
     ) -> Result<(), CliError> {
-        for (method, (path, out)) in [(Method::Tile, self.tile), (Method::Overlap, self.overlap)] {
-            let Some(made) = answer.made.get(method) else {
-                continue;
-            };
-            let lines = answer.quote.fractures.get(method).map_or(0, |f| f.shots.0);
-            let distinct = lines > MOST_LINES;
-            write(mask, made, distinct, out).map_err(|cause| file_error(&path, cause))?;
-            if distinct {
-                answer.quote.notes.push(format!(
-                    "{}: {lines} lines, so each distinct figure is written once, at its first place",
-                    path.display()
-                ));
+        let job = plan.resolved(self.output.directory())?;
+        self.job.write(|out| out.write_all(job.as_bytes()))?;
+        for ((clip, of_clip), sinks) in clips.iter().zip(&answer.made).zip(self.shots) {
+            for (method, name, sink) in sinks {
+                let Some(made) = of_clip.get(method) else {
+                    continue;
+                };
+                let lines = clip.mask.figures.iter().zip(made.iter()).fold(
+                    0,
+                    |sum: u128, (figure, made)| {
+                        let shots = made.as_ref().map_or(0, |made| made.fracture.shots.len());
+                        sum.saturating_add(figure.place_count().saturating_mul(shots as u128))
+                    },
+                );
+                let distinct = lines > MOST_LINES;
+                sink.write(|out| write(clip.mask, made, distinct, out).map(drop))?;
+                if distinct {
+                    answer.quote.notes.push(format!(
+                        "{name}: {lines} lines, so each distinct figure is written once, at its first place"
+                    ));
+                }
             }
         }
-        Pictures {
-            mask,
-            terms,
-            directory: &self.directory,
-        }
-        .write(answer, most)?;
-        let (path, out) = self.figures;
-        figures_csv::write(out, &answer.figures)
-            .map_err(|cause| file_error(&path, std::io::Error::other(cause)))?;
-        let (path, mut out) = self.quote;
-        serde_json::to_writer_pretty(&mut out, &answer.quote)
-            .map_err(std::io::Error::from)
-            .and_then(|()| writeln!(out))
-            .and_then(|()| out.flush())
-            .map_err(|cause| file_error(&path, cause))
+        let pictures = Pictures { clips, terms };
+        let shown = pictures.write(answer, plan.flags, &mut self.output)?;
+        self.figures
+            .write(|out| figures_csv::write(out, &answer.figures).map_err(std::io::Error::other))?;
+        self.stripes
+            .write(|out| stripes_csv::write(out, &answer.stripes).map_err(std::io::Error::other))?;
+        self.page.write(|out| {
+            let pictures: Vec<Beside<'_>> = shown
+                .iter()
+                .map(|(name, about)| Beside { name, about })
+                .collect();
+            let page = html::page(&answer.quote, &pictures, &BESIDE, plan.flags);
+            out.write_all(page.as_bytes())
+        })?;
+        self.quote.write(|out| {
+            serde_json::to_writer_pretty(&mut *out, &answer.quote)?;
+            writeln!(out)
+        })
     }
 }

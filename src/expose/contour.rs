@@ -2,7 +2,7 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use crate::blur::THRESHOLD;
+use crate::blur;
 use crate::target::{DoseField, Printed};
 
 /// The first change of sign of a level going outward (from a positive start) or inward (from a negative one).
@@ -71,10 +71,10 @@ fn newton(
     t
 }
 
-/// The level at which a dose prints when all doses change by a share (+0.05 for +5 %): `½/(1 + change)`.
+/// The level at which a dose without backscatter prints when all doses change by a share (+0.05 for +5 %): `½/(1 + change)`.
 #[must_use]
 pub fn level_at(change: f64) -> f64 {
-    THRESHOLD / (1.0 + change)
+    blur::level_at(change, 1.0)
 }
 
 /// A level line: the higher dose lies to its left.

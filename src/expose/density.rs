@@ -1,8 +1,9 @@
 //! How densely the mask is written: coverage on a mesh, spread by the long-range Gaussians.
 
-use crate::blur;
-use crate::geom::Rect;
-use crate::units::{Dose, Nm};
+use crate::geom::{Point, Rect};
+use crate::units::Nm;
+
+use super::spread;
 
 /// Cells that a map may have: 2²⁸, 2 GiB.
 const MOST_CELLS: f64 = 268_435_456.0;
@@ -39,18 +40,21 @@ pub enum DensityError {
 /// Mean of something per square cell of a mesh over a frame, with one value for everything around the frame.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Density {
-    origin: [f64; 2],
-    mesh: f64,
-    columns: usize,
-    rows: usize,
-    cells: Vec<f64>,
-    around: f64,
+    /// Lower-left corner, pm.
+    pub(super) origin: Point,
+    /// Side of a cell, nm.
+    pub(super) mesh: f64,
+    pub(super) columns: usize,
+    pub(super) rows: usize,
+    pub(super) cells: Vec<f64>,
+    pub(super) around: f64,
 }
 
 impl Density {
     /// An empty map over a frame, cells from its lower-left corner on; `around` is the coverage beyond the frame (0 for bare mask).
     ///
-    /// Use a mesh of β/4 or finer. Cells reach up to one mesh beyond the frame; what is added outside them is not counted.
+    /// Use a mesh of β/4 or finer. Cells reach up to one mesh beyond the frame; that part of them starts covered as `around` says.
+    /// What is added outside the cells is not counted.
     ///
     /// # Errors
     /// A mesh or coverage that is none, or more than 2²⁸ cells.
@@ -74,48 +78,26 @@ impl Density {
             });
         }
         let (columns, rows) = (super::dose::count(columns), super::dose::count(rows));
-        let cells = vec![0.0; columns * rows];
+        let mut cells = vec![0.0; columns * rows];
+        if around > 0.0 {
+            #[allow(
+                clippy::cast_precision_loss,
+                reason = "an index of memory is below 2^53"
+            )]
+            let within = |k: usize, length: Nm| (length / mesh - k as f64).clamp(0.0, 1.0);
+            for (k, cell) in cells.iter_mut().enumerate() {
+                let inside = within(k % columns, width) * within(k / columns, height);
+                *cell = around * (1.0 - inside);
+            }
+        }
         Ok(Self {
-            origin: frame.min.to_nm(),
+            origin: frame.min,
             mesh: mesh.0,
             columns,
             rows,
             cells,
             around,
         })
-    }
-
-    /// Adds one shot (pm) of a dose: every cell gets the exact share of its area, times the dose.
-    ///
-    /// Dose 1 gives the plain coverage; where shots overlap it counts twice, as it is flashed.
-    pub fn add(&mut self, shot: Rect, dose: Dose) {
-        let (min, max) = (shot.min.to_nm(), shot.max.to_nm());
-        let span = |axis: usize, cells: usize| {
-            let (from, to) = (
-                (min[axis] - self.origin[axis]) / self.mesh,
-                (max[axis] - self.origin[axis]) / self.mesh,
-            );
-            (
-                from,
-                to,
-                super::dose::count(from),
-                super::dose::count(to.ceil()).min(cells),
-            )
-        };
-        let ((x0, x1, i0, i1), (y0, y1, j0, j1)) = (span(0, self.columns), span(1, self.rows));
-        #[allow(
-            clippy::cast_precision_loss,
-            reason = "an index of memory is below 2^53"
-        )]
-        let share = |cell: usize, from: f64, to: f64| {
-            (to.min(cell as f64 + 1.0) - from.max(cell as f64)).max(0.0)
-        };
-        for j in j0..j1 {
-            let height = dose.0 * share(j, y0, y1);
-            for i in i0..i1 {
-                self.cells[j * self.columns + i] += height * share(i, x0, x1);
-            }
-        }
     }
 
     /// Columns and rows.
@@ -137,7 +119,7 @@ impl Density {
             clippy::cast_precision_loss,
             reason = "an index of memory is below 2^53"
         )]
-        let at = |k: usize, axis: usize| self.origin[axis] + (k as f64 + 0.5) * self.mesh;
+        let at = |k: usize, axis: usize| self.origin.to_nm()[axis] + (k as f64 + 0.5) * self.mesh;
         [at(column, 0), at(row, 1)]
     }
 
@@ -161,16 +143,26 @@ impl Density {
         self.cells.iter().sum::<f64>() / cells
     }
 
-    /// The value at a place: linear between the middles of cells, constant beyond the outermost middles.
+    /// The value at a place (nm): linear between the middles of cells, constant beyond the outermost middles.
     #[must_use]
     pub fn at(&self, p: [f64; 2]) -> f64 {
+        let [x, y] = self.origin.to_nm();
+        self.between([p[0] - x, p[1] - y])
+    }
+
+    /// The value at a place as [`Density::at`]; the same bits wherever mask and map lie together.
+    #[must_use]
+    pub fn at_point(&self, p: Point) -> f64 {
+        self.between((p - self.origin).to_nm())
+    }
+
+    fn between(&self, from_origin: [f64; 2]) -> f64 {
         let span = |axis: usize, cells: usize| {
             #[allow(
                 clippy::cast_precision_loss,
                 reason = "an index of memory is below 2^53"
             )]
-            let t =
-                ((p[axis] - self.origin[axis]) / self.mesh - 0.5).clamp(0.0, (cells - 1) as f64);
+            let t = (from_origin[axis] / self.mesh - 0.5).clamp(0.0, (cells - 1) as f64);
             let i = super::dose::count(t).min(cells.saturating_sub(2));
             #[allow(
                 clippy::cast_precision_loss,
@@ -185,39 +177,54 @@ impl Density {
         low + v * (high - low)
     }
 
+    /// The middle of all values that [`Density::at`] gives in a window (pm), if they differ by no more than a share of the least.
+    ///
+    /// Between middles of cells the value is linear in x and in y, so it is extreme at the window's corners, at middles, or where its
+    /// sides pass them.
+    #[must_use]
+    pub fn even_in(&self, window: Rect, share: f64) -> Option<f64> {
+        let [from, to] = [window.min, window.max].map(|p| (p - self.origin).to_nm());
+        let stops = |axis: usize, cells: usize| {
+            let index = |at: f64| super::dose::count((at / self.mesh - 0.5).ceil()).min(cells);
+            #[allow(
+                clippy::cast_precision_loss,
+                reason = "an index of memory is below 2^53"
+            )]
+            let middles =
+                (index(from[axis])..index(to[axis])).map(|k| (k as f64 + 0.5) * self.mesh);
+            let ends = [from[axis], to[axis]];
+            ends.into_iter().chain(middles).collect::<Vec<f64>>()
+        };
+        let (across, up) = (stops(0, self.columns), stops(1, self.rows));
+        let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
+        for y in &up {
+            for x in &across {
+                let value = self.between([*x, *y]);
+                (low, high) = (low.min(value), high.max(value));
+                if high - low > share * low {
+                    return None;
+                }
+            }
+        }
+        Some(0.5 * (low + high))
+    }
+
     /// Convolved with the unit-area Gaussian of 1/e radius `radius` (σ = radius/√2), at the middle of each cell.
     ///
     /// Exact for values that are constant in each cell; the kernel ends at 6 σ. Beyond the frame stands [`Density::around`].
+    /// The time does not grow with the radius.
     #[must_use]
     pub fn spread(&self, radius: Nm) -> Self {
-        self.separably(&kernel(
-            radius.0 * std::f64::consts::FRAC_1_SQRT_2 / self.mesh,
-        ))
+        spread::separably(
+            self,
+            &spread::gaussian(radius.0 * std::f64::consts::FRAC_1_SQRT_2 / self.mesh),
+        )
     }
 
-    /// Convolved with a symmetric kernel (weights at distance 0, 1, 2 … cells), rows then columns.
-    pub(super) fn separably(&self, kernel: &[f64]) -> Self {
-        let mut cells = self.cells.clone();
-        let mut line = Vec::new();
-        for row in cells.chunks_exact_mut(self.columns) {
-            line.clear();
-            line.extend_from_slice(row);
-            convolve(&line, kernel, self.around, row);
-        }
-        // Around the frame the half-spread map has the same value still.
-        let mut out = vec![0.0; self.rows];
-        for i in 0..self.columns {
-            line.clear();
-            line.extend(cells.iter().skip(i).step_by(self.columns));
-            convolve(&line, kernel, self.around, &mut out);
-            for (j, value) in out.iter().enumerate() {
-                cells[j * self.columns + i] = *value;
-            }
-        }
-        Self {
-            cells,
-            ..self.clone()
-        }
+    /// Cell by cell the product with another map of the same mesh, `around` included.
+    #[must_use]
+    pub fn times(&self, other: &Self) -> Self {
+        self.zip(other, |a, b| a * b)
     }
 
     /// The same mesh with values made from pairs of values of two maps, `around` included.
@@ -232,7 +239,35 @@ impl Density {
         Self {
             cells,
             around: f(self.around, other.around),
-            ..self.clone()
+            ..self.bare()
+        }
+    }
+
+    /// The same mesh with another value in each cell, and this one around.
+    #[must_use]
+    pub(super) fn within(&self, f: impl Fn(f64) -> f64, around: f64) -> Self {
+        Self {
+            cells: self.cells.iter().map(|c| f(*c)).collect(),
+            around,
+            ..self.bare()
+        }
+    }
+
+    /// Sum of the products of cells, in their order.
+    #[must_use]
+    pub(super) fn dot(&self, other: &Self) -> f64 {
+        self.cells
+            .iter()
+            .zip(&other.cells)
+            .map(|(a, b)| a * b)
+            .sum()
+    }
+
+    /// The same mesh without its cells.
+    pub(super) fn bare(&self) -> Self {
+        Self {
+            cells: Vec::new(),
+            ..*self
         }
     }
 
@@ -241,27 +276,14 @@ impl Density {
     pub(super) fn map(&self, f: impl Fn(f64) -> f64) -> Self {
         self.zip(self, |a, _| f(a))
     }
-}
 
-/// Weights of the cells at distance 0, 1, 2 … of a Gaussian of `sigma` cells: its integral over each.
-fn kernel(sigma: f64) -> Vec<f64> {
-    let reach = super::dose::count(6.0 * sigma) + 1;
-    #[allow(clippy::cast_precision_loss, reason = "a kernel is short")]
-    let weight =
-        |k: usize| blur::cdf((k as f64 + 0.5) / sigma) - blur::cdf((k as f64 - 0.5) / sigma);
-    (0..=reach).map(weight).collect()
-}
-
-/// A symmetric kernel over a line that goes on as `around` at both ends.
-fn convolve(line: &[f64], kernel: &[f64], around: f64, out: &mut [f64]) {
-    let n = line.len();
-    for (i, value) in out.iter_mut().enumerate() {
-        let mut sum = kernel[0] * line[i];
-        for (k, weight) in kernel.iter().enumerate().skip(1) {
-            let left = if k <= i { line[i - k] } else { around };
-            let right = if i + k < n { line[i + k] } else { around };
-            sum += weight * (left + right);
-        }
-        *value = sum;
+    /// Least and greatest cell.
+    #[must_use]
+    pub fn range(&self) -> [f64; 2] {
+        self.cells
+            .iter()
+            .fold([f64::INFINITY, f64::NEG_INFINITY], |[low, high], v| {
+                [low.min(*v), high.max(*v)]
+            })
     }
 }

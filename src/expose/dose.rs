@@ -222,9 +222,9 @@ impl Printed for Exposure {
     }
 
     /// To 0.001 nm: found on the table dose, then one Newton step on the exact one.
-    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64> {
+    fn crossing_at(&self, p: [f64; 2], outward: [f64; 2], range: f64, level: f64) -> Option<f64> {
         let along =
-            |(dose, g): (f64, [f64; 2])| (dose - THRESHOLD, g[0] * outward[0] + g[1] * outward[1]);
+            |(dose, g): (f64, [f64; 2])| (dose - level, g[0] * outward[0] + g[1] * outward[1]);
         let at = |t: f64| [p[0] + t * outward[0], p[1] + t * outward[1]];
         let table = PhiTable::get();
         let t = contour::crossing(

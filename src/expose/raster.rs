@@ -3,13 +3,13 @@
 //! It shares with the closed form nothing but the definition: pixels hold the exact share of each shot's area, a
 //! sampled Gaussian blurs them, bicubic interpolation (Keys, IEEE Trans. ASSP 29 (1981) 1153) reads between them.
 
-use crate::blur::{Blur, THRESHOLD};
+use crate::blur::Blur;
 use crate::geom::{Point, Rect};
 use crate::target::{DoseField, Printed};
 use crate::units::{Dose, Nm};
 
-use super::contour;
 use super::density::{Density, DensityError};
+use super::{contour, spread};
 
 /// Why there is no raster.
 #[derive(Clone, Copy, Debug, PartialEq, thiserror::Error)]
@@ -27,13 +27,18 @@ pub enum RasterError {
     Size(#[from] DensityError),
 }
 
+/// What a raster may be off for each unit of dose that is piled up, at pixels of σ: 6e-5 at σ 20 nm and pixels of 1 nm.
+const BOUND: f64 = 6e-5 * 20.0 * 20.0;
+
 /// A blurred raster of shots.
 ///
-/// Off the closed form by at most `0.03·(h/σ)²` for each unit of dose (h the pixel: averaging over it adds h²/12 to σ²).
+/// Averaging over a pixel of side h adds h²/12 to the variance, so it is blurred by that much less. What is left is the cubic
+/// between pixels.
 #[derive(Clone, Debug)]
 pub struct Raster {
     dose: Density,
     sigma: f64,
+    piled: f64,
     extent: Option<[f64; 4]>,
 }
 
@@ -71,8 +76,21 @@ impl Raster {
         Ok(Self {
             dose: blurred(&painted, sigma / pixel),
             sigma: sigma.0,
+            piled: painted.range()[1],
             extent,
         })
+    }
+
+    /// What a dose of dose 1 may be off: `6e-5·(20·h/σ)²`.
+    #[must_use]
+    pub fn bound_for_each_dose(blur: Blur, pixel: Nm) -> f64 {
+        BOUND * (pixel / blur.sigma()).powi(2)
+    }
+
+    /// What any dose of this raster may be off: that for each unit of the greatest dose piled up on one pixel, at least one.
+    #[must_use]
+    pub fn bound(&self) -> f64 {
+        BOUND * (self.dose.mesh().0 / self.sigma).powi(2) * self.piled.max(1.0)
     }
 
     /// Dose and gradient: products of Keys' cubic and its derivative over 4 × 4 pixels; 0 outside the raster.
@@ -101,8 +119,9 @@ impl Raster {
     }
 }
 
-/// Blurred by a Gaussian sampled at whole pixels and scaled to sum 1, rows then columns.
+/// Blurred by a Gaussian sampled at whole pixels and scaled to sum 1, rows then columns; `sigma` is that of the whole, in pixels.
 fn blurred(painted: &Density, sigma: f64) -> Density {
+    let sigma = (sigma * sigma - 1.0 / 12.0).sqrt();
     let reach = super::dose::count(6.0 * sigma) + 1;
     #[allow(clippy::cast_precision_loss, reason = "a kernel is short")]
     let mut kernel: Vec<f64> = (0..=reach)
@@ -110,7 +129,7 @@ fn blurred(painted: &Density, sigma: f64) -> Density {
         .collect();
     let sum = 2.0 * kernel.iter().sum::<f64>() - kernel[0];
     kernel.iter_mut().for_each(|w| *w /= sum);
-    painted.separably(&kernel)
+    spread::separably(painted, &kernel)
 }
 
 /// Weights of the four neighbours at a share of the way from the second to the third, and their derivatives.
@@ -143,10 +162,10 @@ impl Printed for Raster {
         self.local(p).1
     }
 
-    fn crossing(&self, p: [f64; 2], outward: [f64; 2], range: f64) -> Option<f64> {
+    fn crossing_at(&self, p: [f64; 2], outward: [f64; 2], range: f64, level: f64) -> Option<f64> {
         let along = |t: f64| {
             let (dose, g) = self.local([p[0] + t * outward[0], p[1] + t * outward[1]]);
-            (dose - THRESHOLD, g[0] * outward[0] + g[1] * outward[1])
+            (dose - level, g[0] * outward[0] + g[1] * outward[1])
         };
         contour::crossing(along, self.sigma / 4.0, range)
     }

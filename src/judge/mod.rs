@@ -1,19 +1,24 @@
 //! How true a dose prints a drawn figure. It sees the figure and the dose, never how the shots were chosen.
 
+mod narrowest;
 mod pieces;
 mod samples;
 mod spread;
 
-use serde::{Serialize, Serializer};
+use serde::{Deserialize, Serialize, Serializer};
 
-use crate::blur::{Blur, REACH, THRESHOLD};
+use crate::blur::{self, Blur, REACH, THRESHOLD};
 use crate::geom::Figure;
 use crate::target::{Need, Printed, ShotErrors, Target, Violation};
-use crate::units::Nm;
+use crate::units::{Dose, Nm};
 
+pub use narrowest::Narrowest;
 pub use pieces::Pieces;
 pub use samples::{EdgeSample, edge_samples};
 pub use spread::Spread;
+
+/// Changes of all doses at which contours are looked for besides the one as written.
+pub const CHANGES: [f64; 4] = [-0.10, -0.05, 0.05, 0.10];
 
 /// How to judge.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -33,8 +38,28 @@ pub struct Settings {
 pub struct Background {
     /// Backscatter ratio η; 0 for the forward part alone.
     pub ratio: f64,
-    /// Coverage U around the figure, spread over the long range, 0 to 1.
+    /// Coverage U around the figure, spread over the long range; what it is after correction need not lie within 0 to 1.
     pub density: f64,
+}
+
+impl Background {
+    /// Under a figure that a correction gave the dose `dose`: the density for which `D = (1 + η)/(1 + 2ηU)`.
+    #[must_use]
+    pub fn of_dose(ratio: f64, dose: Dose) -> Self {
+        if ratio == 0.0 {
+            return Self::default();
+        }
+        Self {
+            ratio,
+            density: ((1.0 + ratio) / dose.0 - 1.0) / (2.0 * ratio),
+        }
+    }
+
+    /// By how much it divides the relative slope of an edge: `1 + 2ηU`, which is `(1 + η)/D`.
+    #[must_use]
+    pub fn flattening(self) -> f64 {
+        1.0 + 2.0 * self.ratio * self.density
+    }
 }
 
 impl Settings {
@@ -47,6 +72,11 @@ impl Settings {
             background: Background::default(),
             errors: None,
         }
+    }
+
+    /// Levels of the contours at [`CHANGES`].
+    fn levels(&self) -> [f64; CHANGES.len()] {
+        CHANGES.map(|change| blur::level_at(change, self.background.flattening()))
     }
 
     /// Places along the rim of the tolerance are at most this far apart (nm): between them a contour bends under 0.01 nm.
@@ -69,6 +99,10 @@ pub struct Fidelity {
     pub edges: Zone,
     /// Outline within 2 σ of a drawn corner, judged by the wider tolerance there.
     pub corners: Zone,
+    /// Outline away from drawn corners, by the contours at [`CHANGES`] of the dose.
+    pub through_dose: [Zone; CHANGES.len()],
+    /// The narrowest place; of many figures, the one of them that is furthest from its drawn width.
+    pub narrowest: Option<Narrowest>,
     /// Movement of the contour for 1 % of dose, nm; small is good. All measured places, corners too.
     pub margin: Spread,
     /// Standard deviation of the contour under the writer errors given, nm; empty when none were.
@@ -163,6 +197,7 @@ pub fn judge(
         printed_area_nm2: found.area_nm2,
         drawn_area_nm2: figure.area_nm2(),
         figures: 1,
+        narrowest: narrowest::find(&target, print, settings.blur),
         ..Fidelity::default()
     };
     for sample in edge_samples(&target, print, settings) {
@@ -184,8 +219,10 @@ impl Default for Fidelity {
         Self {
             edges: Zone::default(),
             corners: Zone::default(),
-            margin: Spread::new(0.001),
-            edge_sd: Spread::new(0.001),
+            through_dose: std::array::from_fn(|_| Zone::default()),
+            narrowest: None,
+            margin: Spread::new(0.0001),
+            edge_sd: Spread::new(0.0001),
             violations: 0,
             worst_violations: Vec::new(),
             pieces: Pieces::default(),
@@ -208,6 +245,18 @@ impl Default for Zone {
 }
 
 impl Zone {
+    fn add(&mut self, error: Option<Nm>, tolerance: f64, weight: u128) {
+        self.length += weight;
+        match error {
+            Some(e) => self.error.add(e.0, weight),
+            None => self.unmeasured += weight,
+        }
+        // A thousandth of the accuracy of the contour: an error equal to the tolerance passes.
+        if error.is_none_or(|e| e.0.abs() > tolerance + 1e-5) {
+            self.out_of_tolerance += weight;
+        }
+    }
+
     fn merge(&mut self, other: &Self, places: u128) {
         self.error.merge(&other.error, places);
         self.length += other.length * places;
@@ -219,19 +268,15 @@ impl Zone {
 impl Fidelity {
     fn add(&mut self, sample: &EdgeSample, target: &Target) {
         let weight = u128::from(sample.length_pm);
-        let (zone, tolerance) = if sample.corner {
-            (&mut self.corners, target.corner_tolerance())
+        if sample.corner {
+            let tolerance = target.corner_tolerance();
+            self.corners.add(sample.error, tolerance, weight);
         } else {
-            (&mut self.edges, target.tolerance())
-        };
-        zone.length += weight;
-        match sample.error {
-            Some(e) => zone.error.add(e.0, weight),
-            None => zone.unmeasured += weight,
-        }
-        // A thousandth of the accuracy of the contour: an error equal to the tolerance passes.
-        if sample.error.is_none_or(|e| e.0.abs() > tolerance + 1e-5) {
-            zone.out_of_tolerance += weight;
+            let tolerance = target.tolerance();
+            self.edges.add(sample.error, tolerance, weight);
+            for (zone, error) in self.through_dose.iter_mut().zip(sample.through_dose) {
+                zone.add(error, tolerance, weight);
+            }
         }
         if let Some(m) = sample.margin {
             self.margin.add(m.0, weight);
@@ -243,10 +288,23 @@ impl Fidelity {
 
     /// Puts another score in, counted for so many places.
     pub fn merge(&mut self, other: &Self, places: u64) {
+        self.merge_flattened(other, places, 1.0);
+    }
+
+    /// As [`Fidelity::merge`] for places where the background flattens the dose by so much more than where it was judged: margins grow.
+    pub fn merge_flattened(&mut self, other: &Self, places: u64, flattening: f64) {
         let n = u128::from(places);
         self.edges.merge(&other.edges, n);
         self.corners.merge(&other.corners, n);
-        self.margin.merge(&other.margin, n);
+        for (own, other) in self.through_dose.iter_mut().zip(&other.through_dose) {
+            own.merge(other, n);
+        }
+        self.narrowest = match (self.narrowest, other.narrowest) {
+            (Some(own), Some(other)) => Some(own.worse(other)),
+            (own, other) => own.or(other),
+        }
+        .map(Narrowest::anywhere);
+        self.margin.merge_scaled(&other.margin, n, flattening);
         self.edge_sd.merge(&other.edge_sd, n);
         self.violations += other.violations * n;
         self.worst_violations.clear();
@@ -283,6 +341,19 @@ impl Fidelity {
             prints_within_tolerance: self.prints_within_tolerance(),
             violations: self.violations,
             pieces: self.pieces,
+            through_dose: std::array::from_fn(|i| ThroughDose {
+                change_pct: 100.0 * CHANGES[i],
+                edge_error_nm: EdgeError::of(&self.through_dose[i].error),
+                out_of_tolerance_share: spread::share(
+                    self.through_dose[i].out_of_tolerance,
+                    self.through_dose[i].length,
+                ),
+                unmeasured_share: spread::share(
+                    self.through_dose[i].unmeasured,
+                    self.through_dose[i].length,
+                ),
+            }),
+            narrowest: self.narrowest,
             margin_nm_per_pct: Quantiles::of(&self.margin),
             edge_sd_nm: Quantiles::of(&self.edge_sd),
             printed_area_nm2: self.printed_area_nm2,
@@ -298,7 +369,7 @@ impl Serialize for Fidelity {
 }
 
 /// The numbers that reports show. `None` (null in JSON) where nothing was measured.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Summary {
     /// Away from drawn corners.
     pub edge_error_nm: EdgeError,
@@ -314,6 +385,10 @@ pub struct Summary {
     pub violations: u128,
     /// Figures whose pieces or holes are not.
     pub pieces: Pieces,
+    /// Away from drawn corners, when all doses change.
+    pub through_dose: [ThroughDose; CHANGES.len()],
+    /// Width at the narrowest place, drawn and printed.
+    pub narrowest: Option<Narrowest>,
     /// Movement of the contour for 1 % of dose.
     pub margin_nm_per_pct: Quantiles,
     /// Standard deviation of the contour under the writer errors given.
@@ -324,8 +399,21 @@ pub struct Summary {
     pub drawn_area_nm2: f64,
 }
 
+/// Contours when all doses change by a share.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct ThroughDose {
+    /// The change, %.
+    pub change_pct: f64,
+    /// From the drawn outline, away from drawn corners.
+    pub edge_error_nm: EdgeError,
+    /// Share of that outline out of tolerance, unmeasured places included.
+    pub out_of_tolerance_share: Option<f64>,
+    /// Share of it with no contour in range.
+    pub unmeasured_share: Option<f64>,
+}
+
 /// Edge error by length of outline, nm.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct EdgeError {
     /// Signed, + is too large.
     pub mean: Option<f64>,
@@ -346,7 +434,7 @@ impl EdgeError {
 }
 
 /// How a positive quantity is spread over the outline.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Quantiles {
     /// Half of the outline is below.
     pub median: Option<f64>,

@@ -1,12 +1,12 @@
 //! Pieces and holes: the printed region as runs on a lattice, joined, against the figure as drawn.
 
-use serde::Serialize;
+use serde::{Deserialize, Serialize};
 
 use crate::blur::THRESHOLD;
 use crate::target::{DoseField, Target};
 
 /// Figures whose pieces or holes are not as drawn; each kind counts a figure at each place once. All 0 is right.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
 pub struct Pieces {
     /// Nothing of the figure prints.
     pub lost: u128,

@@ -3,7 +3,7 @@
 use crate::target::{EdgeSd, Printed, Target};
 use crate::units::Nm;
 
-use super::Settings;
+use super::{CHANGES, Settings};
 
 /// One place of the drawn outline.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -18,6 +18,8 @@ pub struct EdgeSample {
     pub corner: bool,
     /// Distance to the contour, + is outward; `None` where there is none within 4 σ.
     pub error: Option<Nm>,
+    /// The same for the contour at each of [`CHANGES`], along the same way from the contour as written; all `None` without that.
+    pub through_dose: [Option<Nm>; CHANGES.len()],
     /// Movement of the contour for 1 % of dose; `None` where there is no contour or no slope.
     pub margin: Option<Nm>,
     /// Scatter of the contour under the writer errors of the settings.
@@ -30,7 +32,8 @@ pub struct EdgeSample {
 /// contour and meets it far off, where the dose falls another way and the contour is near. So in a corner zone, and where
 /// the normal finds the contour out of tolerance, the way down the dose is tried too and the shorter one counts.
 ///
-/// Margin (per 1 % of dose) = `0.01·½·(1 + 2ηU)/|∇F|` at the contour, F the forward dose and ηU the background.
+/// Margin (per 1 % of dose) = `0.01·½·(1 + η)/(D·|∇F|)` at the contour, F the forward dose at dose 1, D the dose and η the ratio of the
+/// background.
 pub fn edge_samples<'a>(
     target: &'a Target,
     print: &'a impl Printed,
@@ -38,7 +41,7 @@ pub fn edge_samples<'a>(
 ) -> impl Iterator<Item = EdgeSample> + 'a {
     let sigma = settings.blur.sigma().0;
     let range = (4.0 * sigma).max(2.0 * target.corner_tolerance());
-    let flattened = 1.0 + 2.0 * settings.background.ratio * settings.background.density;
+    let flattened = settings.background.flattening();
     target
         .edges()
         .iter()
@@ -71,6 +74,10 @@ pub fn edge_samples<'a>(
                     length_pm,
                     corner,
                     error: error.map(Nm),
+                    through_dose: settings.levels().map(|level| {
+                        let (p, e) = on_contour.zip(error)?;
+                        Some(Nm(e + print.crossing_at(p, outward, range, level)?))
+                    }),
                     margin: slope
                         .filter(|s| *s > 0.0)
                         .map(|s| Nm(0.005 * flattened / s)),

@@ -42,6 +42,29 @@ impl Spread {
         self.worst = self.worst.max(other.worst);
     }
 
+    /// As [`Spread::merge`] with every value of `other` times a factor; to half a step.
+    pub(super) fn merge_scaled(&mut self, other: &Self, times: u128, factor: f64) {
+        if factor == 1.0 {
+            return self.merge(other, times);
+        }
+        for (value, weight) in other.bins() {
+            *self
+                .bins
+                .entry(whole(value * factor / self.step))
+                .or_default() += weight * times;
+        }
+        self.weight += other.weight * times;
+        // Rounded once for each kind of place, so still the same in any order.
+        let moment = other.moment as f64 * factor;
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a float to integer cast saturates"
+        )]
+        let moment = moment.round() as i128;
+        self.moment += moment * i128::try_from(times).unwrap_or(i128::MAX);
+        self.worst = self.worst.max(other.worst * factor);
+    }
+
     /// Mean by weight.
     #[must_use]
     pub fn mean(&self) -> Option<f64> {

@@ -167,6 +167,9 @@ impl Fault {
     }
 }
 
+/// An outline whose last point does not repeat its first, in a format that wants that.
+pub(super) const OPEN: &str = "outline that was not closed: closed by a straight edge";
+
 /// What was repaired or skipped, counted by kind.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Remarks(BTreeMap<&'static str, u64>);
@@ -180,6 +183,11 @@ impl Remarks {
         for (what, count) in other.0 {
             *self.0.entry(what).or_default() += count;
         }
+    }
+
+    /// How often an outline was left open.
+    pub(super) fn open_outlines(&self) -> u64 {
+        self.0.get(OPEN).copied().unwrap_or(0)
     }
 
     /// One sentence for each kind, with its count.

@@ -2,7 +2,7 @@
 
 use std::collections::{BTreeMap, BTreeSet, HashMap};
 
-use super::{Cell, CellId, Layer, Layout, LayoutError, Placement, Shape};
+use super::{Cell, CellId, Layer, Layout, LayoutError, Placement, Shapes};
 
 /// Longest accepted chain of placements; real layouts stay under 40.
 pub(super) const MAX_DEPTH: usize = 128;
@@ -41,7 +41,7 @@ impl Layout {
             vec![Default::default(); self.cells.len()];
         for i in order(&self.cells).bottom_up {
             let (mut layers, mut placements) = (BTreeMap::new(), 0);
-            for shape in &self.cells[i].shapes {
+            for shape in self.cells[i].shapes.iter() {
                 let count = layers.entry(shape.layer).or_default();
                 add_product(count, 1, shape.repetition.count(), &mut sum.saturated);
             }
@@ -103,7 +103,7 @@ fn add_product(total: &mut u128, a: u128, b: u128, saturated: &mut bool) {
 #[derive(Debug, Default)]
 pub(super) struct RawCell {
     pub(super) name: Vec<u8>,
-    pub(super) shapes: Vec<Shape>,
+    pub(super) shapes: Shapes,
     /// `cell` indexes the table of names given to [`link`].
     pub(super) placements: Vec<Placement>,
 }
@@ -280,6 +280,7 @@ fn order(cells: &[Cell]) -> Order {
 mod tests {
     use super::*;
     use crate::geom::{Point, Repetition};
+    use crate::layout::Shape;
     use crate::units::Nm;
 
     fn square() -> Shape {
@@ -313,7 +314,7 @@ mod tests {
         let cells = (0..=links)
             .map(|i| Cell {
                 name: format!("c{i}"),
-                shapes: if i == 0 { vec![square()] } else { vec![] },
+                shapes: (i == 0).then(square).into_iter().collect(),
                 placements: if i == 0 {
                     vec![]
                 } else {
@@ -324,6 +325,7 @@ mod tests {
         Layout {
             unit: Nm(1.0),
             cells,
+            open_outlines: 0,
             notes: vec![],
         }
     }

@@ -1,7 +1,7 @@
 //! Layout files as they are: cells, placements, repetitions and layers, nothing flattened.
 //!
 //! [`open`] and [`read`] tell the format by the contents, never by the file's name: GDSII, plain or gzip-compressed; OASIS; WKT.
-//! Every reader refuses what it cannot take for certain with the place, what it found and what it expected, and counts what it skips or repairs in
+//! [`Layout::write`] gives GDSII or OASIS back. Every reader refuses what it cannot take for certain with the place, what it found and what it expected, and counts what it skips or repairs in
 //! [`Layout::notes`]. None trusts a count, a size or a name in the file with memory or time.
 
 mod error;
@@ -9,7 +9,9 @@ mod gdsii;
 mod hierarchy;
 mod oasis;
 mod path;
+mod shapes;
 mod wkt;
+mod write;
 
 use std::fs::File;
 use std::io::{self, Read};
@@ -19,11 +21,16 @@ use flate2::read::MultiGzDecoder;
 
 pub use self::error::{LayoutError, Place};
 pub use self::hierarchy::Summary;
+pub use self::shapes::{Points, Shape, ShapeRef, Shapes};
+pub use self::write::{Format, WriteError};
 use crate::geom::{Point, Repetition};
 use crate::units::Nm;
 
 /// Greatest coordinate or length that the readers let through, database units: sums of a few still fit an `i64`, and each fits an `f64`.
 const MAX_COORDINATE: i64 = 1 << 52;
+
+/// Most points of one outline: far beyond any figure, and its square still fits an `i64`.
+const MAX_OUTLINE: usize = 1 << 24;
 
 /// Database units that the readers accept, nanometres.
 const UNIT_RANGE: &str = "a database unit of 1e-6 to 1e6 nm";
@@ -198,6 +205,8 @@ pub struct Layout {
     pub unit: Nm,
     /// All cells; placements refer to them by index. No cycle: readers refuse it.
     pub cells: Vec<Cell>,
+    /// Outlines that the file leaves open where its format wants them closed: taken as closed by a straight edge.
+    pub open_outlines: u64,
     /// What was repaired or skipped while reading, as sentences.
     pub notes: Vec<String>,
 }
@@ -208,20 +217,9 @@ pub struct Cell {
     /// Its name in the file.
     pub name: String,
     /// Polygons (paths, boxes, trapezoids and circles arrive as polygons).
-    pub shapes: Vec<Shape>,
+    pub shapes: Shapes,
     /// Other cells placed in it.
     pub placements: Vec<Placement>,
-}
-
-/// One polygon, perhaps repeated; database units.
-#[derive(Clone, Debug, PartialEq)]
-pub struct Shape {
-    /// On which layer.
-    pub layer: Layer,
-    /// At least three points, the first not repeated at the end; either sense, keyholes and self-touching allowed.
-    pub points: Vec<Point>,
-    /// Where else.
-    pub repetition: Repetition,
 }
 
 /// One cell placed in another, perhaps repeated: magnify, mirror `y → −y`, turn counter-clockwise, shift; in this order.

@@ -3,8 +3,8 @@
 //! A reader of its own, because the general-purpose parser at hand says what is wrong but not in which line and column. Coordinates are rounded to
 //! a thousandth of a nanometre. Holes are keyholed: each hangs on the outer ring by an edge drawn both ways.
 
-use super::error::{Fault, Parsed, Place, Remarks};
-use super::{Cell, Layer, Layout, LayoutError, MAX_COORDINATE, Shape};
+use super::error::{Fault, OPEN, Parsed, Place, Remarks};
+use super::{Cell, Layer, Layout, LayoutError, MAX_COORDINATE, Shapes};
 use crate::geom::{Point, Repetition};
 use crate::units::Nm;
 
@@ -39,7 +39,7 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
     let mut parser = Parser {
         text,
         at: 0,
-        shapes: Vec::new(),
+        shapes: Shapes::default(),
         remarks: Remarks::default(),
     };
     while parser.peek().is_some() {
@@ -52,6 +52,7 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
             shapes: parser.shapes,
             placements: Vec::new(),
         }],
+        open_outlines: parser.remarks.open_outlines(),
         notes: parser.remarks.sentences(),
     })
 }
@@ -59,7 +60,7 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
 struct Parser<'a> {
     text: &'a str,
     at: usize,
-    shapes: Vec<Shape>,
+    shapes: Shapes,
     remarks: Remarks,
 }
 
@@ -93,11 +94,9 @@ impl<'a> Parser<'a> {
         })?;
         let mut rings = rings.into_iter();
         if let Some(outer) = rings.next() {
-            self.shapes.push(Shape {
-                layer: LAYER,
-                points: keyholed(outer, rings),
-                repetition: Repetition::Once,
-            });
+            let ring = keyholed(outer, rings);
+            self.shapes
+                .add(LAYER, &ring, Point::default(), Repetition::Once);
         }
         Ok(())
     }
@@ -110,7 +109,7 @@ impl<'a> Parser<'a> {
             Ok(())
         })?;
         if ring.len() > 1 && ring.first() != ring.last() {
-            self.remarks.add("ring that was not closed: closed");
+            self.remarks.add(OPEN);
         }
         while ring.len() > 1 && ring.first() == ring.last() {
             ring.pop();

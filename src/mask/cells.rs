@@ -8,7 +8,7 @@ use std::sync::Arc;
 use rayon::prelude::*;
 
 use crate::geom::{Figure, Orientation, Point, Rect, Repetition, Transform};
-use crate::layout::{Cell, CellId, Layer, Layout, Placement, Shape};
+use crate::layout::{Cell, CellId, Layer, Layout, Placement, ShapeRef};
 use crate::units::PM_PER_NM;
 
 use super::repair::{Repairs, sound};
@@ -106,7 +106,7 @@ pub(super) struct Cells {
 /// Polygons of each layer, repetitions counted, cells once each.
 pub(super) fn layer_counts(layout: &Layout) -> LayerCounts {
     let mut counts: BTreeMap<Layer, u128> = BTreeMap::new();
-    for shape in layout.cells.iter().flat_map(|c| &c.shapes) {
+    for shape in layout.cells.iter().flat_map(|c| c.shapes.iter()) {
         let count = counts.entry(shape.layer).or_default();
         *count = count.saturating_add(shape.repetition.count());
     }
@@ -177,6 +177,11 @@ pub(super) fn convert(layout: &Layout, options: &MaskOptions) -> Result<Cells, M
         }
     }
     let top_count = tops.len();
+    if options.strict && layout.open_outlines > 0 {
+        return Err(MaskError::OpenOutlines {
+            count: layout.open_outlines,
+        });
+    }
     if let Some((id, polygon, defect)) = converter.repairs.first.filter(|_| options.strict) {
         let cell = layout.cells[id].name.clone();
         return Err(MaskError::Unsound {
@@ -320,7 +325,7 @@ impl Converter<'_> {
     fn cell(&mut self, id: usize, residue: Residue) -> Result<Option<usize>, MaskError> {
         let cell = &self.layout.cells[id];
         let scaling = Scaling::new(self.pm_per_unit, residue);
-        let chosen: Vec<(usize, &Shape, Role)> = cell
+        let chosen: Vec<(usize, ShapeRef<'_>, Role)> = cell
             .shapes
             .iter()
             .enumerate()
@@ -369,18 +374,21 @@ impl Converter<'_> {
         &self,
         cell: &Cell,
         index: usize,
-        shape: &Shape,
+        shape: ShapeRef<'_>,
         role: Role,
         scaling: Scaling,
     ) -> Result<(Vec<Item>, Vec<Defect>), MaskError> {
         let what = || format!("polygon {index}");
-        let points = shape.points.iter().map(|&p| scaling.point(p));
+        let points = shape.points.iter().map(|p| scaling.point(p));
         let points = points
             .collect::<Option<_>>()
             .ok_or_else(|| ScaleError::Range.at(&cell.name, what()))?;
-        let (figures, defects) = sound(points);
+        let (figures, mut defects) = sound(points);
+        if !scaling.keeps(shape.points.iter()) {
+            defects.push(Defect::OffGrid);
+        }
         let repetition = scaling
-            .repetition(&shape.repetition)
+            .repetition(shape.repetition)
             .map_err(|e| e.at(&cell.name, what()))?;
         let items = figures.into_iter().map(|figure| {
             let bounds = figure.bounds();

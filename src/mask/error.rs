@@ -39,16 +39,19 @@ pub enum Defect {
     Spike,
     /// It runs clockwise; sound in every format, so noted and never refused.
     Clockwise,
+    /// Its points are no whole picometres at mask scale; a matter of scale and angles, so noted and never refused.
+    OffGrid,
 }
 
 impl Defect {
     /// All, in the order of the notes.
-    pub const ALL: [Self; 5] = [
+    pub const ALL: [Self; 6] = [
         Self::SelfCrossing,
         Self::NoArea,
         Self::RepeatedPoints,
         Self::Spike,
         Self::Clockwise,
+        Self::OffGrid,
     ];
 
     /// How it is repaired.
@@ -60,13 +63,14 @@ impl Defect {
             Self::RepeatedPoints => "each kept once",
             Self::Spike => "the spike was dropped",
             Self::Clockwise => "filled like any other",
+            Self::OffGrid => "each rounded to the nearest",
         }
     }
 
     /// Whether [`super::MaskOptions::strict`] refuses it.
     #[must_use]
     pub fn is_refused(self) -> bool {
-        self != Self::Clockwise
+        !matches!(self, Self::Clockwise | Self::OffGrid)
     }
 }
 
@@ -78,6 +82,7 @@ impl std::fmt::Display for Defect {
             Self::RepeatedPoints => "with repeated points",
             Self::Spike => "with a spike that has no area",
             Self::Clockwise => "drawn clockwise",
+            Self::OffGrid => "with points between whole picometres",
         })
     }
 }
@@ -116,6 +121,26 @@ pub enum MaskError {
         polygon: usize,
         /// The first thing wrong with it.
         defect: Defect,
+    },
+    /// The file leaves outlines open, and repairs are refused.
+    #[error(
+        "{count} outlines are left open in the file; expected each closed by its first point, repairs are refused"
+    )]
+    OpenOutlines {
+        /// How many.
+        count: u64,
+    },
+    /// No plate is that large.
+    #[error(
+        "the mask would be {:.6} m × {:.6} m, expected at most {greatest_m} m a side; is the scale or the database unit right?",
+        found.max.to_nm()[0] * 1e-9 - found.min.to_nm()[0] * 1e-9,
+        found.max.to_nm()[1] * 1e-9 - found.min.to_nm()[1] * 1e-9
+    )]
+    TooLarge {
+        /// Around all figures.
+        found: Rect,
+        /// What is accepted.
+        greatest_m: f64,
     },
     /// The bias is not finite or absurdly large.
     #[error("bias is {found}, expected from -1e6 to 1e6 nm")]

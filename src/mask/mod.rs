@@ -46,6 +46,9 @@ pub use summary::Summary;
 /// Most parts that are looked at one by one, checked before memory is taken: about 200 bytes each.
 pub const MAX_PARTS: u128 = 50_000_000;
 
+/// Greatest side of a mask that is fractured, m: the largest plates are under two.
+pub const GREATEST_SIDE_M: f64 = 2.0;
+
 /// The figures of the chosen layers, each distinct one once.
 #[derive(Clone, Debug)]
 pub struct Mask {
@@ -108,6 +111,24 @@ impl Mask {
         self.figures
             .iter()
             .fold(0, |sum, figure| sum.saturating_add(figure.place_count()))
+    }
+
+    /// Whether a plate can hold it.
+    ///
+    /// # Errors
+    /// [`MaskError::TooLarge`], before hours are spent on a wrong scale.
+    pub fn check_size(&self) -> Result<(), MaskError> {
+        #[allow(clippy::cast_precision_loss, reason = "a bound")]
+        let too_long = |pm: i64| pm as f64 * 1e-12 > GREATEST_SIDE_M;
+        match self.extent {
+            Some(found) if too_long(found.width()) || too_long(found.height()) => {
+                Err(MaskError::TooLarge {
+                    found,
+                    greatest_m: GREATEST_SIDE_M,
+                })
+            }
+            _ => Ok(()),
+        }
     }
 
     /// Area of all figures at all places, nm².

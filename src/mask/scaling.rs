@@ -108,6 +108,12 @@ impl Scaling {
         [self.cos * x - self.sin * y, self.sin * x + self.cos * y]
     }
 
+    /// Whether no point is rounded (by more than the 1e-9 that counts as whole).
+    pub(super) fn keeps(self, mut points: impl Iterator<Item = Point>) -> bool {
+        let is_whole = |v: f64| (v - v.round()).abs() <= 1e-9 * v.abs().max(1.0);
+        self.exact.is_some() || points.all(|p| self.real(p).into_iter().all(is_whole))
+    }
+
     /// The rounded image; `None` beyond the range.
     pub(super) fn point(self, p: Point) -> Option<Point> {
         let within = |v: i64| (v.abs() <= RANGE).then_some(v);

@@ -120,6 +120,8 @@ keys! {
     GreatestSide = "greatest_side_nm", SHAPED, "nm", 1.0..=1e6, Default(1000.0), "greatest side of a shot";
     Sliver = "sliver_nm", SHAPED, "nm", 0.0..=1e5, Default(20.0), "a shot whose short side is under this is a sliver";
     BorderReach = "border_reach_nm", SHAPED, "nm", 0.0..=1e5, Default(0.0), "how far a shot may reach over a stripe or sub-field border and still be flashed whole";
+    ShotEdgeSd = "shot_edge_sd_nm", SHAPED, "nm", 0.0..=100.0, Optional, "random error of a shot's edge over all passes, one standard deviation, for the error budget";
+    ShotDoseSd = "shot_dose_sd_pct", SHAPED, "%", 0.0..=100.0, Optional, "random error of a shot's dose over all passes, one standard deviation, for the error budget";
     Beam = "beam_na", RASTER, "nA", 1e-3..=1e9, Required, "current of all beams together";
     Stripe = "stripe_um", WRITER, "µm", 1.0..=1e5, Optional, "width of a stripe; the whole field is one stripe unless stated";
     Stage = "stage_mm_s", WRITER, "mm/s", 1e-3..=1e5, Optional, "greatest stage speed; no bound unless stated";
@@ -191,7 +193,7 @@ impl Key {
 /// Words that end a key and name a unit.
 const UNIT_WORDS: &[&str] = &[
     "pm", "nm", "um", "mm", "cm", "m", "ps", "ns", "us", "ms", "s", "min", "h", "a", "ma", "ua",
-    "na", "uc", "mc", "per",
+    "na", "uc", "mc", "per", "pct",
 ];
 
 impl fmt::Display for Key {

@@ -9,13 +9,63 @@ use super::{ALPHA, Backscatter, Key, Kind, Number, Profile, ProfileError, Profil
 
 /// Reads and checks a whole profile.
 pub(super) fn profile(text: &str, source: &str) -> Result<Profile, ProfileErrors> {
+    read(text, source, |reader| {
+        let root = reader.root()?;
+        reader.profile(&root)
+    })
+}
+
+/// Reads and checks a table of a text.
+pub(super) fn profile_within(
+    text: &str,
+    source: &str,
+    table: &'static str,
+) -> Result<Profile, ProfileErrors> {
+    read(text, source, |reader| {
+        let root = reader.root()?;
+        let table = reader.table(&root, table)?;
+        reader.profile(table.get())
+    })
+}
+
+/// The numbers in a table of a text, their keys and bounds not looked at, each with its place.
+pub(super) fn numbers_within(
+    text: &str,
+    source: &str,
+    table: &str,
+) -> Result<Vec<(String, Number, String)>, ProfileErrors> {
+    read(text, source, |reader| {
+        let root = reader.root()?;
+        let mut numbers = Vec::new();
+        let Some(value) = root.get(table) else {
+            return Some(numbers);
+        };
+        let Some(inner) = value.get_ref().as_table() else {
+            reader.wrong(table, value, &format!("a table [{table}]"));
+            return None;
+        };
+        for (name, value) in inner {
+            let key: &str = name.get_ref();
+            if let Some(number) = reader.number(key, value) {
+                let place = reader.place(value.span().start);
+                numbers.push((key.to_owned(), number, place));
+            }
+        }
+        Some(numbers)
+    })
+}
+
+fn read<T>(
+    text: &str,
+    source: &str,
+    profile: impl FnOnce(&mut Reader<'_>) -> Option<T>,
+) -> Result<T, ProfileErrors> {
     let mut reader = Reader {
         text,
         source,
         errors: Vec::new(),
     };
-    let profile = reader.profile();
-    match profile {
+    match profile(&mut reader) {
         Some(profile) if reader.errors.is_empty() => Ok(profile),
         _ => {
             reader.errors.sort_by_key(|(at, _)| *at);
@@ -38,10 +88,10 @@ struct Reader<'t> {
 
 const NUMBER_FORM: &str = "a number or { value = …, plus_minus = … }";
 
-impl Reader<'_> {
-    fn profile(&mut self) -> Option<Profile> {
-        let root = match DeTable::parse(self.text) {
-            Ok(root) => root.into_inner(),
+impl<'t> Reader<'t> {
+    fn root(&mut self) -> Option<DeTable<'t>> {
+        match DeTable::parse(self.text) {
+            Ok(root) => Some(root.into_inner()),
             Err(error) => {
                 let at = error.span().map_or(0, |span| span.start);
                 let fault = ProfileError::Syntax {
@@ -49,13 +99,16 @@ impl Reader<'_> {
                     message: error.message().to_owned(),
                 };
                 self.errors.push((at, fault));
-                return None;
+                None
             }
-        };
-        self.only(&root, &["name", "about", "writer", "process"]);
-        let name = self.words(&root, "name");
-        let about = self.words(&root, "about");
-        let (writer, process) = (self.table(&root, "writer"), self.table(&root, "process"));
+        }
+    }
+
+    fn profile(&mut self, root: &DeTable<'_>) -> Option<Profile> {
+        self.only(root, &["name", "about", "writer", "process"]);
+        let name = self.words(root, "name");
+        let about = self.words(root, "about");
+        let (writer, process) = (self.table(root, "writer"), self.table(root, "process"));
         let (writer, process) = (writer?, process?);
         let mut profile = Profile {
             name: name.unwrap_or_else(|| self.source.to_owned()),
@@ -255,11 +308,11 @@ impl Reader<'_> {
         words
     }
 
-    fn table<'r, 't>(
+    fn table<'r, 'd>(
         &mut self,
-        root: &'r DeTable<'t>,
+        root: &'r DeTable<'d>,
         name: &'static str,
-    ) -> Option<Section<'r, 't>> {
+    ) -> Option<Section<'r, 'd>> {
         let Some(value) = root.get(name) else {
             let fault = ProfileError::Missing {
                 place: self.place(self.text.len()),

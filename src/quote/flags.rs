@@ -1,16 +1,20 @@
 //! Figures to look at or to send back, each with place, number and remedy.
 
+use std::sync::Arc;
+
 use crate::blur::{CORNER_PULL_BACK, NARROWEST_LINE, NARROWEST_SQUARE, THRESHOLD};
-use crate::fracture::{FractureError, MissReason};
+use crate::fracture::MissReason;
 use crate::geom::{Figure, Point, offset};
-use crate::mask::{DistinctFigure, Mask};
+use crate::mask::DistinctFigure;
+use crate::number::brief as number;
 use crate::target::Need;
 use crate::units::{Dose, Nm};
+use crate::write_time::Field;
 
-use super::made::{Made, Setup, first_place};
+use super::Clip;
+use super::made::{Made, MadeMask, Setup, first_place};
 use super::result::{ByMethod, Flag, FlagKind, Method};
 use super::summary::beyond_limits;
-use super::verdict::number;
 
 /// A figure costs more than its share if it takes over this many times the mask's median time per outline …
 const TIMES_MEDIAN: f64 = 3.0;
@@ -19,9 +23,12 @@ const LEAST_SHARE: f64 = 0.01;
 
 /// What flags are found in.
 pub(super) struct Evidence<'a> {
-    pub(super) mask: &'a Mask,
-    pub(super) made: &'a ByMethod<Vec<Result<Made, FractureError>>>,
-    pub(super) seconds: &'a ByMethod<Vec<Option<f64>>>,
+    pub(super) clips: &'a [Clip<'a>],
+    /// By clip.
+    pub(super) made: &'a [ByMethod<Arc<MadeMask>>],
+    /// By clip.
+    pub(super) seconds: &'a [ByMethod<Vec<Option<f64>>>],
+    pub(super) field: Option<Field>,
     pub(super) recommended: Option<Method>,
     pub(super) setup: &'a Setup,
     pub(super) peak_dose: Option<Dose>,
@@ -30,11 +37,7 @@ pub(super) struct Evidence<'a> {
 /// All flags: what cannot print first, what only costs last; within a kind the gravest first.
 pub(super) fn find(evidence: &Evidence<'_>) -> Vec<Flag> {
     let mut flags = costly(evidence);
-    for (i, distinct) in evidence.mask.figures.iter().enumerate() {
-        let figure = Subject {
-            number: i as u64,
-            distinct,
-        };
+    for figure in subjects(evidence) {
         flags.extend(figure.broken(evidence));
         match figure.not_printable(evidence.setup) {
             Some(flag) => flags.push(flag),
@@ -60,15 +63,30 @@ pub(super) fn find(evidence: &Evidence<'_>) -> Vec<Flag> {
     flags.sort_by(|a, b| {
         (rank(a.kind).cmp(&rank(b.kind)))
             .then(gravity(b).total_cmp(&gravity(a)))
-            .then(a.figure.cmp(&b.figure))
+            .then((a.clip, a.figure).cmp(&(b.clip, b.figure)))
     });
     flags
 }
 
-/// A figure and its number.
+/// A figure with its clip and its number there, both from 0.
+#[derive(Clone, Copy)]
 struct Subject<'a> {
-    number: u64,
+    clip: usize,
+    number: usize,
     distinct: &'a DistinctFigure,
+}
+
+/// All figures of all clips.
+fn subjects<'a>(evidence: &Evidence<'a>) -> impl Iterator<Item = Subject<'a>> + use<'a> {
+    let clips = evidence.clips.iter().enumerate();
+    clips.flat_map(|(clip, of_clip)| {
+        let figures = of_clip.mask.figures.iter().enumerate();
+        figures.map(move |(number, distinct)| Subject {
+            clip,
+            number,
+            distinct,
+        })
+    })
 }
 
 impl Subject<'_> {
@@ -82,7 +100,8 @@ impl Subject<'_> {
         remedy: String,
     ) -> Flag {
         Flag {
-            figure: self.number,
+            clip: self.clip as u64 + 1,
+            figure: self.number as u64,
             place_nm: at.to_nm(),
             kind,
             number,
@@ -100,21 +119,20 @@ impl Subject<'_> {
 
     /// Tile and overlap of the figure, those that were made.
     fn made<'e>(&self, evidence: &'e Evidence<'_>) -> impl Iterator<Item = (Method, &'e Made)> {
-        let index = usize::try_from(self.number).unwrap_or(usize::MAX);
+        let (clip, number) = (self.clip, self.number);
         [Method::Tile, Method::Overlap]
             .into_iter()
             .filter_map(move |method| {
-                let made = evidence.made.get(method)?.get(index)?;
+                let made = evidence.made.get(clip)?.get(method)?.get(number)?;
                 Some((method, made.as_ref().ok()?))
             })
     }
 
     fn broken(&self, evidence: &Evidence<'_>) -> Option<Flag> {
-        let index = usize::try_from(self.number).ok()?;
-        let error = evidence
-            .made
+        let of_clip = evidence.made.get(self.clip)?;
+        let error = of_clip
             .iter()
-            .find_map(|(_, made)| made?.get(index)?.as_ref().err())?;
+            .find_map(|(_, made)| made?.get(self.number)?.as_ref().err())?;
         let remedy = format!("repair the outline: {error}");
         Some(self.flag(self.corner(), FlagKind::BrokenOutline, None, "", remedy))
     }
@@ -287,21 +305,25 @@ fn widest_under(figure: &Figure, limit: f64) -> Option<f64> {
 
 /// Figures that take much more time per length of outline than the mask's median, in the recommended fracture.
 fn costly(evidence: &Evidence<'_>) -> Vec<Flag> {
-    let Some(seconds) = evidence.recommended.and_then(|m| evidence.seconds.get(m)) else {
+    let Some(method) = evidence.recommended else {
         return Vec::new();
     };
-    // Seconds, outline of all places (µm) and seconds per µm of each figure.
-    let mut rates: Vec<(usize, f64, f64)> = Vec::new();
-    for (i, distinct) in evidence.mask.figures.iter().enumerate() {
-        let Some(Some(seconds)) = seconds.get(i) else {
+    // Seconds and outline of all places (µm) of each figure; on the whole field where clips stand for one.
+    let mut rates: Vec<(Subject<'_>, f64, f64)> = Vec::new();
+    for figure in subjects(evidence) {
+        let of_clip = evidence.seconds.get(figure.clip);
+        let seconds = of_clip.and_then(|all| all.get(method)?.get(figure.number).copied()?);
+        let Some(seconds) = seconds else {
             continue;
         };
+        let copies = evidence.clips[figure.clip].copies(evidence.field) as f64;
+        let distinct = figure.distinct;
         let outline = Nm(distinct.figure.outline_nm()).um() * distinct.place_count() as f64;
-        rates.push((i, *seconds, outline));
+        rates.push((figure, seconds, copies * outline));
     }
     let total: f64 = rates.iter().map(|(_, seconds, _)| seconds).sum();
     let outlines: f64 = rates.iter().map(|(_, _, outline)| outline).sum();
-    let rate = |(_, seconds, outline): &(usize, f64, f64)| seconds / outline;
+    let rate = |(_, seconds, outline): &(Subject<'_>, f64, f64)| seconds / outline;
     let mut sorted = rates.clone();
     sorted.sort_by(|a, b| rate(a).total_cmp(&rate(b)));
     let mut passed = 0.0;
@@ -312,14 +334,11 @@ fn costly(evidence: &Evidence<'_>) -> Vec<Flag> {
     let Some(median) = median else {
         return Vec::new();
     };
-    let too_much = |one: &&(usize, f64, f64)| {
+    let too_much = |one: &&(Subject<'_>, f64, f64)| {
         rate(one) > TIMES_MEDIAN * median && one.1 >= LEAST_SHARE * total
     };
-    let flag = |one: &(usize, f64, f64)| {
-        let figure = Subject {
-            number: one.0 as u64,
-            distinct: &evidence.mask.figures[one.0],
-        };
+    let flag = |one: &(Subject<'_>, f64, f64)| {
+        let figure = one.0;
         let remedy = format!(
             "smooth its outline: it takes {} times the mask's median time per outline, at the median it would save {} s",
             number(rate(one) / median),

@@ -34,6 +34,19 @@ pub struct Made {
     pub peak: Dose,
 }
 
+/// Every distinct figure of a mask, in its order.
+pub type MadeMask = Vec<Result<Made, FractureError>>;
+
+/// The fractures alone.
+#[must_use]
+pub fn fractures_of(made: &MadeMask) -> Vec<Result<Fracture, FractureError>> {
+    let of = |made: &Result<Made, FractureError>| match made {
+        Ok(made) => Ok(made.fracture.clone()),
+        Err(error) => Err(error.clone()),
+    };
+    made.iter().map(of).collect()
+}
+
 /// Fractures every distinct figure; `tick` is called after each.
 #[must_use]
 pub fn fracture(

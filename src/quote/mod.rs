@@ -3,34 +3,46 @@
 //! The only module that knows the order of the stages: a mask's distinct figures are fractured in three ways, each is judged
 //! on the dose that its shots and its neighbours' give, the shots are timed where they stand, and all is put side by side.
 
+pub mod compare;
+pub mod exposure;
+mod fingerprint;
 mod flags;
 pub mod hours;
+mod kept;
 pub mod made;
 pub mod result;
 pub mod shots;
 pub mod summary;
+pub mod sweep;
+mod uncertain;
 mod verdict;
+pub mod witness;
 
-pub use hours::{Correction, Share};
-pub use made::{Made, Setup};
+use std::sync::Arc;
+
+pub use hours::Correction;
+pub use kept::Kept;
+pub use made::{Made, MadeMask, Setup};
 pub use result::Quote;
 
 use crate::blur::{Blur, BlurError, REACH};
-use crate::expose::CorrectionError;
+use crate::expose::{CorrectionError, DensityError};
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Staircase, Tile};
-use crate::fracture::{Effort, FractureError, Fracturer};
+use crate::fracture::{Effort, Fracturer};
 use crate::geom::Rect;
 use crate::judge::{Background, Settings};
 use crate::layout::{Layer, Layout};
 use crate::mask::{self, Expose, Mask, MaskError, MaskOptions};
 use crate::profile::{Kind, Profile};
 use crate::units::{Dose, Hours, Nm};
-use crate::write_time::WriteTimeError;
+use crate::write_time::{Field, WriteTimeError};
 
+use exposure::{Exposed, LongRange, shot_errors};
+use hours::Written;
 use result::{
-    ByMethod, CAUTION, DoseCorrection, FigureFracture, FigureResult, FlagKind, Method, ProfileUsed,
-    ScaledToField, Source,
+    ByMethod, CAUTION, DoseCorrection, FigureFracture, FigureResult, FlagKind, Fractures, Method,
+    ProfileUsed, ScaledToField, Source, StripeRow,
 };
 
 /// Why there is no quote.
@@ -56,12 +68,34 @@ pub enum QuoteError {
     /// No mask could be made of the layout.
     #[error(transparent)]
     Mask(#[from] MaskError),
+    /// Clips that neither stand for a field nor for themselves.
+    #[error(
+        "{clips} layouts, {shares} of them with a share, {}, expected one layout alone, or a field and a share of it for each",
+        if *.field { "a field" } else { "no field" }
+    )]
+    Shares {
+        /// How many there are.
+        clips: usize,
+        /// Of them, those with a share.
+        shares: usize,
+        /// Whether there is a field.
+        field: bool,
+    },
+    /// A raster line was asked for from the profile of another writer.
+    #[error("profile {profile}: flashes shots, expected the profile of a raster writer")]
+    NoRaster {
+        /// Its name.
+        profile: String,
+    },
     /// The chosen layers hold no figure.
     #[error("no figure of any area on the chosen layers, or none in the window")]
     NoFigure,
     /// The dose cannot be corrected.
     #[error(transparent)]
     Correction(#[from] CorrectionError),
+    /// No density map can be made.
+    #[error(transparent)]
+    Density(#[from] DensityError),
     /// The writer model refuses the pattern.
     #[error(transparent)]
     WriteTime(#[from] WriteTimeError),
@@ -78,12 +112,14 @@ pub struct Terms<'a> {
     pub within: Nm,
     /// How hard to search.
     pub effort: Effort,
-    /// The field that the layout stands for; `None` for the layout alone.
-    pub share: Option<Share>,
+    /// The field that the clips stand for; `None` for one layout alone.
+    pub field: Option<Field>,
     /// Hours the writer is booked for.
     pub slot: Option<Hours>,
     /// Greatest dose that may pile up anywhere, a multiple of dose-to-size.
     pub peak_dose: Option<Dose>,
+    /// The raster multi-beam writer to compare with.
+    pub raster: Option<&'a Profile>,
 }
 
 impl Terms<'_> {
@@ -126,17 +162,19 @@ impl Chosen<'_> {
     /// # Errors
     /// As [`mask::build`].
     pub fn mask(&self, setup: &Setup) -> Result<Mask, MaskError> {
-        mask::build(
+        let mask = mask::build(
             self.layout,
             &MaskOptions {
                 reach: setup.blur.sigma() * REACH,
                 address: setup.limits.address,
                 ..self.options.clone()
             },
-        )
+        )?;
+        mask.check_size()?;
+        Ok(mask)
     }
 
-    fn source(&self, mask: &Mask) -> Source {
+    fn source(&self, mask: &Mask, coverage: Option<f64>) -> Source {
         let name = |layer: &Layer| format!("{}/{}", layer.layer, layer.datatype);
         let options = self.options;
         let layers = if options.layers.is_empty() {
@@ -167,9 +205,41 @@ impl Chosen<'_> {
             extent_nm: mask
                 .extent
                 .map(|extent| [extent.width(), extent.height()].map(|side| Nm::from_pm(side).0)),
+            coverage,
             figures_distinct: mask.figures.len() as u64,
             figures_placed: result::Count(mask.place_count()),
         }
+    }
+}
+
+/// A layout of a quote with its mask.
+#[derive(Clone, Copy, Debug)]
+pub struct Clip<'a> {
+    /// What was taken of which layout.
+    pub chosen: Chosen<'a>,
+    /// Its mask.
+    pub mask: &'a Mask,
+    /// The share of the field that copies of it fill, over 0, up to 1; `None` if it stands for itself.
+    pub coverage: Option<f64>,
+}
+
+impl Clip<'_> {
+    /// How many copies of it a field holds, at least one.
+    fn copies(&self, field: Option<Field>) -> u64 {
+        let area = |width: Nm, height: Nm| width.0 * height.0;
+        let own = self.mask.extent.map_or(0.0, |extent| {
+            area(Nm::from_pm(extent.width()), Nm::from_pm(extent.height()))
+        });
+        let (Some(field), Some(coverage)) = (field, self.coverage) else {
+            return 1;
+        };
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "a float to integer cast saturates"
+        )]
+        let copies = (coverage * area(field.width, field.height) / own.max(1.0)).round() as u64;
+        copies.max(1)
     }
 }
 
@@ -178,78 +248,152 @@ impl Chosen<'_> {
 pub struct Answer {
     /// The result.
     pub quote: Quote,
-    /// Every distinct figure, in the order of the mask.
+    /// Every distinct figure, clip by clip in the order of the mask.
     pub figures: Vec<FigureResult>,
-    /// Shots and scores of every distinct figure, in the order of the mask.
-    pub made: ByMethod<Vec<Result<Made, FractureError>>>,
+    /// The time of each stripe.
+    pub stripes: ByMethod<Vec<StripeRow>>,
+    /// By clip: shots and scores of every distinct figure, in the order of the mask.
+    pub made: Vec<ByMethod<Arc<MadeMask>>>,
 }
 
 /// How often [`quote`] calls `tick` at most.
 #[must_use]
-pub fn ticks(mask: &Mask) -> u64 {
-    2 * (Method::ALL.len() * mask.figures.len()) as u64
+pub fn ticks<'a>(masks: impl IntoIterator<Item = &'a Mask>) -> u64 {
+    let figures = masks.into_iter().map(|mask| mask.figures.len() as u64);
+    2 * Method::ALL.len() as u64 * figures.sum::<u64>()
 }
 
-/// Fractures, judges and times a mask; `tick` is called after each figure's fracture and after each figure's judgement.
+/// Fractures, judges and times the clips; `tick` is called after each figure's fracture and after each figure's judgement.
 ///
 /// The same for any number of threads.
 ///
 /// # Errors
-/// When the terms do not fit the mask, or it is empty.
+/// When the terms do not fit the clips, or one is empty.
 pub fn quote(
-    chosen: &Chosen<'_>,
-    mask: &Mask,
+    clips: &[Clip<'_>],
     terms: &Terms<'_>,
     tick: &(dyn Fn() + Sync),
 ) -> Result<Answer, QuoteError> {
+    let numbers: Vec<usize> = (0..clips.len()).collect();
+    quote_again(clips, &numbers, terms, &mut Kept::default(), tick)
+}
+
+/// As [`quote`], with what was kept of other quotes. `masks` holds the number of each clip's mask: equal numbers, equal masks.
+///
+/// # Errors
+/// As [`quote`].
+pub fn quote_again(
+    clips: &[Clip<'_>],
+    masks: &[usize],
+    terms: &Terms<'_>,
+    kept: &mut Kept,
+    tick: &(dyn Fn() + Sync),
+) -> Result<Answer, QuoteError> {
     let setup = terms.setup()?;
-    if mask.figures.is_empty() {
-        return Err(QuoteError::NoFigure);
-    }
-    let correction = Correction::new(mask, terms.profile, terms.share)?;
+    check(clips, terms)?;
+    let correction = Correction::new(clips, terms.profile)?;
+    let background = Background {
+        ratio: correction.ratio,
+        density: correction.density,
+    };
     let settings = Settings {
-        background: Background {
-            ratio: correction.ratio,
-            density: correction.density,
-        },
+        background,
+        errors: Some(shot_errors(terms.profile, correction.dose)),
         ..Settings::new(setup.blur, setup.tolerance)
     };
-    let mut made = ByMethod::default();
-    let mut fractures = ByMethod::default();
-    let mut seconds = ByMethod::default();
+    let mut made: Vec<ByMethod<Arc<MadeMask>>> = vec![ByMethod::default(); clips.len()];
     for method in Method::ALL {
-        let shots = made::fracture(mask, fracturer(method, terms).as_ref(), &setup, tick);
-        let judged = made::judge(mask, shots, &settings, tick);
-        let mut summary = summary::of_mask(&mask.figures, &judged, setup.limits.sliver);
-        let (hours, by_figure) =
-            hours::of_mask(mask, &judged, terms.profile, terms.share, correction)?;
+        for ((clip, &number), made) in clips.iter().zip(masks).zip(&mut made) {
+            let mask = (number, clip.mask);
+            let judged = kept.made(mask, method, (terms, &setup), &settings, tick);
+            *made.slot(method) = Some(judged);
+        }
+    }
+    let long_range = LongRange::new(terms.profile);
+    let mut exposed: ByMethod<Vec<Exposed<'_>>> = ByMethod::default();
+    let mut fractures = Fractures::default();
+    let mut stripes = ByMethod::default();
+    let mut seconds: Vec<ByMethod<Vec<Option<f64>>>> = vec![ByMethod::default(); clips.len()];
+    for method in Method::ALL {
+        let lists: Vec<&MadeMask> = made
+            .iter()
+            .filter_map(|made| made.get(method))
+            .map(AsRef::as_ref)
+            .collect();
+        let doses = long_range.expose_clips(clips, &lists)?;
+        let parts: Vec<summary::Part<'_>> = clips
+            .iter()
+            .zip(lists)
+            .zip(&doses)
+            .map(|((clip, made), exposed)| summary::Part {
+                figures: &clip.mask.figures,
+                made,
+                exposed,
+                weight: if clips.len() > 1 {
+                    clip.copies(terms.field)
+                } else {
+                    1
+                },
+            })
+            .collect();
+        let mut summary = summary::of_parts(&parts, background, setup.limits.sliver);
+        let written = Written::new(clips, &doses, terms.field);
+        let timed = written.time(terms.profile)?;
+        let hours = uncertain::widened(timed.hours, &written, terms.profile, correction)?;
         summary.hours = Some(hours);
         *fractures.slot(method) = Some(summary);
-        *seconds.slot(method) = Some(by_figure);
-        *made.slot(method) = Some(judged);
+        *stripes.slot(method) = Some(hours::rows(&timed.time));
+        for (all, of_clip) in seconds.iter_mut().zip(timed.seconds) {
+            *all.slot(method) = Some(of_clip);
+        }
+        *exposed.slot(method) = Some(doses);
     }
-    let choice = verdict::choose(&fractures, mask.figures.len(), terms.slot);
+    let figures_distinct = clips.iter().map(|clip| clip.mask.figures.len()).sum();
+    let choice = verdict::choose(&fractures, figures_distinct, terms.slot);
+    let recommended = choice
+        .recommended
+        .and_then(|method| exposed.get(method))
+        .map(|doses| Written::new(clips, doses, terms.field));
+    let sensitivity = match &recommended {
+        Some(written) => uncertain::sensitivity(written, terms.profile, correction)?,
+        None => Vec::new(),
+    };
+    let raster = match terms.raster {
+        Some(raster) => Some(hours::raster(raster, terms, clips, recommended.as_ref())?),
+        None => None,
+    };
     let flags = flags::find(&flags::Evidence {
-        mask,
+        clips,
         made: &made,
         seconds: &seconds,
+        field: terms.field,
         recommended: choice.recommended,
         setup: &setup,
         peak_dose: terms.peak_dose,
     });
-    let of_figure = |figure: usize| {
-        let raised = flags.iter().filter(|flag| flag.figure == figure as u64);
-        figure_result(
-            mask,
-            figure,
-            &made,
-            &seconds,
-            raised.map(|flag| flag.kind).collect(),
-        )
-    };
-    let figures = (0..mask.figures.len()).map(of_figure).collect();
+    let mut figures = Vec::with_capacity(figures_distinct);
+    for (clip, of_clip) in (1..).zip(clips) {
+        let raised = |figure: usize| {
+            let here = |flag: &&result::Flag| flag.clip == clip && flag.figure == figure as u64;
+            flags.iter().filter(here).map(|flag| flag.kind).collect()
+        };
+        let numbers = 0..of_clip.mask.figures.len();
+        let at = usize::try_from(clip - 1).unwrap_or(usize::MAX);
+        figures.extend(numbers.map(|figure| {
+            let dose = |method| exposed.get(method)?.get(at)?.mean_dose(figure);
+            let found = (
+                &made[at],
+                &seconds[at],
+                &dose as &dyn Fn(Method) -> Option<Dose>,
+            );
+            figure_result((clip, of_clip.mask), figure, found, raised(figure))
+        }));
+    }
     let quote = Quote {
-        source: chosen.source(mask),
+        sources: clips
+            .iter()
+            .map(|clip| clip.chosen.source(clip.mask, clip.coverage))
+            .collect(),
         profile: ProfileUsed {
             name: terms.profile.name().to_owned(),
             numbers: terms
@@ -260,29 +404,52 @@ pub fn quote(
         },
         tolerance_nm: setup.tolerance.0,
         sigma_nm: setup.blur.sigma().0,
-        scaled_to_field: terms.share.map(|Share { field, coverage }| ScaledToField {
+        scaled_to_field: terms.field.map(|field| ScaledToField {
             width_mm: field.width / Nm::from_mm(1.0),
             height_mm: field.height / Nm::from_mm(1.0),
-            coverage,
+            coverage: clips.iter().filter_map(|clip| clip.coverage).sum(),
         }),
         dose_correction: DoseCorrection {
             dose: correction.dose.0,
             backscatter_ratio: correction.ratio,
             density: correction.density,
         },
-        notes: notes(chosen.layout, mask, terms),
+        notes: notes(clips, terms),
         fractures,
         verdict: choice.verdict,
         recommended: choice.recommended,
         reason: choice.reason,
+        sensitivity,
+        raster,
         flags,
         caution: CAUTION.to_owned(),
     };
     Ok(Answer {
         quote,
         figures,
+        stripes,
         made,
     })
+}
+
+/// Whether the clips stand for a field or one for itself, and each holds a figure.
+fn check(clips: &[Clip<'_>], terms: &Terms<'_>) -> Result<(), QuoteError> {
+    if clips.iter().any(|clip| clip.mask.figures.is_empty()) {
+        return Err(QuoteError::NoFigure);
+    }
+    let shares = clips.iter().filter(|clip| clip.coverage.is_some()).count();
+    let fine = match terms.field {
+        None => clips.len() == 1 && shares == 0,
+        Some(_) => !clips.is_empty() && shares == clips.len(),
+    };
+    if !fine {
+        return Err(QuoteError::Shares {
+            clips: clips.len(),
+            shares,
+            field: terms.field.is_some(),
+        });
+    }
+    Ok(())
 }
 
 /// The fracturer of a method.
@@ -303,15 +470,23 @@ pub fn fracturer(method: Method, terms: &Terms<'_>) -> Box<dyn Fracturer> {
     }
 }
 
-fn notes(layout: &Layout, mask: &Mask, terms: &Terms<'_>) -> Vec<String> {
-    let mut notes: Vec<String> = layout.notes.iter().chain(&mask.notes).cloned().collect();
+fn notes(clips: &[Clip<'_>], terms: &Terms<'_>) -> Vec<String> {
+    let mut notes = Vec::new();
+    for (number, clip) in (1..).zip(clips) {
+        let own = clip.chosen.layout.notes.iter().chain(&clip.mask.notes);
+        if clips.len() > 1 {
+            notes.extend(own.map(|note| format!("clip {number}: {note}")));
+        } else {
+            notes.extend(own.cloned());
+        }
+    }
     notes.push(format!(
         "the plain staircase stays within {} nm of the outline; it is cut without a model of the blur",
         terms.within.0
     ));
-    if terms.share.is_some() {
+    if terms.field.is_some() {
         notes.push(
-            "the clip is the box around its figures; shots on borders of stripes and sub-fields are counted as expected on average"
+            "a clip is the box around its figures; shots on borders of stripes and sub-fields are counted as expected on average"
                 .to_owned(),
         );
     }
@@ -319,10 +494,13 @@ fn notes(layout: &Layout, mask: &Mask, terms: &Terms<'_>) -> Vec<String> {
 }
 
 fn figure_result(
-    mask: &Mask,
+    (clip, mask): (u64, &Mask),
     figure: usize,
-    made: &ByMethod<Vec<Result<Made, FractureError>>>,
-    seconds: &ByMethod<Vec<Option<f64>>>,
+    (made, seconds, dose): (
+        &ByMethod<Arc<MadeMask>>,
+        &ByMethod<Vec<Option<f64>>>,
+        &dyn Fn(Method) -> Option<Dose>,
+    ),
     flags: Vec<FlagKind>,
 ) -> FigureResult {
     let distinct = &mask.figures[figure];
@@ -335,6 +513,8 @@ fn figure_result(
             shots: made.fracture.shots.len() as u64,
             edge_error_nm: summary::edge_error(&scores),
             prints_within_tolerance: Some(scores.prints_within_tolerance),
+            scores: Some(scores),
+            mean_dose: dose(method).map(|dose| dose.0),
             seconds: seconds
                 .get(method)
                 .and_then(|all| all.get(figure).copied().flatten()),
@@ -344,8 +524,10 @@ fn figure_result(
         .apply_rect(distinct.figure.bounds())
         .min;
     FigureResult {
+        clip,
         figure: figure as u64,
         place_nm: corner.to_nm(),
+        fingerprint: fingerprint::of(&distinct.figure),
         places: result::Count(distinct.place_count()),
         outline_nm: distinct.figure.outline_nm(),
         vertices: distinct.figure.vertices() as u64,

@@ -2,11 +2,20 @@
 //!
 //! Units are in the names (`_nm`, `_h`, `_s`, `_nm_per_pct`). What was not measured is `None` (`null` in JSON), never 0.
 
+mod comparison;
+mod exposure;
+mod sweep;
+
 use std::collections::BTreeMap;
 use std::fmt;
 
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
+
+pub use crate::judge::{CHANGES, Narrowest, Quantiles, Summary as Scores, ThroughDose};
+pub use comparison::{Changed, Comparison, FigureChange, FigureShare, ShotShare, TimeChange};
+pub use exposure::DoseMap;
+pub use sweep::{Sweep, SweepPoint};
 
 /// Said in every report, word for word.
 pub const CAUTION: &str =
@@ -61,17 +70,17 @@ impl<'de> Deserialize<'de> for Count {
 /// A whole quote.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Quote {
-    /// The layout read.
-    pub source: Source,
+    /// The layouts read: one, or the clips that stand for a field.
+    pub sources: Vec<Source>,
     /// The profile, with the numbers used.
     pub profile: ProfileUsed,
     /// Tolerance on the edge error away from corners.
     pub tolerance_nm: f64,
     /// Standard deviation of the blur.
     pub sigma_nm: f64,
-    /// The field that the clip stands for; `None` for the clip alone.
+    /// The field that the clips stand for; `None` for the layout alone.
     pub scaled_to_field: Option<ScaledToField>,
-    /// The one dose of the whole mask that keeps wide edges where they were drawn.
+    /// The dose of the mean coverage.
     pub dose_correction: DoseCorrection,
     /// What was assumed, repaired or left out, as sentences.
     pub notes: Vec<String>,
@@ -83,6 +92,12 @@ pub struct Quote {
     pub recommended: Option<Method>,
     /// Why, in one sentence.
     pub reason: String,
+    /// What moves the total of the recommended fracture, most first.
+    #[serde(default)]
+    pub sensitivity: Vec<Sensitivity>,
+    /// A raster multi-beam writer beside it; `None` if not asked for.
+    #[serde(default)]
+    pub raster: Option<RasterLine>,
     /// Figures to look at or to send back, worst first.
     pub flags: Vec<Flag>,
     /// [`CAUTION`].
@@ -112,6 +127,8 @@ pub struct Source {
     pub window_nm: Option<[f64; 4]>,
     /// Width and height around all figures at mask scale; `None` for an empty mask.
     pub extent_nm: Option<[f64; 2]>,
+    /// Share of the field filled with copies of it, 0 to 1; `None` where it stands for itself.
+    pub coverage: Option<f64>,
     /// Figures that differ, each counted once.
     pub figures_distinct: u64,
     /// Figures at all their places.
@@ -127,22 +144,22 @@ pub struct ProfileUsed {
     pub numbers: BTreeMap<String, f64>,
 }
 
-/// The field that a clip stands for.
+/// The field that clips stand for.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct ScaledToField {
     /// Width of the field.
     pub width_mm: f64,
     /// Height of the field.
     pub height_mm: f64,
-    /// Share of the field filled with copies of the clip, 0 to 1.
+    /// Share of the field filled with copies of the clips, 0 to 1.
     pub coverage: f64,
 }
 
-/// One dose for the whole mask, from its mean coverage. It makes flashes longer or shorter and margins worse; the forward
-/// part of the dose, and so the contour, stays as it is.
+/// The dose that would suit the whole mask if its coverage were spread evenly. Contours at other doses and the shot noise are those
+/// at this dose; flashes and margins follow the dose of each place, see [`FractureSummary::dose_map`].
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct DoseCorrection {
-    /// Multiplies the dose of every shot.
+    /// For the mean coverage.
     pub dose: f64,
     /// Backscatter ratio η of the profile, all terms together.
     pub backscatter_ratio: f64,
@@ -250,6 +267,12 @@ pub struct FractureSummary {
     pub margin_nm_per_pct: Margin,
     /// Greatest dose anywhere, multiples of dose-to-size.
     pub peak_dose: Option<f64>,
+    /// All scores: corner zones, contours at other doses, error budget, widths, areas, pieces.
+    #[serde(default)]
+    pub scores: Option<Scores>,
+    /// The dose correction by place; `None` without a long range.
+    #[serde(default)]
+    pub dose_map: Option<DoseMap>,
     /// Hours to write the mask; `None` if they could not be computed.
     pub hours: Option<Hours>,
 }
@@ -277,9 +300,24 @@ pub struct Margin {
 /// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Hours {
-    /// Shots that they are for, cuts at borders included: those of the whole field where a clip stands for one.
+    /// Shots of one pass that they are for: those of the whole field where clips stand for one.
     #[serde(default)]
     pub shots_written: Count,
+    /// Flashes over all passes: a shot is flashed more than once where a border cuts it or a limit of the writer divides it.
+    #[serde(default)]
+    pub flashes: Count,
+    /// Of them, those beyond one for each shot and pass, by what made them.
+    #[serde(default)]
+    pub more_flashes: MoreFlashes,
+    /// Of them, those shorter than the shortest that the writer can make: not writable in so many passes at this current.
+    #[serde(default)]
+    pub too_short: Count,
+    /// Stripes over all passes …
+    #[serde(default)]
+    pub stripes: u64,
+    /// … and those of them in which the beam waits for the stage.
+    #[serde(default)]
+    pub stage_bound_stripes: u64,
     /// All together.
     pub total_h: f64,
     /// Beam on.
@@ -296,6 +334,65 @@ pub struct Hours {
     pub low_h: f64,
     /// Upper end of the interval of the total; `total_h` if exact.
     pub high_h: f64,
+}
+
+/// How one number of the profile moves the total when it alone changes by ±10 % (a count by ±1).
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Sensitivity {
+    /// Its key.
+    pub key: String,
+    /// As the profile has it.
+    pub value: f64,
+    /// Total with the number at its lower value.
+    pub at_lower_h: f64,
+    /// Total with the number at its upper value.
+    pub at_upper_h: f64,
+}
+
+/// A raster multi-beam writer over the same field at the same base dose: its hours do not depend on the pattern.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct RasterLine {
+    /// Its profile.
+    pub profile: String,
+    /// Its hours.
+    pub hours: Hours,
+    /// Flashes of one pass at which the shaped-beam writer takes as long, flashed as the recommended fracture is on average;
+    /// `None` where it takes longer without any flash, or nothing is recommended.
+    pub tie_flashes: Option<Count>,
+    /// Flashes of one pass of the recommended fracture.
+    pub flashes: Option<Count>,
+}
+
+/// Consecutive stripes that are alike, in passes that are alike: a line of `stripes.csv`. Times are of one stripe in one pass.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct StripeRow {
+    /// In how many passes they are written so.
+    pub passes: u32,
+    /// First of these stripes, counted upward from 0.
+    pub stripe: u64,
+    /// How many.
+    pub count: u64,
+    /// Flashes.
+    pub flashes: Count,
+    /// Flashing.
+    pub flash_s: f64,
+    /// Settling.
+    pub settle_s: f64,
+    /// Moving from sub-field to sub-field.
+    pub subfield_s: f64,
+    /// By how much the stage takes longer than these three together; it bounds the stripe where this is not 0.
+    pub stage_s: f64,
+}
+
+/// Flashes beyond one for each shot and pass, over all passes.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+pub struct MoreFlashes {
+    /// A border of a stripe or sub-field cuts a shot.
+    pub border: Count,
+    /// A shot is too large for the beam current.
+    pub beam_current: Count,
+    /// A shot needs a greater dose than one flash may give.
+    pub dose: Count,
 }
 
 /// Whether the mask can be written in the slot.
@@ -357,7 +454,9 @@ impl FlagKind {
 /// A figure to look at or to send back.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Flag {
-    /// Number of the distinct figure.
+    /// The layout it is of, counted from 1 in the order of the sources.
+    pub clip: u64,
+    /// Number of the distinct figure in it.
     pub figure: u64,
     /// Where it shows, mask coordinates.
     pub place_nm: [f64; 2],
@@ -373,13 +472,31 @@ pub struct Flag {
     pub picture: Option<String>,
 }
 
+impl Hours {
+    /// Whether they fit so many hours: by the upper end of the interval.
+    #[must_use]
+    pub fn fits(&self, slot_h: f64) -> Fits {
+        if self.high_h <= slot_h {
+            Fits::Yes
+        } else if self.low_h > slot_h {
+            Fits::No
+        } else {
+            Fits::CannotSay
+        }
+    }
+}
+
 /// One distinct figure: a line of `figures.csv`.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct FigureResult {
-    /// Its number.
+    /// The layout it is of, counted from 1 in the order of the sources.
+    pub clip: u64,
+    /// Its number there.
     pub figure: u64,
     /// Lower-left corner of its bounds at its first place, mask coordinates.
     pub place_nm: [f64; 2],
+    /// Hash of its outline in its own frame, 16 hexadecimal digits: equal figures have equal ones, in other layouts too.
+    pub fingerprint: String,
     /// At how many places it stands.
     pub places: Count,
     /// Length of all its rings.
@@ -403,6 +520,12 @@ pub struct FigureFracture {
     pub edge_error_nm: EdgeError,
     /// Whether it prints within tolerance; `None` if not checked.
     pub prints_within_tolerance: Option<bool>,
+    /// All its scores.
+    #[serde(default)]
+    pub scores: Option<Scores>,
+    /// Mean of the doses that its shots are multiplied by at all its places; `None` without a long range.
+    #[serde(default)]
+    pub mean_dose: Option<f64>,
     /// Seconds to flash and settle it at all its places; `None` if not computed.
     pub seconds: Option<f64>,
 }

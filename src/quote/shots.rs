@@ -4,7 +4,7 @@ use rayon::prelude::*;
 
 use crate::blur::REACH;
 use crate::expose::Exposure;
-use crate::geom::{Rect, Transform};
+use crate::geom::{Figure, Rect, Transform};
 use crate::judge::{self, Fidelity, Settings};
 use crate::mask::{Mask, Standings};
 use crate::shot::{ShotLimits, ShotList};
@@ -67,12 +67,7 @@ pub fn score(
         .par_iter()
         .map(|&(figure, transform)| {
             let own = mask.figures[figure].figure.transformed(transform);
-            let near = standings.touching(own.bounds().grown(pm(NEIGHBOURS)));
-            let context: Vec<_> = near
-                .iter()
-                .filter(|other| **other != (figure, transform))
-                .map(|&(other, t)| mask.figures[other].figure.transformed(t))
-                .collect();
+            let context = context(mask, &standings, (figure, transform), settings);
             let dose = Exposure::new(settings.blur, index.touching(own.bounds().grown(pm(REACH))));
             let fidelity = judge::judge(&own, &context, &dose, settings);
             tick();
@@ -110,14 +105,30 @@ pub fn score(
     })
 }
 
+/// The figures around one at one of its places.
+pub(super) fn context(
+    mask: &Mask,
+    standings: &Standings<'_>,
+    (figure, transform): (usize, Transform),
+    settings: &Settings,
+) -> Vec<Figure> {
+    let reach = settings.blur.sigma() * NEIGHBOURS;
+    let own = transform.apply_rect(mask.figures[figure].figure.bounds());
+    let near = standings.touching(own.grown(reach.to_pm().unwrap_or_default()));
+    near.iter()
+        .filter(|other| **other != (figure, transform))
+        .map(|&(other, t)| mask.figures[other].figure.transformed(t))
+        .collect()
+}
+
 /// Shots by lower side, to find those in a window.
-struct ShotIndex {
+pub(super) struct ShotIndex {
     rects: Vec<(Rect, Dose)>,
     tallest: i64,
 }
 
 impl ShotIndex {
-    fn new(shots: &ShotList) -> Self {
+    pub(super) fn new(shots: &ShotList) -> Self {
         // A shot list is sorted by its lower side.
         let rects: Vec<_> = shots.rects().collect();
         let tallest = rects.iter().map(|(rect, _)| rect.height()).max();
@@ -127,7 +138,7 @@ impl ShotIndex {
         }
     }
 
-    fn touching(&self, window: Rect) -> impl Iterator<Item = (Rect, Dose)> + '_ {
+    pub(super) fn touching(&self, window: Rect) -> impl Iterator<Item = (Rect, Dose)> + '_ {
         let lowest = window.min.y - self.tallest;
         let from = self.rects.partition_point(|(rect, _)| rect.min.y < lowest);
         let to = self

@@ -1,33 +1,67 @@
 //! From scores of figures to the numbers of the whole mask.
 
 use crate::fracture::FractureError;
-use crate::judge::{self, Fidelity};
+use crate::judge::{self, Background, Fidelity};
 use crate::mask::DistinctFigure;
 use crate::shot::ShotList;
 use crate::units::Nm;
 
+use super::exposure::Exposed;
 use super::made::Made;
-use super::result::{Count, EdgeError, FractureSummary, Margin};
+use super::result::{Count, DoseMap, EdgeError, FractureSummary, Margin};
 
-/// Adds up the figures of one fracture, each at all its places. Hours are left to be filled in.
+/// The figures of one mask in one fracture.
+#[derive(Clone, Copy, Debug)]
+pub struct Part<'a> {
+    /// In their order.
+    pub figures: &'a [DistinctFigure],
+    /// Their shots and scores.
+    pub made: &'a [Result<Made, FractureError>],
+    /// Their doses.
+    pub exposed: &'a Exposed<'a>,
+    /// How often the mask counts in the scores against other parts.
+    pub weight: u64,
+}
+
+/// Adds up the figures of one mask, each at all its places. Hours are left to be filled in.
 #[must_use]
 pub fn of_mask(
     figures: &[DistinctFigure],
     made: &[Result<Made, FractureError>],
+    exposed: &Exposed<'_>,
+    background: Background,
     sliver: Nm,
 ) -> FractureSummary {
+    let part = Part {
+        figures,
+        made,
+        exposed,
+        weight: 1,
+    };
+    of_parts(&[part], background, sliver)
+}
+
+/// Adds up several masks: shots once for each, scores by their weights. They were judged over `background`; margins are those of the
+/// dose of each place.
+#[must_use]
+pub fn of_parts(parts: &[Part<'_>], background: Background, sliver: Nm) -> FractureSummary {
     let mut fidelity = Fidelity::default();
     let (mut shots, mut distinct, mut slivers, mut failing) = (0_u128, 0_u64, 0_u128, 0_u64);
     let mut smallest: Option<Nm> = None;
     let mut peak = 0.0_f64;
-    for (figure, made) in figures.iter().zip(made) {
+    let all = parts.iter().flat_map(|part| {
+        let figures = part.figures.iter().zip(part.made).enumerate();
+        figures.map(move |(number, (figure, made))| (part, number, figure, made))
+    });
+    for (part, number, figure, made) in all {
         let places = figure.place_count();
         let Ok(made) = made else {
             failing += 1;
             continue;
         };
         let list = &made.fracture.shots;
-        fidelity.merge(&made.fidelity, u64::try_from(places).unwrap_or(u64::MAX));
+        let score = (&made.fidelity, background, part.weight);
+        part.exposed.merge(number, score, &mut fidelity);
         shots = shots.saturating_add(places.saturating_mul(list.len() as u128));
         slivers = slivers.saturating_add(places.saturating_mul(list.slivers(sliver) as u128));
         distinct += list.len() as u64;
@@ -43,6 +77,7 @@ pub fn of_mask(
         prints_within_tolerance: Some(failing == 0),
         figures_out_of_tolerance: Some(failing),
         peak_dose: (shots > 0).then_some(peak),
+        dose_map: DoseMap::all(parts.iter().filter_map(|part| part.exposed.map.as_ref())),
         ..of_fidelity(&fidelity.summary())
     }
 }
@@ -64,6 +99,8 @@ pub fn of_fidelity(scores: &judge::Summary) -> FractureSummary {
             worst: scores.margin_nm_per_pct.worst,
         },
         peak_dose: None,
+        scores: Some(*scores),
+        dose_map: None,
         hours: None,
     }
 }

@@ -1,5 +1,6 @@
 //! Whether the slot suffices, which fracture to order and why.
 
+use crate::number::brief as number;
 use crate::units;
 
 use super::result::{Fits, FractureSummary, Fractures, Hours, Method, Verdict};
@@ -113,11 +114,7 @@ impl<'a> Offer<'a> {
 }
 
 fn fits(hours: Hours, slot: Option<units::Hours>) -> Fits {
-    match slot {
-        Some(slot) if hours.high_h <= slot.0 => Fits::Yes,
-        Some(slot) if hours.low_h > slot.0 => Fits::No,
-        _ => Fits::CannotSay,
-    }
+    slot.map_or(Fits::CannotSay, |slot| hours.fits(slot.0))
 }
 
 fn verdict(best: &Offer<'_>, other: Option<&Offer<'_>>, slot: Option<units::Hours>) -> Verdict {
@@ -215,20 +212,6 @@ fn time(hours: f64) -> String {
     }
 }
 
-/// Three significant digits; whole numbers in full.
-pub(super) fn number(x: f64) -> String {
-    if x == x.trunc() || x.abs() >= 1000.0 {
-        return format!("{x:.0}");
-    }
-    #[allow(
-        clippy::cast_possible_truncation,
-        clippy::cast_sign_loss,
-        reason = "a logarithm between -300 and 3, clamped"
-    )]
-    let decimals = (2.0 - x.abs().log10().floor()).clamp(0.0, 8.0) as usize;
-    format!("{x:.decimals$}")
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -249,6 +232,8 @@ mod tests {
             figures_out_of_tolerance: Some(u64::from(!prints)),
             margin_nm_per_pct: Margin::default(),
             peak_dose: None,
+            scores: None,
+            dose_map: None,
             hours: Some(Hours {
                 total_h,
                 flash_h: total_h,

@@ -12,8 +12,9 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, FONT, palette};
-use super::table::{grouped, length, significant};
+use super::table::{grouped, length};
 use crate::geom::{Figure, Point, Rect, Repetition, Ring, Transform};
+use crate::number::brief;
 use crate::quote::result::Count;
 
 /// Size of the picture, pixels.
@@ -144,7 +145,7 @@ impl Overview<'_> {
         let text = (FONT, 16);
         area.draw(&Text::new(self.value_label.to_owned(), (4, 6), text))?;
         let mut y = 34;
-        if let Some((least, greatest)) = shade.range() {
+        if shade.range.is_some() {
             const STEPS: i32 = 160;
             for i in 0..STEPS {
                 let share = 1.0 - f64::from(i) / f64::from(STEPS - 1);
@@ -156,22 +157,14 @@ impl Overview<'_> {
                 [(4, y), (30, bottom)],
                 plot::line(palette::GREY, 1),
             ))?;
-            for k in 0..5_i32 {
-                let share = f64::from(k) / 4.0;
-                let value = if least < greatest {
-                    shade.value(share)
-                } else {
-                    least
-                };
-                let at = bottom - 80 * k;
+            for value in shade.ticks() {
+                #[allow(clippy::cast_possible_truncation, reason = "at most the bar's pixels")]
+                let at = bottom - (shade.share(value) * f64::from(2 * STEPS)).round() as i32;
                 area.draw(&PathElement::new(
                     [(30, at), (35, at)],
                     plot::line(palette::INK, 1),
                 ))?;
-                area.draw(&Text::new(significant(value), (40, at - 9), text))?;
-                if least >= greatest {
-                    break;
-                }
+                area.draw(&Text::new(brief(value), (40, at - 9), text))?;
             }
             y = bottom + 28;
         }
@@ -323,35 +316,55 @@ fn nm_box(r: Rect) -> [f64; 4] {
 struct Shade {
     range: Option<(f64, f64)>,
     logarithmic: bool,
+    /// All values are counts, so that the scale shows none between them.
+    whole: bool,
 }
 
 impl Shade {
     fn of(values: impl Iterator<Item = f64>) -> Self {
+        let values: Vec<f64> = values.filter(|v| v.is_finite()).collect();
+        let whole = values.iter().all(|v| v.fract() == 0.0);
         let range = values
-            .filter(|v| v.is_finite())
+            .into_iter()
             .fold(None, |range: Option<(f64, f64)>, v| {
                 Some(range.map_or((v, v), |(a, b)| (a.min(v), b.max(v))))
             });
         let logarithmic = range.is_some_and(|(a, b)| a > 0.0 && b / a > 30.0);
-        Self { range, logarithmic }
+        Self {
+            range,
+            logarithmic,
+            whole,
+        }
     }
 
-    fn range(&self) -> Option<(f64, f64)> {
-        self.range
-    }
-
-    fn color(&self, value: f64) -> RGBColor {
-        let Some((a, b)) = self.range else {
-            return NO_VALUE;
+    /// Values to be written beside the scale, upward; each stands where its share is.
+    fn ticks(&self) -> Vec<f64> {
+        let of = |k: u32| {
+            let value = self.value(f64::from(k) / 4.0);
+            if self.whole { value.round() } else { value }
         };
-        let share = if a >= b {
+        let mut ticks: Vec<f64> = (0..5).map(of).collect();
+        ticks.dedup();
+        ticks
+    }
+
+    /// Where a value stands on the scale, 0 to 1.
+    fn share(&self, value: f64) -> f64 {
+        let (a, b) = self.range.unwrap_or_default();
+        if a >= b {
             0.0
         } else if self.logarithmic {
             (value / a).ln() / (b / a).ln()
         } else {
             (value - a) / (b - a)
-        };
-        self.at(share)
+        }
+    }
+
+    fn color(&self, value: f64) -> RGBColor {
+        match self.range {
+            Some(_) => self.at(self.share(value)),
+            None => NO_VALUE,
+        }
     }
 
     /// Dark for 1, through the published colour map that stays ordered in grey print and for the colour-blind.
@@ -374,6 +387,18 @@ impl Shade {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn a_scale_of_counts_has_whole_ticks() {
+        for (values, expected) in [
+            (vec![1.0, 4.0], vec![1.0, 2.0, 3.0, 4.0]),
+            (vec![3.0, 3.0], vec![3.0]),
+            (vec![0.5, 2.5], vec![0.5, 1.0, 1.5, 2.0, 2.5]),
+            (vec![1.0, 81.0], vec![1.0, 3.0, 9.0, 27.0, 81.0]),
+        ] {
+            assert_eq!(Shade::of(values.into_iter()).ticks(), expected);
+        }
+    }
 
     #[test]
     fn a_shade_is_the_value_again() {

@@ -4,15 +4,15 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
-use crate::quote::result::{Count, Flag, FractureSummary, Method, Quote, Source};
+use super::fidelity;
+use crate::number::{self, UNMEASURED, brief};
+use crate::quote::result::{
+    Count, Flag, FractureSummary, Hours, Method, Quote, RasterLine, Sensitivity, Source,
+};
 
-/// Shown where nothing was measured.
-const UNMEASURED: &str = "–";
 /// Below this width, or where the wide table would not fit, measures run down and fractures across.
 const NARROW: usize = 100;
 const WIDEST: usize = 120;
-/// Space between digits of a group: thin, so that it reads as one number and never breaks.
-const GROUP: char = '\u{202f}';
 
 /// How much of a quote to write and how wide.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -43,19 +43,33 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     heading(quote, &mut out);
     out.blank();
     out.text.push_str(&comparison(quote, width));
+    let fidelity = fidelity::table(quote);
+    if !fidelity.is_empty() {
+        out.blank();
+        out.text.push_str(&fidelity);
+    }
     out.blank();
     out.line(
         "staircase: the plain geometric one, as a flow without simulation writes it; the baseline",
     );
+    if let Some(raster) = &quote.raster {
+        out.line(&beside(raster, quote.recommended));
+    }
     out.line(&prints(quote));
     if let Some(intervals) = intervals(quote) {
         out.line(&intervals);
+    }
+    for line in written(quote) {
+        out.line(&line);
+    }
+    if let Some(first) = moves(&quote.sensitivity) {
+        out.line(&first);
     }
     out.blank();
     out.paragraph(&quote.verdict.sentence, "");
     let order = quote.recommended.map_or("none", Method::name);
     out.paragraph(&format!("Recommended: {order}. {}", quote.reason), "");
-    flags(&quote.flags, options.flags, &mut out);
+    flags(quote, options.flags, &mut out);
     out.blank();
     for note in &quote.notes {
         out.line(&format!("note: {note}"));
@@ -64,26 +78,39 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     out.text
 }
 
+pub use crate::number::significant;
+pub(super) use crate::number::trimmed;
+
 fn heading(quote: &Quote, out: &mut Text) {
-    let s = &quote.source;
-    let extent = s.extent_nm.map_or_else(
-        || "empty".to_owned(),
-        |[w, h]| {
-            let (unit, name) = unit(w.max(h));
-            format!("{} × {} {name}", trimmed(w / unit), trimmed(h / unit))
-        },
-    );
-    out.paragraph(
-        &format!(
-            "{}, layer {}{}: {extent}, {} distinct figures at {} places",
-            s.name,
-            s.layers.join(" + "),
-            transfer(s),
-            grouped(s.figures_distinct.into()),
-            grouped(s.figures_placed)
-        ),
-        "",
-    );
+    for (number, s) in (1..).zip(&quote.sources) {
+        let extent = s.extent_nm.map_or_else(
+            || "empty".to_owned(),
+            |[w, h]| {
+                let (unit, name) = unit(w.max(h));
+                format!("{} × {} {name}", trimmed(w / unit), trimmed(h / unit))
+            },
+        );
+        let (clip, share) = if quote.sources.len() > 1 {
+            let percent = 100.0 * s.coverage.unwrap_or(0.0);
+            (
+                format!("clip {number}: "),
+                format!(", fills {} % of the field", brief(percent)),
+            )
+        } else {
+            (String::new(), String::new())
+        };
+        out.paragraph(
+            &format!(
+                "{clip}{}, layer {}{}: {extent}, {} distinct figures at {} places{share}",
+                s.name,
+                s.layers.join(" + "),
+                transfer(s),
+                grouped(s.figures_distinct.into()),
+                grouped(s.figures_placed)
+            ),
+            "",
+        );
+    }
     out.paragraph(
         &format!(
             "profile {}, sigma {} nm, tolerance {} nm",
@@ -92,7 +119,11 @@ fn heading(quote: &Quote, out: &mut Text) {
         "",
     );
     let correction = quote.dose_correction;
-    if correction.backscatter_ratio > 0.0 {
+    let doses = fidelity::doses(quote);
+    if !doses.is_empty() {
+        out.line("Against backscatter every place gets its own dose:");
+        doses.iter().for_each(|line| out.line(&format!("  {line}")));
+    } else if correction.backscatter_ratio > 0.0 {
         out.paragraph(
             &format!(
                 "Every dose times {} against backscatter ({} at a mean coverage of {}): one value for the whole mask.",
@@ -107,8 +138,13 @@ fn heading(quote: &Quote, out: &mut Text) {
         &quote.scaled_to_field.map_or_else(
             || "Counts and hours are for the clip alone, not for a field.".to_owned(),
             |f| {
+                let (copies, own) = if quote.sources.len() > 1 {
+                    ("copies of the clips", "those of the clips, each once")
+                } else {
+                    ("copies of the clip", "those of one clip")
+                };
                 format!(
-                    "Hours are for a field of {} mm × {} mm, of which copies of the clip fill {} %; shots and slivers are those of one clip. On the field: {}.",
+                    "Hours are for a field of {} mm × {} mm, of which {copies} fill {} %; shots and slivers are {own}. On the field: {}.",
                     f.width_mm,
                     f.height_mm,
                     significant(100.0 * f.coverage),
@@ -158,87 +194,95 @@ fn transfer(s: &Source) -> String {
 struct Measure {
     header: &'static str,
     label: &'static str,
-    value: fn(&FractureSummary) -> Option<String>,
+    value: Value,
+}
+
+/// What a measure is taken of.
+enum Value {
+    /// Shots and how they print.
+    Print(fn(&FractureSummary) -> Option<String>),
+    /// The hours, which a raster writer has too.
+    Time(fn(&Hours) -> f64),
 }
 
 const MEASURES: [Measure; 15] = [
     Measure {
         header: "\nshots\n",
         label: "shots",
-        value: |f| Some(grouped(f.shots)),
+        value: Value::Print(|f| Some(grouped(f.shots))),
     },
     Measure {
         header: "smallest\nside\nnm",
         label: "smallest side, nm",
-        value: |f| f.smallest_side_nm.map(trimmed),
+        value: Value::Print(|f| f.smallest_side_nm.map(trimmed)),
     },
     Measure {
         header: "\nslivers\n",
         label: "slivers",
-        value: |f| Some(grouped(f.slivers)),
+        value: Value::Print(|f| Some(grouped(f.slivers))),
     },
     Measure {
         header: "edge\nmean\nnm",
         label: "edge error, mean, nm",
-        value: |f| f.edge_error_nm.mean.map(|e| format!("{e:+.2}")),
+        value: Value::Print(|f| f.edge_error_nm.mean.map(|e| format!("{e:+.2}"))),
     },
     Measure {
         header: "error\n95 %\nnm",
         label: "edge error, 95 %, nm",
-        value: |f| f.edge_error_nm.p95.map(|e| format!("{e:.2}")),
+        value: Value::Print(|f| f.edge_error_nm.p95.map(|e| format!("{e:.2}"))),
     },
     Measure {
         header: "\nworst\nnm",
         label: "edge error, worst, nm",
-        value: |f| f.edge_error_nm.worst.map(|e| format!("{e:.2}")),
+        value: Value::Print(|f| f.edge_error_nm.worst.map(|e| format!("{e:.2}"))),
     },
     Measure {
         header: "out of\ntol.\n%",
         label: "outline out of tolerance, %",
-        value: |f| {
+        value: Value::Print(|f| {
             f.out_of_tolerance_share
                 .map(|s| format!("{:.2}", 100.0 * s))
-        },
+        }),
     },
     Measure {
         header: "margin\nmedian\nnm/%",
         label: "margin, median, nm/%",
-        value: |f| f.margin_nm_per_pct.median.map(|m| format!("{m:.2}")),
+        value: Value::Print(|f| f.margin_nm_per_pct.median.map(|m| format!("{m:.2}"))),
     },
     Measure {
         header: "\nworst\nnm/%",
         label: "margin, worst, nm/%",
-        value: |f| f.margin_nm_per_pct.worst.map(|m| format!("{m:.2}")),
+        value: Value::Print(|f| f.margin_nm_per_pct.worst.map(|m| format!("{m:.2}"))),
     },
     Measure {
         header: "time\nflash\nh",
         label: "time, flash, h",
-        value: |f| f.hours.map(|h| significant(h.flash_h)),
+        value: Value::Time(|h| h.flash_h),
     },
     Measure {
         header: "\nsettle\nh",
         label: "time, settle, h",
-        value: |f| f.hours.map(|h| significant(h.settle_h)),
+        value: Value::Time(|h| h.settle_h),
     },
     Measure {
         header: "sub-\nfield\nh",
         label: "time, sub-field moves, h",
-        value: |f| f.hours.map(|h| significant(h.subfield_h)),
+        value: Value::Time(|h| h.subfield_h),
     },
     Measure {
         header: "\nstage\nh",
         label: "time, stage, h",
-        value: |f| f.hours.map(|h| significant(h.stage_h)),
+        value: Value::Time(|h| h.stage_h),
     },
     Measure {
         header: "over-\nhead\nh",
         label: "time, overhead, h",
-        value: |f| f.hours.map(|h| significant(h.overhead_h)),
+        value: Value::Time(|h| h.overhead_h),
     },
     Measure {
         header: "\ntotal\nh",
         label: "time, total, h",
-        value: |f| f.hours.map(|h| significant(h.total_h)),
+        value: Value::Time(|h| h.total_h),
     },
 ];
 
@@ -246,11 +290,32 @@ const MEASURES: [Measure; 15] = [
 const GROUPS: [usize; 3] = [4, 8, 10];
 
 impl Measure {
-    fn of(&self, fracture: Option<&FractureSummary>) -> String {
-        fracture
-            .and_then(self.value)
-            .unwrap_or_else(|| UNMEASURED.to_owned())
+    fn of(&self, column: Column<'_>) -> String {
+        let value = match (&self.value, column) {
+            (Value::Print(value), Column::Fracture(Some(fracture))) => value(fracture),
+            (Value::Time(value), Column::Fracture(Some(fracture))) => {
+                fracture.hours.map(|hours| significant(value(&hours)))
+            }
+            (Value::Time(value), Column::Raster(raster)) => Some(significant(value(&raster.hours))),
+            (_, Column::Fracture(None)) | (Value::Print(_), Column::Raster(_)) => None,
+        };
+        value.unwrap_or_else(|| UNMEASURED.to_owned())
     }
+}
+
+/// What stands side by side.
+#[derive(Clone, Copy)]
+enum Column<'a> {
+    Fracture(Option<&'a FractureSummary>),
+    Raster(&'a RasterLine),
+}
+
+/// Every fracture, and the raster writer if there is one.
+fn columns(quote: &Quote) -> Vec<(&'static str, Column<'_>)> {
+    let fractures = quote.fractures.iter();
+    let fractures = fractures.map(|(method, f)| (method.name(), Column::Fracture(f)));
+    let raster = quote.raster.iter().map(|r| ("raster", Column::Raster(r)));
+    fractures.chain(raster).collect()
 }
 
 fn comparison(quote: &Quote, width: usize) -> String {
@@ -260,35 +325,34 @@ fn comparison(quote: &Quote, width: usize) -> String {
             return wide;
         }
     }
-    finished(narrow(quote), &[1, 2, 3])
+    finished(narrow(quote), &[1, 2, 3, 4])
 }
 
 fn wide(quote: &Quote) -> Table {
     let mut table = Table::new();
     table.set_header(std::iter::once("\nfracture\n").chain(MEASURES.iter().map(|m| m.header)));
-    for (method, fracture) in quote.fractures.iter() {
-        table.add_row(
-            std::iter::once(method.name().to_owned())
-                .chain(MEASURES.iter().map(|m| m.of(fracture))),
-        );
+    for (name, column) in columns(quote) {
+        table
+            .add_row(std::iter::once(name.to_owned()).chain(MEASURES.iter().map(|m| m.of(column))));
     }
     table
 }
 
 fn narrow(quote: &Quote) -> Table {
     let mut table = Table::new();
-    table.set_header(std::iter::once("").chain(Method::ALL.iter().map(|m| m.name())));
+    let columns = columns(quote);
+    table.set_header(std::iter::once("").chain(columns.iter().map(|(name, _)| *name)));
     for measure in &MEASURES {
         table.add_row(
             std::iter::once(measure.label.to_owned())
-                .chain(quote.fractures.iter().map(|(_, f)| measure.of(f))),
+                .chain(columns.iter().map(|(_, column)| measure.of(*column))),
         );
     }
     table
 }
 
 /// One line under the header, numbers to the right, a wider gap before the columns `gaps`, no space at the line ends.
-fn finished(mut table: Table, gaps: &[usize]) -> String {
+pub(super) fn finished(mut table: Table, gaps: &[usize]) -> String {
     table
         .load_style(comfy_table::presets::NOTHING)
         .set_content_arrangement(ContentArrangement::Disabled);
@@ -337,6 +401,114 @@ fn prints(quote: &Quote) -> String {
     format!("prints within tolerance: {}", words.join(", "))
 }
 
+/// The raster writer in words, and where it ties.
+fn beside(raster: &RasterLine, recommended: Option<Method>) -> String {
+    let mut words = format!(
+        "raster: a multi-beam writer (profile {}) at the same base dose, whatever the pattern",
+        raster.profile
+    );
+    let order = recommended.map_or("none", Method::name);
+    match (raster.tie_flashes, raster.flashes) {
+        (Some(tie), Some(own)) => {
+            #[allow(clippy::cast_precision_loss, reason = "three digits are shown")]
+            let [tie, own] = [tie, own].map(|n| n.0 as f64);
+            let _ = write!(
+                words,
+                "; it ties with {order} at {} flashes a pass, here {}",
+                large(tie),
+                large(own)
+            );
+        }
+        (None, Some(_)) => {
+            let _ = write!(words, "; it takes no longer whatever the number of shots");
+        }
+        _ => {}
+    }
+    words
+}
+
+/// A count that may be astronomical, to three digits.
+fn large(count: f64) -> String {
+    if count >= 1e6 {
+        format!("{count:.2e}")
+    } else {
+        significant(count)
+    }
+}
+
+/// How the recommended fracture is written: stripes by what bounds them, flashes beyond one a shot, flashes that cannot be made.
+fn written(quote: &Quote) -> Vec<String> {
+    let Some(method) = quote.recommended else {
+        return Vec::new();
+    };
+    let hours = quote.fractures.get(method).and_then(|f| f.hours);
+    let Some(hours) = hours.filter(|hours| hours.stripes > 0) else {
+        return Vec::new();
+    };
+    let large = |count: Count| {
+        #[allow(clippy::cast_precision_loss, reason = "three digits are shown")]
+        let count = count.0 as f64;
+        large(count)
+    };
+    let mut words = format!(
+        "{}: {} stripes over all passes, of which the stage bounds {} and the beam the others; {} flashes",
+        method.name(),
+        grouped(hours.stripes.into()),
+        grouped(hours.stage_bound_stripes.into()),
+        large(hours.flashes)
+    );
+    let more = hours.more_flashes;
+    let causes = [
+        (more.border, "where a border cuts a shot"),
+        (more.beam_current, "where the beam current does not reach"),
+        (more.dose, "where one flash may not give the dose"),
+    ];
+    let causes: Vec<String> = causes
+        .into_iter()
+        .filter(|(count, _)| count.0 > 0)
+        .map(|(count, why)| format!("{} {why}", large(count)))
+        .collect();
+    if !causes.is_empty() {
+        let _ = write!(
+            words,
+            ", of which beyond one a shot and pass: {}",
+            causes.join(", ")
+        );
+    }
+    let short = (hours.too_short.0 > 0).then(|| {
+        format!(
+            "{}: {} flashes are shorter than the shortest that the writer makes (shortest_flash_ns): fewer passes or less current",
+            method.name(),
+            large(hours.too_short)
+        )
+    });
+    std::iter::once(words).chain(short).collect()
+}
+
+/// What moves the total most.
+fn moves(sensitivity: &[Sensitivity]) -> Option<String> {
+    let one = |s: &Sensitivity| {
+        format!(
+            "{} (now {}): {} to {} h",
+            s.key,
+            number::given(s.value),
+            significant(s.at_lower_h),
+            significant(s.at_upper_h)
+        )
+    };
+    let (first, rest) = sensitivity.split_first()?;
+    let rest: Vec<String> = rest.iter().take(2).map(one).collect();
+    let then = if rest.is_empty() {
+        String::new()
+    } else {
+        format!("; then {}", rest.join(", "))
+    };
+    Some(format!(
+        "moves the total most, from 10 % less to 10 % more (a count by 1): {}{then}",
+        one(first)
+    ))
+}
+
 /// The intervals of the hours; `None` if all are exact.
 fn intervals(quote: &Quote) -> Option<String> {
     let words: Vec<String> = quote
@@ -352,7 +524,12 @@ fn intervals(quote: &Quote) -> Option<String> {
     (!words.is_empty()).then(|| format!("interval of the total: {}", words.join(", ")))
 }
 
-fn flags(flags: &[Flag], most: usize, out: &mut Text) {
+fn flags(quote: &Quote, most: usize, out: &mut Text) {
+    let flags = &quote.flags;
+    let clip = |flag: &Flag| match quote.sources.len() {
+        0 | 1 => String::new(),
+        _ => format!("clip {}, ", flag.clip),
+    };
     out.blank();
     if flags.is_empty() {
         out.line("No figure is flagged.");
@@ -362,8 +539,9 @@ fn flags(flags: &[Flag], most: usize, out: &mut Text) {
     out.line(&format!("Flagged: {count}"));
     for (i, flag) in flags.iter().take(most).enumerate() {
         let mut words = format!(
-            "{:>3}  figure {} at ({}, {}) nm: {}",
+            "{:>3}  {}figure {} at ({}, {}) nm: {}",
             i + 1,
+            clip(flag),
             flag.figure,
             trimmed(flag.place_nm[0]),
             trimmed(flag.place_nm[1]),
@@ -431,53 +609,10 @@ impl Text {
     }
 }
 
-/// Digits in groups of three: `1 412`.
+/// Digits of a count in groups of three: `1 412`.
 #[must_use]
 pub fn grouped(count: Count) -> String {
-    let digits = count.to_string();
-    let mut out = String::with_capacity(digits.len() * 2);
-    for (i, digit) in digits.chars().enumerate() {
-        if i > 0 && (digits.len() - i).is_multiple_of(3) {
-            out.push(GROUP);
-        }
-        out.push(digit);
-    }
-    out
-}
-
-/// Three significant digits, more only for whole numbers: `0.0412`, `3.08`, `41.5`, `412`, `1 412`; tiny as `4.1e-6`.
-#[must_use]
-pub fn significant(x: f64) -> String {
-    let size = x.abs();
-    if !x.is_finite() {
-        UNMEASURED.to_owned()
-    } else if size == 0.0 {
-        "0".to_owned()
-    } else if size < 0.000_995 {
-        format!("{x:.1e}")
-    } else if size >= 999.5 {
-        let whole = format!("{:.0}", size);
-        let text = whole.parse().map_or(whole, |n| grouped(Count(n)));
-        if x < 0.0 { format!("-{text}") } else { text }
-    } else {
-        let decimals = [
-            (99.95, 0),
-            (9.995, 1),
-            (0.9995, 2),
-            (0.09995, 3),
-            (0.009_995, 4),
-        ]
-        .iter()
-        .find(|(from, _)| size >= *from)
-        .map_or(5, |(_, d)| *d);
-        format!("{x:.decimals$}")
-    }
-}
-
-/// A coordinate or side to the picometre, without trailing zeros.
-pub(super) fn trimmed(x: f64) -> String {
-    let text = format!("{x:.3}");
-    text.trim_end_matches('0').trim_end_matches('.').to_owned()
+    number::grouped(count.0)
 }
 
 /// A length in the unit that suits it.

@@ -2,12 +2,12 @@
 
 use crate::geom::{Rect, Repetition};
 use crate::profile::{Key, Kind, Profile};
-use crate::units::{Area, Nm};
+use crate::units::{Area, Dose, Nm};
 
 use super::WriteTimeError;
 use super::flash::{Cuts, FlashLimits, Flashing, count};
 use super::grid::{Grid, Pieces, runs};
-use super::pattern::{Counts, Field, Pattern, Placed, check_frame, spacing};
+use super::pattern::{Clip, Counts, Field, Pattern, Placed, check_frame, spacing};
 
 /// Most shots and flashes: beyond any mask, and exact in `u128` when multiplied by heights.
 const MOST_SHOTS: u128 = 1_000_000_000_000_000_000_000_000;
@@ -79,12 +79,7 @@ impl Load {
         match *pattern {
             Pattern::Counts { counts, field } => Self::of_counts(profile, &limits, counts, field),
             Pattern::Placed { placed, frame } => Self::of_placed(profile, &limits, placed, frame),
-            Pattern::Sample {
-                placed,
-                clip,
-                field,
-                coverage,
-            } => Self::of_sample(profile, &limits, placed, clip, field, coverage),
+            Pattern::Sample { clips, field } => Self::of_sample(profile, &limits, clips, field),
         }
     }
 
@@ -111,6 +106,27 @@ impl Load {
             .iter()
             .map(|pass| stripes(pass).saturating_mul(pass.times.into()))
             .fold(0, u128::saturating_add)
+    }
+
+    /// Over all passes: what a flash takes on average, as counts of one pass.
+    pub(super) fn mean_flash(&self) -> Option<Counts> {
+        let passes: u32 = self.passes.iter().map(|pass| pass.times).sum();
+        let flashes = self.flashes();
+        if flashes == 0 {
+            return None;
+        }
+        let mean = |part: fn(&StripeLoad) -> f64| {
+            let of = |pass: &PassLoad| {
+                f64::from(pass.times) * pass.stripes.iter().map(part).sum::<f64>()
+            };
+            self.passes.iter().map(of).sum::<f64>() / flashes as f64
+        };
+        Some(Counts {
+            shots: flashes / u128::from(passes.max(1)),
+            mean_dose: Dose(mean(|stripe| stripe.dose)),
+            mean_jump: Nm(mean(|stripe| stripe.jump.0)),
+            mean_side: Nm(mean(|stripe| stripe.side.0)),
+        })
     }
 
     fn checked(self) -> Result<Self, WriteTimeError> {
@@ -145,36 +161,38 @@ impl Load {
     fn of_sample(
         profile: &Profile,
         limits: &FlashLimits,
-        placed: &[Placed<'_>],
-        clip: Rect,
+        clips: &[Clip<'_>],
         field: Field,
-        coverage: f64,
     ) -> Result<Self, WriteTimeError> {
-        check_frame(clip)?;
-        if !(coverage > 0.0 && coverage <= 1.0) {
-            return Err(WriteTimeError::Coverage { found: coverage });
+        let shares = clips.iter().map(|clip| clip.coverage);
+        let wrong = shares
+            .clone()
+            .find(|share| !(*share > 0.0 && *share <= 1.0));
+        // Shares that are meant to fill the field may miss it by their rounding.
+        let all = Some(shares.sum()).filter(|sum: &f64| *sum > 1.0 + 1e-9);
+        if let Some(found) = wrong.or(all) {
+            return Err(WriteTimeError::Coverage { found });
         }
         let frame = field.frame()?;
         let area = |r: Rect| Nm::from_pm(r.width()).by(Nm::from_pm(r.height()));
-        let copies = coverage * (area(frame) / area(clip));
         let grid = Grid::of_passes(profile, frame)
             .first()
             .map(|(_, grid)| *grid);
-        let spacing = spacing(placed, clip);
         let mut whole = Whole::default();
-        for placed in placed {
-            placed.check()?;
-            let n = placed.repetition.count() as f64 * copies;
-            for (rect, flashing) in placed.flashings(limits, spacing) {
-                let whole_shot = Pieces {
-                    all: 1.0,
-                    slivers: 0.0,
-                };
-                let cells = grid.map_or(whole_shot, |grid| grid.expected_cells(rect));
-                let (shots, pieces) = (count(n.round()), count((n * cells.all).round()));
-                whole.add(profile.passes(), shots, pieces, &flashing);
-                let slivers = count((n * cells.slivers * f64::from(profile.passes())).round());
-                whole.cuts.border_slivers = whole.cuts.border_slivers.saturating_add(slivers);
+        for clip in clips {
+            check_frame(clip.frame)?;
+            let copies = clip.coverage * (area(frame) / area(clip.frame));
+            let spacing = spacing(clip.placed, clip.frame);
+            for placed in clip.placed {
+                placed.check()?;
+                let n = placed.repetition.count() as f64 * copies;
+                for (rect, flashing) in placed.flashings(limits, spacing) {
+                    let cells = grid.map_or(Pieces::UNCUT, |grid| grid.expected_cells(rect));
+                    let (shots, pieces) = (count(n.round()), count((n * cells.all).round()));
+                    whole.add(profile.passes(), shots, pieces, &flashing);
+                    let slivers = count((n * cells.slivers * f64::from(profile.passes())).round());
+                    whole.cuts.border_slivers = whole.cuts.border_slivers.saturating_add(slivers);
+                }
             }
         }
         whole.spread(profile, Some(frame))

@@ -87,18 +87,25 @@ pub enum Pattern<'a> {
         /// What the stripes cover. Shots that overhang it are written in the nearest stripe.
         frame: Rect,
     },
-    /// A clip that stands for a field: copies of it fill the share `coverage` of the field evenly, the rest is
-    /// empty. Cuts are counted as expected for a clip at a random place.
+    /// Clips that stand for a field: copies of each fill their share of it evenly, the rest is empty. Cuts are counted as
+    /// expected for a clip at a random place.
     Sample {
-        /// The shots of the clip.
-        placed: &'a [Placed<'a>],
-        /// The clip.
-        clip: Rect,
+        /// The clips.
+        clips: &'a [Clip<'a>],
         /// The field.
         field: Field,
-        /// Share of the field that looks like the clip; over 0, up to 1.
-        coverage: f64,
     },
+}
+
+/// A clip with the share of a field that looks like it.
+#[derive(Clone, Copy, Debug)]
+pub struct Clip<'a> {
+    /// Its shots.
+    pub placed: &'a [Placed<'a>],
+    /// Around it.
+    pub frame: Rect,
+    /// Share of the field; over 0, and 1 at most for all clips together.
+    pub coverage: f64,
 }
 
 impl Pattern<'_> {

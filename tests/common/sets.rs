@@ -13,7 +13,10 @@ pub(crate) const ASSIST: &str = include_str!("../data/sets/assist.wkt");
 /// One figure without holes for each polygon, in the order of the text.
 pub(crate) fn figures(text: &str) -> Vec<Figure> {
     let layout = layout::read(text.as_bytes(), "set").expect("WKT");
-    let shapes = layout.cells.into_iter().flat_map(|cell| cell.shapes);
+    let shapes = layout
+        .cells
+        .into_iter()
+        .flat_map(|cell| cell.shapes.to_vec());
     shapes
         .map(|shape| Figure::new(Ring::new(shape.points).expect("three points"), Vec::new()))
         .collect()

@@ -54,7 +54,7 @@ pub(crate) fn measure(layout: &Layout) -> BTreeMap<String, Measure> {
 
 fn unfold(layout: &Layout, cell: CellId, map: Map, layers: &mut BTreeMap<String, Measure>) {
     let cell = &layout.cells[cell.0];
-    for shape in &cell.shapes {
+    for shape in cell.shapes.iter() {
         let key = format!("{}/{}", shape.layer.layer, shape.layer.datatype);
         let measure = layers.entry(key).or_insert(Measure {
             polygons: 0,
@@ -65,7 +65,7 @@ fn unfold(layout: &Layout, cell: CellId, map: Map, layers: &mut BTreeMap<String,
             let ring: Vec<Complex> = shape
                 .points
                 .iter()
-                .map(|&p| map.apply([(p.x + d.x) as f64, (p.y + d.y) as f64]))
+                .map(|p| map.apply([(p.x + d.x) as f64, (p.y + d.y) as f64]))
                 .collect();
             measure.polygons += 1;
             measure.area += area(&ring).abs();

@@ -5,6 +5,7 @@ mod fixtures;
 mod flat;
 mod hostile;
 mod rules;
+mod written;
 
 /// The bytes of a fixture.
 fn fixture(name: &str) -> Vec<u8> {

@@ -1,5 +1,6 @@
 //! What the readers accept, repair and refuse, and how they say it.
 
+use shotwright::geom::{Point, Repetition};
 use shotwright::layout::{self, Layout, LayoutError, Place};
 
 use super::bytes::{boundary, library, oasis, record, short, sref, xy};
@@ -105,8 +106,10 @@ fn gdsii_beyond_the_letter_is_taken() {
     // By hand: 500 × 40 and 200 × 40, less the quarter they share, plus the outer corner.
     assert_eq!(path.area, 20_000.0 + 8_000.0 - 400.0 + 400.0);
     assert_eq!(flat["4/0"].area, 50.0);
-    assert_eq!(layout.notes.len(), 1, "{:?}", layout.notes);
-    assert!(layout.notes[0].starts_with("1 × path of absolute width"));
+    assert_eq!(layout.notes.len(), 2, "{:?}", layout.notes);
+    assert!(layout.notes[0].starts_with("1 × outline that was not closed"));
+    assert!(layout.notes[1].starts_with("1 × path of absolute width"));
+    assert_eq!(layout.open_outlines, 1);
 }
 
 #[test]
@@ -122,7 +125,7 @@ fn outlines_run_on_in_further_xy_records() {
     }
     element.extend(record(0x1100, &[]));
     let layout = read(&library(&[(b"TOP\0", element)])).expect("reads");
-    assert_eq!(layout.cells[0].shapes[0].points.len(), 2000);
+    assert_eq!(layout.cells[0].shapes.to_vec()[0].points.len(), 2000);
     let n = f64::from(n);
     let flat = flat::measure(&layout);
     assert_eq!(flat["1/0"].area, (n.powi(3) - n) / 6.0);
@@ -138,7 +141,7 @@ fn cells_longer_than_a_stretch_are_stitched_in_order() {
     let xs: Vec<i64> = layout.cells[0]
         .shapes
         .iter()
-        .map(|s| s.points[0].x)
+        .filter_map(|s| Some(s.points.iter().next()?.x))
         .collect();
     assert_eq!(xs, (0..100_000).collect::<Vec<i64>>());
     assert_eq!(layout.cells[1].placements[0].cell.0, 0);
@@ -156,6 +159,32 @@ fn arrays_count_to_the_end_of_sixteen_bits() {
     .concat();
     let layout = read(&library(&[(b"AA", boundary(&SQUARE)), (b"BB", array)])).expect("reads");
     assert_eq!(layout.summary().placements, 65_535 * 40_000);
+}
+
+/// Found by fuzzing: some hundred bytes asked for a list of 3.7 million places.
+#[test]
+fn arrays_off_the_grid_list_columns_and_rows_and_not_their_product() {
+    let array = [
+        record(0x0B00, &[]),
+        record(0x1206, b"AA"),
+        record(0x1302, &[0x00, 0x44, 0xD6, 0x03]),
+        xy(&[(2, 7), (2 + 1001, 7 + 500), (2, 7 + 54_000)]),
+        record(0x1100, &[]),
+    ]
+    .concat();
+    let square = boundary(&[(0, 0), (1, 0), (1, 1), (0, 1)]);
+    let layout = read(&library(&[(b"AA", square), (b"BB", array)])).expect("reads");
+    let repetition = &layout.cells[1].placements[0].repetition;
+    assert_eq!(repetition.count(), 0x44 * 0xD603);
+    let Repetition::Nested(parts) = repetition else {
+        panic!("one list of all places");
+    };
+    let listed: u128 = parts.iter().map(Repetition::count).sum();
+    assert_eq!(listed, 0x44 + 0xD603);
+    // Each span is divided and rounded: column 30 of 68 over (1001, 500), row 27 406 of 54 787 over 54 000.
+    let places: Vec<Point> = repetition.displacements().take(0x44 * 27_407).collect();
+    let last = places[0x44 * 27_406 + 30];
+    assert_eq!(last, Point::new(442, 221 + 27_012));
 }
 
 #[test]
@@ -392,14 +421,19 @@ fn wkt_reads_holes_decimals_and_empties() {
     let areas: Vec<f64> = layout.cells[0]
         .shapes
         .iter()
-        .map(|s| shotwright::geom::Ring::new(s.points.clone()).expect("a ring"))
+        .map(|s| shotwright::geom::Ring::new(s.points.iter().collect()).expect("a ring"))
         .map(|ring| ring.area_two() as f64 / 2e6)
         .collect();
     assert_eq!(areas, [5000.0 - 205.0, 50.0, 50.0]);
-    assert_eq!(layout.notes, ["1 × ring that was not closed: closed"]);
+    assert_eq!(
+        layout.notes,
+        ["1 × outline that was not closed: closed by a straight edge"]
+    );
     // The keyhole vanishes and the hole is real.
-    let rings = layout.cells[0].shapes[..1].iter().map(|s| s.points.clone());
-    let rings: Vec<_> = rings.filter_map(shotwright::geom::Ring::new).collect();
+    let first = layout.cells[0].shapes.to_vec().swap_remove(0);
+    let rings: Vec<_> = shotwright::geom::Ring::new(first.points)
+        .into_iter()
+        .collect();
     let merged = shotwright::geom::merge(&rings);
     assert_eq!((merged.len(), merged[0].holes().len()), (1, 1));
 }

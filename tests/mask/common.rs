@@ -34,7 +34,7 @@ pub(crate) fn rect(x: i64, y: i64, w: i64, h: i64) -> Shape {
 pub(crate) fn cell(name: &str, shapes: Vec<Shape>, placements: Vec<Placement>) -> Cell {
     Cell {
         name: name.to_owned(),
-        shapes,
+        shapes: shapes.into(),
         placements,
     }
 }
@@ -64,6 +64,7 @@ pub(crate) fn layout(cells: Vec<Cell>) -> Layout {
     Layout {
         unit: Nm(1.0),
         cells,
+        open_outlines: 0,
         notes: Vec::new(),
     }
 }
@@ -103,9 +104,9 @@ pub(crate) fn written_out(mask: &Mask) -> Vec<Figure> {
 /// Every layout as one cell with every repetition and placement written out, by the definition and nothing clever.
 pub(crate) fn flattened(layout: &Layout) -> Layout {
     fn walk(layout: &Layout, id: usize, at: Transform, out: &mut Vec<Shape>) {
-        for s in &layout.cells[id].shapes {
+        for s in layout.cells[id].shapes.iter() {
             for d in s.repetition.displacements() {
-                let points = s.points.iter().map(|&p| at.apply(p + d)).collect();
+                let points = s.points.iter().map(|p| at.apply(p + d)).collect();
                 out.push(Shape {
                     layer: s.layer,
                     points,

@@ -180,11 +180,10 @@ fn the_parts_of_a_cell_that_keep_clear_stay_counted_when_others_meet() {
 #[test]
 fn a_pitch_off_the_address_grid_gives_one_figure_for_each_position_on_it() {
     let mut l = flat(vec![Shape {
-        repetition: array(1_000, 1, (800, 0)),
+        repetition: array(1_000, 1, (801, 0)),
         ..rect(0, 0, 400, 400)
     }]);
     l.unit = Nm(0.25);
-    l.cells[0].shapes[0].repetition = array(1_000, 1, (801, 0));
     let mask = build(&l, 50.0);
     assert_eq!(mask.place_count(), 1_000);
     let corners: Vec<i64> = mask

@@ -14,10 +14,12 @@ fn layers_are_chosen_or_listed() {
         rect(100, 0, 10, 10),
         rect(0, 0, 50, 50),
     ]);
-    two.cells[0].shapes[2].layer = Layer {
+    let mut shapes = two.cells[0].shapes.to_vec();
+    shapes[2].layer = Layer {
         layer: 7,
         datatype: 3,
     };
+    two.cells[0].shapes = shapes.into();
     let error = mask::build(&two, &options(0.0)).expect_err("two layers");
     assert_eq!(
         error.to_string(),

@@ -329,9 +329,14 @@ fn area_two(figures: &[Figure]) -> i128 {
 /// A rectilinear layout whose every third polygon lies on the subtracted layer.
 fn on_two_layers() -> impl Strategy<Value = Layout> {
     layouts(false).prop_map(|mut l| {
-        let shapes = l.cells.iter_mut().flat_map(|c| &mut c.shapes);
-        for (i, s) in shapes.enumerate() {
-            s.layer = if i % 3 == 1 { MINUS } else { LAYER };
+        let mut i = 0;
+        for c in &mut l.cells {
+            let mut shapes = c.shapes.to_vec();
+            for s in &mut shapes {
+                s.layer = if i % 3 == 1 { MINUS } else { LAYER };
+                i += 1;
+            }
+            c.shapes = shapes.into();
         }
         l
     })
@@ -340,7 +345,7 @@ fn on_two_layers() -> impl Strategy<Value = Layout> {
 fn present(l: &Layout, layer: Layer) -> bool {
     l.cells
         .iter()
-        .flat_map(|c| &c.shapes)
+        .flat_map(|c| c.shapes.iter())
         .any(|s| s.layer == layer)
 }
 

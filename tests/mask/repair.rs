@@ -1,6 +1,9 @@
 //! Merging and repair.
 
 use shotwright::geom::{Point, Rect};
+use shotwright::layout::{self, Layout};
+use shotwright::mask::{self, MaskError, MaskOptions};
+use shotwright::units::Nm;
 
 use crate::common::*;
 
@@ -106,4 +109,50 @@ fn a_figure_inside_a_hole_stays_apart_and_a_pad_over_it_swallows_both() {
     let covered = build(&flat(vec![ring, inside, rect(0, 0, 300, 300)]), 0.0);
     assert_eq!(covered.place_count(), 1);
     assert_nm2(&covered, 90_000.0);
+}
+
+#[test]
+fn an_outline_left_open_is_closed_and_counted_or_refused() {
+    let open = "POLYGON ((0 0, 100 0, 100 100, 0 100))";
+    let open = layout::read(open.as_bytes(), "open").expect("closed by rule");
+    let mask = build(&open, 0.0);
+    assert_nm2(&mask, 10_000.0);
+    let note = "1 × outline that was not closed: closed by a straight edge";
+    assert_eq!(mask.notes, [note]);
+    let strict = MaskOptions {
+        strict: true,
+        ..options(0.0)
+    };
+    assert_eq!(
+        mask::build(&open, &strict).err(),
+        Some(MaskError::OpenOutlines { count: 1 })
+    );
+}
+
+#[test]
+fn polygons_that_are_rounded_are_counted() {
+    let third = Layout {
+        unit: Nm(1.0 / 3.0),
+        ..flat(vec![rect(0, 0, 300, 600), rect(900, 0, 301, 600)])
+    };
+    let note = "1 polygon with points between whole picometres: each rounded to the nearest";
+    assert_eq!(build(&third, 0.0).notes, [note]);
+}
+
+#[test]
+fn a_mask_larger_than_any_plate_is_refused_before_work() {
+    let scaled = |scale: f64| {
+        let options = MaskOptions {
+            scale,
+            ..options(60.0)
+        };
+        let mask = mask::build(&flat(vec![rect(0, 0, 2_000, 500)]), &options).expect("sound");
+        mask.check_size()
+    };
+    assert_eq!(scaled(1e6), Ok(()));
+    let refused = scaled(1.01e6).expect_err("2.02 m");
+    assert_eq!(
+        refused.to_string(),
+        "the mask would be 2.020000 m × 0.505000 m, expected at most 2 m a side; is the scale or the database unit right?"
+    );
 }

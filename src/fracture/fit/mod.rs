@@ -6,6 +6,8 @@
 //! [`reduce`] drops and merges shots as long as [`solve`] can mend what that breaks; [`snap`] brings the sides to the address grid
 //! and checks the whole neighbourhood. Everything is local: a shot touches only samples within 4.5 σ of it.
 
+mod algebra;
+mod field;
 mod kernel;
 mod model;
 mod reduce;

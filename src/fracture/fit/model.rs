@@ -1,9 +1,8 @@
 //! Shots with sides anywhere, the samples they are held to, and the dose at these; all indexed by place.
 
-use crate::blur::{PhiTable, THRESHOLD};
-use crate::target::DoseField;
+use crate::blur::PhiTable;
 
-use super::samples::{ContextDose, Sample};
+use super::samples::Sample;
 
 /// A shot before it is brought to the address grid: sides in nm as `[x0, y0, x1, y1]`.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -110,11 +109,10 @@ impl Flash {
     }
 }
 
-/// A row of cells: its lower and upper border, and where its samples end in a list of samples sorted by row.
+/// A cell with its box, and where its samples end in a list of samples sorted by row and column of cells.
 #[derive(Clone, Copy, Debug)]
-pub(super) struct Band {
-    pub(super) low: f64,
-    pub(super) high: f64,
+pub(super) struct Block {
+    pub(super) side: [f64; 4],
     pub(super) end: usize,
 }
 
@@ -185,10 +183,26 @@ impl Bins {
             .flat_map(|cell| self.cells[cell].iter().copied())
     }
 
-    fn low_of_row(&self, j: usize) -> f64 {
-        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-        let j = j as f64;
-        self.origin[1] + j * self.size
+    /// The box of a cell. Items beyond the border are kept in the border cells: these have no end there.
+    fn side_of(&self, cell: [usize; 2]) -> [f64; 4] {
+        let border = |axis: usize, i: usize| {
+            #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+            let at = i as f64;
+            if i == 0 {
+                f64::NEG_INFINITY
+            } else if i == [self.columns, self.rows][axis] {
+                f64::INFINITY
+            } else {
+                self.origin[axis] + at * self.size
+            }
+        };
+        let [i, j] = cell;
+        [
+            border(0, i),
+            border(1, j),
+            border(0, i + 1),
+            border(1, j + 1),
+        ]
     }
 
     /// Indices of the cells that a box touches.
@@ -295,15 +309,15 @@ impl Model {
         &mut self.dose
     }
 
-    /// Samples in cells that any of the boxes touches, row of cells by row; `bands` says where each row lies and ends.
+    /// Samples in cells that any of the boxes touches, cell by cell along the rows; `blocks` says which cells have any.
     pub(super) fn samples_near(
         &self,
         boxes: &[[f64; 4]],
         out: &mut Vec<u32>,
-        bands: &mut Vec<Band>,
+        blocks: &mut Vec<Block>,
     ) {
         out.clear();
-        bands.clear();
+        blocks.clear();
         let bins = &self.samples_by_place;
         let spans: Vec<[(usize, usize); 2]> = boxes
             .iter()
@@ -324,25 +338,17 @@ impl Model {
             let mut next = 0;
             for &(from, to) in &columns {
                 for i in from.max(next)..=to {
-                    out.extend_from_slice(&bins.cells[j * bins.columns + i]);
+                    let cell = &bins.cells[j * bins.columns + i];
+                    if !cell.is_empty() {
+                        out.extend_from_slice(cell);
+                        blocks.push(Block {
+                            side: bins.side_of([i, j]),
+                            end: out.len(),
+                        });
+                    }
                 }
                 next = next.max(to + 1);
             }
-            // Samples beyond the border are kept in the border cells.
-            let border = |j: usize| {
-                if j == 0 {
-                    f64::NEG_INFINITY
-                } else if j == bins.rows {
-                    f64::INFINITY
-                } else {
-                    bins.low_of_row(j)
-                }
-            };
-            bands.push(Band {
-                low: border(j),
-                high: border(j + 1),
-                end: out.len(),
-            });
         }
     }
 
@@ -369,6 +375,11 @@ impl Model {
             .iter()
             .enumerate()
             .filter_map(|(i, f)| f.map(|f| (i, f)))
+    }
+
+    /// What every slot holds.
+    pub(super) fn all(&self) -> &[Option<Flash>] {
+        &self.slots
     }
 
     /// Slots ever used.
@@ -426,73 +437,5 @@ impl Model {
             }
         }
         self.slots[slot] = flash;
-    }
-
-    /// The worst miss of the rule over all samples, in dose; at most 0 where the rule holds.
-    pub(in crate::fracture) fn worst(&self) -> f64 {
-        self.samples
-            .iter()
-            .zip(&self.dose)
-            .map(|(s, d)| f64::from(s.sign) * (THRESHOLD - f64::from(*d)))
-            .fold(f64::NEG_INFINITY, f64::max)
-    }
-}
-
-/// The dose of the model's shots with the context, anywhere.
-pub(super) struct Field<'a> {
-    pub(super) model: &'a Model,
-    pub(super) context: &'a ContextDose,
-    pub(super) phi: PhiTable,
-}
-
-impl DoseField for Field<'_> {
-    fn dose(&self, p: [f64; 2]) -> f64 {
-        let sigma = self.model.sigma;
-        let reach = 5.0 * sigma;
-        let near = self
-            .model
-            .near([p[0] - reach, p[1] - reach, p[0] + reach, p[1] + reach]);
-        let shots: f64 = near
-            .into_iter()
-            .filter_map(|s| self.model.get(s))
-            .map(|f| f.dose_at(self.phi, 1.0 / sigma, p))
-            .sum();
-        self.context.dose(p) + shots
-    }
-
-    fn row(&self, y: f64, x0: f64, step: f64, out: &mut [f64]) {
-        let sigma = self.model.sigma;
-        let reach = 5.0 * sigma;
-        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-        let x_of = |i: usize| x0 + i as f64 * step;
-        for (i, value) in out.iter_mut().enumerate() {
-            *value = if self.context.is_empty() {
-                0.0
-            } else {
-                self.context.dose([x_of(i), y])
-            };
-        }
-        let end = x_of(out.len());
-        for slot in self
-            .model
-            .near([x0 - reach, y - reach, end + reach, y + reach])
-        {
-            let Some(f) = self.model.get(slot) else {
-                continue;
-            };
-            let gy = f.dose
-                * (self.phi.cdf((y - f.side[1]) / sigma) - self.phi.cdf((y - f.side[3]) / sigma));
-            if gy.abs() < 1e-9 {
-                continue;
-            }
-            let from = cell_index((f.side[0] - reach - x0) / step);
-            let to = (cell_index((f.side[2] + reach - x0) / step) + 1).min(out.len());
-            for (i, value) in out.iter_mut().enumerate().take(to).skip(from) {
-                let x = x_of(i);
-                *value += gy
-                    * (self.phi.cdf((x - f.side[0]) / sigma)
-                        - self.phi.cdf((x - f.side[2]) / sigma));
-            }
-        }
     }
 }

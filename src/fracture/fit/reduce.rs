@@ -20,7 +20,7 @@ pub(in crate::fracture) struct Budget {
 }
 
 /// A shot whose sides all move by less than this (σ) keeps the moves it has queued, and those that failed stay failed.
-const STILL: f64 = 0.1;
+const STILL: f64 = 0.2;
 
 /// One way to have a shot less: what goes and what comes in its place.
 struct Move {
@@ -65,9 +65,8 @@ struct Reduction<'a> {
     version: Vec<u32>,
 }
 
-/// Takes shots away until no single drop or merge can be mended any more.
-pub(in crate::fracture) fn reduce(model: &mut Model, solver: &mut Solver, budget: Budget) {
-    let slots: Vec<usize> = model.flashes().map(|(i, _)| i).collect();
+/// Takes shots away until no single drop or merge that involves one of `slots`, or a shot moved for it, can be mended any more.
+pub(super) fn reduce(model: &mut Model, solver: &mut Solver, budget: Budget, slots: &[usize]) {
     let version = vec![0; model.slots()];
     let mut reduction = Reduction {
         model,
@@ -77,7 +76,7 @@ pub(in crate::fracture) fn reduce(model: &mut Model, solver: &mut Solver, budget
         offered: 0,
         version,
     };
-    reduction.offer(&slots);
+    reduction.offer(slots);
     while let Some(m) = reduction.moves.pop() {
         let current = m
             .removed
@@ -127,7 +126,7 @@ impl Reduction<'_> {
         if 0.04 * deep as f64 > self.budget.hopeless {
             return;
         }
-        let score = self.solver.score(self.model, removed, &added);
+        let score = self.solver.estimate(self.model, removed, &added);
         if score > self.budget.hopeless {
             return;
         }

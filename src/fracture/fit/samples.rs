@@ -189,11 +189,6 @@ impl ContextDose {
             .any(|id| self.figures[id as usize].need(p) != Need::Clear)
     }
 
-    /// Whether there is no context.
-    pub(in crate::fracture) fn is_empty(&self) -> bool {
-        self.reach.is_none()
-    }
-
     /// The dose at a place.
     pub(in crate::fracture) fn dose(&self, p: [f64; 2]) -> f64 {
         let Some([reached, _]) = &self.reach else {
@@ -202,7 +197,10 @@ impl ContextDose {
         let share = |at: f64, from: f64, to: f64| {
             self.phi.cdf((at - from) / self.sigma) - self.phi.cdf((at - to) / self.sigma)
         };
-        let bands = reached.at(p).map(|id| self.bands[id as usize]);
+        let reach = REACH * self.sigma;
+        let bands = reached.at(p).map(|id| self.bands[id as usize]).filter(|b| {
+            (0..2).all(|axis| b[axis] - reach <= p[axis] && p[axis] <= b[axis + 2] + reach)
+        });
         bands
             .map(|b| share(p[0], b[0], b[2]) * share(p[1], b[1], b[3]))
             .sum()

@@ -1,11 +1,13 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
+use crate::blur::{REACH, THRESHOLD};
 use crate::fracture::{Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
 use crate::units::Dose;
 
-use super::model::{Flash, Model};
+use super::field::Boxes;
+use super::model::{Bins, Flash, Model};
 use super::reduce::{Budget, reduce};
 use super::relax::{mend, offenders, relax, widen};
 use super::samples::{ContextDose, Sample, samples_of};
@@ -42,8 +44,15 @@ impl Fit {
 /// `3·0.05·0.4/σ = 0.005` at σ = 12; what lies between samples is caught by the check.
 const GUARD: f32 = 0.004;
 
-/// Rounds of check and repair.
-const REPAIRS: usize = 10;
+/// Least distance of the places that one check adds to the samples, σ: many next to one another weigh no more than the worst of them.
+const APART: f64 = 0.2;
+
+/// Rounds of check and repair without less that is wrong after them.
+const STALE_REPAIRS: usize = 6;
+
+/// Rounds of check and repair of a figure of one shot, and for how many shots there is one more: the longer a figure, the more
+/// rounds until its last place holds.
+const REPAIRS: (usize, usize) = (10, 50);
 
 impl<'a> Setting<'a> {
     pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
@@ -75,7 +84,7 @@ impl<'a> Setting<'a> {
                 }),
             );
         }
-        let violations = check(&self.target, &model, &self.context);
+        let violations = check(&self.target, &model, &self.context, None);
         let unfit = unfit(&model, &self.job.limits, false);
         self.reported(Some(Fit {
             shots,
@@ -203,6 +212,11 @@ pub(in crate::fracture) struct Attempt<'s> {
 }
 
 impl Attempt<'_> {
+    /// The shots as they are now.
+    pub(in crate::fracture) fn flashes(&self) -> Vec<Flash> {
+        self.model.flashes().map(|(_, flash)| flash).collect()
+    }
+
     /// How many shots there are.
     pub(in crate::fracture) fn count(&self) -> usize {
         self.model.flashes().count()
@@ -239,58 +253,133 @@ impl Attempt<'_> {
 
     /// Takes shots away where the rule holds around them, and makes slivers wider where it does.
     pub(in crate::fracture) fn reduce(&mut self) {
-        reduce(&mut self.model, &mut self.solver, self.budget);
+        let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
+        reduce(&mut self.model, &mut self.solver, self.budget, &all);
         widen(&mut self.model, &mut self.solver, self.budget.window);
     }
 
-    /// Check, repair what the samples did not see, snap, and check again what is then really flashed.
+    /// Check, repair what the samples did not see, snap, and check again what is then really flashed: all of it once, then what
+    /// a repair changed.
     pub(in crate::fracture) fn finish(mut self) -> Fit {
-        let address = self.setting.job.limits.address;
+        let Setting {
+            job,
+            target,
+            context,
+            ..
+        } = self.setting;
+        let address = job.limits.address;
+        let mut snapped = self.model.clone();
+        let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
+        snap(&mut snapped, &mut self.solver, address, &all);
+        let mut violations = check(target, &snapped, context, None);
         let mut best: Option<Fit> = None;
-        for _ in 0..REPAIRS {
-            let mut snapped = self.model.clone();
-            snap(&mut snapped, &mut self.solver, address);
-            let violations = check(&self.setting.target, &snapped, &self.setting.context);
-            for v in &violations {
-                self.model
-                    .add_sample(Sample::new(v.place, v.need, &self.setting.context));
-            }
-            let unfit = unfit(
-                &snapped,
-                &self.setting.job.limits,
-                self.solver.rules.disjoint,
-            );
+        let mut stale = 0;
+        for _ in 0..REPAIRS.0 + all.len() / REPAIRS.1 {
+            let unfit = unfit(&snapped, &job.limits, self.solver.rules.disjoint);
             let fit = Fit {
                 shots: shots(&snapped, address),
-                violations,
+                violations: violations.clone(),
                 unfit,
                 slivers: self.slivers(),
             };
             let holds = fit.faults() == 0;
+            stale += 1;
             if best.as_ref().is_none_or(|b| fit.faults() < b.faults()) {
                 best = Some(fit);
+                stale = 0;
             }
-            if holds {
+            if holds || stale == STALE_REPAIRS {
                 break;
             }
-            let Self {
-                model,
-                solver,
-                budget,
-                ..
-            } = &mut self;
-            if !relax(model, solver, budget.window.max(10)) {
-                let slim = solver.rules.slim_side < solver.rules.least_side;
-                if mend(model, solver, budget.window, 2, false)
-                    || (slim && mend(model, solver, budget.window, 4, true))
-                {
-                    reduce(model, solver, *budget);
-                    widen(model, solver, budget.window);
-                }
+            for v in thinned(&violations, APART * self.setting.sigma()) {
+                let sample = Sample::new(v.place, v.need, context);
+                self.model.add_sample(sample);
+                snapped.add_sample(sample);
             }
+            let before: Vec<Option<Flash>> = self.model.all().to_vec();
+            self.repair();
+            let moved: Vec<usize> = changed(&before, self.model.all());
+            let flashed: Vec<Option<Flash>> = snapped.all().to_vec();
+            // Out first, so that what comes finds the place free.
+            for &slot in &moved {
+                self.solver.set(&mut snapped, slot, None);
+            }
+            for &slot in &moved {
+                self.solver.set(&mut snapped, slot, self.model.get(slot));
+            }
+            snap(&mut snapped, &mut self.solver, address, &moved);
+            let reach = REACH * self.setting.sigma();
+            let boxes: Vec<[f64; 4]> = changed(&flashed, snapped.all())
+                .into_iter()
+                .flat_map(|slot| [flashed.get(slot).copied().flatten(), snapped.get(slot)])
+                .flatten()
+                .map(|f| f.grown(reach).side)
+                .collect();
+            let part = Boxes::only(boxes.clone(), self.setting.sigma());
+            violations.retain(|v| !part.holds(v.place));
+            violations.extend(check(target, &snapped, context, Some(&boxes)));
         }
         best.unwrap_or_else(|| unreachable!("at least one round was made"))
     }
+
+    /// Moves shots to where the rule holds at all samples; where that does not do, adds one or two and takes away what they make needless.
+    fn repair(&mut self) {
+        let Self {
+            model,
+            solver,
+            budget,
+            ..
+        } = self;
+        if relax(model, solver, budget.window.max(10)) {
+            return;
+        }
+        let before: Vec<Option<Flash>> = model.all().to_vec();
+        let most = 2 + model.flashes().count() / 32;
+        let slim = solver.rules.slim_side < solver.rules.least_side;
+        if mend(model, solver, budget.window, most, false)
+            || (slim && mend(model, solver, budget.window, most, true))
+        {
+            let moved = changed(&before, model.all());
+            reduce(model, solver, *budget, &moved);
+            widen(model, solver, budget.window);
+        }
+    }
+}
+
+/// The worst of the places where the rule is broken, none nearer to another than `apart` nm.
+fn thinned(violations: &[Violation], apart: f64) -> Vec<Violation> {
+    let mut worst = violations.to_vec();
+    // Those as bad as one another in the order found.
+    worst.sort_by(|a, b| {
+        (b.dose - THRESHOLD)
+            .abs()
+            .total_cmp(&(a.dose - THRESHOLD).abs())
+    });
+    let at = |p: [f64; 2]| Flash::new([p[0], p[1], p[0], p[1]]);
+    let Some(hull) = worst.iter().map(|v| at(v.place)).reduce(|a, b| a.hull(&b)) else {
+        return worst;
+    };
+    let mut taken = Bins::new(hull.side, 8.0 * apart);
+    let mut kept: Vec<Violation> = Vec::new();
+    for v in worst {
+        let [x, y] = v.place;
+        let clash = taken.items(at(v.place).grown(apart).side).any(|id| {
+            let [u, w] = kept[id as usize].place;
+            (u - x).powi(2) + (w - y).powi(2) < apart * apart
+        });
+        if !clash {
+            taken.insert(u32::try_from(kept.len()).unwrap_or(u32::MAX), v.place);
+            kept.push(v);
+        }
+    }
+    kept
+}
+
+/// Slots that do not hold the same shot in both lists, ascending.
+fn changed(before: &[Option<Flash>], after: &[Option<Flash>]) -> Vec<usize> {
+    (0..before.len().max(after.len()))
+        .filter(|&slot| before.get(slot).copied().flatten() != after.get(slot).copied().flatten())
+        .collect()
 }
 
 /// What a search asks of its shots; nm.

@@ -1,11 +1,12 @@
 //! Brings shots to the address grid, and checks the whole neighbourhood.
 
-use crate::blur::{PhiTable, THRESHOLD};
+use crate::blur::{REACH, THRESHOLD};
 use crate::shot::{AddressUnit, Shot, ShotLimits, ShotList};
-use crate::target::{Need, Target, Violation};
+use crate::target::{Mesh, Need, Target, Violation};
 use crate::units::{Dose, Nm};
 
-use super::model::{Field, Flash, Model};
+use super::field::{Boxes, Field};
+use super::model::{Flash, Model};
 use super::samples::ContextDose;
 use super::solve::Solver;
 
@@ -15,30 +16,47 @@ const SPARE: f64 = 0.001;
 
 /// Every place found where the shots break the rule, or keep it with no dose to spare.
 ///
-/// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared.
-pub(in crate::fracture) fn check(
+/// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared. Looks where dose of the
+/// shots comes and in the figure, or only in some boxes.
+pub(super) fn check(
     target: &Target,
     model: &Model,
     context: &ContextDose,
+    boxes: Option<&[[f64; 4]]>,
 ) -> Vec<Violation> {
-    let field = Field {
-        model,
-        context,
-        phi: PhiTable::get(),
-    };
-    let margin = 3.0 * model.sigma;
-    let look = |step: f64, lattice: f64, spare: f64| {
-        let mut found = target.violations(&field, step, model.sigma / lattice, margin, spare);
+    let field = Field::new(model, context);
+    let sigma = model.sigma;
+    let look = |part: &mut Boxes, step: f64, lattice: f64, spare: f64| {
+        let mesh = Mesh {
+            rim_step: step,
+            lattice_step: sigma / lattice,
+            margin: 3.0 * sigma,
+        };
+        let mut found = target.violations_in(part, &field, mesh, spare);
         found.retain(|v| v.need == Need::Print || !context.may_print(v.place));
         found
     };
-    let found = look(1.0, 4.0, SPARE);
-    let broken = |v: &Violation| (v.need == Need::Print) != (v.dose >= THRESHOLD);
-    if found.is_empty() || found.iter().any(broken) {
-        found
-    } else {
-        look(0.25, 8.0, SPARE / 16.0)
+    let mut part = match boxes {
+        Some(boxes) => Boxes::only(boxes.to_vec(), sigma),
+        None => Boxes::and_figure(
+            model
+                .flashes()
+                .map(|(_, f)| f.grown(REACH * sigma).side)
+                .collect(),
+        ),
+    };
+    let (mut broken, bare): (Vec<Violation>, Vec<Violation>) = look(&mut part, 1.0, 4.0, SPARE)
+        .into_iter()
+        .partition(|v| (v.need == Need::Print) != (v.dose >= THRESHOLD));
+    if !bare.is_empty() {
+        let about = |v: &Violation| {
+            let [x, y] = v.place;
+            Flash::new([x, y, x, y]).grown(0.5 * sigma).side
+        };
+        let mut part = Boxes::only(bare.iter().map(about).collect(), sigma);
+        broken.extend(look(&mut part, 0.25, 8.0, SPARE / 16.0));
     }
+    broken
 }
 
 /// Shots that the writer would refuse: sides outside the limits, or (tiles) on another shot.
@@ -56,11 +74,11 @@ pub(in crate::fracture) fn unfit(model: &Model, limits: &ShotLimits, disjoint: b
         .collect()
 }
 
-/// Moves every side to the address grid, then single sides by one address as long as that mends what the rounding broke.
-pub(in crate::fracture) fn snap(model: &mut Model, solver: &mut Solver, address: AddressUnit) {
+/// Moves every side of some shots (slots ascending) to the address grid, where those of all others are, then single sides by one
+/// address as long as that mends what the rounding broke.
+pub(super) fn snap(model: &mut Model, solver: &mut Solver, address: AddressUnit, slots: &[usize]) {
     let unit = address.nm().0;
-    let slots: Vec<usize> = model.flashes().map(|(s, _)| s).collect();
-    for &slot in &slots {
+    for &slot in slots {
         let Some(flash) = model.get(slot) else {
             continue;
         };
@@ -68,18 +86,15 @@ pub(in crate::fracture) fn snap(model: &mut Model, solver: &mut Solver, address:
         snapped.side = flash
             .side
             .map(|v| address.coordinate(address.nearest(Nm(v))).0);
-        keep_apart(model, solver, slot, &mut snapped, unit);
+        keep_apart(model, solver, slot, slots, &mut snapped, unit);
         if snapped != flash {
-            replace(model, solver, slot, snapped);
+            solver.set(model, slot, Some(snapped));
         }
     }
     // Each improving move lowers the cost; a few rounds do, since the guard covers most of the rounding.
     for _ in 0..4 {
-        if model.worst() <= 0.0 {
-            return;
-        }
         let mut better = false;
-        for &slot in &slots {
+        for slot in near_broken(model) {
             better |= nudge(model, solver, slot, unit);
         }
         if !better {
@@ -88,8 +103,32 @@ pub(in crate::fracture) fn snap(model: &mut Model, solver: &mut Solver, address:
     }
 }
 
-/// Shrinks a freshly rounded tile by the addresses by which it overlaps one already rounded or yet to be.
-fn keep_apart(model: &Model, solver: &Solver, slot: usize, tile: &mut Flash, unit: f64) {
+/// Slots of the shots whose sides tell at a sample where the rule is broken, ascending.
+fn near_broken(model: &Model) -> Vec<usize> {
+    let mut slots = Vec::new();
+    for (sample, &dose) in model.samples().iter().zip(model.doses()) {
+        if sample.sign * (dose - 0.5) < 0.0 {
+            let [x, y] = sample.place;
+            let here = Flash::new([x, y, x, y]).grown(3.0 * model.sigma);
+            let near = model.near(here.side).into_iter();
+            slots.extend(near.filter(|&s| model.get(s).is_some_and(|f| f.gap(&here) < 0.0)));
+        }
+    }
+    slots.sort_unstable();
+    slots.dedup();
+    slots
+}
+
+/// Shrinks a freshly rounded tile by the addresses by which it overlaps one already rounded; those of `pending` (ascending) after it
+/// are not.
+fn keep_apart(
+    model: &Model,
+    solver: &Solver,
+    slot: usize,
+    pending: &[usize],
+    tile: &mut Flash,
+    unit: f64,
+) {
     if !solver.rules.disjoint {
         return;
     }
@@ -98,8 +137,9 @@ fn keep_apart(model: &Model, solver: &Solver, slot: usize, tile: &mut Flash, uni
             continue;
         };
         // What is yet to be rounded may come one unit nearer; it will then give way itself.
+        let rounded = other < slot || pending.binary_search(&other).is_err();
         let axis = usize::from(tile.gap_along(&g, 1) > tile.gap_along(&g, 0));
-        if tile.gap(&g) < 0.0 && other < slot && tile.gap(&g) > -3.0 * unit {
+        if tile.gap(&g) < 0.0 && rounded && tile.gap(&g) > -3.0 * unit {
             if tile.side[axis] < g.side[axis] {
                 tile.side[axis + 2] = g.side[axis];
             } else {
@@ -145,14 +185,9 @@ fn nudge(model: &mut Model, solver: &mut Solver, slot: usize, unit: f64) -> bool
     }
     let moved = best.1 != flash;
     if moved {
-        replace(model, solver, slot, best.1);
+        solver.set(model, slot, Some(best.1));
     }
     moved
-}
-
-fn replace(model: &mut Model, solver: &mut Solver, slot: usize, flash: Flash) {
-    solver.score(model, &[slot], &[flash]);
-    solver.commit(model, &[slot], &[flash]);
 }
 
 /// The shots of a model whose sides lie on the address grid.

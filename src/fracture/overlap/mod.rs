@@ -28,6 +28,14 @@ const INSETS: [f64; 2] = [0.3, 0.6];
 /// Shots in a first cover from which a figure counts as long.
 const LONG: usize = 40;
 
+/// How tiles are searched for that a long figure starts from.
+const TILES: Budget = Budget {
+    window: 8,
+    apart: 0.5,
+    steps: 20,
+    hopeless: 0.5,
+};
+
 impl Fracturer for Overlap {
     fn name(&self) -> &'static str {
         "overlap"
@@ -80,11 +88,11 @@ impl Overlap {
             .iter()
             .map(|candidates| cover(candidates, &setting.samples, setting.sigma()))
             .collect();
-        // Where one shot's width is all that a figure has, a cover needs as many as a cut, and the cut is the better start.
-        if starts[0].len() > LONG {
-            let cut = slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len);
+        // Where one shot's width is all that a figure has, a cover needs as many as a cut, and tiles are the better start.
+        let long = starts[0].len() > LONG;
+        let cut = slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len);
+        if long {
             starts.truncate(1);
-            starts.extend(cut);
         }
         let stages = setting.least_sides().map(|least| Stage {
             start: 0.0,
@@ -92,9 +100,16 @@ impl Overlap {
             mend: true,
         });
         let mut fracture = setting.staged(&stages, |stage| {
+            let tiles = cut.iter().filter(|_| long).map(|cut| {
+                let mut tiles = setting.attempt(cut, true, [stage.least; 2], TILES);
+                tiles.reduce();
+                tiles.flashes()
+            });
             let attempts = starts
                 .iter()
-                .map(|start| setting.attempt(start, false, [stage.least; 2], budget));
+                .cloned()
+                .chain(tiles)
+                .map(|start| setting.attempt(&start, false, [stage.least; 2], budget));
             best_of(attempts.collect(), stage.mend)
         });
         fracture.lower_bound = self.bound.then(|| {

@@ -1,29 +1,28 @@
 //! GDSII elements: everything between an element's first record and its ENDEL.
 
-use super::super::error::{Fault, Parsed, Remarks};
+use super::super::error::{Fault, OPEN, Parsed, Remarks};
 use super::super::hierarchy::Interner;
 use super::super::path::{self, End};
-use super::super::{CellId, Layer, Placement, Shape};
+use super::super::{CellId, Layer, Placement, Shapes};
 use super::record::{Record, Records, tag};
 use crate::geom::{Point, Repetition};
 
-/// Places that arrays with a pitch off the grid may take in one stretch of file: they have to be listed one by one.
-const MAX_OFF_GRID_PLACES: u64 = 1 << 22;
+/// Columns and rows that arrays with a pitch off the grid may take in one stretch of file: they have to be listed one by one.
+const MAX_OFF_GRID: u64 = 1 << 22;
 
 /// What an element reader collects besides shapes and placements.
 #[derive(Debug, Default)]
 pub(super) struct Context {
     pub(super) remarks: Remarks,
     pub(super) names: Interner<Vec<u8>>,
-    off_grid_places: u64,
+    off_grid: u64,
 }
 
-/// One element.
-pub(super) enum Element {
-    Shape(Shape),
-    Placement(Placement),
-    /// Not geometry, or nothing left of it.
-    Nothing,
+/// Where elements go.
+#[derive(Debug, Default)]
+pub(super) struct Contents {
+    pub(super) shapes: Shapes,
+    pub(super) placements: Vec<Placement>,
 }
 
 /// The records an element may hold, as found.
@@ -46,12 +45,12 @@ struct Fields<'a> {
 
 impl<'a> Fields<'a> {
     #[inline]
-    fn read(records: &mut Records<'a>, outline: bool) -> Parsed<Self> {
+    fn read(records: &mut Records<'a>) -> Parsed<Self> {
         let mut f = Self::default();
         loop {
             let record = records.expect("ENDEL")?;
             match record.tag {
-                tag::XY => record.xy(&mut f.points, outline)?,
+                tag::XY => record.xy(&mut f.points)?,
                 tag::LAYER => f.layer = Some(record.u16()?),
                 tag::DATATYPE | tag::BOXTYPE | tag::TEXTTYPE | tag::NODETYPE => {
                     f.datatype = Some(record.u16()?);
@@ -102,53 +101,61 @@ pub(super) fn read<'a>(
     first: &Record<'a>,
     records: &mut Records<'a>,
     context: &mut Context,
-) -> Parsed<Element> {
+    contents: &mut Contents,
+) -> Parsed<()> {
     match first.tag {
         tag::BOUNDARY | tag::BOX => {
-            let fields = Fields::read(records, true)?;
+            let fields = Fields::read(records)?;
             let kind = if first.tag == tag::BOX {
                 "BOXTYPE"
             } else {
                 "DATATYPE"
             };
             let layer = fields.layer(first, kind)?;
-            Ok(boundary(layer, fields.points, context))
+            boundary(layer, &fields.points, context, &mut contents.shapes);
+            Ok(())
         }
         tag::PATH => {
-            let fields = Fields::read(records, false)?;
+            let fields = Fields::read(records)?;
             let layer = fields.layer(first, "DATATYPE")?;
-            path(first, layer, &fields, context)
+            path(first, layer, &fields, context, &mut contents.shapes)
         }
-        tag::SREF | tag::AREF => placement(first, &Fields::read(records, false)?, context),
+        tag::SREF | tag::AREF => {
+            let placed = placement(first, &Fields::read(records)?, context)?;
+            contents.placements.push(placed);
+            Ok(())
+        }
         tag::TEXT | tag::NODE => {
-            Fields::read(records, false)?;
+            Fields::read(records)?;
             context.remarks.add(if first.tag == tag::TEXT {
                 "text skipped"
             } else {
                 "node skipped"
             });
-            Ok(Element::Nothing)
+            Ok(())
         }
         _ => Err(first.unexpected("BOUNDARY, PATH, SREF, AREF, TEXT, NODE, BOX or ENDSTR")),
     }
 }
 
-fn boundary(layer: Layer, mut points: Vec<Point>, context: &mut Context) -> Element {
+fn boundary(layer: Layer, mut points: &[Point], context: &mut Context, shapes: &mut Shapes) {
     // Continued in further XY records, the outline closes at the end of the last.
-    while points.len() > 1 && points.first() == points.last() {
-        points.pop();
+    let all = points.len();
+    while let [first, open @ .., last] = points
+        && first == last
+    {
+        points = &points[..=open.len()];
     }
     if points.len() < 3 {
         context
             .remarks
             .add("outline of fewer than three points skipped");
-        return Element::Nothing;
+        return;
     }
-    Element::Shape(Shape {
-        layer,
-        points,
-        repetition: Repetition::Once,
-    })
+    if points.len() == all {
+        context.remarks.add(OPEN);
+    }
+    shapes.add(layer, points, Point::default(), Repetition::Once);
 }
 
 fn path(
@@ -156,7 +163,8 @@ fn path(
     layer: Layer,
     fields: &Fields<'_>,
     context: &mut Context,
-) -> Parsed<Element> {
+    shapes: &mut Shapes,
+) -> Parsed<()> {
     if fields.points.is_empty() {
         return Err(Fault::new(
             first.place(),
@@ -185,16 +193,13 @@ fn path(
     };
     let Some(points) = path::widen(&fields.points, half_width, start, end) else {
         context.remarks.add("path that covers nothing skipped");
-        return Ok(Element::Nothing);
+        return Ok(());
     };
-    Ok(Element::Shape(Shape {
-        layer,
-        points,
-        repetition: Repetition::Once,
-    }))
+    shapes.add(layer, &points, Point::default(), Repetition::Once);
+    Ok(())
 }
 
-fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> Parsed<Element> {
+fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> Parsed<Placement> {
     let name = fields.name.ok_or_else(|| {
         Fault::new(
             first.place(),
@@ -218,11 +223,12 @@ fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> 
         let along = fields.points[1] - origin;
         let up = fields.points[2] - origin;
         array(columns, rows, along, up, context).ok_or_else(|| {
-            let found = format!("{columns} × {rows} places at a pitch of a fraction of a unit");
+            let found =
+                format!("one more array of {columns} × {rows} places at a pitch off the grid");
             Fault::new(
                 first.place(),
                 found,
-                format!("at most {MAX_OFF_GRID_PLACES} of them"),
+                format!("at most {MAX_OFF_GRID} columns and rows of such in 2 MiB"),
             )
         })?
     } else {
@@ -233,17 +239,18 @@ fn placement(first: &Record<'_>, fields: &Fields<'_>, context: &mut Context) -> 
             .remarks
             .add("placement with absolute magnification or angle: taken as relative");
     }
-    Ok(Element::Placement(Placement {
+    Ok(Placement {
         cell: CellId(context.names.number(name)),
         origin,
         mirror: fields.mirror,
         angle_deg,
         magnification: fields.magnification.unwrap_or(1.0),
         repetition,
-    }))
+    })
 }
 
-/// An array from its total spans. A turned array seldom has a pitch of whole units: its places are then listed, each rounded on its own.
+/// An array from its total spans. A turned array seldom has a pitch of whole units: its columns and its rows are then listed, each rounded on
+/// its own, so that a place is the sum of two roundings whatever its neighbours.
 fn array(
     columns: u64,
     rows: u64,
@@ -261,20 +268,20 @@ fn array(
             b: Point::new(up.x / m, up.y / m),
         });
     }
-    context.off_grid_places += columns * rows;
-    if context.off_grid_places > MAX_OFF_GRID_PLACES {
+    context.off_grid += columns + rows;
+    if context.off_grid > MAX_OFF_GRID {
         return None;
     }
     let part = |span: i64, i: i64, of: i64| (2 * span * i + of).div_euclid(2 * of);
-    let places = (0..m).flat_map(|j| {
-        (0..n).map(move |i| {
-            Point::new(
-                part(along.x, i, n) + part(up.x, j, m),
-                part(along.y, i, n) + part(up.y, j, m),
-            )
-        })
-    });
-    Some(Repetition::List(places.collect()))
+    let list = |span: Point, count: i64| match count {
+        1 => Repetition::Once,
+        _ => Repetition::List(
+            (0..count)
+                .map(|i| Point::new(part(span.x, i, count), part(span.y, i, count)))
+                .collect(),
+        ),
+    };
+    Some(Repetition::nested(vec![list(along, n), list(up, m)]))
 }
 
 fn positive(record: &Record<'_>) -> Parsed<f64> {

@@ -10,16 +10,18 @@
 
 mod element;
 mod record;
+mod write;
 
 use std::io::{self, Read};
 
 use rayon::prelude::*;
 
-use self::element::{Context, Element};
+use self::element::{Contents, Context};
 use self::record::{Records, tag};
+pub(super) use self::write::write;
 use super::error::{Fault, Parsed, Place, Remarks};
 use super::hierarchy::{Interner, RawCell, link};
-use super::{CellId, Layout, LayoutError, Placement, Shape, unit_from_nm};
+use super::{CellId, Layer, Layout, LayoutError, unit_from_nm};
 use crate::units::Nm;
 
 /// First bytes of every file: a HEADER record of six bytes.
@@ -54,7 +56,8 @@ pub(super) fn read(source: impl Read + Send, file: &str) -> Result<Layout, Layou
         if library.ended {
             break;
         }
-        group = next.map_err(unreadable)?;
+        let read = std::mem::replace(&mut group, next.map_err(unreadable)?);
+        stretches.take_back(read);
     }
     if !library.ended {
         let end = Place::Byte(stretches.base);
@@ -64,6 +67,7 @@ pub(super) fn read(source: impl Read + Send, file: &str) -> Result<Layout, Layou
     Ok(Layout {
         unit,
         cells,
+        open_outlines: library.remarks.open_outlines(),
         notes: library.remarks.sentences(),
     })
 }
@@ -82,6 +86,8 @@ struct Stretches<R> {
     /// Offset of `tail` in the file.
     base: u64,
     ended: bool,
+    /// Memory of stretches that are done with.
+    spare: Vec<Vec<u8>>,
 }
 
 impl<R: Read> Stretches<R> {
@@ -91,7 +97,13 @@ impl<R: Read> Stretches<R> {
             tail: Vec::new(),
             base: 0,
             ended: false,
+            spare: Vec::new(),
         }
+    }
+
+    fn take_back(&mut self, read: Vec<Stretch>) {
+        self.spare
+            .extend(read.into_iter().map(|stretch| stretch.bytes));
     }
 
     fn next_group(&mut self, size: usize) -> io::Result<Vec<Stretch>> {
@@ -106,7 +118,9 @@ impl<R: Read> Stretches<R> {
     }
 
     fn next(&mut self) -> io::Result<Option<Stretch>> {
-        let mut bytes = std::mem::take(&mut self.tail);
+        let mut bytes = self.spare.pop().unwrap_or_default();
+        bytes.clear();
+        bytes.append(&mut self.tail);
         let mut cut = 0;
         while cut == 0 && !self.ended {
             let wanted = STRETCH.max(bytes.len());
@@ -121,7 +135,8 @@ impl<R: Read> Stretches<R> {
         if self.ended {
             cut = bytes.len();
         }
-        self.tail = bytes.split_off(cut);
+        self.tail.extend_from_slice(&bytes[cut..]);
+        bytes.truncate(cut);
         let base = self.base;
         self.base += cut as u64;
         Ok((cut > 0).then_some(Stretch { bytes, base }))
@@ -197,8 +212,7 @@ struct Run {
     place: Place,
     /// Name of the cell that starts with this run.
     starts: Option<Vec<u8>>,
-    shapes: Vec<Shape>,
-    placements: Vec<Placement>,
+    contents: Contents,
     /// The cell ends with this run.
     ends: bool,
 }
@@ -208,8 +222,7 @@ impl Run {
         Self {
             place,
             starts: None,
-            shapes: Vec::new(),
-            placements: Vec::new(),
+            contents: Contents::default(),
             ends: false,
         }
     }
@@ -221,7 +234,19 @@ fn parse(stretch: &Stretch) -> Parsed<Part> {
     let mut runs = Vec::new();
     let mut open: Option<Run> = None;
     let mut ended = None;
-    while let Some(record) = records.next()? {
+    loop {
+        if let Some(run) = &mut open {
+            while let Some(plain) = records.plain_boundary() {
+                let layer = Layer {
+                    layer: plain.layer.into(),
+                    datatype: plain.datatype.into(),
+                };
+                run.contents.shapes.add_narrow(layer, plain.points());
+            }
+        }
+        let Some(record) = records.next()? else {
+            break;
+        };
         match record.tag {
             tag::BGNSTR => {
                 let name = records.expect("STRNAME")?;
@@ -248,15 +273,14 @@ fn parse(stretch: &Stretch) -> Parsed<Part> {
             }
             _ => {
                 let run = open.get_or_insert_with(|| Run::new(record.place()));
-                match element::read(&record, &mut records, &mut context)? {
-                    Element::Shape(shape) => run.shapes.push(shape),
-                    Element::Placement(placement) => run.placements.push(placement),
-                    Element::Nothing => {}
-                }
+                element::read(&record, &mut records, &mut context, &mut run.contents)?;
             }
         }
     }
     runs.extend(open);
+    for run in &mut runs {
+        run.contents.shapes.shrink();
+    }
     Ok(Part {
         runs,
         names: context.names.into_keys(),
@@ -301,11 +325,11 @@ impl Library {
                     return Err(Fault::new(run.place, found, "BGNSTR first"));
                 }
             };
-            for placement in &mut run.placements {
+            for placement in &mut run.contents.placements {
                 placement.cell = CellId(numbers[placement.cell.0]);
             }
-            append(&mut cell.shapes, run.shapes);
-            append(&mut cell.placements, run.placements);
+            cell.shapes.append(run.contents.shapes);
+            cell.placements.append(&mut run.contents.placements);
             self.open = !run.ends;
         }
         if let (Some(place), true) = (part.ended, self.open) {
@@ -314,14 +338,5 @@ impl Library {
         self.ended = part.ended.is_some();
         self.remarks.merge(part.remarks);
         Ok(())
-    }
-}
-
-/// Moves instead of copying where it can.
-fn append<T>(to: &mut Vec<T>, mut from: Vec<T>) {
-    if to.is_empty() {
-        *to = from;
-    } else {
-        to.append(&mut from);
     }
 }

@@ -1,5 +1,6 @@
 //! GDSII records: a length, a type, a data type and the data, all big-endian.
 
+use super::super::MAX_OUTLINE;
 use super::super::error::{Fault, Parsed, Place};
 use crate::geom::Point;
 
@@ -123,18 +124,18 @@ impl<'a> Record<'a> {
         Ok(&self.data[..end])
     }
 
-    /// Adds the points of an XY record; the first of an outline leaves out a last point that repeats the first.
+    /// Adds the points of an XY record.
     #[inline]
-    pub(super) fn xy(&self, points: &mut Vec<Point>, outline: bool) -> Parsed<()> {
+    pub(super) fn xy(&self, points: &mut Vec<Point>) -> Parsed<()> {
         if !self.data.len().is_multiple_of(8) || self.data.is_empty() {
             let found = format!("XY with {} data bytes", self.data.len());
             return Err(Fault::new(self.place(), found, "a multiple of 8, not 0"));
         }
-        let n = self.data.len();
-        let closed = outline && points.is_empty() && n > 8 && self.data[..8] == self.data[n - 8..];
-        let data = &self.data[..if closed { n - 8 } else { n }];
-        points.reserve_exact(data.len() / 8);
-        points.extend(data.chunks_exact(8).map(|c| {
+        if points.len() + self.data.len() / 8 > MAX_OUTLINE {
+            let found = format!("an outline of more than {MAX_OUTLINE} points");
+            return Err(Fault::new(self.place(), found, "fewer"));
+        }
+        points.extend(self.data.chunks_exact(8).map(|c| {
             Point::new(
                 i64::from(i32::from_be_bytes([c[0], c[1], c[2], c[3]])),
                 i64::from(i32::from_be_bytes([c[4], c[5], c[6], c[7]])),
@@ -155,6 +156,27 @@ pub(super) fn real(bytes: [u8; 8]) -> f64 {
     let mantissa = (bits & ((1 << 56) - 1)) as f64;
     let value = mantissa * 2f64.powi(4 * exponent - 56);
     if bytes[0] & 0x80 != 0 { -value } else { value }
+}
+
+/// A BOUNDARY of LAYER, DATATYPE, one XY of a closed outline and ENDEL, in this order.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct PlainBoundary<'a> {
+    pub(super) layer: u16,
+    pub(super) datatype: u16,
+    /// At least three, the first not repeated.
+    points: &'a [[u8; 8]],
+}
+
+impl<'a> PlainBoundary<'a> {
+    #[inline]
+    pub(super) fn points(&self) -> impl ExactSizeIterator<Item = [i32; 2]> + use<'a> {
+        self.points.iter().map(|&[a, b, c, d, e, f, g, h]| {
+            [
+                i32::from_be_bytes([a, b, c, d]),
+                i32::from_be_bytes([e, f, g, h]),
+            ]
+        })
+    }
 }
 
 /// Walks the records of a stretch of file.
@@ -182,6 +204,56 @@ impl<'a> Records<'a> {
 
     pub(super) fn place(&self) -> Place {
         Place::Byte(self.base + self.at as u64)
+    }
+
+    /// The usual boundary at a glance; `None` for whatever must be read record by record.
+    #[inline]
+    pub(super) fn plain_boundary(&mut self) -> Option<PlainBoundary<'a>> {
+        const ENDEL: [u8; 4] = [0, 4, 0x11, 0];
+        let rest = self.rest();
+        let head = rest.first_chunk::<20>()?;
+        let [
+            0,
+            4,
+            8,
+            0,
+            0,
+            6,
+            0x0D,
+            2,
+            l0,
+            l1,
+            0,
+            6,
+            0x0E,
+            2,
+            d0,
+            d1,
+            n0,
+            n1,
+            0x10,
+            3,
+        ] = *head
+        else {
+            return None;
+        };
+        let end = 16 + usize::from(u16::from_be_bytes([n0, n1]));
+        let points = rest.get(20..end)?;
+        let (points, odd) = points.as_chunks::<8>();
+        let (last, open) = points.split_last()?;
+        let is_plain = odd.is_empty()
+            && open.len() >= 3
+            && open[0] == *last
+            && open[open.len() - 1] != *last
+            && rest.get(end..end + 4) == Some(&ENDEL);
+        is_plain.then(|| {
+            self.at += end + 4;
+            PlainBoundary {
+                layer: u16::from_be_bytes([l0, l1]),
+                datatype: u16::from_be_bytes([d0, d1]),
+                points: open,
+            }
+        })
     }
 
     /// The next record; `None` at the end of the bytes.

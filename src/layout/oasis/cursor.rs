@@ -97,6 +97,27 @@ impl<'a> Cursor<'a> {
     /// Seven bits a byte, least first.
     #[inline]
     pub(super) fn unsigned(&mut self) -> Parsed<u64> {
+        if let Some(&eight) = self.bytes[self.at..].first_chunk::<8>() {
+            if eight[0] < 0x80 {
+                self.at += 1;
+                return Ok(u64::from(eight[0]));
+            }
+            if eight[1] < 0x80 {
+                self.at += 2;
+                return Ok(u64::from(eight[0] & 0x7F) | u64::from(eight[1]) << 7);
+            }
+            // Longer ones without a branch for each byte, which would be guessed wrong as often as lengths change.
+            let eight = u64::from_le_bytes(eight);
+            let ends = !eight & 0x8080_8080_8080_8080;
+            if ends != 0 {
+                self.at += ends.trailing_zeros() as usize / 8 + 1;
+                // All bits up to the last byte's, each byte's highest left out.
+                let v = eight & (ends ^ (ends - 1)) & 0x7F7F_7F7F_7F7F_7F7F;
+                let v = v & 0x007F_007F_007F_007F | (v & 0x7F00_7F00_7F00_7F00) >> 1;
+                let v = v & 0x0000_3FFF_0000_3FFF | (v & 0x3FFF_0000_3FFF_0000) >> 2;
+                return Ok(v & 0x0FFF_FFFF | (v & 0x0FFF_FFFF_0000_0000) >> 4);
+            }
+        }
         let first = self.byte()?;
         if first < 0x80 {
             return Ok(u64::from(first));
@@ -104,6 +125,7 @@ impl<'a> Cursor<'a> {
         self.long_unsigned(first)
     }
 
+    #[cold]
     fn long_unsigned(&mut self, first: u8) -> Parsed<u64> {
         let from = self.at - 1;
         let mut value = u64::from(first & 0x7F);
@@ -130,7 +152,7 @@ impl<'a> Cursor<'a> {
         let from = self.at;
         let value = self.unsigned()?;
         let size = self.length(from, value >> 1)?;
-        Ok(if value & 1 == 1 { -size } else { size })
+        Ok(with_sign(size, value & 1 == 1))
     }
 
     /// A length or coordinate that is not negative.
@@ -145,8 +167,18 @@ impl<'a> Cursor<'a> {
     fn length(&self, from: usize, value: u64) -> Parsed<i64> {
         match i64::try_from(value) {
             Ok(v) if v <= MAX_COORDINATE => Ok(v),
-            _ => Err(self.fault(from, format!("a length of {value}"), "at most 2^52 units")),
+            _ => Err(self.too_long(from, value)),
         }
+    }
+
+    #[cold]
+    fn too_long(&self, from: usize, value: u64) -> Box<Fault> {
+        self.fault(from, format!("a length of {value}"), "at most 2^52 units")
+    }
+
+    #[cold]
+    fn too_far(&self) -> Box<Fault> {
+        self.fault(self.at, "a coordinate beyond 2^52 units", "a smaller one")
     }
 
     /// A 32-bit number: layer, datatype.
@@ -210,6 +242,7 @@ impl<'a> Cursor<'a> {
     }
 
     /// Direction in the two lowest bits: east, north, west, south.
+    #[inline]
     pub(super) fn delta2(&mut self) -> Parsed<Point> {
         let from = self.at;
         let value = self.unsigned()?;
@@ -218,6 +251,7 @@ impl<'a> Cursor<'a> {
     }
 
     /// Direction in the three lowest bits: the four of [`Cursor::delta2`], then north-east and on.
+    #[inline]
     pub(super) fn delta3(&mut self) -> Parsed<Point> {
         let from = self.at;
         let value = self.unsigned()?;
@@ -226,6 +260,7 @@ impl<'a> Cursor<'a> {
     }
 
     /// Either a 3-delta behind a 0 bit, or x and y of their own.
+    #[inline]
     pub(super) fn delta(&mut self) -> Parsed<Point> {
         let from = self.at;
         let value = self.unsigned()?;
@@ -234,7 +269,7 @@ impl<'a> Cursor<'a> {
             return Ok(compass(value >> 1 & 7, size));
         }
         let size = self.length(from, value >> 2)?;
-        let x = if value & 2 == 2 { -size } else { size };
+        let x = with_sign(size, value & 2 == 2);
         Ok(Point::new(x, self.signed()?))
     }
 
@@ -243,7 +278,7 @@ impl<'a> Cursor<'a> {
     pub(super) fn sum(&self, a: Point, b: Point) -> Parsed<Point> {
         match (coordinate(a.x + b.x), coordinate(a.y + b.y)) {
             (Some(x), Some(y)) => Ok(Point::new(x, y)),
-            _ => Err(self.fault(self.at, "a coordinate beyond 2^52 units", "a smaller one")),
+            _ => Err(self.too_far()),
         }
     }
 
@@ -252,7 +287,7 @@ impl<'a> Cursor<'a> {
         length
             .checked_mul(factor)
             .and_then(coordinate)
-            .ok_or_else(|| self.fault(self.at, "a coordinate beyond 2^52 units", "a smaller one"))
+            .ok_or_else(|| self.too_far())
     }
 
     /// A count of things that take at least one byte each, and so a safe capacity.
@@ -266,17 +301,26 @@ impl<'a> Cursor<'a> {
     }
 }
 
+/// Without a branch: signs of coordinates are as good as random.
+#[inline]
+fn with_sign(size: i64, negative: bool) -> i64 {
+    let mask = -i64::from(negative);
+    (size ^ mask) - mask
+}
+
+#[inline]
 fn compass(direction: u64, size: i64) -> Point {
-    let (x, y) = match direction {
-        0 => (1, 0),
-        1 => (0, 1),
-        2 => (-1, 0),
-        3 => (0, -1),
-        4 => (1, 1),
-        5 => (-1, 1),
-        6 => (-1, -1),
-        _ => (1, -1),
-    };
+    const UNIT: [(i64, i64); 8] = [
+        (1, 0),
+        (0, 1),
+        (-1, 0),
+        (0, -1),
+        (1, 1),
+        (-1, 1),
+        (-1, -1),
+        (1, -1),
+    ];
+    let (x, y) = UNIT[(direction & 7) as usize];
     Point::new(x * size, y * size)
 }
 
@@ -353,6 +397,27 @@ mod tests {
         );
         let last = cursor(&[0xBB, 0x01, 0xB7, 0x0F]).delta().ok();
         assert_eq!(last, Some(Point::new(-46, -987)));
+    }
+
+    #[test]
+    fn integers_of_every_length_read_alike_at_the_end_and_within() {
+        for bits in 0..64 {
+            let mut bytes = Vec::new();
+            let value = u64::MAX >> bits & 0xA5A5_5A5A_F00F_1234;
+            let mut rest = value;
+            while rest > 0x7F {
+                bytes.push(0x80 | (rest & 0x7F) as u8);
+                rest >>= 7;
+            }
+            bytes.push(rest as u8);
+            let length = bytes.len();
+            for more in [0, 1, 9] {
+                bytes.resize(length + more, 0xFF);
+                let mut cursor = cursor(&bytes);
+                assert_eq!(cursor.unsigned().ok(), Some(value));
+                assert_eq!(cursor.at(), length);
+            }
+        }
     }
 
     #[test]

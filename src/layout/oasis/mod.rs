@@ -11,6 +11,7 @@ mod modal;
 mod records;
 mod repetition;
 mod trapezoid;
+mod write;
 
 use std::collections::HashMap;
 
@@ -19,6 +20,7 @@ use rayon::prelude::*;
 use self::budget::Budget;
 use self::cursor::Cursor;
 use self::records::{CellKey, Part, Reader, block_contents, id};
+pub(super) use self::write::write;
 use super::error::{Fault, Parsed, Place, Remarks};
 use super::hierarchy::{RawCell, link};
 use super::{CellId, Layout, LayoutError, UNIT_RANGE, unit_from_nm};
@@ -36,6 +38,8 @@ pub(super) fn read(bytes: &[u8], file: &str) -> Result<Layout, LayoutError> {
     Ok(Layout {
         unit: raw.unit,
         cells: link(raw.cells, &raw.targets, file)?,
+        // The format closes them all.
+        open_outlines: 0,
         notes: raw.remarks.sentences(),
     })
 }

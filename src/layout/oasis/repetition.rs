@@ -1,5 +1,6 @@
 //! Repetitions and point lists (SEMI P39-0304E2, sections 7.6 and 7.7).
 
+use super::super::MAX_OUTLINE;
 use super::super::error::Parsed;
 use super::budget::Budget;
 use super::cursor::Cursor;
@@ -111,8 +112,12 @@ pub(super) fn points(cur: &mut Cursor<'_>, outline: bool, places: &mut Vec<Point
     let from = cur.at();
     let kind = cur.unsigned()?;
     let n = cur.count(0)?;
+    if n > MAX_OUTLINE {
+        let found = format!("an outline of {n} points");
+        return Err(cur.fault(from, found, format!("at most {MAX_OUTLINE}")));
+    }
     places.clear();
-    places.reserve_exact(n + 2);
+    places.reserve(n + 2);
     let mut place = Point::default();
     places.push(place);
     match kind {

@@ -54,12 +54,12 @@ pub(super) struct Reader<'b> {
 }
 
 /// Bits of the info byte that shapes share.
-mod info {
-    pub(super) const LAYER: u8 = 0x01;
-    pub(super) const DATATYPE: u8 = 0x02;
-    pub(super) const REPETITION: u8 = 0x04;
-    pub(super) const Y: u8 = 0x08;
-    pub(super) const X: u8 = 0x10;
+pub(super) mod info {
+    pub(crate) const LAYER: u8 = 0x01;
+    pub(crate) const DATATYPE: u8 = 0x02;
+    pub(crate) const REPETITION: u8 = 0x04;
+    pub(crate) const Y: u8 = 0x08;
+    pub(crate) const X: u8 = 0x10;
 }
 
 impl<'b> Reader<'b> {
@@ -153,6 +153,9 @@ impl<'b> Reader<'b> {
     }
 
     fn close_cell(&mut self) {
+        if let Some((_, cell)) = self.part.cells.last_mut().filter(|_| self.in_cell) {
+            cell.shapes.shrink();
+        }
         self.modal = Modal::default();
         self.in_cell = false;
     }

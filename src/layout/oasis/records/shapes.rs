@@ -1,8 +1,8 @@
 //! The records that draw: RECTANGLE, POLYGON, PATH, TRAPEZOID, CTRAPEZOID, CIRCLE, XGEOMETRY.
 
+use super::super::super::Layer;
 use super::super::super::error::Parsed;
 use super::super::super::path::{self, End};
-use super::super::super::{Layer, Shape};
 use super::super::cursor::Cursor;
 use super::super::repetition::points;
 use super::super::trapezoid::{Given, compact, given, trapezoid};
@@ -28,15 +28,8 @@ impl Reader<'_> {
         }
         let (w, h) = self.size(at, cur)?;
         let (low, repetition) = self.place_and_repetition(flags, cur)?;
-        let high = cur.sum(low, Point::new(w, h))?;
-        let points = vec![
-            low,
-            Point::new(high.x, low.y),
-            high,
-            Point::new(low.x, high.y),
-        ];
-        self.push(layer, points, repetition);
-        Ok(())
+        let points = [(0, 0), (w, 0), (w, h), (0, h)].map(|(x, y)| Point::new(x, y));
+        self.push(layer, &points, low, repetition, cur)
     }
 
     pub(super) fn polygon(&mut self, cur: &mut Cursor<'_>) -> Parsed<()> {
@@ -45,6 +38,12 @@ impl Reader<'_> {
         let layer = self.layer(flags, at, cur)?;
         if flags & 0x20 != 0 {
             points(cur, true, &mut self.modal.outline)?;
+            // An outline that comes back to its first point is closed by that.
+            while let [first, .., last] = self.modal.outline[..]
+                && first == last
+            {
+                self.modal.outline.pop();
+            }
         } else {
             self.budget.copy(self.modal.outline.len(), cur)?;
         }
@@ -52,12 +51,10 @@ impl Reader<'_> {
         if self.modal.outline.is_empty() {
             return Err(undefined(cur, at, "the point list"));
         }
-        let mut ring = shifted(&self.modal.outline, origin, cur)?;
-        while ring.len() > 1 && ring.first() == ring.last() {
-            ring.pop();
-        }
-        self.push(layer, ring, repetition);
-        Ok(())
+        let outline = std::mem::take(&mut self.modal.outline);
+        let pushed = self.push(layer, &outline, origin, repetition, cur);
+        self.modal.outline = outline;
+        pushed
     }
 
     pub(super) fn path(&mut self, cur: &mut Cursor<'_>) -> Parsed<()> {
@@ -102,10 +99,12 @@ impl Reader<'_> {
         let line = shifted(&self.modal.centre_line, origin, cur)?;
         let end_at = |extension| End::Square(to_f64(extension));
         match path::widen(&line, to_f64(half_width), end_at(start), end_at(end)) {
-            Some(ring) => self.push(layer, ring, repetition),
-            None => self.part.remarks.add("path that covers nothing skipped"),
+            Some(ring) => self.push(layer, &ring, Point::default(), repetition, cur),
+            None => {
+                self.part.remarks.add("path that covers nothing skipped");
+                Ok(())
+            }
         }
-        Ok(())
     }
 
     /// TRAPEZOID with both slants (23), the left or bottom one (24), the right or top one (25).
@@ -127,8 +126,7 @@ impl Reader<'_> {
             let found = format!("a trapezoid of {w} × {h} with slants {a} and {b}");
             cur.fault(at, found, "slants that do not cross")
         })?;
-        self.push(layer, shifted(&ring, origin, cur)?, repetition);
-        Ok(())
+        self.push(layer, &ring, origin, repetition, cur)
     }
 
     pub(super) fn compact_trapezoid(&mut self, cur: &mut Cursor<'_>) -> Parsed<()> {
@@ -168,8 +166,7 @@ impl Reader<'_> {
             let found = format!("compact trapezoid kind {kind} in {w} × {h}");
             cur.fault(at, found, "a box that holds its 45° slants")
         })?;
-        self.push(layer, shifted(&ring, origin, cur)?, repetition);
-        Ok(())
+        self.push(layer, &ring, origin, repetition, cur)
     }
 
     pub(super) fn circle(&mut self, cur: &mut Cursor<'_>) -> Parsed<()> {
@@ -189,11 +186,13 @@ impl Reader<'_> {
         match path::circle(centre, to_f64(radius)) {
             Some(ring) => {
                 self.budget.copy(ring.len(), cur)?;
-                self.push(layer, ring, repetition);
+                self.push(layer, &ring, Point::default(), repetition, cur)
             }
-            None => self.part.remarks.add("circle of no radius skipped"),
+            None => {
+                self.part.remarks.add("circle of no radius skipped");
+                Ok(())
+            }
         }
-        Ok(())
     }
 
     pub(super) fn extension_geometry(&mut self, cur: &mut Cursor<'_>) -> Parsed<()> {
@@ -207,17 +206,33 @@ impl Reader<'_> {
         Ok(())
     }
 
-    fn push(&mut self, layer: Layer, points: Vec<Point>, repetition: Repetition) {
+    fn push(
+        &mut self,
+        layer: Layer,
+        points: &[Point],
+        origin: Point,
+        repetition: Repetition,
+        cur: &Cursor<'_>,
+    ) -> Parsed<()> {
         if points.len() < 3 {
             let what = "outline of fewer than three points skipped";
             self.part.remarks.add(what);
-        } else if let Some((_, cell)) = self.part.cells.last_mut() {
-            cell.shapes.push(Shape {
-                layer,
-                points,
-                repetition,
-            });
+            return Ok(());
         }
+        // All bits that any coordinate has: enough to know that most outlines are well within range.
+        let bits = points.iter().fold(0, |bits, &p| {
+            let p = p + origin;
+            bits | (p.x ^ p.x >> 63) | (p.y ^ p.y >> 63)
+        });
+        if bits > i64::from(i32::MAX) {
+            for &p in points {
+                cur.sum(p, origin)?;
+            }
+        }
+        if let Some((_, cell)) = self.part.cells.last_mut() {
+            cell.shapes.add(layer, points, origin, repetition);
+        }
+        Ok(())
     }
 
     #[inline]
