@@ -40,6 +40,14 @@ pub(super) struct Pieces<T> {
     pub(super) slivers: T,
 }
 
+impl Pieces<f64> {
+    /// Of a shot that no border cuts.
+    pub(super) const UNCUT: Self = Self {
+        all: 1.0,
+        slivers: 0.0,
+    };
+}
+
 impl Grid {
     /// The grid of each pass; equal ones once, with their number. `frame` is not empty and within ±1 m.
     pub(super) fn of_passes(profile: &Profile, frame: Rect) -> Vec<(u32, Self)> {

@@ -187,11 +187,7 @@ impl Load {
                 placed.check()?;
                 let n = placed.repetition.count() as f64 * copies;
                 for (rect, flashing) in placed.flashings(limits, spacing) {
-                    let whole_shot = Pieces {
-                        all: 1.0,
-                        slivers: 0.0,
-                    };
-                    let cells = grid.map_or(whole_shot, |grid| grid.expected_cells(rect));
+                    let cells = grid.map_or(Pieces::UNCUT, |grid| grid.expected_cells(rect));
                     let (shots, pieces) = (count(n.round()), count((n * cells.all).round()));
                     whole.add(profile.passes(), shots, pieces, &flashing);
                     let slivers = count((n * cells.slivers * f64::from(profile.passes())).round());
