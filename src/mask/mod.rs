@@ -174,7 +174,9 @@ pub fn build(layout: &Layout, options: &MaskOptions) -> Result<Mask, MaskError> 
         _ => "all top cells".to_owned(),
     };
     if let Some(window) = options.window {
-        tops = window::inside(&cells, tops, window, moved)?;
+        // A subtracted figure that a shrinking reaches from outside counts too.
+        let margin = exposed::furthest(growth.abs());
+        tops = window::inside(&cells, tops, window, margin)?;
     }
     let mut resolver = Resolver {
         cells,

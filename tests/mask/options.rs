@@ -181,6 +181,17 @@ fn bias_moves_every_edge_and_keeps_rectangles_rectangles() {
 }
 
 #[test]
+fn a_hole_beyond_the_window_grows_into_it() {
+    let ring = vec![rect(0, 0, 300, 300), on(MINUS, rect(100, 100, 100, 100))];
+    let options = MaskOptions {
+        bias: Nm(-20.0),
+        window: Some(nm(0, 0, 90, 300)),
+        ..minus()
+    };
+    assert_nm2(&with(&flat(ring), &options), 70.0 * 260.0 - 10.0 * 140.0);
+}
+
+#[test]
 fn bias_unites_splits_drops_and_stays_counted() {
     let pair = vec![rect(0, 0, 50, 50), rect(70, 0, 50, 50), rect(200, 0, 9, 50)];
     let grown = with(&arrayed(pair.clone(), 10_000, 400), &biased(10.0));
