@@ -131,8 +131,17 @@ fn an_array_costs_each_copy_and_is_fractured_once() {
     assert!((seconds - 3600.0 * expected).abs() < 1e-9 * seconds);
 }
 
+/// Mean density that ten by ten 200 nm squares at a pitch of 400 nm see of themselves at β = 10 µm with bare mask around: along each axis
+/// the mean over 3.8 µm of ½(erf(x/β) + erf((L − x)/β)) is erf(t) − (1 − e^(−t²))/(t·√π), t = L/β = 0.38.
+fn density_alone() -> f64 {
+    let t: f64 = 0.38;
+    let erf = 0.409_009; // erf(0.38), scipy.special.erf
+    let axis = erf - (1.0 - (-t * t).exp()) / (t * std::f64::consts::PI.sqrt());
+    100.0 * 200.0 * 200.0 / (3800.0 * 3800.0) * axis * axis
+}
+
 #[test]
-fn backscatter_is_met_by_one_dose_that_shows_in_hours_and_margin() {
+fn backscatter_is_met_by_a_dose_that_shows_in_hours_and_margin() {
     let text = "
 kind = \"shaped\"
 current_a_cm2 = 400
@@ -154,8 +163,14 @@ backscatter = [{ eta = 0.6, beta_nm = 10000 }]
     assert!((correction.density - density).abs() < 1e-12);
     assert!((correction.dose - dose).abs() < 1e-12);
     let tile = answer.quote.fractures.tile.as_ref().unwrap();
-    let flash = 100.0 * dose * 62.5e-9 / 3600.0;
-    assert!((tile.hours.unwrap().flash_h - flash).abs() < 1e-9 * flash);
+    // Around the squares is bare mask: what they see is far less than the mean of their extent.
+    let density = density_alone();
+    let flash = 100.0 * 1.6 / (1.0 + 1.2 * density) * 62.5e-9 / 3600.0;
+    let found = tile.hours.unwrap().flash_h;
+    assert!(
+        (found / flash - 1.0).abs() < 1e-3,
+        "{found}, expected {flash}"
+    );
     // A wide edge: 0.01·½·(1 + 2ηU)·σ/0.398942.
     let margin = 0.005 * (1.0 + 1.2 * density) * 12.0 / 0.398_942;
     let found = tile.margin_nm_per_pct.median.unwrap();
@@ -398,7 +413,8 @@ backscatter = [{ eta = { value = 0.6, plus_minus = 0.1 }, beta_nm = 10000 }]
     let layout = squares(10, 10, [400.0, 0.0], [0.0, 400.0]);
     let (_, answer) = quoted(&layout, &terms(&profile));
     let hours = answer.quote.fractures.tile.as_ref().unwrap().hours.unwrap();
-    let density = 100.0 * 200.0 * 200.0 / (3800.0 * 3800.0);
+    // Doses within a thousandth of each other are one; the ± moves the total by over 1 %.
+    let density = density_alone();
     let total = |eta: f64| {
         let dose = (1.0 + eta) / (1.0 + 2.0 * eta * density);
         100.0 * (dose * 62.5e-9 + 120e-9) / 3600.0
@@ -410,7 +426,7 @@ backscatter = [{ eta = { value = 0.6, plus_minus = 0.1 }, beta_nm = 10000 }]
     ] {
         let expected = total(eta);
         assert!(
-            (found - expected).abs() < 1e-9 * expected,
+            (found - expected).abs() < 1e-3 * expected,
             "{found}, expected {expected}"
         );
     }
@@ -419,7 +435,7 @@ backscatter = [{ eta = { value = 0.6, plus_minus = 0.1 }, beta_nm = 10000 }]
     for (found, eta) in [(moved.at_lower_h, 0.54), (moved.at_upper_h, 0.66)] {
         let expected = total(eta);
         assert!(
-            (found - expected).abs() < 1e-9 * expected,
+            (found - expected).abs() < 1e-3 * expected,
             "{found}, expected {expected}"
         );
     }

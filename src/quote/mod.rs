@@ -339,7 +339,8 @@ pub fn quote_again(
         let mut summary = summary::of_parts(&parts, background, setup.limits.sliver);
         let written = Written::new(clips, &doses, terms.field);
         let timed = written.time(terms.profile)?;
-        let hours = uncertain::widened(timed.hours, &written, terms.profile, correction)?;
+        let even = uncertain::of_map(correction, summary.dose_map)?;
+        let hours = uncertain::widened(timed.hours, &written, terms.profile, even)?;
         summary.hours = Some(hours);
         *fractures.slot(method) = Some(summary);
         *stripes.slot(method) = Some(hours::rows(&timed.time));
@@ -354,8 +355,14 @@ pub fn quote_again(
         .recommended
         .and_then(|method| exposed.get(method))
         .map(|doses| Written::new(clips, doses, terms.field));
+    let map = choice
+        .recommended
+        .and_then(|method| fractures.get(method)?.dose_map);
     let sensitivity = match &recommended {
-        Some(written) => uncertain::sensitivity(written, terms.profile, correction)?,
+        Some(written) => {
+            let even = uncertain::of_map(correction, map)?;
+            uncertain::sensitivity(written, terms.profile, even)?
+        }
         None => Vec::new(),
     };
     let raster = match terms.raster {
@@ -493,14 +500,17 @@ fn notes(clips: &[Clip<'_>], terms: &Terms<'_>) -> Vec<String> {
     notes
 }
 
+/// By method: the masks, the seconds of their figures, and the mean dose of the figure.
+type Evidence<'a> = (
+    &'a ByMethod<Arc<MadeMask>>,
+    &'a ByMethod<Vec<Option<f64>>>,
+    &'a dyn Fn(Method) -> Option<Dose>,
+);
+
 fn figure_result(
     (clip, mask): (u64, &Mask),
     figure: usize,
-    (made, seconds, dose): (
-        &ByMethod<Arc<MadeMask>>,
-        &ByMethod<Vec<Option<f64>>>,
-        &dyn Fn(Method) -> Option<Dose>,
-    ),
+    (made, seconds, dose): Evidence<'_>,
     flags: Vec<FlagKind>,
 ) -> FigureResult {
     let distinct = &mask.figures[figure];

@@ -1,7 +1,8 @@
 //! What the long range does to how sure the hours are: a ± on backscatter or fogging makes every dose, and so every flash, uncertain.
 //!
 //! A change of the dose correction by a factor lengthens flashes as the same factor on the base dose would, so the writer model
-//! is asked with that. The factor is that of the mean coverage: `D = (1 + η)/(1 + 2ηU)`, with η the sum of all terms.
+//! is asked with that. The factor is that of `D = (1 + η)/(1 + 2ηU)`, with η the sum of all terms and U the density at which this gives
+//! the mean of the doses by place: bare mask around a layout counts as it does there.
 
 use crate::expose::uniform_correction;
 use crate::profile::{Key, Number, Profile};
@@ -9,7 +10,7 @@ use crate::write_time::WriteTime;
 
 use super::QuoteError;
 use super::hours::{Correction, Written};
-use super::result::{Hours, Sensitivity};
+use super::result::{DoseMap, Hours, Sensitivity};
 
 /// Every ratio of energies that comes back from far, with the name it has in files.
 fn ratios(profile: &Profile) -> Vec<(String, Number)> {
@@ -20,6 +21,23 @@ fn ratios(profile: &Profile) -> Vec<(String, Number)> {
         .filter(|_| profile.fogging().is_some());
     let fogging = fogging.map(|eta| (Key::FoggingEta.to_string(), eta));
     terms.chain(fogging).collect()
+}
+
+/// The correction of an even coverage that has the mean dose of this map.
+pub(super) fn of_map(
+    correction: Correction,
+    map: Option<DoseMap>,
+) -> Result<Correction, QuoteError> {
+    let eta = correction.ratio;
+    let Some(map) = map.filter(|map| eta > 0.0 && map.mean_dose > 0.0) else {
+        return Ok(correction);
+    };
+    let density = (((1.0 + eta) / map.mean_dose - 1.0) / (2.0 * eta)).clamp(0.0, 1.0);
+    Ok(Correction {
+        dose: uniform_correction(eta, density)?,
+        ratio: eta,
+        density,
+    })
 }
 
 /// Total hours if the ratios together were `more` greater.
