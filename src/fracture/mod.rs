@@ -7,7 +7,7 @@ pub mod tile;
 use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
 
 use crate::blur::{Blur, NARROWEST_LINE};
-use crate::geom::{Figure, Orientation, Point, Transform};
+use crate::geom::{Figure, Orientation, Point, Rect, Transform};
 use crate::shot::{ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
@@ -19,6 +19,9 @@ pub struct Job<'a> {
     pub figure: &'a Figure,
     /// Other figures near enough to matter, same frame.
     pub context: &'a [Figure],
+    /// What they flash, same frame, one list for each kind of place that the figure stands at: the shots must print it at all of
+    /// them. No list: they are taken to print ideally.
+    pub flashed: &'a [Vec<(Rect, Dose)>],
     /// The short-range blur.
     pub blur: Blur,
     /// How far the contour may stray from the outline.
@@ -84,7 +87,8 @@ pub struct Miss {
     pub place: Point,
     /// Dose there, context included.
     pub dose: Dose,
-    /// Whether it must print (and does not) or must not (and does); true for a shot outside the limits.
+    /// Whether it must print (and does not) or must not (and does); true for a shot outside the limits, false for a dose over the
+    /// peak allowed.
     pub must_print: bool,
     /// Why, as far as known.
     pub reason: MissReason,
@@ -101,9 +105,15 @@ fn framed(
     let shift = Point::new(low.x.div_euclid(unit) * unit, low.y.div_euclid(unit) * unit);
     let figure = job.figure.translated(-shift);
     let context: Vec<Figure> = job.context.iter().map(|f| f.translated(-shift)).collect();
+    let moved = |list: &Vec<(Rect, Dose)>| {
+        let rects = list.iter();
+        rects.map(|&(r, dose)| (r.translated(-shift), dose)).collect()
+    };
+    let flashed: Vec<Vec<(Rect, Dose)>> = job.flashed.iter().map(moved).collect();
     let mut found = fracture(&Job {
         figure: &figure,
         context: &context,
+        flashed: &flashed,
         ..*job
     })?;
     found.shots = found.shots.transformed(Transform {
@@ -125,6 +135,17 @@ impl Miss {
             place,
             dose,
             must_print: true,
+            reason: MissReason::Limits,
+        }
+    }
+
+    /// A place (nm) that gets more dose than is allowed anywhere.
+    fn pile(place: [f64; 2], dose: f64) -> Self {
+        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
+        Self {
+            place: Point::new(pm(place[0]), pm(place[1])),
+            dose: Dose(dose),
+            must_print: false,
             reason: MissReason::Limits,
         }
     }
@@ -169,7 +190,8 @@ pub enum MissReason {
     TooNarrow,
     /// Turns more sharply than the blur can follow.
     TooSharp,
-    /// The shot limits stand in the way.
+    /// The limits of sides or of the peak dose stand in the way: a shot is outside them, the dose is, or the place prints
+    /// without them.
     Limits,
     /// No better solution was found.
     NotFound,

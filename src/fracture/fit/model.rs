@@ -3,7 +3,7 @@
 use crate::blur::{PhiTable, THRESHOLD};
 use crate::target::DoseField;
 
-use super::samples::{ContextDose, Sample};
+use super::samples::{Around, Sample};
 
 /// A shot before it is brought to the address grid: sides in nm as `[x0, y0, x1, y1]`.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -16,6 +16,11 @@ impl Flash {
     /// Dose 1 on the rectangle.
     pub(in crate::fracture) fn new(side: [f64; 4]) -> Self {
         Self { side, dose: 1.0 }
+    }
+
+    /// The same rectangle at another dose.
+    pub(super) fn with(&self, dose: f64) -> Self {
+        Self { dose, ..*self }
     }
 
     /// Mirrored about the diagonal `x = y`.
@@ -351,7 +356,8 @@ impl Model {
             .touched(side)
             .flat_map(|cell| &self.samples_by_place.cells[cell])
             .filter(|&&id| {
-                self.samples[id as usize].sign < 0.0 && inside(&self.samples[id as usize])
+                let sample = &self.samples[id as usize];
+                sample.sign < 0.0 && !sample.cap && inside(sample)
             })
             .count()
     }
@@ -434,7 +440,7 @@ impl Model {
 /// The dose of the model's shots with the context, anywhere.
 pub(super) struct Field<'a> {
     pub(super) model: &'a Model,
-    pub(super) context: &'a ContextDose,
+    pub(super) context: &'a Around,
     pub(super) phi: PhiTable,
 }
 

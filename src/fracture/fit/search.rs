@@ -1,5 +1,6 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
+use crate::fracture::overlap::DoseLevels;
 use crate::fracture::{Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
@@ -9,7 +10,7 @@ use super::model::{Flash, Model};
 use super::reduce::{Budget, reduce};
 use super::relax::{mend, relax};
 use super::samples::{ContextDose, Sample, samples_of};
-use super::snap::{check, shots, snap, unfit};
+use super::snap::{check, piles, shots, snap, unfit};
 use super::solve::{Rules, Solver};
 
 /// A job with all that its fits share.
@@ -18,6 +19,16 @@ pub(in crate::fracture) struct Setting<'a> {
     pub(in crate::fracture) target: Target,
     pub(in crate::fracture) context: ContextDose,
     pub(in crate::fracture) samples: Vec<Sample>,
+    doses: Doses,
+}
+
+/// What is asked of doses besides the print rule.
+#[derive(Clone, Copy, Debug, Default)]
+pub(in crate::fracture) struct Doses {
+    /// Doses that a shot may have.
+    pub(in crate::fracture) levels: DoseLevels,
+    /// No place may get more.
+    pub(in crate::fracture) peak: Option<Dose>,
 }
 
 /// Shots on the address grid and the places where they break the rule.
@@ -27,12 +38,28 @@ pub(in crate::fracture) struct Fit {
     pub(in crate::fracture) violations: Vec<Violation>,
     /// Shots outside the limits, or tiles on another.
     pub(in crate::fracture) unfit: Vec<Flash>,
+    /// Places of more dose than is allowed anywhere, with it.
+    pub(in crate::fracture) piles: Vec<([f64; 2], f64)>,
 }
 
 impl Fit {
     /// How much is wrong: nothing when it prints and can be written.
     fn faults(&self) -> usize {
-        self.violations.len() + self.unfit.len()
+        self.violations.len() + self.unfit.len() + self.piles.len()
+    }
+
+    /// The less the better: fewer faults, then fewer shots.
+    fn rank(&self) -> (usize, usize) {
+        (self.faults(), self.shots.len())
+    }
+}
+
+impl Doses {
+    /// What the fit holds the dose under: with something to spare, but no less than half of what the peak leaves over the
+    /// dose 1 of a wide shot.
+    fn cap(&self) -> Option<f64> {
+        let spare = |peak: f64| (0.5 * (peak - 1.0)).clamp(0.0, 2.0 * f64::from(GUARD));
+        self.peak.map(|Dose(peak)| peak - spare(peak) + f64::from(GUARD))
     }
 }
 
@@ -45,14 +72,19 @@ const REPAIRS: usize = 10;
 
 impl<'a> Setting<'a> {
     pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
+        Self::with(job, Doses::default())
+    }
+
+    pub(in crate::fracture) fn with(job: &'a Job<'a>, doses: Doses) -> Self {
         let target = Target::new(job.figure, job.blur, job.tolerance);
-        let context = ContextDose::of(job.context, job.blur, job.tolerance);
-        let samples = samples_of(&target, job.blur, &context);
+        let context = ContextDose::of(job);
+        let samples = samples_of(&target, job.blur, &context, doses.cap());
         Self {
             job,
             target,
             context,
             samples,
+            doses,
         }
     }
 
@@ -79,6 +111,7 @@ impl<'a> Setting<'a> {
             shots,
             violations,
             unfit,
+            piles: Vec::new(),
         }))
     }
 
@@ -88,13 +121,15 @@ impl<'a> Setting<'a> {
             shots: ShotList::new(self.job.limits.address, Vec::new()),
             violations: self.samples.iter().filter_map(Sample::unprinted).collect(),
             unfit: Vec::new(),
+            piles: Vec::new(),
         });
         let broken = fit
             .violations
             .iter()
             .map(|v| Miss::of(v, &self.target, self.job.blur));
         let unfit = fit.unfit.iter().map(|f| Miss::unfit(f.side, Dose(f.dose)));
-        let misses = broken.chain(unfit).collect();
+        let piles = fit.piles.iter().map(|&(p, dose)| Miss::pile(p, dose));
+        let misses = broken.chain(unfit).chain(piles).collect();
         Fracture {
             shots: fit.shots,
             misses,
@@ -160,6 +195,7 @@ impl<'a> Setting<'a> {
             greatest_side: limits.greatest_side.0 - limits.address.nm().0,
             disjoint,
             guard: GUARD,
+            levels: self.doses.levels,
         };
         let mut solver = Solver::new(self.sigma(), rules);
         let mut model = Model::new(self.target.bounds(), self.sigma(), self.samples.clone());
@@ -215,7 +251,10 @@ impl Attempt<'_> {
     /// Check, repair what the samples did not see, snap, and check again what is then really flashed.
     pub(in crate::fracture) fn finish(mut self) -> Fit {
         let address = self.setting.job.limits.address;
+        let Doses { peak, .. } = self.setting.doses;
         let mut best: Option<Fit> = None;
+        // Shots were added that nobody tried to do without.
+        let mut loose = false;
         for _ in 0..REPAIRS {
             let mut snapped = self.model.clone();
             snap(&mut snapped, &mut self.solver, address);
@@ -223,6 +262,15 @@ impl Attempt<'_> {
             for v in &violations {
                 self.model
                     .add_sample(Sample::new(v.place, v.need, &self.setting.context));
+            }
+            let piles = peak.map_or_else(Vec::new, |peak| {
+                piles(&snapped, &self.setting.context, peak.0)
+            });
+            if let Some(cap) = self.setting.doses.cap() {
+                for &(place, _) in &piles {
+                    self.model
+                        .add_sample(Sample::under(place, cap, &self.setting.context));
+                }
             }
             let unfit = unfit(
                 &snapped,
@@ -233,12 +281,13 @@ impl Attempt<'_> {
                 shots: shots(&snapped, address),
                 violations,
                 unfit,
+                piles,
             };
             let holds = fit.faults() == 0;
-            if best.as_ref().is_none_or(|b| fit.faults() < b.faults()) {
+            if best.as_ref().is_none_or(|b| fit.rank() < b.rank()) {
                 best = Some(fit);
             }
-            if holds {
+            if holds && !loose {
                 break;
             }
             let Self {
@@ -247,9 +296,14 @@ impl Attempt<'_> {
                 budget,
                 ..
             } = &mut self;
-            if !relax(model, solver, budget.window.max(10)) && mend(model, solver, budget.window, 2)
-            {
+            if holds {
                 reduce(model, solver, *budget);
+                loose = false;
+            } else if !relax(model, solver, budget.window.max(10)) {
+                loose = !mend(model, solver, budget.window, 2);
+                if !loose {
+                    reduce(model, solver, *budget);
+                }
             }
         }
         best.unwrap_or_else(|| unreachable!("at least one round was made"))
@@ -298,8 +352,7 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
             break;
         }
         let fit = attempt.finish();
-        let rank = |f: &Fit| (f.faults(), f.shots.len());
-        if best.as_ref().is_none_or(|b| rank(&fit) < rank(b)) {
+        if best.as_ref().is_none_or(|b| fit.rank() < b.rank()) {
             best = Some(fit);
         }
     }

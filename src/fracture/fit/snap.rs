@@ -2,7 +2,7 @@
 
 use crate::blur::{PhiTable, THRESHOLD};
 use crate::shot::{AddressUnit, Shot, ShotLimits, ShotList};
-use crate::target::{Need, Target, Violation};
+use crate::target::{Need, Target, Violation, peaks};
 use crate::units::{Dose, Nm};
 
 use super::model::{Field, Flash, Model};
@@ -13,6 +13,12 @@ use super::solve::Solver;
 /// it falls with the square of their distance.
 const SPARE: f64 = 0.001;
 
+/// Step of the lattice on which peaks are looked for, σ.
+const PEAK_STEP: f64 = 0.125;
+
+/// A dose so little over the peak allowed is still under it: more than what the lattice hides.
+const PEAK_SPARE: f64 = 5e-4;
+
 /// Every place found where the shots break the rule, or keep it with no dose to spare.
 ///
 /// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared.
@@ -21,14 +27,28 @@ pub(in crate::fracture) fn check(
     model: &Model,
     context: &ContextDose,
 ) -> Vec<Violation> {
-    let field = Field {
-        model,
-        context,
-        phi: PhiTable::get(),
-    };
-    let margin = 3.0 * model.sigma;
+    let mut all = Vec::new();
+    for around in context.around() {
+        let field = Field {
+            model,
+            context: around,
+            phi: PhiTable::get(),
+        };
+        all.extend(broken(target, &field, model.sigma, context));
+    }
+    all
+}
+
+/// [`check`] with one list of neighbours' shots.
+fn broken(
+    target: &Target,
+    field: &Field<'_>,
+    sigma: f64,
+    context: &ContextDose,
+) -> Vec<Violation> {
+    let margin = 3.0 * sigma;
     let look = |step: f64, lattice: f64, spare: f64| {
-        let mut found = target.violations(&field, step, model.sigma / lattice, margin, spare);
+        let mut found = target.violations(field, step, sigma / lattice, margin, spare);
         found.retain(|v| v.need == Need::Print || !context.may_print(v.place));
         found
     };
@@ -39,6 +59,27 @@ pub(in crate::fracture) fn check(
     } else {
         look(0.25, 8.0, SPARE / 16.0)
     }
+}
+
+/// Places where the dose piles up to more than `peak` allows, with the dose there.
+pub(in crate::fracture) fn piles(
+    model: &Model,
+    context: &ContextDose,
+    peak: f64,
+) -> Vec<([f64; 2], f64)> {
+    let hull = model.flashes().map(|(_, f)| f).reduce(|a, b| a.hull(&b));
+    let Some(hull) = hull else {
+        return Vec::new();
+    };
+    let found = context.around().iter().flat_map(|around| {
+        let field = Field {
+            model,
+            context: around,
+            phi: PhiTable::get(),
+        };
+        peaks(&field, hull.side, PEAK_STEP * model.sigma, peak + PEAK_SPARE)
+    });
+    found.collect()
 }
 
 /// Shots that the writer would refuse: sides outside the limits, or (tiles) on another shot.

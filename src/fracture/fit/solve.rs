@@ -6,6 +6,8 @@
 
 use pulp::Arch;
 
+use crate::fracture::overlap::DoseLevels;
+
 use super::kernel::{AddDose, Slopes};
 use super::model::{Band, Flash, Model};
 
@@ -20,6 +22,8 @@ pub(in crate::fracture) struct Rules {
     pub(in crate::fracture) disjoint: bool,
     /// Dose to spare at every sample: covers rounding to the address grid and what lies between samples.
     pub(in crate::fracture) guard: f32,
+    /// Doses that a shot may have.
+    pub(in crate::fracture) levels: DoseLevels,
 }
 
 /// How a fit ended.

@@ -6,9 +6,15 @@
 //! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
 
 mod bound;
+mod levels;
 
-use super::fit::{Budget, Flash, Setting, Slabs, Stage, best_of, cover};
-use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
+pub use levels::{DoseLevels, DoseLevelsError};
+
+use super::fit::{Budget, Doses, Flash, Setting, Slabs, Stage, best_of, cover};
+use super::{Effort, Fracture, FractureError, Fracturer, Job, MissReason, framed};
+use crate::geom::Rect;
+use crate::shot::ShotLimits;
+use crate::units::{Dose, Nm};
 
 /// The overlap fracture.
 #[derive(Clone, Copy, Debug, Default)]
@@ -17,6 +23,23 @@ pub struct Overlap {
     pub effort: Effort,
     /// Whether to work out a lower bound too: about half as much work again.
     pub bound: bool,
+    /// No place may get more than this from all shots: 1 or more, since a wide shot alone gives that.
+    pub peak_dose: Option<Dose>,
+    /// The doses that a shot may have.
+    pub dose_levels: DoseLevels,
+}
+
+impl Overlap {
+    /// Any shots of dose 1, with an effort.
+    #[must_use]
+    pub const fn with(effort: Effort) -> Self {
+        Self {
+            effort,
+            bound: false,
+            peak_dose: None,
+            dose_levels: DoseLevels::ONE,
+        }
+    }
 }
 
 /// How far the outline may wander within a first slab, σ; as for tiles.
@@ -24,6 +47,9 @@ const SLACK: f64 = 0.6;
 
 /// How much of both ends of a slab may stick out when it is grown, σ: a shot's corner prints rounded by about as much.
 const INSETS: [f64; 2] = [0.3, 0.6];
+
+/// How many times as much a trial may cost at first when doses are held under a peak: stacks cost much and are soon spread.
+const PILED: f64 = 4.0;
 
 /// Shots in a first cover from which a figure counts as long.
 const LONG: usize = 40;
@@ -34,14 +60,50 @@ impl Fracturer for Overlap {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
-        framed(job, |job| Ok(self.search(job)))
+        framed(job, |job| Ok(self.explained(job)))
     }
 }
 
 impl Overlap {
+    /// [`Overlap::search`], and where it does not print, whether that is for the limits.
+    fn explained(&self, job: &Job<'_>) -> Fracture {
+        let mut found = self.search(job);
+        let unknown = |fracture: &Fracture| {
+            let mut misses = fracture.misses.iter();
+            misses.any(|miss| miss.reason == MissReason::NotFound)
+        };
+        if unknown(&found) {
+            let free = Self {
+                peak_dose: None,
+                bound: false,
+                ..*self
+            };
+            let anything = ShotLimits {
+                least_side: job.limits.address.nm(),
+                sliver: job.limits.address.nm(),
+                greatest_side: Nm(f64::INFINITY),
+                ..job.limits
+            };
+            let freely = free.search(&Job {
+                limits: anything,
+                ..*job
+            });
+            if freely.misses.is_empty() {
+                let unknown = |miss: &&mut super::Miss| miss.reason == MissReason::NotFound;
+                let misses = found.misses.iter_mut().filter(unknown);
+                misses.for_each(|miss| miss.reason = MissReason::Limits);
+            }
+        }
+        found
+    }
+
     /// The fewest shots found that print within tolerance, or the best found.
     fn search(&self, job: &Job<'_>) -> Fracture {
-        let setting = Setting::new(job);
+        let doses = Doses {
+            levels: self.dose_levels,
+            peak: self.peak_dose,
+        };
+        let setting = Setting::with(job, doses);
         // What the efforts cost and gain is measured in benches/fracture.rs.
         let (budget, starts) = match self.effort {
             Effort::Quick => (
@@ -86,6 +148,31 @@ impl Overlap {
             starts.truncate(1);
             starts.extend(cut);
         }
+        let mut budget = budget;
+        if self.peak_dose.is_some() {
+            // What is found without it often needs little change; where the limit is low, a cut is nearer.
+            let free = Self {
+                peak_dose: None,
+                bound: false,
+                ..*self
+            };
+            let flash = |(rect, dose): (Rect, Dose)| {
+                let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
+                Flash {
+                    dose: dose.0,
+                    ..Flash::new([x0, y0, x1, y1])
+                }
+            };
+            starts = vec![free.search(job).shots.rects().map(flash).collect()];
+            starts.extend(slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len));
+            budget.hopeless *= PILED;
+        }
+        let dose = self.dose_levels.nearest_to_one();
+        let level = |flash: &Flash| self.dose_levels.iter().any(|level| level == flash.dose);
+        let flashes = starts.iter_mut().flatten();
+        flashes
+            .filter(|flash| !level(flash))
+            .for_each(|flash| flash.dose = dose);
         let stages = setting.least_sides().map(|least| Stage {
             start: 0.0,
             least,
@@ -97,8 +184,9 @@ impl Overlap {
                 .map(|start| setting.attempt(start, false, stage.least, budget));
             best_of(attempts.collect(), stage.mend)
         });
-        fracture.lower_bound = self.bound.then(|| {
-            let context = |p| setting.context.dose(p);
+        // The proof is for shots of dose 1.
+        fracture.lower_bound = (self.bound && self.dose_levels.are_one()).then(|| {
+            let context = |p| setting.context.range(p).1;
             bound::lower_bound(&setting.target, job.blur, &job.limits, context)
         });
         fracture
