@@ -5,13 +5,14 @@ use std::path::{Path, PathBuf};
 use clap::{Arg, ArgMatches, Args, Command, FromArgMatches, ValueEnum};
 
 use crate::fracture::Effort;
+use crate::fracture::overlap::DoseLevels;
 use crate::geom::{Point, Rect};
 use crate::layout::{self, Layer, Layout};
 use crate::mask::{Expose, Mask, MaskOptions};
 use crate::profile::{Key, Profile, ProfileErrors};
 use crate::quote::{Chosen, QuoteError, Setup};
 use crate::shot::{AddressUnit, ShotLimits};
-use crate::units::Nm;
+use crate::units::{Dose, Nm};
 use crate::write_time::Field;
 
 use super::CliError;
@@ -154,6 +155,36 @@ impl LimitArgs {
     }
 }
 
+/// What the doses of the overlap fracture may be.
+#[derive(Debug, Args)]
+pub(super) struct DoseArgs {
+    /// No place may get more dose than this multiple of dose-to-size, 1 or more, from the shots of the overlap fracture: costs shots.
+    /// Default: no limit.
+    #[arg(long, value_name = "D", value_parser = peak, allow_negative_numbers = true)]
+    pub(super) peak_dose: Option<f64>,
+    /// Doses that a shot of the overlap fracture may have, multiples of dose-to-size, as 0.8,1,1.2. Default: 1.
+    #[arg(long, value_name = "D,D,...", value_parser = levels, allow_hyphen_values = true)]
+    dose_levels: Option<DoseLevels>,
+}
+
+impl DoseArgs {
+    /// The limit, if there is one.
+    pub(super) fn peak(&self) -> Option<Dose> {
+        self.peak_dose.map(Dose)
+    }
+
+    /// The levels.
+    pub(super) fn levels(&self) -> DoseLevels {
+        self.dose_levels.unwrap_or_default()
+    }
+
+    /// The option that was given, if one was.
+    pub(super) fn given(&self) -> Option<&'static str> {
+        let peak = self.peak_dose.map(|_| "--peak-dose");
+        peak.or(self.dose_levels.map(|_| "--dose-levels"))
+    }
+}
+
 /// How hard to search.
 #[derive(Clone, Copy, Debug, Default, ValueEnum)]
 pub(super) enum EffortArg {
@@ -283,6 +314,22 @@ pub(super) fn stray(text: &str) -> Result<f64, String> {
         .ok()
         .filter(|x| *x > 0.0 && *x <= 1000.0)
         .ok_or_else(|| "expected a number over 0, up to 1000".to_owned())
+}
+
+/// A greatest dose: a wide shot alone gives 1.
+fn peak(text: &str) -> Result<f64, String> {
+    number(text)
+        .ok()
+        .filter(|x| *x >= 1.0)
+        .ok_or_else(|| "expected a finite number of 1 or more".to_owned())
+}
+
+/// `0.8,1,1.2`.
+fn levels(text: &str) -> Result<DoseLevels, String> {
+    let level = |text: &str| number(text.trim()).map(Dose);
+    let levels = text.split(',').map(level).collect::<Result<Vec<_>, _>>();
+    let levels = levels.map_err(|_| "expected doses as 0.8,1,1.2".to_owned())?;
+    DoseLevels::new(&levels).map_err(|error| error.to_string())
 }
 
 /// A finite number of 0 or more.

@@ -12,10 +12,12 @@ use crate::quote::{self, Answer, Chosen, Share, Terms};
 use crate::report::figures_csv;
 use crate::report::progress::Progress;
 use crate::report::table::{self, TextOptions};
-use crate::units::{Dose, Hours, Nm};
+use crate::units::{Hours, Nm};
 use crate::write_time::Field;
 
-use super::args::{EffortArg, LayoutArgs, Overrides, field_mm, mask, positive, share, stray};
+use super::args::{
+    DoseArgs, EffortArg, LayoutArgs, Overrides, field_mm, mask, positive, share, stray,
+};
 use super::fracture::write;
 use super::output::{create, file_error, print, print_json};
 use super::pictures::Pictures;
@@ -56,9 +58,8 @@ pub(super) struct QuoteArgs {
     /// Share of the field that is filled with copies of the clip, over 0, up to 1.
     #[arg(long, value_name = "C", value_parser = share, allow_negative_numbers = true, requires = "field_mm")]
     coverage: Option<f64>,
-    /// Flag figures whose dose piles up above this multiple of dose-to-size.
-    #[arg(long, value_name = "D", value_parser = positive, allow_negative_numbers = true)]
-    peak_dose: Option<f64>,
+    #[command(flatten)]
+    doses: DoseArgs,
     /// Directory for quote.json, figures.csv, shot lists and pictures; made if it is not there. Default: no files.
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
@@ -87,7 +88,8 @@ pub(super) fn run(args: &QuoteArgs) -> Result<Outcome, CliError> {
             .zip(args.coverage)
             .map(|(field, coverage)| Share { field, coverage }),
         slot: args.slot_h.map(Hours),
-        peak_dose: args.peak_dose.map(Dose),
+        peak_dose: args.doses.peak(),
+        dose_levels: args.doses.levels(),
     };
     let options = args.layout.options()?;
     let name = args.layout.file();

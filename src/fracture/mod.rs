@@ -4,6 +4,7 @@ mod fit;
 pub mod overlap;
 pub mod tile;
 
+use fit::{Doses, Setting};
 use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
 
 use crate::blur::{Blur, NARROWEST_LINE};
@@ -54,6 +55,44 @@ pub trait Fracturer: Sync {
     /// # Errors
     /// When the figure cannot be cut at all: its rings are broken or beyond what the method can count.
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError>;
+
+    /// The places that shots made for a job do not print, where the neighbours may flash otherwise than was thought.
+    fn misses(&self, job: &Job<'_>, shots: &ShotList) -> Vec<Miss> {
+        misses(job, shots, Doses::default())
+    }
+
+    /// Shots like those found, moved to where they print what they now miss, or the best found; `None` if the method moves none.
+    fn refit(&self, _job: &Job<'_>, _found: &Fracture) -> Option<Fracture> {
+        None
+    }
+}
+
+/// The places that shots do not print, and where they pile up too much dose.
+fn misses(job: &Job<'_>, shots: &ShotList, doses: Doses) -> Vec<Miss> {
+    let judged = refitted(job, shots, |job, shots| {
+        Some(Setting::with(job, doses).judged(shots.clone()))
+    });
+    judged.map_or_else(Vec::new, |fracture| fracture.misses)
+}
+
+/// As [`framed`], with shots.
+fn refitted(
+    job: &Job<'_>,
+    shots: &ShotList,
+    fit: impl FnOnce(&Job<'_>, &ShotList) -> Option<Fracture>,
+) -> Option<Fracture> {
+    let moved = shots.transformed(Transform {
+        orientation: Orientation::IDENTITY,
+        shift: -frame(job),
+    });
+    framed(job, |job| fit(job, &moved).ok_or(())).ok()
+}
+
+/// The place of a job's figure on the grid.
+fn frame(job: &Job<'_>) -> Point {
+    let unit = job.limits.address.pm();
+    let low = job.figure.bounds().min;
+    Point::new(low.x.div_euclid(unit) * unit, low.y.div_euclid(unit) * unit)
 }
 
 /// Why a figure got no shots.
@@ -96,18 +135,18 @@ pub struct Miss {
 
 /// Fractures a job in a frame of its own, so that equal figures at different places give equal shots to the bit: the lower-left
 /// corner of the bounds goes to within one address unit of the origin.
-fn framed(
+fn framed<E>(
     job: &Job<'_>,
-    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, FractureError>,
-) -> Result<Fracture, FractureError> {
-    let unit = job.limits.address.pm();
-    let low = job.figure.bounds().min;
-    let shift = Point::new(low.x.div_euclid(unit) * unit, low.y.div_euclid(unit) * unit);
+    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, E>,
+) -> Result<Fracture, E> {
+    let shift = frame(job);
     let figure = job.figure.translated(-shift);
     let context: Vec<Figure> = job.context.iter().map(|f| f.translated(-shift)).collect();
     let moved = |list: &Vec<(Rect, Dose)>| {
         let rects = list.iter();
-        rects.map(|&(r, dose)| (r.translated(-shift), dose)).collect()
+        rects
+            .map(|&(r, dose)| (r.translated(-shift), dose))
+            .collect()
     };
     let flashed: Vec<Vec<(Rect, Dose)>> = job.flashed.iter().map(moved).collect();
     let mut found = fracture(&Job {

@@ -6,6 +6,7 @@
 mod flags;
 pub mod hours;
 pub mod made;
+mod repair;
 pub mod result;
 pub mod shots;
 pub mod summary;
@@ -17,7 +18,7 @@ pub use result::Quote;
 
 use crate::blur::{Blur, BlurError, REACH};
 use crate::expose::CorrectionError;
-use crate::fracture::overlap::Overlap;
+use crate::fracture::overlap::{DoseLevels, Overlap};
 use crate::fracture::tile::{Staircase, Tile};
 use crate::fracture::{Effort, FractureError, Fracturer};
 use crate::geom::Rect;
@@ -84,6 +85,8 @@ pub struct Terms<'a> {
     pub slot: Option<Hours>,
     /// Greatest dose that may pile up anywhere, a multiple of dose-to-size.
     pub peak_dose: Option<Dose>,
+    /// Doses that a shot of the overlap fracture may have.
+    pub dose_levels: DoseLevels,
 }
 
 impl Terms<'_> {
@@ -297,8 +300,9 @@ pub fn fracturer(method: Method, terms: &Terms<'_>) -> Box<dyn Fracturer> {
             ..Tile::default()
         }),
         Method::Overlap => Box::new(Overlap {
-            effort: terms.effort,
-            bound: false,
+            peak_dose: terms.peak_dose,
+            dose_levels: terms.dose_levels,
+            ..Overlap::with(terms.effort)
         }),
     }
 }

@@ -1,7 +1,9 @@
 //! Shots with sides anywhere, the samples they are held to, and the dose at these; all indexed by place.
 
 use crate::blur::{PhiTable, THRESHOLD};
+use crate::geom::Rect;
 use crate::target::DoseField;
+use crate::units::Dose;
 
 use super::samples::{Around, Sample};
 
@@ -105,6 +107,13 @@ impl Flash {
         } else {
             self.dose * gx * share(1)
         }
+    }
+}
+
+impl From<(Rect, Dose)> for Flash {
+    fn from((rect, dose): (Rect, Dose)) -> Self {
+        let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
+        Self::new([x0, y0, x1, y1]).with(dose.0)
     }
 }
 

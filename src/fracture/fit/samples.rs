@@ -3,9 +3,7 @@
 use super::model::{Bins, Flash};
 use crate::blur::{Blur, PhiTable, REACH, THRESHOLD};
 use crate::fracture::Job;
-use crate::geom::Rect;
 use crate::target::{Need, Target, Violation};
-use crate::units::Dose;
 
 /// A place with what the rule asks there.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -241,18 +239,8 @@ impl ContextDose {
             vec![Around::new(ideal, sigma)]
         } else {
             let lists = job.flashed.iter();
-            lists
-                .map(|list| {
-                    let flash = |(rect, dose): &(Rect, Dose)| {
-                        let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
-                        Flash {
-                            dose: dose.0,
-                            ..Flash::new([x0, y0, x1, y1])
-                        }
-                    };
-                    Around::new(list.iter().map(flash).collect(), sigma)
-                })
-                .collect()
+            let flashes = lists.map(|list| list.iter().copied().map(Flash::from).collect());
+            flashes.map(|list| Around::new(list, sigma)).collect()
         };
         Self {
             printed: bins(&printed, sigma),

@@ -59,7 +59,8 @@ impl Doses {
     /// dose 1 of a wide shot.
     fn cap(&self) -> Option<f64> {
         let spare = |peak: f64| (0.5 * (peak - 1.0)).clamp(0.0, 2.0 * f64::from(GUARD));
-        self.peak.map(|Dose(peak)| peak - spare(peak) + f64::from(GUARD))
+        self.peak
+            .map(|Dose(peak)| peak - spare(peak) + f64::from(GUARD))
     }
 }
 
@@ -95,24 +96,38 @@ impl<'a> Setting<'a> {
     /// Shots made elsewhere, with the places where they break the rule.
     pub(in crate::fracture) fn judged(&self, shots: ShotList) -> Fracture {
         let mut model = Model::new(self.target.bounds(), self.sigma(), Vec::new());
-        for (slot, (rect, dose)) in shots.rects().enumerate() {
-            let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
-            model.place(
-                slot,
-                Some(Flash {
-                    side: [x0, y0, x1, y1],
-                    dose: dose.0,
-                }),
-            );
+        for (slot, shot) in shots.rects().enumerate() {
+            model.place(slot, Some(Flash::from(shot)));
         }
         let violations = check(&self.target, &model, &self.context);
         let unfit = unfit(&model, &self.job.limits, false);
+        let peak = self.doses.peak;
+        let piles = peak.map_or_else(Vec::new, |peak| piles(&model, &self.context, peak.0));
         self.reported(Some(Fit {
             shots,
             violations,
             unfit,
-            piles: Vec::new(),
+            piles,
         }))
+    }
+
+    /// Shots found before, moved to where they print; the rest of what was said of them is kept.
+    pub(in crate::fracture) fn refit(
+        &self,
+        shots: &ShotList,
+        disjoint: bool,
+        budget: Budget,
+    ) -> Option<Fracture> {
+        let limits = &self.job.limits;
+        let [sliver, least] = self.least_sides();
+        let least = if shots.slivers(limits.sliver) > 0 {
+            least
+        } else {
+            sliver
+        };
+        let start: Vec<Flash> = shots.rects().map(Flash::from).collect();
+        let attempt = self.attempt(&start, disjoint, least, budget);
+        best_of(vec![attempt], true).map(|fit| self.reported(Some(fit)))
     }
 
     /// A fit as the result of a fracture; without one, no shots and every sample that must print as a miss.

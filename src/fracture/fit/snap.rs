@@ -40,12 +40,7 @@ pub(in crate::fracture) fn check(
 }
 
 /// [`check`] with one list of neighbours' shots.
-fn broken(
-    target: &Target,
-    field: &Field<'_>,
-    sigma: f64,
-    context: &ContextDose,
-) -> Vec<Violation> {
+fn broken(target: &Target, field: &Field<'_>, sigma: f64, context: &ContextDose) -> Vec<Violation> {
     let margin = 3.0 * sigma;
     let look = |step: f64, lattice: f64, spare: f64| {
         let mut found = target.violations(field, step, sigma / lattice, margin, spare);
@@ -77,7 +72,12 @@ pub(in crate::fracture) fn piles(
             context: around,
             phi: PhiTable::get(),
         };
-        peaks(&field, hull.side, PEAK_STEP * model.sigma, peak + PEAK_SPARE)
+        peaks(
+            &field,
+            hull.side,
+            PEAK_STEP * model.sigma,
+            peak + PEAK_SPARE,
+        )
     });
     found.collect()
 }

@@ -111,9 +111,8 @@ mod tests {
 
     #[test]
     fn levels_are_sorted_and_checked() {
-        let levels = |doses: &[f64]| {
-            DoseLevels::new(&doses.iter().map(|&d| Dose(d)).collect::<Vec<_>>())
-        };
+        let levels =
+            |doses: &[f64]| DoseLevels::new(&doses.iter().map(|&d| Dose(d)).collect::<Vec<_>>());
         let three = levels(&[1.2, 0.8, 1.0]).unwrap();
         assert_eq!(three.iter().collect::<Vec<_>>(), [0.8, 1.0, 1.2]);
         assert_eq!(three.nearest_to_one(), 1.0);

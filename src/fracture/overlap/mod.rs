@@ -11,9 +11,10 @@ mod levels;
 pub use levels::{DoseLevels, DoseLevelsError};
 
 use super::fit::{Budget, Doses, Flash, Setting, Slabs, Stage, best_of, cover};
-use super::{Effort, Fracture, FractureError, Fracturer, Job, MissReason, framed};
-use crate::geom::Rect;
-use crate::shot::ShotLimits;
+use super::{
+    Effort, Fracture, FractureError, Fracturer, Job, Miss, MissReason, framed, misses, refitted,
+};
+use crate::shot::{ShotLimits, ShotList};
 use crate::units::{Dose, Nm};
 
 /// The overlap fracture.
@@ -62,50 +63,36 @@ impl Fracturer for Overlap {
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         framed(job, |job| Ok(self.explained(job)))
     }
+
+    fn misses(&self, job: &Job<'_>, shots: &ShotList) -> Vec<Miss> {
+        misses(job, shots, self.doses())
+    }
+
+    fn refit(&self, job: &Job<'_>, found: &Fracture) -> Option<Fracture> {
+        let moved = refitted(job, &found.shots, |job, shots| {
+            let setting = Setting::with(job, self.doses());
+            setting.refit(shots, false, self.budget().0)
+        });
+        // Where the shots cannot be moved so far, others are looked for.
+        let prints = |fracture: &Fracture| fracture.misses.is_empty();
+        let mut best = match moved {
+            Some(moved) if prints(&moved) => moved,
+            moved => {
+                let anew = self.fracture(job).ok();
+                let all = moved.into_iter().chain(anew);
+                all.min_by_key(|fracture| fracture.misses.len())?
+            }
+        };
+        best.lower_bound = found.lower_bound;
+        Some(best)
+    }
 }
 
 impl Overlap {
-    /// [`Overlap::search`], and where it does not print, whether that is for the limits.
-    fn explained(&self, job: &Job<'_>) -> Fracture {
-        let mut found = self.search(job);
-        let unknown = |fracture: &Fracture| {
-            let mut misses = fracture.misses.iter();
-            misses.any(|miss| miss.reason == MissReason::NotFound)
-        };
-        if unknown(&found) {
-            let free = Self {
-                peak_dose: None,
-                bound: false,
-                ..*self
-            };
-            let anything = ShotLimits {
-                least_side: job.limits.address.nm(),
-                sliver: job.limits.address.nm(),
-                greatest_side: Nm(f64::INFINITY),
-                ..job.limits
-            };
-            let freely = free.search(&Job {
-                limits: anything,
-                ..*job
-            });
-            if freely.misses.is_empty() {
-                let unknown = |miss: &&mut super::Miss| miss.reason == MissReason::NotFound;
-                let misses = found.misses.iter_mut().filter(unknown);
-                misses.for_each(|miss| miss.reason = MissReason::Limits);
-            }
-        }
-        found
-    }
-
-    /// The fewest shots found that print within tolerance, or the best found.
-    fn search(&self, job: &Job<'_>) -> Fracture {
-        let doses = Doses {
-            levels: self.dose_levels,
-            peak: self.peak_dose,
-        };
-        let setting = Setting::with(job, doses);
+    /// How much work is put in, and from how many starts.
+    fn budget(&self) -> (Budget, usize) {
         // What the efforts cost and gain is measured in benches/fracture.rs.
-        let (budget, starts) = match self.effort {
+        match self.effort {
             Effort::Quick => (
                 Budget {
                     window: 10,
@@ -133,7 +120,52 @@ impl Overlap {
                 },
                 3,
             ),
+        }
+    }
+
+    fn doses(&self) -> Doses {
+        Doses {
+            levels: self.dose_levels,
+            peak: self.peak_dose,
+        }
+    }
+
+    /// [`Overlap::search`], and where it does not print, whether that is for the limits.
+    fn explained(&self, job: &Job<'_>) -> Fracture {
+        let mut found = self.search(job);
+        let unknown = |fracture: &Fracture| {
+            let mut misses = fracture.misses.iter();
+            misses.any(|miss| miss.reason == MissReason::NotFound)
         };
+        if unknown(&found) {
+            let free = Self {
+                peak_dose: None,
+                bound: false,
+                ..*self
+            };
+            let anything = ShotLimits {
+                least_side: job.limits.address.nm(),
+                sliver: job.limits.address.nm(),
+                greatest_side: Nm(f64::INFINITY),
+                ..job.limits
+            };
+            let freely = free.search(&Job {
+                limits: anything,
+                ..*job
+            });
+            if freely.misses.is_empty() {
+                let unknown = |miss: &&mut Miss| miss.reason == MissReason::NotFound;
+                let misses = found.misses.iter_mut().filter(unknown);
+                misses.for_each(|miss| miss.reason = MissReason::Limits);
+            }
+        }
+        found
+    }
+
+    /// The fewest shots found that print within tolerance, or the best found.
+    fn search(&self, job: &Job<'_>) -> Fracture {
+        let setting = Setting::with(job, self.doses());
+        let (budget, starts) = self.budget();
         let slabs = Slabs::of(job, &setting.target);
         let grown = INSETS.map(|inset| slabs.grown(SLACK, inset * setting.sigma()));
         let both = grown.concat();
@@ -156,14 +188,8 @@ impl Overlap {
                 bound: false,
                 ..*self
             };
-            let flash = |(rect, dose): (Rect, Dose)| {
-                let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
-                Flash {
-                    dose: dose.0,
-                    ..Flash::new([x0, y0, x1, y1])
-                }
-            };
-            starts = vec![free.search(job).shots.rects().map(flash).collect()];
+            let found = free.search(job).shots;
+            starts = vec![found.rects().map(Flash::from).collect()];
             starts.extend(slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len));
             budget.hopeless *= PILED;
         }
