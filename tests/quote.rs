@@ -260,3 +260,41 @@ fn standings_find_every_copy_in_a_window() {
     assert_eq!(found.len(), expected);
     assert!(expected > 0);
 }
+
+/// Discs in a row, 14 nm apart, as WKT.
+fn discs(count: u32) -> Layout {
+    let disc = |i: u32| {
+        let at = |k: u32| {
+            let angle = std::f64::consts::TAU * f64::from(k % 72) / 72.0;
+            let centre = f64::from(i) * 134.0;
+            format!(
+                "{:.0} {:.0}",
+                centre + 60.0 * angle.cos(),
+                60.0 * angle.sin()
+            )
+        };
+        let points: Vec<String> = (0..=72).map(at).collect();
+        format!("POLYGON (({}))", points.join(", "))
+    };
+    wkt(&(0..count).map(disc).collect::<Vec<_>>().join("\n"))
+}
+
+#[test]
+fn figures_close_to_each_other_print_beside_the_real_shots_for_any_number_of_threads() {
+    let profile = plain();
+    let layout = discs(5);
+    let [one, two] = [1, 2].map(|threads| {
+        let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build();
+        pool.unwrap()
+            .install(|| quoted(&layout, &terms(&profile)).1)
+    });
+    for method in [Method::Tile, Method::Overlap] {
+        let (one, two) = (one.made.get(method).unwrap(), two.made.get(method).unwrap());
+        for (a, b) in one.iter().zip(two) {
+            let (a, b) = (a.as_ref().unwrap(), b.as_ref().unwrap());
+            assert_eq!(a.fracture, b.fracture);
+            assert!(a.fracture.misses.is_empty(), "{:?}", a.fracture.misses);
+            assert!(a.fidelity.prints_within_tolerance());
+        }
+    }
+}

@@ -10,7 +10,7 @@ use std::collections::BTreeSet;
 
 use rayon::prelude::*;
 
-use crate::fracture::{Fracture, FractureError, Fracturer, Job};
+use crate::fracture::{Fracture, FractureError, Fracturer, Job, Miss, MissReason};
 use crate::geom::{Orientation, Point, Rect, Repetition, Transform};
 use crate::mask::{DistinctFigure, Mask, Place, Standings};
 use crate::units::Dose;
@@ -22,6 +22,9 @@ const ROUNDS: usize = 8;
 
 /// Places at most at which a distinct figure is looked at; of more, so many evenly spread.
 const MOST_PLACES: usize = 200;
+
+/// Displacements compared at most to find who stands about whom: fewer places of each figure are looked at on a mask so large.
+const MOST_WORK: u128 = 1 << 31;
 
 /// Elements looked at from either end of an array along each of its axes. The outermost have neighbours missing, so they are
 /// another distinct figure than the inner ones; those inside the next two have inner ones about them only, all alike.
@@ -38,11 +41,19 @@ pub(super) fn repair(
     setup: &Setup,
 ) {
     let standings = Standings::new(mask);
+    let places = mask.figures.iter().flat_map(|figure| &figure.places);
+    let listed = |place: &Place| match &place.repetition {
+        Repetition::List(list) => list.len() as u128,
+        _ => 1,
+    };
+    let work = places.map(listed).sum::<u128>().max(1) * mask.figures.len().max(1) as u128;
+    let most = usize::try_from(MOST_WORK / work).unwrap_or(MOST_PLACES);
+    let most = most.clamp(1, MOST_PLACES);
     let kinds: Vec<Vec<Surroundings>> = mask
         .figures
         .par_iter()
         .enumerate()
-        .map(|(i, distinct)| kinds(&standings, i, distinct, setup))
+        .map(|(i, distinct)| kinds(&standings, i, distinct, setup, most))
         .collect();
     let scene = Scene {
         mask,
@@ -65,10 +76,12 @@ pub(super) fn repair(
             let Ok(fracture) = &mut fractures[i] else {
                 continue;
             };
-            if !misses.is_empty() {
+            // What does not even print beside ideal neighbours is not for the real ones to mend.
+            let hopeless = round == 0 && !fracture.misses.is_empty();
+            if !misses.is_empty() && !hopeless {
                 failing.push(i);
             }
-            fracture.misses = misses;
+            fracture.misses = explained(misses, &fracture.misses);
         }
         if round == ROUNDS {
             break;
@@ -101,6 +114,16 @@ pub(super) fn repair(
             break;
         }
     }
+}
+
+/// Misses beside real neighbours, with the reason that was known before where they do not tell.
+fn explained(mut misses: Vec<Miss>, known: &[Miss]) -> Vec<Miss> {
+    if known.iter().any(|miss| miss.reason == MissReason::Limits) {
+        let unknown = |miss: &&mut Miss| miss.reason == MissReason::NotFound;
+        let unknown = misses.iter_mut().filter(unknown);
+        unknown.for_each(|miss| miss.reason = MissReason::Limits);
+    }
+    misses
 }
 
 /// All that a fit beside real neighbours needs.
@@ -144,11 +167,7 @@ impl Scene<'_> {
         })
     }
 
-    fn misses(
-        &self,
-        figure: usize,
-        fractures: &[Result<Fracture, FractureError>],
-    ) -> Vec<crate::fracture::Miss> {
+    fn misses(&self, figure: usize, fractures: &[Result<Fracture, FractureError>]) -> Vec<Miss> {
         let Ok(fracture) = &fractures[figure] else {
             return Vec::new();
         };
@@ -173,13 +192,14 @@ fn kinds(
     figure: usize,
     distinct: &DistinctFigure,
     setup: &Setup,
+    most: usize,
 ) -> Vec<Surroundings> {
     if distinct.context.is_empty() {
         return Vec::new();
     }
     let window = window(distinct, setup.blur);
     let places: Vec<Transform> = distinct.places.iter().flat_map(elements).collect();
-    let every = places.len().div_ceil(MOST_PLACES).max(1);
+    let every = places.len().div_ceil(most).max(1);
     let kinds: BTreeSet<Vec<(usize, Orientation, Point)>> = places
         .iter()
         .step_by(every)
