@@ -194,22 +194,37 @@ impl Overlap {
             budget.hopeless *= PILED;
         }
         let dose = self.dose_levels.nearest_to_one();
-        let level = |flash: &Flash| self.dose_levels.iter().any(|level| level == flash.dose);
-        let flashes = starts.iter_mut().flatten();
-        flashes
-            .filter(|flash| !level(flash))
-            .for_each(|flash| flash.dose = dose);
+        let level = |starts: &mut [Vec<Flash>]| {
+            for flash in starts.iter_mut().flatten() {
+                if self.dose_levels.iter().all(|level| level != flash.dose) {
+                    flash.dose = dose;
+                }
+            }
+        };
+        level(&mut starts);
         let stages = setting.least_sides().map(|least| Stage {
             start: 0.0,
             least,
             mend: true,
         });
-        let mut fracture = setting.staged(&stages, |stage| {
-            let attempts = starts
-                .iter()
-                .map(|start| setting.attempt(start, false, stage.least, budget));
-            best_of(attempts.collect(), stage.mend)
-        });
+        let from = |starts: &[Vec<Flash>]| {
+            setting.staged(&stages, |stage| {
+                let attempts = starts
+                    .iter()
+                    .map(|start| setting.attempt(start, false, stage.least, budget));
+                best_of(attempts.collect(), stage.mend)
+            })
+        };
+        let mut fracture = from(&starts);
+        // A cover may be too few shots for moving them to lead anywhere; a cut hardly ever is.
+        if !fracture.misses.is_empty() {
+            let mut cuts = slabs.both(SLACK, 0.0);
+            level(&mut cuts);
+            let other = from(&cuts);
+            if other.misses.len() < fracture.misses.len() {
+                fracture = other;
+            }
+        }
         // The proof is for shots of dose 1.
         fracture.lower_bound = (self.bound && self.dose_levels.are_one()).then(|| {
             let context = |p| setting.context.range(p).1;
