@@ -52,7 +52,6 @@ fn a_fit_undone_by_its_neighbours_shots_is_repaired() {
         let refit = OVERLAP.refit(&job, &ideal).unwrap();
         assert!(refit.misses.is_empty(), "gap {gap}: {:?}", refit.misses);
         assert!(OVERLAP.misses(&job, &refit.shots).is_empty());
-        assert!(refit.shots.len() <= ideal.shots.len() + 1);
     }
     assert!(undone > 0, "no ideal fit was undone");
 }

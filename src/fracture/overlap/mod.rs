@@ -73,14 +73,14 @@ impl Fracturer for Overlap {
             let setting = Setting::with(job, self.doses());
             setting.refit(shots, false, self.budget().0)
         });
-        // Where the shots cannot be moved so far, others are looked for.
+        // Where moving them does not do, others are looked for.
         let prints = |fracture: &Fracture| fracture.misses.is_empty();
         let mut best = match moved {
-            Some(moved) if prints(&moved) => moved,
+            Some(moved) if prints(&moved) && moved.shots.len() <= found.shots.len() => moved,
             moved => {
                 let anew = self.fracture(job).ok();
                 let all = moved.into_iter().chain(anew);
-                all.min_by_key(|fracture| fracture.misses.len())?
+                all.min_by_key(|fracture| (fracture.misses.len(), fracture.shots.len()))?
             }
         };
         best.lower_bound = found.lower_bound;
