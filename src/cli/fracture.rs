@@ -19,7 +19,7 @@ use crate::report::progress::Progress;
 use crate::report::shots_csv::{Rows, ShotWriter};
 use crate::units::Nm;
 
-use super::args::SetupArgs;
+use super::args::{DoseArgs, SetupArgs};
 use super::values::{EffortArg, stray};
 use crate::report::table::{grouped, significant};
 
@@ -50,6 +50,8 @@ pub(super) struct FractureArgs {
     /// What an exact tiling prefers: the fewest shots, or no slivers at the price of shots (the price is shown).
     #[arg(long, value_enum, default_value_t = PreferArg::Shots)]
     prefer: PreferArg,
+    #[command(flatten)]
+    doses: DoseArgs,
     /// Prove how many shots any overlap fracture needs at least: about half as much work again.
     #[arg(long)]
     bound: bool,
@@ -123,6 +125,18 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     if args.bound && !matches!(args.method, MethodArg::Overlap) {
         return Err(CliError::Arguments(
             "--bound is for --method overlap".to_owned(),
+        ));
+    }
+    if let Some(option) = args.doses.given()
+        && !matches!(args.method, MethodArg::Overlap)
+    {
+        return Err(CliError::Arguments(format!(
+            "{option} is for --method overlap"
+        )));
+    }
+    if args.bound && !args.doses.levels().are_one() {
+        return Err(CliError::Arguments(
+            "--bound is proved for dose 1 only: leave out --dose-levels".to_owned(),
         ));
     }
     let to_stdout = args
@@ -250,8 +264,10 @@ impl FractureArgs {
                 },
             }),
             MethodArg::Overlap => Box::new(Overlap {
-                effort,
                 bound: self.bound,
+                peak_dose: self.doses.peak(),
+                dose_levels: self.doses.levels(),
+                ..Overlap::with(effort)
             }),
         }
     }

@@ -22,7 +22,7 @@ use crate::write_time::Field;
 use super::CliError;
 use super::args::{LayoutArgs, Overrides, open_profile};
 use super::output::file_error;
-use super::values::{EffortArg, FieldMm, Positive, Share, Stray};
+use super::values::{EffortArg, FieldMm, Levels, PeakDose, Positive, Share, Stray};
 
 /// What is asked, as flags and as the keys of a job file.
 #[derive(Args, Clone, Debug, Default, Serialize, Deserialize)]
@@ -43,9 +43,13 @@ pub(super) struct JobArgs {
     /// Field that the layout is a clip of, width x height in mm. Default: the layout alone.
     #[arg(long, value_name = "WxH")]
     field_mm: Option<FieldMm>,
-    /// Flag figures whose dose piles up above this multiple of dose-to-size.
+    /// No place may get more dose than this multiple of dose-to-size, 1 or more, from the shots of the overlap fracture: costs shots.
+    /// Default: no limit.
     #[arg(long, value_name = "D", allow_negative_numbers = true)]
-    peak_dose: Option<Positive>,
+    peak_dose: Option<PeakDose>,
+    /// Doses that a shot of the overlap fracture may have, multiples of dose-to-size, as 0.8,1,1.2. Default: 1.
+    #[arg(long, value_name = "D,D,...", allow_hyphen_values = true)]
+    dose_levels: Option<Levels>,
     /// Flagged figures listed and drawn before the rest is only counted. Default: 10.
     #[arg(long, value_name = "N")]
     flags: Option<usize>,
@@ -250,6 +254,7 @@ impl JobArgs {
             effort: own.effort.or(file.effort),
             field_mm: own.field_mm.or(file.field_mm),
             peak_dose: own.peak_dose.or(file.peak_dose),
+            dose_levels: own.dose_levels.or(file.dose_levels),
             flags: own.flags.or(file.flags),
             out: own.out.or(file.out),
             json: own.json.or(file.json),
@@ -350,7 +355,11 @@ impl Plan {
             effort: job.effort.unwrap_or_default().into(),
             field: self.field(),
             slot: job.slot_h.map(|Positive(h)| Hours(h)),
-            peak_dose: job.peak_dose.map(|Positive(dose)| Dose(dose)),
+            peak_dose: job.peak_dose.map(|PeakDose(dose)| Dose(dose)),
+            dose_levels: job
+                .dose_levels
+                .map(|Levels(levels)| levels)
+                .unwrap_or_default(),
             raster: self.raster.as_ref(),
         }
     }

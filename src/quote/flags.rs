@@ -21,6 +21,9 @@ const TIMES_MEDIAN: f64 = 3.0;
 /// … and at least this share of all flashing and settling.
 const LEAST_SHARE: f64 = 0.01;
 
+/// A peak found is right to this.
+const PEAK_ERROR: f64 = 2e-3;
+
 /// What flags are found in.
 pub(super) struct Evidence<'a> {
     pub(super) clips: &'a [Clip<'a>],
@@ -206,7 +209,7 @@ impl Subject<'_> {
                 number(CORNER_PULL_BACK * sigma)
             ),
             Some(MissReason::Limits) => format!(
-                "smooth it there or allow sides outside {} to {} nm",
+                "smooth it there or allow sides outside {} to {} nm or a higher peak dose",
                 number(setup.limits.least_side.0),
                 number(setup.limits.greatest_side.0)
             ),
@@ -259,10 +262,10 @@ impl Subject<'_> {
         let limit = evidence.peak_dose?;
         let (method, made) = self
             .made(evidence)
-            .filter(|(_, made)| made.peak > limit)
+            .filter(|(_, made)| made.peak.0 > limit.0 + PEAK_ERROR)
             .max_by(|(_, a), (_, b)| a.peak.0.total_cmp(&b.peak.0))?;
         let remedy = format!(
-            "its {} fracture piles up more than {}: order it as tile, or allow more",
+            "its {} fracture piles up more than {}, and no other was found: order it as tile, or allow more",
             method.name(),
             number(limit.0)
         );

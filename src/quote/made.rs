@@ -9,8 +9,10 @@ use crate::geom::{Figure, Rect, Transform};
 use crate::judge::{self, Fidelity};
 use crate::mask::{DistinctFigure, Mask, Standings};
 use crate::shot::ShotLimits;
-use crate::target::DoseField;
+use crate::target::peaks;
 use crate::units::{Dose, Nm};
+
+use super::repair::repair;
 
 /// What all figures of a mask are fractured for.
 #[derive(Clone, Copy, Debug)]
@@ -30,7 +32,7 @@ pub struct Made {
     pub fracture: Fracture,
     /// How they print together with the shots of the neighbours at the figure's first place.
     pub fidelity: Fidelity,
-    /// Greatest dose on a lattice of σ/2 over what is flashed.
+    /// Greatest dose over what is flashed, neighbours included; right to 1e-3 of it.
     pub peak: Dose,
 }
 
@@ -47,7 +49,7 @@ pub fn fractures_of(made: &MadeMask) -> Vec<Result<Fracture, FractureError>> {
     made.iter().map(of).collect()
 }
 
-/// Fractures every distinct figure; `tick` is called after each.
+/// Fractures every distinct figure, `tick` called after each; those that their neighbours' shots then undo are fitted anew.
 #[must_use]
 pub fn fracture(
     mask: &Mask,
@@ -59,6 +61,7 @@ pub fn fracture(
         let made = fracturer.fracture(&Job {
             figure: &distinct.figure,
             context: &distinct.context,
+            flashed: &[],
             blur: setup.blur,
             tolerance: setup.tolerance,
             limits: setup.limits,
@@ -66,7 +69,9 @@ pub fn fracture(
         tick();
         made
     };
-    mask.figures.par_iter().map(one).collect()
+    let mut fractures: Vec<_> = mask.figures.par_iter().map(one).collect();
+    repair(mask, &mut fractures, fracturer, setup);
+    fractures
 }
 
 /// Judges every distinct figure on the dose of its own shots and of those its neighbours got; `tick` is called after each.
@@ -174,37 +179,29 @@ pub const fn why(reason: MissReason) -> &'static str {
     match reason {
         MissReason::TooNarrow => "narrower than the blur can print",
         MissReason::TooSharp => "turns more sharply than the blur can follow",
-        MissReason::Limits => "the limits of a shot's sides stand in the way",
+        MissReason::Limits => "the limits of sides or of the peak dose stand in the way",
         MissReason::NotFound => "no better shots were found",
     }
 }
 
 /// What the blur carries to a figure, in its own frame.
-fn window(distinct: &DistinctFigure, blur: Blur) -> Rect {
+pub(super) fn window(distinct: &DistinctFigure, blur: Blur) -> Rect {
     let reach = (blur.sigma() * REACH).to_pm().unwrap_or_default();
     distinct.figure.bounds().grown(reach)
 }
 
-/// Greatest dose on a lattice of σ/2 over a figure's shots.
+/// Step of the lattice on which the peak is looked for, σ.
+const PEAK_STEP: f64 = 0.25;
+
+/// Greatest dose over a figure's shots.
 fn peak(dose: &Exposure, fracture: &Fracture) -> Dose {
     let rects = fracture.shots.rects().map(|(rect, _)| rect);
     let Some(around) = rects.reduce(Rect::hull) else {
         return Dose(0.0);
     };
     let ([x0, y0], [x1, y1]) = (around.min.to_nm(), around.max.to_nm());
-    let step = 0.5 * dose.blur().sigma().0;
-    #[allow(
-        clippy::cast_possible_truncation,
-        clippy::cast_sign_loss,
-        reason = "a positive length over σ/2; a float to integer cast saturates"
-    )]
-    let count = |length: f64| (length / step) as usize + 2;
-    let mut row = vec![0.0; count(x1 - x0)];
-    let mut peak = 0.0_f64;
-    for j in 0..count(y1 - y0) {
-        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-        dose.row(y0 + j as f64 * step, x0, step, &mut row);
-        peak = row.iter().copied().fold(peak, f64::max);
-    }
+    let step = PEAK_STEP * dose.blur().sigma().0;
+    let found = peaks(dose, [x0, y0, x1, y1], step, 0.0);
+    let peak = found.iter().map(|&(_, peak)| peak).fold(0.0, f64::max);
     Dose(peak)
 }

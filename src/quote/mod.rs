@@ -10,6 +10,7 @@ mod flags;
 pub mod hours;
 mod kept;
 pub mod made;
+mod repair;
 pub mod result;
 pub mod shots;
 pub mod summary;
@@ -27,7 +28,7 @@ pub use result::Quote;
 
 use crate::blur::{Blur, BlurError, REACH};
 use crate::expose::{CorrectionError, DensityError};
-use crate::fracture::overlap::Overlap;
+use crate::fracture::overlap::{DoseLevels, Overlap};
 use crate::fracture::tile::{Staircase, Tile};
 use crate::fracture::{Effort, Fracturer};
 use crate::geom::Rect;
@@ -120,6 +121,8 @@ pub struct Terms<'a> {
     pub peak_dose: Option<Dose>,
     /// The raster multi-beam writer to compare with.
     pub raster: Option<&'a Profile>,
+    /// Doses that a shot of the overlap fracture may have.
+    pub dose_levels: DoseLevels,
 }
 
 impl Terms<'_> {
@@ -464,8 +467,9 @@ pub fn fracturer(method: Method, terms: &Terms<'_>) -> Box<dyn Fracturer> {
             ..Tile::default()
         }),
         Method::Overlap => Box::new(Overlap {
-            effort: terms.effort,
-            bound: false,
+            peak_dose: terms.peak_dose,
+            dose_levels: terms.dose_levels,
+            ..Overlap::with(terms.effort)
         }),
     }
 }
