@@ -10,6 +10,7 @@ pub mod hours;
 mod kept;
 pub mod made;
 pub mod result;
+pub mod sample;
 pub mod shots;
 pub mod summary;
 pub mod sweep;
