@@ -22,6 +22,7 @@ use crate::write_time::Field;
 use super::CliError;
 use super::args::{LayoutArgs, Overrides, open_profile};
 use super::output::file_error;
+use super::sampling::{Percent, SamplePlan};
 use super::values::{EffortArg, FieldMm, Positive, Share, Stray};
 
 /// What is asked, as flags and as the keys of a job file.
@@ -46,6 +47,18 @@ pub(super) struct JobArgs {
     /// Flag figures whose dose piles up above this multiple of dose-to-size.
     #[arg(long, value_name = "D", allow_negative_numbers = true)]
     peak_dose: Option<Positive>,
+    /// Fracture only a sample of the figures, drawn at random until shots and beam time are known within this, as 2% (95 % interval).
+    #[arg(long, value_name = "P%")]
+    within: Option<Percent>,
+    /// Fracture a sample of this many distinct figures, or fewer if --within is reached.
+    #[arg(long, value_name = "N")]
+    sample: Option<usize>,
+    /// Stop drawing after so many minutes. The result then depends on the clock; it says how to repeat it without.
+    #[arg(long, value_name = "MIN", allow_negative_numbers = true)]
+    time_limit_min: Option<Positive>,
+    /// Another seed, another sample. Default: 1.
+    #[arg(long, value_name = "S")]
+    seed: Option<u64>,
     /// Flagged figures listed and drawn before the rest is only counted. Default: 10.
     #[arg(long, value_name = "N")]
     flags: Option<usize>,
@@ -250,6 +263,10 @@ impl JobArgs {
             effort: own.effort.or(file.effort),
             field_mm: own.field_mm.or(file.field_mm),
             peak_dose: own.peak_dose.or(file.peak_dose),
+            within: own.within.or(file.within),
+            sample: own.sample.or(file.sample),
+            time_limit_min: own.time_limit_min.or(file.time_limit_min),
+            seed: own.seed.or(file.seed),
             flags: own.flags.or(file.flags),
             out: own.out.or(file.out),
             json: own.json.or(file.json),
@@ -353,6 +370,18 @@ impl Plan {
             peak_dose: job.peak_dose.map(|Positive(dose)| Dose(dose)),
             raster: self.raster.as_ref(),
         }
+    }
+
+    /// The sample asked for; `None` to fracture every figure.
+    pub(super) fn sampling(&self) -> Option<SamplePlan> {
+        let job = &self.job;
+        let asked = job.within.is_some() || job.sample.is_some() || job.time_limit_min.is_some();
+        asked.then(|| SamplePlan {
+            within: job.within,
+            most: job.sample,
+            seed: job.seed.unwrap_or(1),
+            minutes: job.time_limit_min.map(|Positive(minutes)| minutes),
+        })
     }
 
     fn field(&self) -> Option<Field> {

@@ -13,6 +13,7 @@ mod output;
 mod pictures;
 mod profile;
 mod quote;
+mod sampling;
 mod sweep;
 mod values;
 

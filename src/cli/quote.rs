@@ -30,6 +30,7 @@ use super::{CliError, Outcome, start_threads};
 #[command(after_long_help = "Examples:
   shotwright quote sample-masks/mixed.oas --slot-h 24 --out quote-mixed
   shotwright quote clip.oas --layer 1/0 --slot-h 24 --field-mm 104x132 --coverage 0.6
+  shotwright quote layer.oas --layer 1/0 --slot-h 24 --within 2% --time-limit-min 30
   shotwright quote job.toml --slot-h 10 --settle-ns 50 --json
 
 A job file:
@@ -98,7 +99,13 @@ pub(super) fn run(args: &QuoteArgs, threads: Option<u16>) -> Result<Outcome, Cli
         })
         .collect();
     let bar = Progress::new("figures", quote::ticks(&masks));
-    let answer = quote::quote(&clips, &terms, &|| bar.inc());
+    let tick = || bar.inc();
+    let answer = match plan.sampling() {
+        Some(sample) => {
+            sample.run(|sampling| quote::quote_sampled(&clips, &terms, sampling, &tick))
+        }
+        None => quote::quote(&clips, &terms, &tick),
+    };
     drop(bar);
     let names: Vec<&str> = plan.clips.iter().map(|clip| clip.name.as_str()).collect();
     let mut answer = answer.map_err(|cause| CliError::Quote {

@@ -4,11 +4,12 @@ use rayon::prelude::*;
 
 use crate::blur::{Blur, REACH};
 use crate::expose::Exposure;
+use crate::fracture::tile;
 use crate::fracture::{Fracture, FractureError, Fracturer, Job, MissReason};
 use crate::geom::{Figure, Rect, Transform};
 use crate::judge::{self, Fidelity};
 use crate::mask::{DistinctFigure, Mask, Standings};
-use crate::shot::ShotLimits;
+use crate::shot::{AddressUnit, ShotLimits};
 use crate::target::DoseField;
 use crate::units::{Dose, Nm};
 
@@ -34,13 +35,24 @@ pub struct Made {
     pub peak: Dose,
 }
 
+/// Why a figure has no score.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum Unmade {
+    /// It cannot be cut.
+    #[error(transparent)]
+    Fracture(#[from] FractureError),
+    /// It is not in the sample that stands for all.
+    #[error("not drawn in the sample")]
+    NotDrawn,
+}
+
 /// Every distinct figure of a mask, in its order.
-pub type MadeMask = Vec<Result<Made, FractureError>>;
+pub type MadeMask = Vec<Result<Made, Unmade>>;
 
 /// The fractures alone.
 #[must_use]
-pub fn fractures_of(made: &MadeMask) -> Vec<Result<Fracture, FractureError>> {
-    let of = |made: &Result<Made, FractureError>| match made {
+pub fn fractures_of(made: &MadeMask) -> Vec<Result<Fracture, Unmade>> {
+    let of = |made: &Result<Made, Unmade>| match made {
         Ok(made) => Ok(made.fracture.clone()),
         Err(error) => Err(error.clone()),
     };
@@ -54,7 +66,7 @@ pub fn fracture(
     fracturer: &dyn Fracturer,
     setup: &Setup,
     tick: &(dyn Fn() + Sync),
-) -> Vec<Result<Fracture, FractureError>> {
+) -> Vec<Result<Fracture, Unmade>> {
     let one = |distinct: &DistinctFigure| {
         let made = fracturer.fracture(&Job {
             figure: &distinct.figure,
@@ -64,7 +76,7 @@ pub fn fracture(
             limits: setup.limits,
         });
         tick();
-        made
+        made.map_err(Unmade::from)
     };
     mask.figures.par_iter().map(one).collect()
 }
@@ -76,10 +88,10 @@ pub fn fracture(
 #[must_use]
 pub fn judge(
     mask: &Mask,
-    fractures: Vec<Result<Fracture, FractureError>>,
+    fractures: Vec<Result<Fracture, Unmade>>,
     settings: &judge::Settings,
     tick: &(dyn Fn() + Sync),
-) -> Vec<Result<Made, FractureError>> {
+) -> MadeMask {
     let standings = Standings::new(mask);
     let judged: Vec<Option<(Fidelity, Dose)>> = (0..fractures.len())
         .into_par_iter()
@@ -97,16 +109,17 @@ pub fn judge(
             Some((fidelity, peak))
         })
         .collect();
-    let made = |(fracture, judged): (Result<Fracture, FractureError>, _)| {
+    let made = |(fracture, judged): (Result<Fracture, Unmade>, _)| {
         let (fidelity, peak) = match judged {
             Some(judged) => judged,
             None => (Fidelity::default(), Dose(0.0)),
         };
-        fracture.map(|fracture| Made {
+        let made = |fracture| Made {
             fracture,
             fidelity,
             peak,
-        })
+        };
+        fracture.map(made)
     };
     fractures.into_iter().zip(judged).map(made).collect()
 }
@@ -120,15 +133,33 @@ pub struct Scene {
 }
 
 impl Scene {
-    /// Around figure number `figure`; a neighbour without shots adds no dose.
+    /// Around figure number `figure`; a neighbour that cannot be cut adds no dose, one that was not drawn that of its fine staircase.
     #[must_use]
     pub fn of(
         mask: &Mask,
         standings: &Standings<'_>,
-        fractures: &[Result<Fracture, FractureError>],
+        fractures: &[Result<Fracture, Unmade>],
         figure: usize,
         blur: Blur,
     ) -> Self {
+        Self::with(mask, standings, figure, blur, |other| {
+            match &fractures[other] {
+                Ok(fracture) => fracture.shots.rects().collect(),
+                Err(Unmade::NotDrawn) => stand_in(&mask.figures[other].figure),
+                Err(Unmade::Fracture(_)) => Vec::new(),
+            }
+        })
+    }
+
+    /// Around figure number `figure`; `flashes` gives what is flashed for a figure, in its own frame.
+    pub(super) fn with(
+        mask: &Mask,
+        standings: &Standings<'_>,
+        figure: usize,
+        blur: Blur,
+        flashes: impl Fn(usize) -> Vec<(Rect, Dose)>,
+    ) -> Self {
+        let of_figure = flashes;
         let distinct = &mask.figures[figure];
         let first = first_place(distinct);
         let back = first.inverse();
@@ -140,17 +171,30 @@ impl Scene {
             if !own {
                 neighbours.push(mask.figures[other].figure.transformed(into_frame));
             }
-            if let Ok(fracture) = &fractures[other] {
-                let rects = fracture.shots.rects();
-                let moved = rects.map(|(rect, dose)| (into_frame.apply_rect(rect), dose));
-                flashes.extend(moved.filter(|(rect, _)| own || rect.touches(window)));
-            }
+            let rects = of_figure(other).into_iter();
+            let moved = rects.map(|(rect, dose)| (into_frame.apply_rect(rect), dose));
+            flashes.extend(moved.filter(|(rect, _)| own || rect.touches(window)));
         }
         Self {
             neighbours,
             dose: Exposure::new(blur, flashes),
         }
     }
+}
+
+/// How far the shots that stand in for a figure's own stray from its outline.
+const STAND_IN: Nm = Nm(0.5);
+
+/// Shots of a figure that is not fractured: its outline, as good as drawn.
+pub(super) fn stand_in(figure: &Figure) -> Vec<(Rect, Dose)> {
+    let limits = ShotLimits {
+        address: AddressUnit::FINEST,
+        least_side: Nm(0.0),
+        greatest_side: Nm(1e6),
+        sliver: Nm(0.0),
+    };
+    let made = tile::fracture_staircase(figure, STAND_IN, &limits);
+    made.map_or_else(|_| Vec::new(), |made| made.shots.rects().collect())
 }
 
 /// Own frame → mask at the first place of a figure.
@@ -186,7 +230,7 @@ fn window(distinct: &DistinctFigure, blur: Blur) -> Rect {
 }
 
 /// Greatest dose on a lattice of σ/2 over a figure's shots.
-fn peak(dose: &Exposure, fracture: &Fracture) -> Dose {
+pub(super) fn peak(dose: &Exposure, fracture: &Fracture) -> Dose {
     let rects = fracture.shots.rects().map(|(rect, _)| rect);
     let Some(around) = rects.reduce(Rect::hull) else {
         return Dose(0.0);

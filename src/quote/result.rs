@@ -8,6 +8,12 @@ mod sweep;
 use std::collections::BTreeMap;
 use std::fmt;
 
+mod remedy;
+mod sampling;
+
+pub use remedy::{Change, FigureRemedies, MustChange, Remedy, Trial};
+pub use sampling::{Estimate, SampleUsed, Stopped, StratumUsed};
+
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
 
@@ -97,6 +103,15 @@ pub struct Quote {
     pub raster: Option<RasterLine>,
     /// Figures to look at or to send back, worst first.
     pub flags: Vec<Flag>,
+    /// The sample that counts, hours and scores rest on; `None` if every figure was fractured without drawing.
+    #[serde(default)]
+    pub sample: Option<SampleUsed>,
+    /// What was tried on flagged figures, most seconds first.
+    #[serde(default)]
+    pub remedies: Vec<FigureRemedies>,
+    /// What must change for the mask to fit its slot; `None` if it fits, no slot was given, or it was not worked out.
+    #[serde(default)]
+    pub must_change: Option<MustChange>,
     /// [`CAUTION`].
     pub caution: String,
 }

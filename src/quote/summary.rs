@@ -1,12 +1,11 @@
 //! From scores of figures to the numbers of the whole mask.
 
-use crate::fracture::FractureError;
 use crate::judge::{self, Fidelity};
 use crate::mask::DistinctFigure;
 use crate::shot::ShotList;
 use crate::units::Nm;
 
-use super::made::Made;
+use super::made::{Made, Unmade};
 use super::result::{Count, EdgeError, FractureSummary, Margin};
 
 /// The figures of one mask in one fracture.
@@ -15,7 +14,7 @@ pub struct Part<'a> {
     /// In their order.
     pub figures: &'a [DistinctFigure],
     /// Their shots and scores.
-    pub made: &'a [Result<Made, FractureError>],
+    pub made: &'a [Result<Made, Unmade>],
     /// How often the mask counts in the scores against other parts.
     pub weight: u64,
 }
@@ -24,7 +23,7 @@ pub struct Part<'a> {
 #[must_use]
 pub fn of_mask(
     figures: &[DistinctFigure],
-    made: &[Result<Made, FractureError>],
+    made: &[Result<Made, Unmade>],
     sliver: Nm,
 ) -> FractureSummary {
     let part = Part {

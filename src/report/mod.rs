@@ -9,6 +9,7 @@ pub mod html;
 pub mod overview_plot;
 mod plot;
 pub mod progress;
+mod sample_text;
 pub mod shots_csv;
 pub mod stripes_csv;
 pub mod stripes_plot;

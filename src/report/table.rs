@@ -4,6 +4,7 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
+use super::sample_text;
 use crate::number::{self, UNMEASURED, brief};
 use crate::quote::result::{
     Count, Flag, FractureSummary, Hours, Method, Quote, RasterLine, Sensitivity, Source,
@@ -60,6 +61,9 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
         out.line(&first);
     }
     out.blank();
+    if let Some(sample) = &quote.sample {
+        out.paragraph(&sample_text::paragraph(sample), "");
+    }
     out.paragraph(&quote.verdict.sentence, "");
     let order = quote.recommended.map_or("none", Method::name);
     out.paragraph(&format!("Recommended: {order}. {}", quote.reason), "");
