@@ -18,6 +18,7 @@ pub use error::{ProfileError, ProfileErrors};
 pub use key::{Key, KeyInfo, Need, Section};
 
 use crate::shot::{AddressUnit, ShotLimits};
+use crate::target::ShotErrors;
 use crate::units::{Amperes, BaseDose, CurrentDensity, Nm, Seconds};
 
 /// How a writer makes its shots.
@@ -371,6 +372,18 @@ impl Profile {
         Some(Fogging {
             eta: self.value(Key::FoggingEta)?,
             radius: Nm::from_mm(self.value(Key::FoggingRadius)?),
+        })
+    }
+
+    /// Random errors of shots and the electrons that come with the base dose; `None` unless an error is stated.
+    #[must_use]
+    pub fn shot_errors(&self) -> Option<ShotErrors> {
+        let (edge, dose) = (self.value(Key::EdgeSd), self.value(Key::DoseSd));
+        edge.or(dose)?;
+        Some(ShotErrors {
+            edge: Nm(edge.unwrap_or(0.0)),
+            dose: dose.unwrap_or(0.0) / 100.0,
+            base_dose: Some(self.base_dose()),
         })
     }
 

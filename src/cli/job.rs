@@ -16,6 +16,7 @@ use crate::layout::Layout;
 use crate::mask::MaskOptions;
 use crate::profile::{Number, Profile};
 use crate::quote::Terms;
+use crate::quote::result::{SampleUsed, Stopped};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::Field;
 
@@ -389,7 +390,11 @@ impl Plan {
     }
 
     /// The job with every value spelled out, layouts named as seen from `directory` and sealed by their CRC-32.
-    pub(super) fn resolved(&self, directory: &Path) -> Result<String, CliError> {
+    pub(super) fn resolved(
+        &self,
+        directory: &Path,
+        sample: Option<&SampleUsed>,
+    ) -> Result<String, CliError> {
         let clip = |clip: &PlannedClip| {
             Ok(LayoutArgs {
                 layout: seen_from(directory, &clip.args.layout),
@@ -398,7 +403,12 @@ impl Plan {
                 ..clip.args.clone()
             })
         };
+        // What a clock ended is repeated by its number of figures.
+        let timed = sample.filter(|sample| sample.stopped == Stopped::TimeOut);
+        let drawn = timed.and_then(|sample| usize::try_from(sample.figures_drawn).ok());
         let job = JobArgs {
+            sample: drawn.or(self.job.sample),
+            time_limit_min: self.job.time_limit_min.filter(|_| drawn.is_none()),
             clip: self
                 .clips
                 .iter()

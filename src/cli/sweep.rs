@@ -158,7 +158,7 @@ pub(super) fn run(args: &SweepArgs, threads: Option<u16>) -> Result<Outcome, Cli
     })?;
     match files {
         Some(files) => {
-            let job = plan.resolved(files.output.directory())?;
+            let job = plan.resolved(files.output.directory(), None)?;
             files.job.write(|out| out.write_all(job.as_bytes()))?;
             files
                 .csv

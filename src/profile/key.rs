@@ -119,6 +119,8 @@ keys! {
     LeastSide = "least_side_nm", SHAPED, "nm", 1e-3..=1e5, Default(10.0), "least side of a shot";
     GreatestSide = "greatest_side_nm", SHAPED, "nm", 1.0..=1e6, Default(1000.0), "greatest side of a shot";
     Sliver = "sliver_nm", SHAPED, "nm", 0.0..=1e5, Default(20.0), "a shot whose short side is under this is a sliver";
+    EdgeSd = "shot_edge_sd_nm", SHAPED, "nm", 0.0..=1e3, Optional, "standard deviation of the place of a shot's edge, for the error budget";
+    DoseSd = "shot_dose_sd_pct", SHAPED, "%", 0.0..=100.0, Optional, "standard deviation of the dose of a shot, for the error budget";
     Beam = "beam_na", RASTER, "nA", 1e-3..=1e9, Required, "current of all beams together";
     Stripe = "stripe_um", WRITER, "µm", 1.0..=1e5, Optional, "width of a stripe; the whole field is one stripe unless stated";
     Stage = "stage_mm_s", WRITER, "mm/s", 1e-3..=1e5, Optional, "greatest stage speed; no bound unless stated";

@@ -4,12 +4,11 @@ use rayon::prelude::*;
 
 use crate::blur::{Blur, REACH};
 use crate::expose::Exposure;
-use crate::fracture::tile;
 use crate::fracture::{Fracture, FractureError, Fracturer, Job, MissReason};
-use crate::geom::{Figure, Rect, Transform};
+use crate::geom::{Figure, Point, Rect, Transform};
 use crate::judge::{self, Fidelity};
 use crate::mask::{DistinctFigure, Mask, Standings};
-use crate::shot::{AddressUnit, ShotLimits};
+use crate::shot::ShotLimits;
 use crate::target::DoseField;
 use crate::units::{Dose, Nm};
 
@@ -133,7 +132,7 @@ pub struct Scene {
 }
 
 impl Scene {
-    /// Around figure number `figure`; a neighbour that cannot be cut adds no dose, one that was not drawn that of its fine staircase.
+    /// Around figure number `figure`; a neighbour that cannot be cut adds no dose, one that was not drawn that of its outline.
     #[must_use]
     pub fn of(
         mask: &Mask,
@@ -142,22 +141,26 @@ impl Scene {
         figure: usize,
         blur: Blur,
     ) -> Self {
-        Self::with(mask, standings, figure, blur, |other| {
-            match &fractures[other] {
+        Self::with(
+            mask,
+            standings,
+            figure,
+            blur,
+            |other, window| match &fractures[other] {
                 Ok(fracture) => fracture.shots.rects().collect(),
-                Err(Unmade::NotDrawn) => stand_in(&mask.figures[other].figure),
+                Err(Unmade::NotDrawn) => stand_in(&mask.figures[other].figure, window, blur),
                 Err(Unmade::Fracture(_)) => Vec::new(),
-            }
-        })
+            },
+        )
     }
 
-    /// Around figure number `figure`; `flashes` gives what is flashed for a figure, in its own frame.
+    /// Around figure number `figure`; `flashes` gives what is flashed for a figure within a window, both in its own frame.
     pub(super) fn with(
         mask: &Mask,
         standings: &Standings<'_>,
         figure: usize,
         blur: Blur,
-        flashes: impl Fn(usize) -> Vec<(Rect, Dose)>,
+        flashes: impl Fn(usize, Rect) -> Vec<(Rect, Dose)>,
     ) -> Self {
         let of_figure = flashes;
         let distinct = &mask.figures[figure];
@@ -171,7 +174,8 @@ impl Scene {
             if !own {
                 neighbours.push(mask.figures[other].figure.transformed(into_frame));
             }
-            let rects = of_figure(other).into_iter();
+            let seen = into_frame.inverse().apply_rect(window);
+            let rects = of_figure(other, seen).into_iter();
             let moved = rects.map(|(rect, dose)| (into_frame.apply_rect(rect), dose));
             flashes.extend(moved.filter(|(rect, _)| own || rect.touches(window)));
         }
@@ -182,19 +186,41 @@ impl Scene {
     }
 }
 
-/// How far the shots that stand in for a figure's own stray from its outline.
-const STAND_IN: Nm = Nm(0.5);
+/// Height of the slabs that stand in for a figure's own shots, σ: what they stray from the outline within a slab is far under the blur.
+const SLAB: f64 = 0.125;
 
-/// Shots of a figure that is not fractured: its outline, as good as drawn.
-pub(super) fn stand_in(figure: &Figure) -> Vec<(Rect, Dose)> {
-    let limits = ShotLimits {
-        address: AddressUnit::FINEST,
-        least_side: Nm(0.0),
-        greatest_side: Nm(1e6),
-        sliver: Nm(0.0),
-    };
-    let made = tile::fracture_staircase(figure, STAND_IN, &limits);
-    made.map_or_else(|_| Vec::new(), |made| made.shots.rects().collect())
+/// A figure that is not fractured, as good as drawn: slabs as wide as it is at their middle, those that touch the window.
+pub(super) fn stand_in(figure: &Figure, window: Rect, blur: Blur) -> Vec<(Rect, Dose)> {
+    let step = (blur.sigma() * SLAB).to_pm().unwrap_or_default().max(1);
+    let bounds = figure.bounds();
+    let first = (window.min.y - bounds.min.y).max(0) / step;
+    let mut y = bounds.min.y + first * step;
+    let mut slabs = Vec::new();
+    while y < bounds.max.y.min(window.max.y) {
+        let above = (y + step).min(bounds.max.y);
+        let middle = y + (above - y) / 2;
+        let crossing = |(a, b): (Point, Point)| {
+            let (low, high) = if a.y < b.y { (a, b) } else { (b, a) };
+            let along = i128::from(high.x - low.x) * i128::from(middle - low.y);
+            let x =
+                || low.x + i64::try_from(along / i128::from(high.y - low.y)).unwrap_or_default();
+            (low.y <= middle && middle < high.y).then(x)
+        };
+        let edges = figure.rings().flat_map(|ring| ring.edges());
+        let mut crossings: Vec<i64> = edges.filter_map(crossing).collect();
+        crossings.sort_unstable();
+        let slab = |ends: &[i64]| Rect {
+            min: Point::new(ends[0], y),
+            max: Point::new(ends[1], above),
+        };
+        let here = crossings.chunks_exact(2).map(slab);
+        slabs.extend(
+            here.filter(|s| s.width() > 0 && s.touches(window))
+                .map(|s| (s, Dose(1.0))),
+        );
+        y = above;
+    }
+    slabs
 }
 
 /// Own frame → mask at the first place of a figure.

@@ -319,6 +319,7 @@ impl Basis {
             correction,
             settings: Settings {
                 background,
+                errors: terms.profile.shot_errors(),
                 ..Settings::new(setup.blur, setup.tolerance)
             },
         })
@@ -413,7 +414,14 @@ fn finish(
         sample,
     } = parts;
     let figures_distinct = clips.iter().map(|clip| clip.mask.figures.len()).sum();
-    let choice = verdict::choose(&fractures, figures_distinct, terms.slot);
+    let mut choice = verdict::choose(&fractures, figures_distinct, terms.slot);
+    if let Some(sample) = sample
+        .as_ref()
+        .filter(|s| s.figures_drawn < s.figures_distinct)
+    {
+        sampled::say(&mut choice.verdict, sample);
+    }
+    let flips = verdict::flips(&fractures, figures_distinct);
     let recommended = choice.recommended.map(|method| {
         let all = made.iter().filter_map(|made| made.get(method));
         let lists: Vec<&MadeMask> = all.map(AsRef::as_ref).collect();
@@ -486,6 +494,7 @@ fn finish(
         verdict: choice.verdict,
         recommended: choice.recommended,
         reason: choice.reason,
+        flips,
         sensitivity,
         raster,
         flags,

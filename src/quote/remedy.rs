@@ -7,7 +7,7 @@ use rayon::prelude::*;
 
 use crate::fracture::tile::Staircase;
 use crate::fracture::{Fracture, Fracturer, Job};
-use crate::geom::{Figure, offset};
+use crate::geom::{Figure, Rect, offset};
 use crate::judge::{self, Fidelity, Pieces};
 use crate::mask::{DistinctFigure, Standings};
 use crate::number::brief as number;
@@ -46,7 +46,6 @@ pub fn remedies(
     clips: &[Clip<'_>],
     terms: &Terms<'_>,
     answer: &mut Answer,
-    tick: &(dyn Fn() + Sync),
 ) -> Result<(), QuoteError> {
     let Some(method) = answer.quote.recommended else {
         return Ok(());
@@ -65,10 +64,15 @@ pub fn remedies(
         })
         .take(MOST_FLAGGED)
         .collect();
-    let mut tried = shop.try_all(&flagged, tick)?;
+    let mut tried = shop.try_all(&flagged)?;
     let late = answer.quote.verdict.fits != Fits::Yes;
-    let change = match terms.slot.filter(|_| late && answer.quote.sample.is_none()) {
-        Some(slot) => shop.must_change(slot, &all, &mut tried, tick)?,
+    let sampled = answer
+        .quote
+        .sample
+        .as_ref()
+        .is_some_and(|s| s.figures_drawn < s.figures_distinct);
+    let change = match terms.slot.filter(|_| late && !sampled) {
+        Some(slot) => shop.must_change(slot, &all, &mut tried)?,
         None => None,
     };
     let (flags, quote) = (answer.quote.flags.clone(), &mut answer.quote);
@@ -85,6 +89,12 @@ pub fn remedies(
             quote.remedies.len(),
             distinct.len()
         ));
+    }
+    if late && terms.slot.is_some() && sampled {
+        quote.notes.push(
+            "what must change is worked out where every figure is fractured, not from a sample"
+                .to_owned(),
+        );
     }
     quote.must_change = change;
     Ok(())
@@ -180,16 +190,11 @@ impl<'a> Shop<'a> {
         &self.clips[subject.clip].mask.figures[subject.figure]
     }
 
-    fn try_all(
-        &self,
-        subjects: &[&Subject],
-        tick: &(dyn Fn() + Sync),
-    ) -> Result<Tried, WriteTimeError> {
+    fn try_all(&self, subjects: &[&Subject]) -> Result<Tried, WriteTimeError> {
         subjects
             .par_iter()
             .filter_map(|subject| {
                 let tried = self.try_one(subject).transpose()?;
-                tick();
                 Some(tried.map(|tried| (subject.key(), tried)))
             })
             .collect()
@@ -327,13 +332,13 @@ impl<'a> Shop<'a> {
     /// How these shots print the figure as drawn, beside the neighbours' as they are.
     fn judged(&self, subject: &Subject, fracture: &Fracture) -> Fidelity {
         let mask = self.clips[subject.clip].mask;
-        let of = |other: usize| match &self.fractures[subject.clip][other] {
+        let blur = self.basis.setup.blur;
+        let of = |other: usize, window: Rect| match &self.fractures[subject.clip][other] {
             _ if other == subject.figure => fracture.shots.rects().collect(),
             Ok(fracture) => fracture.shots.rects().collect(),
-            Err(Unmade::NotDrawn) => made::stand_in(&mask.figures[other].figure),
+            Err(Unmade::NotDrawn) => made::stand_in(&mask.figures[other].figure, window, blur),
             Err(Unmade::Fracture(_)) => Vec::new(),
         };
-        let blur = self.basis.setup.blur;
         let scene = Scene::with(
             mask,
             &self.standings[subject.clip],
@@ -368,7 +373,6 @@ impl<'a> Shop<'a> {
         slot: Hours,
         all: &[Subject],
         tried: &mut Tried,
-        tick: &(dyn Fn() + Sync),
     ) -> Result<Option<MustChange>, QuoteError> {
         let beamless = hours::beamless(self.clips, self.terms)?;
         if beamless > slot {
@@ -410,7 +414,7 @@ impl<'a> Shop<'a> {
                 .into_iter()
                 .filter(|s| !tried.contains_key(&s.key()))
                 .collect();
-            tried.append(&mut self.try_all(&few, tick)?);
+            tried.append(&mut self.try_all(&few)?);
         }
     }
 

@@ -95,6 +95,9 @@ pub struct Quote {
     pub recommended: Option<Method>,
     /// Why, in one sentence.
     pub reason: String,
+    /// Slots at which the choice flips, upward; empty if it is the same for every slot.
+    #[serde(default)]
+    pub flips: Vec<Flip>,
     /// What moves the total of the recommended fracture, most first.
     #[serde(default)]
     pub sensitivity: Vec<Sensitivity>,
@@ -277,6 +280,10 @@ pub struct FractureSummary {
     pub figures_out_of_tolerance: Option<u64>,
     /// How far the contour moves for 1 % of dose.
     pub margin_nm_per_pct: Margin,
+    /// Standard deviation of the contour under the profile's errors of shot edges, shot doses and electrons, not exceeded on 95 % of the outline;
+    /// `None` if the profile states no errors.
+    #[serde(default)]
+    pub edge_sd_nm: Option<f64>,
     /// Greatest dose anywhere, multiples of dose-to-size.
     pub peak_dose: Option<f64>,
     /// Hours to write the mask; `None` if they could not be computed.
@@ -301,6 +308,17 @@ pub struct Margin {
     pub median: Option<f64>,
     /// Greatest.
     pub worst: Option<f64>,
+}
+
+/// A slot at which another fracture becomes the one to order.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Flip {
+    /// The slot.
+    pub slot_h: f64,
+    /// Ordered below it.
+    pub below: Method,
+    /// Ordered from it on.
+    pub from: Method,
 }
 
 /// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.

@@ -1,7 +1,7 @@
 //! A quote of many figures from the fracture of some of them.
 //!
-//! Figures are drawn ([`super::sample`]), fractured and judged with their neighbours; where a neighbour was not drawn, a fine staircase stands in for
-//! its shots. Shots, times and scores of all figures follow from those drawn by their weights. Hours are those of a pattern in which figures that were not
+//! Figures are drawn ([`super::sample`]), fractured and judged with their neighbours; the neighbours' outlines
+//! stand in for their shots. Shots, times and scores of all figures follow from those drawn by their weights. Hours are those of a pattern in which figures that were not
 //! drawn stand in their places with what the fit expects of them, scaled so that all together come out as estimated.
 
 use std::sync::Arc;
@@ -293,11 +293,11 @@ impl<'a> Drawing<'a> {
 
     fn judged(&self, unit: &Unit<'_>, fracture: Fracture) -> Made {
         let mask = self.clips[unit.clip].mask;
-        let flashes = |other: usize| {
+        let flashes = |other: usize, window: Rect| {
             if other == unit.figure {
                 fracture.shots.rects().collect()
             } else {
-                made::stand_in(&mask.figures[other].figure)
+                made::stand_in(&mask.figures[other].figure, window, self.setup.blur)
             }
         };
         let scene = Scene::with(
@@ -629,6 +629,16 @@ pub(super) fn note(sample: &SampleUsed, fractures: &result::Fractures) -> Option
         String::new()
     };
     Some(format!(
-        "worst values, flags and shot lists are those of the figures drawn, with fine staircases for neighbours that were not{fails}"
+        "worst values, flags and shot lists are those of the figures drawn, judged beside their neighbours as drawn in the layout{fails}"
     ))
+}
+
+/// Says of a verdict that cannot be given that a larger sample may give it.
+pub(super) fn say(verdict: &mut result::Verdict, sample: &SampleUsed) {
+    if verdict.fits == result::Fits::CannotSay && verdict.slot_h.is_some() {
+        verdict.sentence += &format!(
+            " It rests on {} of {} figures: a larger sample narrows it as far as it comes from drawing.",
+            sample.figures_drawn, sample.figures_distinct
+        );
+    }
 }

@@ -89,6 +89,7 @@ pub fn of_fidelity(scores: &judge::Summary) -> FractureSummary {
             median: scores.margin_nm_per_pct.median,
             worst: scores.margin_nm_per_pct.worst,
         },
+        edge_sd_nm: scores.edge_sd_nm.p95,
         peak_dose: None,
         hours: None,
     }

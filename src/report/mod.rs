@@ -9,6 +9,8 @@ pub mod html;
 pub mod overview_plot;
 mod plot;
 pub mod progress;
+pub mod remedies_csv;
+mod remedy_text;
 mod sample_text;
 pub mod shots_csv;
 pub mod stripes_csv;

@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
-use super::sample_text;
+use super::{remedy_text, sample_text};
 use crate::number::{self, UNMEASURED, brief};
 use crate::quote::result::{
     Count, Flag, FractureSummary, Hours, Method, Quote, RasterLine, Sensitivity, Source,
@@ -67,6 +67,12 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
     out.paragraph(&quote.verdict.sentence, "");
     let order = quote.recommended.map_or("none", Method::name);
     out.paragraph(&format!("Recommended: {order}. {}", quote.reason), "");
+    out.paragraph(&remedy_text::choice(quote), "");
+    if let Some(change) = &quote.must_change {
+        for (line, indent) in remedy_text::must_change(change, options.flags) {
+            out.paragraph(&line, indent);
+        }
+    }
     flags(quote, options.flags, &mut out);
     out.blank();
     for note in &quote.notes {
@@ -517,6 +523,9 @@ fn flags(quote: &Quote, most: usize, out: &mut Text) {
         }
         if !flag.remedy.is_empty() {
             let _ = write!(words, "; {}", flag.remedy);
+        }
+        if let Some(tried) = remedy_text::of_flag(quote, flag) {
+            let _ = write!(words, "; {tried}");
         }
         if let Some(picture) = &flag.picture {
             let _ = write!(words, " [{picture}]");

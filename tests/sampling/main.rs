@@ -8,5 +8,6 @@ mod meander;
 mod population;
 #[path = "../common/random.rs"]
 mod random;
+mod real;
 #[path = "../common/regions.rs"]
 mod regions;
