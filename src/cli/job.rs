@@ -51,7 +51,7 @@ pub(super) struct JobArgs {
     /// Fracture only a sample of the figures, drawn at random until shots and beam time are known within this, as 2% (95 % interval).
     #[arg(long, value_name = "P%")]
     within: Option<Percent>,
-    /// Fracture a sample of this many distinct figures, or fewer if --within is reached.
+    /// Fracture a sample of this many distinct figures (30 at least), or fewer if --within is reached.
     #[arg(long, value_name = "N")]
     sample: Option<usize>,
     /// Stop drawing after so many minutes. The result then depends on the clock; it says how to repeat it without.
@@ -315,6 +315,9 @@ impl Plan {
         let tolerance = *job.tolerance_nm.get_or_insert(Stray(2.0));
         job.within_nm.get_or_insert(tolerance);
         job.effort.get_or_insert_default();
+        if job.within.is_some() || job.sample.is_some() || job.time_limit_min.is_some() {
+            job.seed.get_or_insert(1);
+        }
         let flags = *job.flags.get_or_insert(10);
         job.profile = Some(ProfileChoice::Read(Box::new(profile.clone())));
         job.raster = Some(match &raster {

@@ -31,8 +31,10 @@ const SMOOTHER: [f64; 2] = [0.5, 1.0];
 const COARSER: [f64; 2] = [2.0, 3.0];
 /// Doses tried.
 const DOSES: [f64; 2] = [0.95, 1.05];
-/// A remedy that strays further than this many tolerances is none.
+/// A remedy that strays further than this many tolerances, and the accuracy of a contour, is none.
 const FURTHEST: f64 = 2.0;
+/// To how much of a nm a contour is found.
+const CONTOUR_NM: f64 = 0.01;
 /// Flagged figures on which remedies are tried, most seconds first.
 const MOST_FLAGGED: usize = 32;
 /// Figures on which remedies are tried to bring the mask into its slot, most seconds first.
@@ -205,6 +207,7 @@ impl<'a> Shop<'a> {
         let Ok(now) = &self.made[subject.clip][subject.figure] else {
             return Ok(None);
         };
+        let before = self.seconds(subject, &now.fracture)?;
         let (mut trials, mut fractures) = (Vec::new(), Vec::new());
         for remedy in self.candidates() {
             let Some(fracture) = self.fractured(subject, now, remedy) else {
@@ -213,7 +216,7 @@ impl<'a> Shop<'a> {
             let fidelity = self.judged(subject, &fracture);
             let seconds = self.seconds(subject, &fracture)?;
             let scores = fidelity.summary();
-            let furthest = FURTHEST * self.basis.setup.tolerance.0;
+            let furthest = FURTHEST * self.basis.setup.tolerance.0 + CONTOUR_NM;
             let near = scores
                 .edge_error_nm
                 .worst
@@ -222,7 +225,7 @@ impl<'a> Shop<'a> {
                 remedy,
                 shots: fracture.shots.len() as u64,
                 seconds,
-                saved_s: subject.seconds - seconds,
+                saved_s: before - seconds,
                 edge_error_nm: summary::edge_error(&scores),
                 prints_within_tolerance: scores.prints_within_tolerance,
                 acceptable: near
@@ -241,7 +244,7 @@ impl<'a> Shop<'a> {
             place_nm: corner.to_nm(),
             method: self.method,
             shots: now.fracture.shots.len() as u64,
-            seconds: subject.seconds,
+            seconds: before,
             edge_error_nm: summary::edge_error(&now.fidelity.summary()),
             trials,
         };

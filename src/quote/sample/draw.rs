@@ -9,6 +9,9 @@ use super::strata::Strata;
 /// Figures first drawn from each stratum.
 const FIRST: usize = 12;
 
+/// Fewest figures that a sample may hold: with less, the fit passes through them all and nothing is known of how far it is off.
+pub const LEAST: usize = 30;
+
 /// Each further batch makes the sample larger by this share.
 const GROWTH: f64 = 0.25;
 
@@ -16,7 +19,7 @@ const GROWTH: f64 = 0.25;
 pub struct Stop<'a> {
     /// Half width of every interval, as a share of the value.
     pub within: Option<f64>,
-    /// Figures at most.
+    /// Figures at most; [`LEAST`] are drawn anyway.
     pub most: Option<usize>,
     /// Asked before each figure or few; true ends the drawing once a first number was drawn.
     pub out_of_time: &'a dyn Fn() -> bool,
@@ -63,7 +66,7 @@ pub fn draw<C, E>(
         taken: vec![0; strata.members.len()],
         stopped: Stopped::All,
     };
-    let most = stop.most.unwrap_or(usize::MAX).min(strata.len());
+    let most = stop.most.unwrap_or(usize::MAX).max(LEAST).min(strata.len());
     let mut wanted: Vec<usize> = strata.members.iter().map(|m| m.len().min(FIRST)).collect();
     loop {
         let batch = batch(strata, &drawn.taken, &wanted);
@@ -111,8 +114,11 @@ pub fn draw<C, E>(
     }
 }
 
-/// Whether two figures or more of every stratum that has them were drawn: less says nothing of how they scatter.
+/// Whether two figures or more of every stratum that has them were drawn, and [`LEAST`] in all: less says nothing of how they scatter.
 fn enough(strata: &Strata, taken: &[usize]) -> bool {
+    if taken.iter().sum::<usize>() < LEAST.min(strata.len()) {
+        return false;
+    }
     strata
         .members
         .iter()
