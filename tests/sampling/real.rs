@@ -155,8 +155,8 @@ fn a_sampled_quote_covers_the_exact_one() {
                 (beam.low..=beam.high).contains(&(e.flash_h + e.settle_h)),
                 "{method:?}: {beam:?}, exactly {e:?}"
             );
-            // The hours are those of the estimate, stripe by stripe.
-            assert!((h.flash_h + h.settle_h - beam.value).abs() < 1e-6 * beam.value);
+            // The hours are those of the estimate, but for half a flash at most in each of two passes: flashes are whole.
+            assert!((h.flash_h + h.settle_h - beam.value).abs() <= 60e-9 / 3600.0);
             assert_eq!(h.stripes, e.stripes);
             assert!((h.total_h - e.total_h).abs() < 1e-3 * e.total_h);
             assert!(h.low_h < h.total_h && h.total_h < h.high_h);
