@@ -6,13 +6,13 @@ use std::path::PathBuf;
 use clap::{Args, ValueEnum};
 use serde::Serialize;
 
+use crate::fracture::Fracturer;
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Prefer, Staircase, Tile};
-use crate::fracture::{FractureError, Fracturer};
 use crate::judge::{Background, Settings};
 use crate::mask::Mask;
 use crate::quote::exposure::Exposed;
-use crate::quote::made::{self, Made};
+use crate::quote::made::{self, Made, Unmade};
 use crate::quote::result::{Count, FractureSummary};
 use crate::quote::{Setup, summary};
 use crate::report::progress::Progress;
@@ -274,8 +274,8 @@ impl FractureArgs {
 }
 
 /// The notes of all figures, each with its figure.
-fn notes(made: &[Result<Made, FractureError>]) -> Vec<String> {
-    let of = |(figure, made): (u64, &Result<Made, FractureError>)| {
+fn notes(made: &[Result<Made, Unmade>]) -> Vec<String> {
+    let of = |(figure, made): (u64, &Result<Made, Unmade>)| {
         let notes = made.as_ref().map_or(&[][..], |m| &m.fracture.notes);
         notes
             .iter()
@@ -288,7 +288,7 @@ fn notes(made: &[Result<Made, FractureError>]) -> Vec<String> {
 /// Writes the shots of all figures; returns the number of lines.
 pub(super) fn write(
     mask: &Mask,
-    made: &[Result<Made, FractureError>],
+    made: &[Result<Made, Unmade>],
     distinct: bool,
     out: impl Write,
 ) -> io::Result<u64> {
@@ -327,7 +327,7 @@ fn text(answer: &Answer) -> String {
     aligned(&lines)
 }
 
-fn lower_bound(mask: &Mask, made: &[Result<Made, FractureError>]) -> Option<Count> {
+fn lower_bound(mask: &Mask, made: &[Result<Made, Unmade>]) -> Option<Count> {
     let all = mask.figures.iter().zip(made);
     let mut bounds = all.map(|(figure, made)| {
         let bound = made.as_ref().ok()?.fracture.lower_bound?;
@@ -337,7 +337,7 @@ fn lower_bound(mask: &Mask, made: &[Result<Made, FractureError>]) -> Option<Coun
     total.map(Count)
 }
 
-fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setup) -> u128 {
+fn beyond_limits(mask: &Mask, made: &[Result<Made, Unmade>], setup: &Setup) -> u128 {
     let (least, greatest) = (setup.limits.least_side, setup.limits.greatest_side);
     let all = mask.figures.iter().zip(made);
     all.filter_map(|(figure, made)| {
@@ -347,8 +347,8 @@ fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setu
     .fold(0, u128::saturating_add)
 }
 
-fn failing(mask: &Mask, made: &[Result<Made, FractureError>]) -> Vec<Failing> {
-    let one = |(figure, made): (usize, &Result<Made, FractureError>)| {
+fn failing(mask: &Mask, made: &[Result<Made, Unmade>]) -> Vec<Failing> {
+    let one = |(figure, made): (usize, &Result<Made, Unmade>)| {
         let distinct = &mask.figures[figure];
         let first = made::first_place(distinct);
         let corner = first.apply_rect(distinct.figure.bounds()).min.to_nm();

@@ -8,11 +8,11 @@ use crate::geom::{Figure, Point, offset};
 use crate::mask::DistinctFigure;
 use crate::number::brief as number;
 use crate::target::Need;
-use crate::units::{Dose, Nm};
+use crate::units::{Dose, Nm, Seconds};
 use crate::write_time::Field;
 
 use super::Clip;
-use super::made::{Made, MadeMask, Setup, first_place};
+use super::made::{Made, MadeMask, Setup, Unmade, first_place};
 use super::result::{ByMethod, Flag, FlagKind, Method};
 use super::summary::beyond_limits;
 
@@ -35,6 +35,8 @@ pub(super) struct Evidence<'a> {
     pub(super) recommended: Option<Method>,
     pub(super) setup: &'a Setup,
     pub(super) peak_dose: Option<Dose>,
+    /// Flashing and settling of the recommended fracture, where the figures made are only some of all.
+    pub(super) beam: Option<Seconds>,
 }
 
 /// All flags: what cannot print first, what only costs last; within a kind the gravest first.
@@ -135,7 +137,10 @@ impl Subject<'_> {
         let of_clip = evidence.made.get(self.clip)?;
         let error = of_clip
             .iter()
-            .find_map(|(_, made)| made?.get(self.number)?.as_ref().err())?;
+            .find_map(|(_, made)| match made?.get(self.number)? {
+                Err(Unmade::Fracture(error)) => Some(error),
+                Ok(_) | Err(Unmade::NotDrawn) => None,
+            })?;
         let remedy = format!("repair the outline: {error}");
         Some(self.flag(self.corner(), FlagKind::BrokenOutline, None, "", remedy))
     }
@@ -324,7 +329,8 @@ fn costly(evidence: &Evidence<'_>) -> Vec<Flag> {
         let outline = Nm(distinct.figure.outline_nm()).um() * distinct.place_count() as f64;
         rates.push((figure, seconds, copies * outline));
     }
-    let total: f64 = rates.iter().map(|(_, seconds, _)| seconds).sum();
+    let made: f64 = rates.iter().map(|(_, seconds, _)| seconds).sum();
+    let total = evidence.beam.map_or(made, |beam| beam.0);
     let outlines: f64 = rates.iter().map(|(_, _, outline)| outline).sum();
     let rate = |(_, seconds, outline): &(Subject<'_>, f64, f64)| seconds / outline;
     let mut sorted = rates.clone();

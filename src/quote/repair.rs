@@ -10,12 +10,12 @@ use std::collections::BTreeSet;
 
 use rayon::prelude::*;
 
-use crate::fracture::{Fracture, FractureError, Fracturer, Job, Miss, MissReason};
+use crate::fracture::{Fracture, Fracturer, Job, Miss, MissReason};
 use crate::geom::{Orientation, Point, Rect, Repetition, Transform};
 use crate::mask::{DistinctFigure, Mask, Place, Standings};
 use crate::units::Dose;
 
-use super::made::{Setup, window};
+use super::made::{Setup, Unmade, window};
 
 /// Rounds at most.
 const ROUNDS: usize = 8;
@@ -36,7 +36,7 @@ type Surroundings = Vec<(usize, Transform)>;
 /// Fits figures anew that do not print beside their neighbours' shots; what is then still missed is among their misses.
 pub(super) fn repair(
     mask: &Mask,
-    fractures: &mut [Result<Fracture, FractureError>],
+    fractures: &mut [Result<Fracture, Unmade>],
     fracturer: &dyn Fracturer,
     setup: &Setup,
 ) {
@@ -139,7 +139,7 @@ impl Scene<'_> {
     fn with_job<T>(
         &self,
         figure: usize,
-        fractures: &[Result<Fracture, FractureError>],
+        fractures: &[Result<Fracture, Unmade>],
         look: impl FnOnce(&Job<'_>) -> T,
     ) -> T {
         let distinct = &self.mask.figures[figure];
@@ -167,7 +167,7 @@ impl Scene<'_> {
         })
     }
 
-    fn misses(&self, figure: usize, fractures: &[Result<Fracture, FractureError>]) -> Vec<Miss> {
+    fn misses(&self, figure: usize, fractures: &[Result<Fracture, Unmade>]) -> Vec<Miss> {
         let Ok(fracture) = &fractures[figure] else {
             return Vec::new();
         };
@@ -176,11 +176,7 @@ impl Scene<'_> {
         })
     }
 
-    fn refit(
-        &self,
-        figure: usize,
-        fractures: &[Result<Fracture, FractureError>],
-    ) -> Option<Fracture> {
+    fn refit(&self, figure: usize, fractures: &[Result<Fracture, Unmade>]) -> Option<Fracture> {
         let found = fractures[figure].as_ref().ok()?;
         self.with_job(figure, fractures, |job| self.fracturer.refit(job, found))
     }
