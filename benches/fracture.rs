@@ -28,10 +28,7 @@ fn fracturers(effort: Effort) -> [Box<dyn Fracturer>; 2] {
         effort,
         ..Tile::default()
     };
-    let overlap = Overlap {
-        effort,
-        bound: false,
-    };
+    let overlap = Overlap::with(effort);
     [Box::new(tile), Box::new(overlap)]
 }
 

@@ -4,6 +4,10 @@
 //! threshold, a place outside and further than it below. Within 2 σ of a drawn corner the tolerance is
 //! `tolerance + 0.771 σ`, because no shot list prints a blurred right angle sharp.
 
+mod peak;
+
+pub use peak::peaks;
+
 use crate::blur::{Blur, CORNER_PULL_BACK, THRESHOLD};
 use crate::geom::Figure;
 use crate::units::{BaseDose, Nm};

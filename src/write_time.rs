@@ -14,6 +14,7 @@ mod grid;
 mod load;
 mod pattern;
 mod study;
+mod sums;
 
 use serde::Serialize;
 
@@ -24,6 +25,7 @@ use crate::units::{Amperes, BaseDose, CurrentDensity, Dose, Hours, Nm, Seconds};
 pub use flash::Cuts;
 pub use pattern::{Clip, Counts, Field, Pattern, Placed};
 pub use study::{Interval, Sensitivity, interval, sensitivity, tie};
+pub use sums::{Borders, Summed, Sums};
 
 use load::{Load, StripeLoad};
 

@@ -12,6 +12,7 @@ fn found_and_bound(figure: &Figure) -> Option<(usize, usize)> {
     let job = Job {
         figure,
         context: &[],
+        flashed: &[],
         blur: Blur::new(Nm(10.0)).unwrap(),
         tolerance: Nm(2.0),
         limits: ShotLimits {
@@ -22,8 +23,8 @@ fn found_and_bound(figure: &Figure) -> Option<(usize, usize)> {
         },
     };
     let fracture = Overlap {
-        effort: Effort::Quick,
         bound: true,
+        ..Overlap::with(Effort::Quick)
     }
     .fracture(&job)
     .unwrap();

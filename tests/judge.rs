@@ -197,6 +197,20 @@ fn nothing_flashed_is_lost_and_unmeasured_not_zero() {
     assert_eq!(json["prints_within_tolerance"], false);
 }
 
+/// A neighbour whose edge prints 1 nm too large, within the tolerance, at every distance: also where only that edge is in sight.
+#[test]
+fn the_edge_of_a_neighbour_is_no_piece_of_its_own() {
+    let s = settings(8.0, 2.0);
+    let figure = Figure::from_rect(rect(0, 0, 200, 200));
+    for gap in 30..120 {
+        let neighbour = Figure::from_rect(rect(200 + gap, -500, 900, 700));
+        let shots = flash(&[rect(0, 0, 200, 200), rect(199 + gap, -500, 900, 700)]);
+        let dose = Exposure::new(s.blur, shots.into_iter());
+        let found = judge(&figure, &[neighbour], &dose, &s);
+        assert_eq!(found.pieces, Pieces::default(), "{gap} nm apart");
+    }
+}
+
 /// Two bars joined by a 40 nm neck, and variations that lose, join or add a piece.
 #[test]
 fn pieces_and_holes_are_counted() {

@@ -1,6 +1,7 @@
 //! The join of all stages on small masks whose answers can be worked by hand.
 
 use shotwright::fracture::Effort;
+use shotwright::fracture::overlap::DoseLevels;
 use shotwright::geom::{Point, Repetition};
 use shotwright::layout::{self, Layout};
 use shotwright::mask::{Mask, MaskOptions, Standings};
@@ -33,6 +34,7 @@ fn terms(profile: &Profile) -> Terms<'_> {
         slot: Some(Hours(24.0)),
         peak_dose: None,
         raster: None,
+        dose_levels: DoseLevels::ONE,
     }
 }
 

@@ -234,6 +234,7 @@ fn summary(shots: u128, total_h: f64) -> FractureSummary {
             median: Some(0.251),
             worst: Some(0.78),
         },
+        edge_sd_nm: None,
         peak_dose: Some(1.9),
         scores: None,
         dose_map: None,
@@ -315,6 +316,7 @@ fn quote() -> Quote {
         },
         recommended: Some(Method::Overlap),
         reason: "It is the only fracture that is written within the slot, and it prints within tolerance.".to_owned(),
+        flips: Vec::new(),
         sensitivity: Vec::new(),
         raster: None,
         flags: vec![
@@ -339,6 +341,9 @@ fn quote() -> Quote {
                 picture: None,
             },
         ],
+        sample: None,
+        remedies: Vec::new(),
+        must_change: None,
         caution: CAUTION.to_owned(),
     }
 }

@@ -6,16 +6,18 @@ use clap::{Arg, ArgMatches, Args, Command, FromArgMatches};
 use serde::{Deserialize, Serialize};
 
 use crate::blur::Blur;
+use crate::fracture::overlap::DoseLevels;
 use crate::layout::{self, Layout};
 use crate::mask::{Expose, Mask, MaskOptions};
 use crate::profile::{Key, Profile, ProfileErrors};
 use crate::quote::{Chosen, QuoteError, Setup};
 use crate::shot::{AddressUnit, ShotLimits};
-use crate::units::Nm;
+use crate::units::{Dose, Nm};
 
 use super::CliError;
 use super::values::{
-    ExposeArg, Finite, LayerName, PlaceNm, Positive, RectNm, Share, not_negative, positive, stray,
+    ExposeArg, Finite, LayerName, Levels, PeakDose, PlaceNm, Positive, RectNm, Share, not_negative,
+    positive, stray,
 };
 
 /// Which part of which layout: flags of every command that reads one, and the keys of a `[[clip]]` in a job file.
@@ -240,6 +242,38 @@ impl LimitArgs {
             greatest_side: Nm(self.max_side_nm),
             sliver: Nm(self.sliver_nm),
         })
+    }
+}
+
+/// What the doses of the overlap fracture may be.
+#[derive(Debug, Args)]
+pub(super) struct DoseArgs {
+    /// No place may get more dose than this multiple of dose-to-size, 1 or more, from the shots of the overlap fracture: costs shots.
+    /// Default: no limit.
+    #[arg(long, value_name = "D", allow_negative_numbers = true)]
+    peak_dose: Option<PeakDose>,
+    /// Doses that a shot of the overlap fracture may have, multiples of dose-to-size, as 0.8,1,1.2. Default: 1.
+    #[arg(long, value_name = "D,D,...", allow_hyphen_values = true)]
+    dose_levels: Option<Levels>,
+}
+
+impl DoseArgs {
+    /// The limit, if there is one.
+    pub(super) fn peak(&self) -> Option<Dose> {
+        self.peak_dose.map(|PeakDose(dose)| Dose(dose))
+    }
+
+    /// The levels.
+    pub(super) fn levels(&self) -> DoseLevels {
+        self.dose_levels
+            .map(|Levels(levels)| levels)
+            .unwrap_or_default()
+    }
+
+    /// The option that was given, if one was.
+    pub(super) fn given(&self) -> Option<&'static str> {
+        let peak = self.peak_dose.map(|_| "--peak-dose");
+        peak.or(self.dose_levels.map(|_| "--dose-levels"))
     }
 }
 

@@ -7,6 +7,7 @@ use serde::Serialize;
 
 use crate::expose::Density;
 use crate::fracture::Effort;
+use crate::fracture::overlap::DoseLevels;
 use crate::quote::exposure::{LongRange, Maps};
 use crate::quote::result::Method;
 use crate::quote::{Chosen, Terms, made};
@@ -77,6 +78,7 @@ pub(super) fn run(args: &CorrectArgs) -> Result<Outcome, CliError> {
         field: None,
         slot: None,
         peak_dose: None,
+        dose_levels: DoseLevels::ONE,
         raster: None,
     };
     let refused = |file: &str| {

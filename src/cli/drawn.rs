@@ -9,11 +9,11 @@ use rayon::prelude::*;
 
 use crate::blur::Blur;
 use crate::expose::{level_at, level_lines, polish};
-use crate::fracture::{Fracture, FractureError};
+use crate::fracture::Fracture;
 use crate::geom::{Orientation, Point, Rect, Repetition, Transform};
 use crate::layout::{Cell, CellId, Format, Layer, Layout, Placement, Shape};
 use crate::mask::{DistinctFigure, Mask, Place, Standings};
-use crate::quote::made::{self, Made, Scene};
+use crate::quote::made::{self, Made, Scene, Unmade};
 use crate::shot::ShotList;
 use crate::units::{Dose, Nm, PM_PER_NM};
 
@@ -42,7 +42,7 @@ pub(super) fn format(path: &Path) -> Option<Format> {
 /// What is drawn.
 pub(super) struct Drawn<'a> {
     pub(super) mask: &'a Mask,
-    pub(super) made: &'a [Result<Made, FractureError>],
+    pub(super) made: &'a [Result<Made, Unmade>],
     pub(super) blur: Blur,
     /// Contours, too.
     pub(super) contours: bool,
@@ -118,7 +118,7 @@ impl Drawn<'_> {
             return vec![Vec::new(); self.made.len()];
         }
         let standings = Standings::new(self.mask);
-        let fractures: Vec<Result<Fracture, FractureError>> = self
+        let fractures: Vec<Result<Fracture, Unmade>> = self
             .made
             .iter()
             .map(|made| {
@@ -138,7 +138,7 @@ impl Drawn<'_> {
     fn contour_lines(
         &self,
         distinct: &DistinctFigure,
-        fracture: &Result<Fracture, FractureError>,
+        fracture: &Result<Fracture, Unmade>,
         scene: &Scene,
     ) -> Vec<Vec<[f64; 2]>> {
         let Ok(fracture) = fracture else {

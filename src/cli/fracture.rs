@@ -6,20 +6,20 @@ use std::path::PathBuf;
 use clap::{Args, ValueEnum};
 use serde::Serialize;
 
+use crate::fracture::Fracturer;
 use crate::fracture::overlap::Overlap;
 use crate::fracture::tile::{Prefer, Staircase, Tile};
-use crate::fracture::{FractureError, Fracturer};
 use crate::judge::{Background, Settings};
 use crate::mask::Mask;
 use crate::quote::exposure::Exposed;
-use crate::quote::made::{self, Made};
+use crate::quote::made::{self, Made, Unmade};
 use crate::quote::result::{Count, FractureSummary};
 use crate::quote::{Setup, summary};
 use crate::report::progress::Progress;
 use crate::report::shots_csv::{Rows, ShotWriter};
 use crate::units::Nm;
 
-use super::args::SetupArgs;
+use super::args::{DoseArgs, SetupArgs};
 use super::values::{EffortArg, stray};
 use crate::report::table::{grouped, significant};
 
@@ -50,6 +50,8 @@ pub(super) struct FractureArgs {
     /// What an exact tiling prefers: the fewest shots, or no slivers at the price of shots (the price is shown).
     #[arg(long, value_enum, default_value_t = PreferArg::Shots)]
     prefer: PreferArg,
+    #[command(flatten)]
+    doses: DoseArgs,
     /// Prove how many shots any overlap fracture needs at least: about half as much work again.
     #[arg(long)]
     bound: bool,
@@ -123,6 +125,18 @@ pub(super) fn run(args: &FractureArgs) -> Result<Outcome, CliError> {
     if args.bound && !matches!(args.method, MethodArg::Overlap) {
         return Err(CliError::Arguments(
             "--bound is for --method overlap".to_owned(),
+        ));
+    }
+    if let Some(option) = args.doses.given()
+        && !matches!(args.method, MethodArg::Overlap)
+    {
+        return Err(CliError::Arguments(format!(
+            "{option} is for --method overlap"
+        )));
+    }
+    if args.bound && !args.doses.levels().are_one() {
+        return Err(CliError::Arguments(
+            "--bound is proved for dose 1 only: leave out --dose-levels".to_owned(),
         ));
     }
     let to_stdout = args
@@ -250,16 +264,18 @@ impl FractureArgs {
                 },
             }),
             MethodArg::Overlap => Box::new(Overlap {
-                effort,
                 bound: self.bound,
+                peak_dose: self.doses.peak(),
+                dose_levels: self.doses.levels(),
+                ..Overlap::with(effort)
             }),
         }
     }
 }
 
 /// The notes of all figures, each with its figure.
-fn notes(made: &[Result<Made, FractureError>]) -> Vec<String> {
-    let of = |(figure, made): (u64, &Result<Made, FractureError>)| {
+fn notes(made: &[Result<Made, Unmade>]) -> Vec<String> {
+    let of = |(figure, made): (u64, &Result<Made, Unmade>)| {
         let notes = made.as_ref().map_or(&[][..], |m| &m.fracture.notes);
         notes
             .iter()
@@ -272,7 +288,7 @@ fn notes(made: &[Result<Made, FractureError>]) -> Vec<String> {
 /// Writes the shots of all figures; returns the number of lines.
 pub(super) fn write(
     mask: &Mask,
-    made: &[Result<Made, FractureError>],
+    made: &[Result<Made, Unmade>],
     distinct: bool,
     out: impl Write,
 ) -> io::Result<u64> {
@@ -311,7 +327,7 @@ fn text(answer: &Answer) -> String {
     aligned(&lines)
 }
 
-fn lower_bound(mask: &Mask, made: &[Result<Made, FractureError>]) -> Option<Count> {
+fn lower_bound(mask: &Mask, made: &[Result<Made, Unmade>]) -> Option<Count> {
     let all = mask.figures.iter().zip(made);
     let mut bounds = all.map(|(figure, made)| {
         let bound = made.as_ref().ok()?.fracture.lower_bound?;
@@ -321,7 +337,7 @@ fn lower_bound(mask: &Mask, made: &[Result<Made, FractureError>]) -> Option<Coun
     total.map(Count)
 }
 
-fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setup) -> u128 {
+fn beyond_limits(mask: &Mask, made: &[Result<Made, Unmade>], setup: &Setup) -> u128 {
     let (least, greatest) = (setup.limits.least_side, setup.limits.greatest_side);
     let all = mask.figures.iter().zip(made);
     all.filter_map(|(figure, made)| {
@@ -331,8 +347,8 @@ fn beyond_limits(mask: &Mask, made: &[Result<Made, FractureError>], setup: &Setu
     .fold(0, u128::saturating_add)
 }
 
-fn failing(mask: &Mask, made: &[Result<Made, FractureError>]) -> Vec<Failing> {
-    let one = |(figure, made): (usize, &Result<Made, FractureError>)| {
+fn failing(mask: &Mask, made: &[Result<Made, Unmade>]) -> Vec<Failing> {
+    let one = |(figure, made): (usize, &Result<Made, Unmade>)| {
         let distinct = &mask.figures[figure];
         let first = made::first_place(distinct);
         let corner = first.apply_rect(distinct.figure.bounds()).min.to_nm();

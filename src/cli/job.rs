@@ -16,13 +16,15 @@ use crate::layout::Layout;
 use crate::mask::MaskOptions;
 use crate::profile::{Number, Profile};
 use crate::quote::Terms;
+use crate::quote::result::{SampleUsed, Stopped};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::Field;
 
 use super::CliError;
 use super::args::{LayoutArgs, Overrides, open_profile};
 use super::output::file_error;
-use super::values::{EffortArg, FieldMm, Positive, Share, Stray};
+use super::sampling::{Percent, SamplePlan};
+use super::values::{EffortArg, FieldMm, Levels, PeakDose, Positive, Share, Stray};
 
 /// What is asked, as flags and as the keys of a job file.
 #[derive(Args, Clone, Debug, Default, Serialize, Deserialize)]
@@ -43,9 +45,25 @@ pub(super) struct JobArgs {
     /// Field that the layout is a clip of, width x height in mm. Default: the layout alone.
     #[arg(long, value_name = "WxH")]
     field_mm: Option<FieldMm>,
-    /// Flag figures whose dose piles up above this multiple of dose-to-size.
+    /// No place may get more dose than this multiple of dose-to-size, 1 or more, from the shots of the overlap fracture: costs shots.
+    /// Default: no limit.
     #[arg(long, value_name = "D", allow_negative_numbers = true)]
-    peak_dose: Option<Positive>,
+    peak_dose: Option<PeakDose>,
+    /// Doses that a shot of the overlap fracture may have, multiples of dose-to-size, as 0.8,1,1.2. Default: 1.
+    #[arg(long, value_name = "D,D,...", allow_hyphen_values = true)]
+    dose_levels: Option<Levels>,
+    /// Fracture only a sample of the figures, drawn at random until shots and beam time are known within this, as 2% (95 % interval).
+    #[arg(long, value_name = "P%")]
+    within: Option<Percent>,
+    /// Fracture a sample of this many distinct figures (30 at least), or fewer if --within is reached.
+    #[arg(long, value_name = "N")]
+    sample: Option<usize>,
+    /// Stop drawing after so many minutes. The result then depends on the clock; it says how to repeat it without.
+    #[arg(long, value_name = "MIN", allow_negative_numbers = true)]
+    time_limit_min: Option<Positive>,
+    /// Another seed, another sample. Default: 1.
+    #[arg(long, value_name = "S")]
+    seed: Option<u64>,
     /// Flagged figures listed and drawn before the rest is only counted. Default: 10.
     #[arg(long, value_name = "N")]
     flags: Option<usize>,
@@ -250,6 +268,11 @@ impl JobArgs {
             effort: own.effort.or(file.effort),
             field_mm: own.field_mm.or(file.field_mm),
             peak_dose: own.peak_dose.or(file.peak_dose),
+            dose_levels: own.dose_levels.or(file.dose_levels),
+            within: own.within.or(file.within),
+            sample: own.sample.or(file.sample),
+            time_limit_min: own.time_limit_min.or(file.time_limit_min),
+            seed: own.seed.or(file.seed),
             flags: own.flags.or(file.flags),
             out: own.out.or(file.out),
             json: own.json.or(file.json),
@@ -297,6 +320,9 @@ impl Plan {
         let tolerance = *job.tolerance_nm.get_or_insert(Stray(2.0));
         job.within_nm.get_or_insert(tolerance);
         job.effort.get_or_insert_default();
+        if job.within.is_some() || job.sample.is_some() || job.time_limit_min.is_some() {
+            job.seed.get_or_insert(1);
+        }
         let flags = *job.flags.get_or_insert(10);
         job.profile = Some(ProfileChoice::Read(Box::new(profile.clone())));
         job.raster = Some(match &raster {
@@ -350,9 +376,25 @@ impl Plan {
             effort: job.effort.unwrap_or_default().into(),
             field: self.field(),
             slot: job.slot_h.map(|Positive(h)| Hours(h)),
-            peak_dose: job.peak_dose.map(|Positive(dose)| Dose(dose)),
+            peak_dose: job.peak_dose.map(|PeakDose(dose)| Dose(dose)),
+            dose_levels: job
+                .dose_levels
+                .map(|Levels(levels)| levels)
+                .unwrap_or_default(),
             raster: self.raster.as_ref(),
         }
+    }
+
+    /// The sample asked for; `None` to fracture every figure.
+    pub(super) fn sampling(&self) -> Option<SamplePlan> {
+        let job = &self.job;
+        let asked = job.within.is_some() || job.sample.is_some() || job.time_limit_min.is_some();
+        asked.then(|| SamplePlan {
+            within: job.within,
+            most: job.sample,
+            seed: job.seed.unwrap_or(1),
+            minutes: job.time_limit_min.map(|Positive(minutes)| minutes),
+        })
     }
 
     fn field(&self) -> Option<Field> {
@@ -360,7 +402,11 @@ impl Plan {
     }
 
     /// The job with every value spelled out, layouts named as seen from `directory` and sealed by their CRC-32.
-    pub(super) fn resolved(&self, directory: &Path) -> Result<String, CliError> {
+    pub(super) fn resolved(
+        &self,
+        directory: &Path,
+        sample: Option<&SampleUsed>,
+    ) -> Result<String, CliError> {
         let clip = |clip: &PlannedClip| {
             Ok(LayoutArgs {
                 layout: seen_from(directory, &clip.args.layout),
@@ -369,7 +415,12 @@ impl Plan {
                 ..clip.args.clone()
             })
         };
+        // What a clock ended is repeated by its number of figures.
+        let timed = sample.filter(|sample| sample.stopped == Stopped::TimeOut);
+        let drawn = timed.and_then(|sample| usize::try_from(sample.figures_drawn).ok());
         let job = JobArgs {
+            sample: drawn.or(self.job.sample),
+            time_limit_min: self.job.time_limit_min.filter(|_| drawn.is_none()),
             clip: self
                 .clips
                 .iter()

@@ -16,6 +16,7 @@ mod pictures;
 mod profile;
 mod quote;
 mod raster;
+mod sampling;
 mod sweep;
 mod values;
 

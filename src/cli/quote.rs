@@ -10,6 +10,7 @@ use crate::quote::{self, Answer, Chosen, Clip, Terms};
 use crate::report::figures_csv;
 use crate::report::html::{self, Beside};
 use crate::report::progress::Progress;
+use crate::report::remedies_csv;
 use crate::report::stripes_csv;
 use crate::report::table::{self, TextOptions};
 
@@ -30,6 +31,7 @@ use super::{CliError, Outcome, start_threads};
 #[command(after_long_help = "Examples:
   shotwright quote sample-masks/mixed.oas --slot-h 24 --out quote-mixed
   shotwright quote clip.oas --layer 1/0 --slot-h 24 --field-mm 104x132 --coverage 0.6
+  shotwright quote layer.oas --layer 1/0 --slot-h 24 --within 2% --time-limit-min 30
   shotwright quote job.toml --slot-h 10 --settle-ns 50 --json
 
 A job file:
@@ -98,8 +100,18 @@ pub(super) fn run(args: &QuoteArgs, threads: Option<u16>) -> Result<Outcome, Cli
         })
         .collect();
     let bar = Progress::new("figures", quote::ticks(&masks));
-    let answer = quote::quote(&clips, &terms, &|| bar.inc());
+    let tick = || bar.inc();
+    let answer = match plan.sampling() {
+        Some(sample) => {
+            sample.run(|sampling| quote::quote_sampled(&clips, &terms, sampling, &tick))
+        }
+        None => quote::quote(&clips, &terms, &tick),
+    };
     drop(bar);
+    let answer = answer.and_then(|mut answer| {
+        quote::remedies(&clips, &terms, &mut answer)?;
+        Ok(answer)
+    });
     let names: Vec<&str> = plan.clips.iter().map(|clip| clip.name.as_str()).collect();
     let mut answer = answer.map_err(|cause| CliError::Quote {
         file: names.join(", "),
@@ -136,13 +148,14 @@ struct Files {
     quote: Sink,
     figures: Sink,
     stripes: Sink,
+    remedies: Sink,
     page: Sink,
     /// By clip: tile and overlap, with their names.
     shots: Vec<[(Method, String, Sink); 2]>,
 }
 
 /// What the page links to.
-const BESIDE: [Beside<'static>; 4] = [
+const BESIDE: [Beside<'static>; 5] = [
     Beside {
         name: "quote.json",
         about: "the whole result",
@@ -154,6 +167,10 @@ const BESIDE: [Beside<'static>; 4] = [
     Beside {
         name: "stripes.csv",
         about: "the time of each stripe by cause",
+    },
+    Beside {
+        name: "remedies.csv",
+        about: "what was tried on flagged figures and what must change, with seconds saved and edge error paid",
     },
     Beside {
         name: "job.toml",
@@ -187,6 +204,7 @@ impl Files {
             quote: output.sink("quote.json")?,
             figures: output.sink("figures.csv")?,
             stripes: output.sink("stripes.csv")?,
+            remedies: output.sink("remedies.csv")?,
             page: output.sink("report.html")?,
             shots,
             output,
@@ -200,7 +218,7 @@ impl Files {
         terms: &Terms<'_>,
         plan: &Plan,
     ) -> Result<(), CliError> {
-        let job = plan.resolved(self.output.directory())?;
+        let job = plan.resolved(self.output.directory(), answer.quote.sample.as_ref())?;
         self.job.write(|out| out.write_all(job.as_bytes()))?;
         for ((clip, of_clip), sinks) in clips.iter().zip(&answer.made).zip(self.shots) {
             for (method, name, sink) in sinks {
@@ -227,6 +245,8 @@ impl Files {
         let shown = pictures.write(answer, plan.flags, &mut self.output)?;
         self.figures
             .write(|out| figures_csv::write(out, &answer.figures).map_err(std::io::Error::other))?;
+        self.remedies
+            .write(|out| remedies_csv::write(out, &answer.quote).map_err(std::io::Error::other))?;
         self.stripes
             .write(|out| stripes_csv::write(out, &answer.stripes).map_err(std::io::Error::other))?;
         self.page.write(|out| {

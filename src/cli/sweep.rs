@@ -93,6 +93,12 @@ impl FromStr for AxisArg {
 
 pub(super) fn run(args: &SweepArgs, threads: Option<u16>) -> Result<Outcome, CliError> {
     let plan = args.request.plan()?;
+    if plan.sampling().is_some() {
+        return Err(CliError::Arguments(
+            "--within, --sample and --time-limit-min are for quote: a sweep fractures every figure"
+                .to_owned(),
+        ));
+    }
     start_threads(threads.or(plan.threads))?;
     let axes: Vec<Axis> = args.over.iter().map(|AxisArg(axis)| axis.clone()).collect();
     for (i, axis) in axes.iter().enumerate() {
@@ -158,7 +164,7 @@ pub(super) fn run(args: &SweepArgs, threads: Option<u16>) -> Result<Outcome, Cli
     })?;
     match files {
         Some(files) => {
-            let job = plan.resolved(files.output.directory())?;
+            let job = plan.resolved(files.output.directory(), None)?;
             files.job.write(|out| out.write_all(job.as_bytes()))?;
             files
                 .csv

@@ -7,9 +7,10 @@ use clap::ValueEnum;
 use serde::{Deserialize, Serialize};
 
 use crate::fracture::Effort;
+use crate::fracture::overlap::DoseLevels;
 use crate::geom::{Point, Rect};
 use crate::layout::Layer;
-use crate::units::Nm;
+use crate::units::{Dose, Nm};
 use crate::write_time::Field;
 
 /// Numbers with bounds: from text as flags are, from a number as keys of a file are.
@@ -57,10 +58,43 @@ numbers! {
     Positive, |x| x > 0.0, "a finite number over 0";
     /// 0 or more.
     NotNegative, |x| x >= 0.0, "a finite number of 0 or more";
+    /// A greatest dose: a wide shot alone gives 1.
+    PeakDose, |x| x >= 1.0, "a finite number of 1 or more";
     /// A length by which contours may stray, nm: beyond a thousand it says nothing of a blur.
     Stray, |x| x > 0.0 && x <= 1000.0, "a number over 0, up to 1000";
     /// A share.
     Share, |x| x > 0.0 && x <= 1.0, "a number over 0, up to 1";
+}
+
+/// Doses that a shot may have: `0.8,1,1.2` as a flag, `[0.8, 1, 1.2]` in a file.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(try_from = "Vec<f64>", into = "Vec<f64>")]
+pub(super) struct Levels(pub(super) DoseLevels);
+
+impl TryFrom<Vec<f64>> for Levels {
+    type Error = String;
+
+    fn try_from(levels: Vec<f64>) -> Result<Self, String> {
+        let doses: Vec<Dose> = levels.into_iter().map(Dose).collect();
+        let levels = DoseLevels::new(&doses);
+        levels.map(Self).map_err(|error| error.to_string())
+    }
+}
+
+impl From<Levels> for Vec<f64> {
+    fn from(Levels(levels): Levels) -> Vec<f64> {
+        levels.iter().collect()
+    }
+}
+
+impl FromStr for Levels {
+    type Err = String;
+
+    fn from_str(text: &str) -> Result<Self, String> {
+        let levels = text.split(',').map(|level| level.trim().parse());
+        let levels = levels.collect::<Result<Vec<f64>, _>>();
+        Self::try_from(levels.map_err(|_| "expected doses as 0.8,1,1.2".to_owned())?)
+    }
 }
 
 /// Several lengths: `100,-50` as a flag, `[100, -50]` in a file.

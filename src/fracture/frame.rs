@@ -1,14 +1,16 @@
 //! The frame in which a job is fractured, so that the result does not depend on where and how the figure lies.
 
-use super::{Fracture, FractureError, Job};
-use crate::geom::{Figure, Orientation, Point, Transform};
+use super::{Fracture, Job};
+use crate::geom::{Figure, Orientation, Point, Rect, Transform};
+use crate::shot::ShotList;
+use crate::units::Dose;
 
 /// Fractures a job in a frame of its own, so that equal figures at different places give equal shots to the bit: the lower-left
 /// corner of the bounds goes to within one address unit of the origin.
-pub(super) fn framed(
+pub(super) fn framed<E>(
     job: &Job<'_>,
-    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, FractureError>,
-) -> Result<Fracture, FractureError> {
+    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, E>,
+) -> Result<Fracture, E> {
     let (figure, context) = (job.figure.clone(), job.context.to_vec());
     fracture_in(
         job,
@@ -17,13 +19,25 @@ pub(super) fn framed(
     )
 }
 
-/// The same, turned and mirrored to the least of the eight ways that the figure can lie, so that its images give images of its shots.
+/// As [`framed`], with shots made before.
+pub(super) fn refitted(
+    job: &Job<'_>,
+    shots: &ShotList,
+    fit: impl FnOnce(&Job<'_>, &ShotList) -> Option<Fracture>,
+) -> Option<Fracture> {
+    let (figure, context) = (job.figure.clone(), job.context.to_vec());
+    let framed = Framed::new(job, Orientation::IDENTITY, figure, context);
+    let moved = shots.transformed(framed.to);
+    fracture_in(job, framed, |job| fit(job, &moved).ok_or(())).ok()
+}
+
+/// As [`framed`], turned and mirrored to the least of the eight ways that the figure can lie, so that its images give images of its shots.
 ///
 /// Of ways that look the same the first is taken: images of a symmetric figure give as many shots, but not always images of them.
-pub(super) fn oriented(
+pub(super) fn oriented<E>(
     job: &Job<'_>,
-    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, FractureError>,
-) -> Result<Fracture, FractureError> {
+    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, E>,
+) -> Result<Fracture, E> {
     let ways = Orientation::all().map(|orientation| {
         let turned = |f: &Figure| {
             let shift = Point::new(0, 0);
@@ -69,14 +83,21 @@ impl Framed {
 }
 
 /// Fractures there and brings the result back.
-fn fracture_in(
+fn fracture_in<E>(
     job: &Job<'_>,
     framed: Framed,
-    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, FractureError>,
-) -> Result<Fracture, FractureError> {
+    fracture: impl FnOnce(&Job<'_>) -> Result<Fracture, E>,
+) -> Result<Fracture, E> {
+    let moved = |list: &Vec<(Rect, Dose)>| {
+        list.iter()
+            .map(|&(rect, dose)| (framed.to.apply_rect(rect), dose))
+            .collect()
+    };
+    let flashed: Vec<Vec<(Rect, Dose)>> = job.flashed.iter().map(moved).collect();
     let mut found = fracture(&Job {
         figure: &framed.figure,
         context: &framed.context,
+        flashed: &flashed,
         ..*job
     })?;
     let back = framed.to.inverse();

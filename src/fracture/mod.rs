@@ -5,12 +5,13 @@ mod frame;
 pub mod overlap;
 pub mod tile;
 
+use fit::{Doses, Setting};
 use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
 
-use frame::{framed, oriented};
+use frame::{framed, oriented, refitted};
 
 use crate::blur::{Blur, NARROWEST_LINE};
-use crate::geom::{Figure, Point};
+use crate::geom::{Figure, Point, Rect};
 use crate::shot::{ShotLimits, ShotList};
 use crate::target::{Need, Target, Violation};
 use crate::units::{Dose, Nm};
@@ -22,6 +23,9 @@ pub struct Job<'a> {
     pub figure: &'a Figure,
     /// Other figures near enough to matter, same frame.
     pub context: &'a [Figure],
+    /// What they flash, same frame, one list for each kind of place that the figure stands at: the shots must print it at all of
+    /// them. No list: they are taken to print ideally.
+    pub flashed: &'a [Vec<(Rect, Dose)>],
     /// The short-range blur.
     pub blur: Blur,
     /// How far the contour may stray from the outline.
@@ -54,6 +58,24 @@ pub trait Fracturer: Sync {
     /// # Errors
     /// When the figure cannot be cut at all: its rings are broken or beyond what the method can count.
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError>;
+
+    /// The places that shots made for a job do not print, where the neighbours may flash otherwise than was thought.
+    fn misses(&self, job: &Job<'_>, shots: &ShotList) -> Vec<Miss> {
+        misses(job, shots, Doses::default())
+    }
+
+    /// Shots like those found, moved to where they print what they now miss, or the best found; `None` if the method moves none.
+    fn refit(&self, _job: &Job<'_>, _found: &Fracture) -> Option<Fracture> {
+        None
+    }
+}
+
+/// The places that shots do not print, and where they pile up too much dose.
+fn misses(job: &Job<'_>, shots: &ShotList, doses: Doses) -> Vec<Miss> {
+    let judged = refitted(job, shots, |job, shots| {
+        Some(Setting::with(job, doses).judged(shots.clone()))
+    });
+    judged.map_or_else(Vec::new, |fracture| fracture.misses)
 }
 
 /// Why a figure got no shots.
@@ -87,7 +109,8 @@ pub struct Miss {
     pub place: Point,
     /// Dose there, context included.
     pub dose: Dose,
-    /// Whether it must print (and does not) or must not (and does); true for a shot outside the limits.
+    /// Whether it must print (and does not) or must not (and does); true for a shot outside the limits, false for a dose over the
+    /// peak allowed.
     pub must_print: bool,
     /// Why, as far as known.
     pub reason: MissReason,
@@ -102,6 +125,17 @@ impl Miss {
             place,
             dose,
             must_print: true,
+            reason: MissReason::Limits,
+        }
+    }
+
+    /// A place (nm) that gets more dose than is allowed anywhere.
+    fn pile(place: [f64; 2], dose: f64) -> Self {
+        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
+        Self {
+            place: Point::new(pm(place[0]), pm(place[1])),
+            dose: Dose(dose),
+            must_print: false,
             reason: MissReason::Limits,
         }
     }
@@ -146,7 +180,8 @@ pub enum MissReason {
     TooNarrow,
     /// Turns more sharply than the blur can follow.
     TooSharp,
-    /// The shot limits stand in the way.
+    /// The limits of sides or of the peak dose stand in the way: a shot is outside them, the dose is, or the place prints
+    /// without them.
     Limits,
     /// No better solution was found.
     NotFound,

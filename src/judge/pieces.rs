@@ -3,7 +3,7 @@
 use serde::{Deserialize, Serialize};
 
 use crate::blur::THRESHOLD;
-use crate::target::{DoseField, Target};
+use crate::target::{DoseField, Need, Target};
 
 /// Figures whose pieces or holes are not as drawn; each kind counts a figure at each place once. All 0 is right.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
@@ -104,6 +104,21 @@ pub(super) fn find(
                 }) |= inside;
             }
         }
+        // The print of a neighbour beyond the lattice may reach onto it, within the tolerance of its outline.
+        let clear = |p: [f64; 2]| {
+            let mut all = std::iter::once(target).chain(others);
+            all.all(|t| t.need(p) == Need::Clear)
+        };
+        for (run, mark) in printed.runs[start..].iter().zip(&mut marks[start..]) {
+            if !mark.figure && !mark.other {
+                #[allow(
+                    clippy::cast_precision_loss,
+                    reason = "an index of memory is below 2^53"
+                )]
+                let stray = (run.from..run.to).any(|i| clear([x(i as f64), y]));
+                mark.stray = stray;
+            }
+        }
         std::mem::swap(&mut values, &mut below);
         std::mem::swap(&mut owner, &mut owner_below);
     }
@@ -113,6 +128,7 @@ pub(super) fn find(
         let sum = &mut by_piece[*root];
         sum.figure |= mark.figure;
         sum.other |= mark.other;
+        sum.stray |= mark.stray;
         sum.cells += mark.cells;
     }
     let roots = |wanted: &dyn Fn(&Mark) -> bool| {
@@ -136,7 +152,7 @@ pub(super) fn find(
             lost: u128::from(own == 0),
             split: u128::from(own > 1),
             bridged: u128::from(roots(&|m| m.figure && m.other) > 0),
-            extra: u128::from(roots(&|m| !m.figure && !m.other) > 0),
+            extra: u128::from(roots(&|m| m.stray && !m.figure && !m.other) > 0),
             holes: u128::from(own > 0 && holes != drawn_holes),
             beyond: 0,
         },
@@ -178,6 +194,8 @@ fn share_printed(dose: [f64; 4]) -> f64 {
 struct Mark {
     figure: bool,
     other: bool,
+    /// Beyond the tolerance of every outline.
+    stray: bool,
     cells: f64,
 }
 

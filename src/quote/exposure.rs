@@ -9,16 +9,15 @@ use std::collections::BTreeMap;
 use rayon::prelude::*;
 
 use crate::expose::{self, Backscatter, Density};
-use crate::fracture::FractureError;
 use crate::geom::{Orientation, Point, Rect, Repetition, Transform};
 use crate::judge::{Background, Fidelity};
-use crate::mask::{DistinctFigure, Mask};
+use crate::mask::{DistinctFigure, Mask, Place};
 use crate::profile::{Key, Profile};
 use crate::shot::{Shot, ShotList};
 use crate::target::ShotErrors;
 use crate::units::{BaseDose, Dose, Nm};
 
-use super::made::{Made, MadeMask};
+use super::made::{Made, MadeMask, Unmade};
 use super::result::DoseMap;
 use super::{Clip, QuoteError};
 
@@ -120,14 +119,27 @@ impl LongRange {
         clips: &[Clip<'a>],
         made: &[&'a MadeMask],
     ) -> Result<Vec<Exposed<'a>>, QuoteError> {
-        let all = || clips.iter().zip(made);
-        let of_field = all().map(|(clip, made)| {
+        let lists: Vec<_> = made.iter().map(|made| shots_of(made)).collect();
+        self.expose_shot_clips(clips, &lists)
+    }
+
+    /// As [`LongRange::expose_clips`], of shots by clip and figure.
+    ///
+    /// # Errors
+    /// As [`LongRange::expose`].
+    pub(super) fn expose_shot_clips<'a>(
+        &self,
+        clips: &[Clip<'a>],
+        shots: &[Vec<Option<&'a ShotList>>],
+    ) -> Result<Vec<Exposed<'a>>, QuoteError> {
+        let all = || clips.iter().zip(shots);
+        let of_field = all().map(|(clip, shots)| {
             let share = clip.coverage.unwrap_or(0.0);
-            share * mean_coverage(clip.mask, made)
+            share * coverage_of(clip.mask, shots)
         });
         let around: f64 = of_field.sum();
         all()
-            .map(|(clip, made)| self.expose(clip.mask, made, around))
+            .map(|(clip, shots)| self.expose_shots(clip.mask, shots, around))
             .collect()
     }
 
@@ -138,15 +150,24 @@ impl LongRange {
     pub fn expose<'a>(
         &self,
         mask: &'a Mask,
-        made: &'a [Result<Made, FractureError>],
+        made: &'a [Result<Made, Unmade>],
         surroundings: f64,
     ) -> Result<Exposed<'a>, QuoteError> {
-        let shots: Vec<Option<&ShotList>> = made
-            .iter()
-            .map(|made| Some(&made.as_ref().ok()?.fracture.shots))
-            .collect();
-        let Some(Maps { coverage, found }) = self.maps(mask, &shots, surroundings)? else {
-            return Ok(Exposed::as_fractured(mask, made));
+        self.expose_shots(mask, &shots_of(made), surroundings)
+    }
+
+    /// As [`LongRange::expose`], of shots by figure.
+    ///
+    /// # Errors
+    /// As [`LongRange::expose`].
+    fn expose_shots<'a>(
+        &self,
+        mask: &'a Mask,
+        shots: &[Option<&'a ShotList>],
+        surroundings: f64,
+    ) -> Result<Exposed<'a>, QuoteError> {
+        let Some(Maps { coverage, found }) = self.maps(mask, shots, surroundings)? else {
+            return Ok(Exposed::of_shots(mask, shots));
         };
         let split = |(figure, shots): (&'a DistinctFigure, &Option<&'a ShotList>)| {
             let shots = (*shots)?;
@@ -166,7 +187,7 @@ impl LongRange {
             Some(portions)
         };
         let portions: Vec<Option<Vec<Portion<'a>>>> =
-            mask.figures.par_iter().zip(&shots).map(split).collect();
+            mask.figures.par_iter().zip(shots).map(split).collect();
         let frame = mask.extent.unwrap_or(NOWHERE);
         let map = self.summary(frame, &coverage, &found, &portions)?;
         Ok(Exposed {
@@ -296,20 +317,16 @@ impl LongRange {
 impl<'a> Exposed<'a> {
     /// Every shot at the dose that its fracture gave it.
     #[must_use]
-    pub fn as_fractured(mask: &'a Mask, made: &'a [Result<Made, FractureError>]) -> Self {
-        let of_figure = |(figure, made): (&'a DistinctFigure, &'a Result<Made, FractureError>)| {
-            let shots = &made.as_ref().ok()?.fracture.shots;
-            let places = figure.places.iter().map(|place| Portion {
-                shots: Cow::Borrowed(shots),
-                transform: place.transform,
-                repetition: Cow::Borrowed(&place.repetition),
-                dose: Dose(1.0),
-                mean: Dose(1.0),
-            });
-            Some(places.collect())
+    pub fn as_fractured(mask: &'a Mask, made: &'a [Result<Made, Unmade>]) -> Self {
+        Self::of_shots(mask, &shots_of(made))
+    }
+
+    fn of_shots(mask: &'a Mask, shots: &[Option<&'a ShotList>]) -> Self {
+        let of_figure = |(figure, shots): (&'a DistinctFigure, &Option<&'a ShotList>)| {
+            Some(evenly(figure, (*shots)?, Dose(1.0)))
         };
         Self {
-            portions: mask.figures.iter().zip(made).map(of_figure).collect(),
+            portions: mask.figures.iter().zip(shots).map(of_figure).collect(),
             map: None,
         }
     }
@@ -344,6 +361,28 @@ impl<'a> Exposed<'a> {
     }
 }
 
+fn shots_of(made: &[Result<Made, Unmade>]) -> Vec<Option<&ShotList>> {
+    made.iter()
+        .map(|made| Some(&made.as_ref().ok()?.fracture.shots))
+        .collect()
+}
+
+/// Shots of a figure at one dose at all its places.
+pub(super) fn evenly<'a>(
+    figure: &'a DistinctFigure,
+    shots: &'a ShotList,
+    dose: Dose,
+) -> Vec<Portion<'a>> {
+    let place = |place: &'a Place| Portion {
+        shots: Cow::Borrowed(shots),
+        transform: place.transform,
+        repetition: Cow::Borrowed(&place.repetition),
+        dose,
+        mean: dose,
+    };
+    figure.places.iter().map(place).collect()
+}
+
 /// What a profile says of random errors, at a mean dose that the noise of the electrons depends on.
 #[must_use]
 pub fn shot_errors(profile: &Profile, mean: Dose) -> ShotErrors {
@@ -364,18 +403,26 @@ impl Portion<'_> {
 
 /// Dose times area of all shots at all places over the area of the extent: what a mask would cover if no shots lay on one another.
 #[must_use]
-pub fn mean_coverage(mask: &Mask, made: &[Result<Made, FractureError>]) -> f64 {
+pub fn mean_coverage(mask: &Mask, made: &[Result<Made, Unmade>]) -> f64 {
+    coverage_of(mask, &shots_of(made))
+}
+
+/// Dose times area of shots, nm².
+pub(super) fn charge(shots: &ShotList) -> f64 {
+    let area = |rect: Rect| Nm::from_pm(rect.width()).0 * Nm::from_pm(rect.height()).0;
+    shots.rects().map(|(rect, dose)| dose.0 * area(rect)).sum()
+}
+
+fn coverage_of(mask: &Mask, shots: &[Option<&ShotList>]) -> f64 {
     let area = |rect: Rect| Nm::from_pm(rect.width()).0 * Nm::from_pm(rect.height()).0;
     let extent = mask.extent.map_or(0.0, area);
     if extent == 0.0 {
         return 0.0;
     }
-    let of_figure = |(figure, made): (&DistinctFigure, &Result<Made, FractureError>)| {
-        let shots = made.as_ref().map(|made| made.fracture.shots.rects());
-        let one = shots.map_or(0.0, |shots| shots.map(|(r, dose)| dose.0 * area(r)).sum());
-        one * figure.place_count() as f64
+    let of_figure = |(figure, shots): (&DistinctFigure, &Option<&ShotList>)| {
+        shots.map_or(0.0, charge) * figure.place_count() as f64
     };
-    mask.figures.iter().zip(made).map(of_figure).sum::<f64>() / extent
+    mask.figures.iter().zip(shots).map(of_figure).sum::<f64>() / extent
 }
 
 /// The middle of a rectangle, rounded down to a picometre: the same wherever the rectangle stands.

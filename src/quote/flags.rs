@@ -8,11 +8,11 @@ use crate::geom::{Figure, Point, offset};
 use crate::mask::DistinctFigure;
 use crate::number::brief as number;
 use crate::target::Need;
-use crate::units::{Dose, Nm};
+use crate::units::{Dose, Nm, Seconds};
 use crate::write_time::Field;
 
 use super::Clip;
-use super::made::{Made, MadeMask, Setup, first_place};
+use super::made::{Made, MadeMask, Setup, Unmade, first_place};
 use super::result::{ByMethod, Flag, FlagKind, Method};
 use super::summary::beyond_limits;
 
@@ -20,6 +20,9 @@ use super::summary::beyond_limits;
 const TIMES_MEDIAN: f64 = 3.0;
 /// … and at least this share of all flashing and settling.
 const LEAST_SHARE: f64 = 0.01;
+
+/// A peak found is right to this.
+const PEAK_ERROR: f64 = 2e-3;
 
 /// What flags are found in.
 pub(super) struct Evidence<'a> {
@@ -32,6 +35,8 @@ pub(super) struct Evidence<'a> {
     pub(super) recommended: Option<Method>,
     pub(super) setup: &'a Setup,
     pub(super) peak_dose: Option<Dose>,
+    /// Flashing and settling of the recommended fracture, where the figures made are only some of all.
+    pub(super) beam: Option<Seconds>,
 }
 
 /// All flags: what cannot print first, what only costs last; within a kind the gravest first.
@@ -132,7 +137,10 @@ impl Subject<'_> {
         let of_clip = evidence.made.get(self.clip)?;
         let error = of_clip
             .iter()
-            .find_map(|(_, made)| made?.get(self.number)?.as_ref().err())?;
+            .find_map(|(_, made)| match made?.get(self.number)? {
+                Err(Unmade::Fracture(error)) => Some(error),
+                Ok(_) | Err(Unmade::NotDrawn) => None,
+            })?;
         let remedy = format!("repair the outline: {error}");
         Some(self.flag(self.corner(), FlagKind::BrokenOutline, None, "", remedy))
     }
@@ -206,7 +214,7 @@ impl Subject<'_> {
                 number(CORNER_PULL_BACK * sigma)
             ),
             Some(MissReason::Limits) => format!(
-                "smooth it there or allow sides outside {} to {} nm",
+                "smooth it there or allow sides outside {} to {} nm or a higher peak dose",
                 number(setup.limits.least_side.0),
                 number(setup.limits.greatest_side.0)
             ),
@@ -259,10 +267,10 @@ impl Subject<'_> {
         let limit = evidence.peak_dose?;
         let (method, made) = self
             .made(evidence)
-            .filter(|(_, made)| made.peak > limit)
+            .filter(|(_, made)| made.peak.0 > limit.0 + PEAK_ERROR)
             .max_by(|(_, a), (_, b)| a.peak.0.total_cmp(&b.peak.0))?;
         let remedy = format!(
-            "its {} fracture piles up more than {}: order it as tile, or allow more",
+            "its {} fracture piles up more than {}, and no other was found: order it as tile, or allow more",
             method.name(),
             number(limit.0)
         );
@@ -321,7 +329,8 @@ fn costly(evidence: &Evidence<'_>) -> Vec<Flag> {
         let outline = Nm(distinct.figure.outline_nm()).um() * distinct.place_count() as f64;
         rates.push((figure, seconds, copies * outline));
     }
-    let total: f64 = rates.iter().map(|(_, seconds, _)| seconds).sum();
+    let made: f64 = rates.iter().map(|(_, seconds, _)| seconds).sum();
+    let total = evidence.beam.map_or(made, |beam| beam.0);
     let outlines: f64 = rates.iter().map(|(_, _, outline)| outline).sum();
     let rate = |(_, seconds, outline): &(Subject<'_>, f64, f64)| seconds / outline;
     let mut sorted = rates.clone();

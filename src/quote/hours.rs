@@ -7,7 +7,8 @@ use crate::geom::{Point, Rect};
 use crate::profile::{Key, Kind, Profile};
 use crate::units::{Dose, Nm};
 use crate::write_time::{
-    self, Bound, Counts, Field, Pattern, Placed, StripeTime, WriteTime, WriteTimeError,
+    self, Borders, Bound, Counts, Field, Pattern, Placed, StripeTime, Summed, Sums, WriteTime,
+    WriteTimeError,
 };
 
 use super::exposure::{Exposed, Portion};
@@ -68,6 +69,60 @@ pub(super) struct Written<'a> {
     /// By clip.
     frames: Vec<Frame>,
     field: Option<Field>,
+    /// In place of all shots.
+    sums: Option<Spread<'a>>,
+}
+
+/// What shots add up to, figure by figure, where only that is known.
+#[derive(Clone, Debug)]
+pub(super) struct Spread<'a> {
+    /// Of all figures at all places, on the field.
+    pub(super) total: Sums,
+    pub(super) figures: Vec<Summed<'a>>,
+    pub(super) frame: Rect,
+    pub(super) field: Option<Field>,
+}
+
+impl Spread<'_> {
+    fn pattern<R>(&self, with: impl FnOnce(&Pattern<'_>) -> R) -> R {
+        let Some(field) = self.field else {
+            return with(&Pattern::Summed {
+                figures: &self.figures,
+                frame: self.frame,
+            });
+        };
+        let mean = |sum: f64| sum / self.total.flashes.max(1.0);
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "a float to integer cast saturates, and sums are not negative"
+        )]
+        let shots = self.total.flashes.round() as u128;
+        with(&Pattern::Counts {
+            counts: Counts {
+                shots,
+                mean_dose: Dose(mean(self.total.dose)),
+                mean_jump: Nm(mean(self.total.jump.0)),
+                mean_side: Nm(mean(self.total.side.0)),
+            },
+            field: Some(field),
+        })
+    }
+}
+
+/// Around the layout that stands for itself.
+pub(super) fn frame(clips: &[Clip<'_>]) -> Rect {
+    let extent = clips.iter().find_map(|clip| clip.mask.extent);
+    extent.unwrap_or(NOWHERE)
+}
+
+/// Where the shots of a clip are cut, and the jump to the first shot of a figure: as far as figures stand apart if they stand evenly.
+pub(super) fn borders(clip: &Clip<'_>, field: Option<Field>) -> (Borders, Nm) {
+    let extent = clip.mask.extent.unwrap_or(NOWHERE);
+    let area = Nm::from_pm(extent.width()).0 * Nm::from_pm(extent.height()).0;
+    let spacing = Nm((area / clip.mask.place_count().max(1) as f64).sqrt());
+    let borders = field.map_or(Borders::Of(extent), Borders::Somewhere);
+    (borders, spacing)
 }
 
 /// Around a clip, and its share of the field.
@@ -113,11 +168,26 @@ impl<'a> Written<'a> {
                 .collect(),
             by_figure,
             field,
+            sums: None,
+        }
+    }
+
+    /// Of figures of which only sums are known.
+    pub(super) fn of_sums(sums: Spread<'a>) -> Self {
+        Self {
+            by_figure: Vec::new(),
+            by_clip: Vec::new(),
+            frames: Vec::new(),
+            field: sums.field,
+            sums: Some(sums),
         }
     }
 
     /// Hands over the whole pattern.
     pub(super) fn pattern<R>(&self, with: impl FnOnce(&Pattern<'_>) -> R) -> R {
+        if let Some(sums) = &self.sums {
+            return sums.pattern(with);
+        }
         let parts = self.by_clip.iter().map(Vec::as_slice).zip(&self.frames);
         self.of(&parts.collect::<Vec<_>>(), with)
     }
@@ -170,12 +240,7 @@ impl<'a> Written<'a> {
     /// # Errors
     /// As [`WriteTime::new`].
     pub(super) fn time(&self, profile: &Profile) -> Result<Timed, WriteTimeError> {
-        let (time, interval) = self.pattern(|pattern| {
-            Ok::<_, WriteTimeError>((
-                WriteTime::new(profile, pattern)?,
-                write_time::interval(profile, pattern)?,
-            ))
-        })?;
+        let (hours, time) = self.hours(profile)?;
         let of_figure = |placed: &Option<Vec<Placed<'_>>>, clip: usize| {
             let Some(placed) = placed else {
                 return Ok(None);
@@ -194,14 +259,29 @@ impl<'a> Written<'a> {
             })
             .collect::<Result<_, WriteTimeError>>()?;
         Ok(Timed {
-            hours: Hours {
-                low_h: interval.low_h.0,
-                high_h: interval.high_h.0,
-                ..of_time(&time)
-            },
+            hours,
             time,
             seconds,
         })
+    }
+
+    /// Hours of the whole.
+    ///
+    /// # Errors
+    /// As [`WriteTime::new`].
+    pub(super) fn hours(&self, profile: &Profile) -> Result<(Hours, WriteTime), WriteTimeError> {
+        let (time, interval) = self.pattern(|pattern| {
+            Ok::<_, WriteTimeError>((
+                WriteTime::new(profile, pattern)?,
+                write_time::interval(profile, pattern)?,
+            ))
+        })?;
+        let hours = Hours {
+            low_h: interval.low_h.0,
+            high_h: interval.high_h.0,
+            ..of_time(&time)
+        };
+        Ok((hours, time))
     }
 }
 
@@ -240,7 +320,7 @@ fn travels(time: &WriteTime, asked: impl Fn(&StripeTime) -> bool) -> u64 {
         .sum()
 }
 
-fn placed<'a>(portions: &'a [Portion<'_>]) -> Vec<Placed<'a>> {
+pub(super) fn placed<'a>(portions: &'a [Portion<'_>]) -> Vec<Placed<'a>> {
     let place = |portion: &'a Portion<'_>| Placed {
         shots: &portion.shots,
         transform: portion.transform,
@@ -263,6 +343,26 @@ pub(super) fn rows(time: &WriteTime) -> Vec<StripeRow> {
         stage_s: stripe.stage_s.0,
     };
     time.stripes.iter().map(row).collect()
+}
+
+/// Hours of a mask without a single flash.
+///
+/// # Errors
+/// As [`WriteTime::new`].
+pub(super) fn beamless(
+    clips: &[Clip<'_>],
+    terms: &Terms<'_>,
+) -> Result<crate::units::Hours, WriteTimeError> {
+    let extent = frame(clips);
+    let field = terms.field.unwrap_or(Field {
+        width: Nm::from_pm(extent.width()),
+        height: Nm::from_pm(extent.height()),
+    });
+    let pattern = Pattern::Counts {
+        counts: Counts::of(0),
+        field: Some(field),
+    };
+    Ok(WriteTime::new(terms.profile, &pattern)?.total_h)
 }
 
 /// A raster writer over the same field at the base dose of the shaped-beam writer, and where the two tie.

@@ -23,7 +23,7 @@ pub struct Kept {
 type MadeKey = (FractureKey, [u64; 5]);
 
 /// All that a fracture depends on. Numbers by their bits: equal numbers, equal keys.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
 struct FractureKey {
     mask: usize,
     method: Method,
@@ -35,6 +35,8 @@ struct FractureKey {
     within: Option<u64>,
     /// How hard is searched; of no matter to the plain staircase.
     effort: Option<Effort>,
+    /// Peak and levels of the doses; of the overlap fracture.
+    doses: Option<(Option<u64>, Vec<u64>)>,
 }
 
 impl FractureKey {
@@ -50,6 +52,13 @@ impl FractureKey {
             sides: [limits.least_side, limits.greatest_side, limits.sliver].map(|s| s.0.to_bits()),
             within: plain.then(|| terms.within.0.to_bits()),
             effort: (!plain).then_some(terms.effort),
+            doses: (method == Method::Overlap).then(|| {
+                let levels = terms.dose_levels.iter().map(f64::to_bits);
+                (
+                    terms.peak_dose.map(|dose| dose.0.to_bits()),
+                    levels.collect(),
+                )
+            }),
         }
     }
 }
@@ -86,7 +95,7 @@ impl Kept {
             errors.dose,
             base_dose,
         ];
-        let key = (fracture, numbers.map(f64::to_bits));
+        let key = (fracture.clone(), numbers.map(f64::to_bits));
         let figures = mask.figures.len() as u64;
         let skip = |ticks: u64| (0..ticks).for_each(|_| tick());
         if let Some(made) = self.made.get(&key) {
@@ -95,7 +104,7 @@ impl Kept {
             return Arc::clone(made);
         }
         // The same shots may have been judged over another background.
-        let (from, to) = ((fracture, [0; 5]), (fracture, [u64::MAX; 5]));
+        let (from, to) = ((fracture.clone(), [0; 5]), (fracture, [u64::MAX; 5]));
         let fractures = match self.made.range(from..=to).next() {
             Some((_, made)) => {
                 self.reused += figures;

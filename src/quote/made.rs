@@ -5,12 +5,14 @@ use rayon::prelude::*;
 use crate::blur::{Blur, REACH};
 use crate::expose::Exposure;
 use crate::fracture::{Fracture, FractureError, Fracturer, Job, MissReason};
-use crate::geom::{Figure, Rect, Transform};
+use crate::geom::{Figure, Point, Rect, Transform};
 use crate::judge::{self, Fidelity};
 use crate::mask::{DistinctFigure, Mask, Standings};
 use crate::shot::ShotLimits;
-use crate::target::DoseField;
+use crate::target::peaks;
 use crate::units::{Dose, Nm};
+
+use super::repair::repair;
 
 /// What all figures of a mask are fractured for.
 #[derive(Clone, Copy, Debug)]
@@ -30,43 +32,57 @@ pub struct Made {
     pub fracture: Fracture,
     /// How they print together with the shots of the neighbours at the figure's first place.
     pub fidelity: Fidelity,
-    /// Greatest dose on a lattice of σ/2 over what is flashed.
+    /// Greatest dose over what is flashed, neighbours included; right to 1e-3 of it.
     pub peak: Dose,
 }
 
+/// Why a figure has no score.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum Unmade {
+    /// It cannot be cut.
+    #[error(transparent)]
+    Fracture(#[from] FractureError),
+    /// It is not in the sample that stands for all.
+    #[error("not drawn in the sample")]
+    NotDrawn,
+}
+
 /// Every distinct figure of a mask, in its order.
-pub type MadeMask = Vec<Result<Made, FractureError>>;
+pub type MadeMask = Vec<Result<Made, Unmade>>;
 
 /// The fractures alone.
 #[must_use]
-pub fn fractures_of(made: &MadeMask) -> Vec<Result<Fracture, FractureError>> {
-    let of = |made: &Result<Made, FractureError>| match made {
+pub fn fractures_of(made: &MadeMask) -> Vec<Result<Fracture, Unmade>> {
+    let of = |made: &Result<Made, Unmade>| match made {
         Ok(made) => Ok(made.fracture.clone()),
         Err(error) => Err(error.clone()),
     };
     made.iter().map(of).collect()
 }
 
-/// Fractures every distinct figure; `tick` is called after each.
+/// Fractures every distinct figure, `tick` called after each; those that their neighbours' shots then undo are fitted anew.
 #[must_use]
 pub fn fracture(
     mask: &Mask,
     fracturer: &dyn Fracturer,
     setup: &Setup,
     tick: &(dyn Fn() + Sync),
-) -> Vec<Result<Fracture, FractureError>> {
+) -> Vec<Result<Fracture, Unmade>> {
     let one = |distinct: &DistinctFigure| {
         let made = fracturer.fracture(&Job {
             figure: &distinct.figure,
             context: &distinct.context,
+            flashed: &[],
             blur: setup.blur,
             tolerance: setup.tolerance,
             limits: setup.limits,
         });
         tick();
-        made
+        made.map_err(Unmade::from)
     };
-    mask.figures.par_iter().map(one).collect()
+    let mut fractures: Vec<_> = mask.figures.par_iter().map(one).collect();
+    repair(mask, &mut fractures, fracturer, setup);
+    fractures
 }
 
 /// Judges every distinct figure on the dose of its own shots and of those its neighbours got; `tick` is called after each.
@@ -76,10 +92,10 @@ pub fn fracture(
 #[must_use]
 pub fn judge(
     mask: &Mask,
-    fractures: Vec<Result<Fracture, FractureError>>,
+    fractures: Vec<Result<Fracture, Unmade>>,
     settings: &judge::Settings,
     tick: &(dyn Fn() + Sync),
-) -> Vec<Result<Made, FractureError>> {
+) -> MadeMask {
     let standings = Standings::new(mask);
     let judged: Vec<Option<(Fidelity, Dose)>> = (0..fractures.len())
         .into_par_iter()
@@ -97,16 +113,17 @@ pub fn judge(
             Some((fidelity, peak))
         })
         .collect();
-    let made = |(fracture, judged): (Result<Fracture, FractureError>, _)| {
+    let made = |(fracture, judged): (Result<Fracture, Unmade>, _)| {
         let (fidelity, peak) = match judged {
             Some(judged) => judged,
             None => (Fidelity::default(), Dose(0.0)),
         };
-        fracture.map(|fracture| Made {
+        let made = |fracture| Made {
             fracture,
             fidelity,
             peak,
-        })
+        };
+        fracture.map(made)
     };
     fractures.into_iter().zip(judged).map(made).collect()
 }
@@ -120,15 +137,37 @@ pub struct Scene {
 }
 
 impl Scene {
-    /// Around figure number `figure`; a neighbour without shots adds no dose.
+    /// Around figure number `figure`; a neighbour that cannot be cut adds no dose, one that was not drawn that of its outline.
     #[must_use]
     pub fn of(
         mask: &Mask,
         standings: &Standings<'_>,
-        fractures: &[Result<Fracture, FractureError>],
+        fractures: &[Result<Fracture, Unmade>],
         figure: usize,
         blur: Blur,
     ) -> Self {
+        Self::with(
+            mask,
+            standings,
+            figure,
+            blur,
+            |other, window| match &fractures[other] {
+                Ok(fracture) => fracture.shots.rects().collect(),
+                Err(Unmade::NotDrawn) => stand_in(&mask.figures[other].figure, window, blur),
+                Err(Unmade::Fracture(_)) => Vec::new(),
+            },
+        )
+    }
+
+    /// Around figure number `figure`; `flashes` gives what is flashed for a figure within a window, both in its own frame.
+    pub(super) fn with(
+        mask: &Mask,
+        standings: &Standings<'_>,
+        figure: usize,
+        blur: Blur,
+        flashes: impl Fn(usize, Rect) -> Vec<(Rect, Dose)>,
+    ) -> Self {
+        let of_figure = flashes;
         let distinct = &mask.figures[figure];
         let first = first_place(distinct);
         let back = first.inverse();
@@ -140,17 +179,71 @@ impl Scene {
             if !own {
                 neighbours.push(mask.figures[other].figure.transformed(into_frame));
             }
-            if let Ok(fracture) = &fractures[other] {
-                let rects = fracture.shots.rects();
-                let moved = rects.map(|(rect, dose)| (into_frame.apply_rect(rect), dose));
-                flashes.extend(moved.filter(|(rect, _)| own || rect.touches(window)));
-            }
+            let seen = into_frame.inverse().apply_rect(window);
+            let rects = of_figure(other, seen).into_iter();
+            let moved = rects.map(|(rect, dose)| (into_frame.apply_rect(rect), dose));
+            flashes.extend(moved.filter(|(rect, _)| own || rect.touches(window)));
         }
         Self {
             neighbours,
             dose: Exposure::new(blur, flashes),
         }
     }
+}
+
+/// Height of the slabs that stand in for a figure's own shots, σ: what they stray from the outline within a slab is far under the blur.
+const SLAB: f64 = 0.125;
+
+/// A figure that is not fractured, as good as drawn: slabs as wide as it is at their middle, those that touch the window.
+pub(super) fn stand_in(figure: &Figure, window: Rect, blur: Blur) -> Vec<(Rect, Dose)> {
+    let step = (blur.sigma() * SLAB).to_pm().unwrap_or_default().max(1);
+    let slabs = slabs_in(figure, window, step).into_iter();
+    slabs.map(|slab| (slab, Dose(1.0))).collect()
+}
+
+/// Height of the slabs that a figure not fractured has on a density map, σ: far under the mesh, and few to a figure.
+const COARSE_SLAB: f64 = 8.0;
+
+/// A figure as it lies on a density map; its bounds where slabs miss it.
+pub(super) fn slabs(figure: &Figure, blur: Blur) -> Vec<Rect> {
+    let step = (blur.sigma() * COARSE_SLAB)
+        .to_pm()
+        .unwrap_or_default()
+        .max(1);
+    let slabs = slabs_in(figure, figure.bounds(), step);
+    if slabs.is_empty() {
+        return vec![figure.bounds()];
+    }
+    slabs
+}
+
+fn slabs_in(figure: &Figure, window: Rect, step: i64) -> Vec<Rect> {
+    let bounds = figure.bounds();
+    let first = (window.min.y - bounds.min.y).max(0) / step;
+    let mut y = bounds.min.y + first * step;
+    let mut slabs = Vec::new();
+    while y < bounds.max.y.min(window.max.y) {
+        let above = (y + step).min(bounds.max.y);
+        let middle = y + (above - y) / 2;
+        let crossing = |(a, b): (Point, Point)| {
+            let (low, high) = if a.y < b.y { (a, b) } else { (b, a) };
+            let along = i128::from(high.x - low.x) * i128::from(middle - low.y);
+            let x =
+                || low.x + i64::try_from(along / i128::from(high.y - low.y)).unwrap_or_default();
+            (low.y <= middle && middle < high.y).then(x)
+        };
+        let edges = figure.rings().flat_map(|ring| ring.edges());
+        let mut crossings: Vec<i64> = edges.filter_map(crossing).collect();
+        crossings.sort_unstable();
+        let slab = |ends: &[i64]| Rect {
+            min: Point::new(ends[0], y),
+            max: Point::new(ends[1], above),
+        };
+        let here = crossings.chunks_exact(2).map(slab);
+        slabs.extend(here.filter(|s| s.width() > 0 && s.touches(window)));
+        y = above;
+    }
+    slabs
 }
 
 /// Own frame → mask at the first place of a figure.
@@ -174,37 +267,29 @@ pub const fn why(reason: MissReason) -> &'static str {
     match reason {
         MissReason::TooNarrow => "narrower than the blur can print",
         MissReason::TooSharp => "turns more sharply than the blur can follow",
-        MissReason::Limits => "the limits of a shot's sides stand in the way",
+        MissReason::Limits => "the limits of sides or of the peak dose stand in the way",
         MissReason::NotFound => "no better shots were found",
     }
 }
 
 /// What the blur carries to a figure, in its own frame.
-fn window(distinct: &DistinctFigure, blur: Blur) -> Rect {
+pub(super) fn window(distinct: &DistinctFigure, blur: Blur) -> Rect {
     let reach = (blur.sigma() * REACH).to_pm().unwrap_or_default();
     distinct.figure.bounds().grown(reach)
 }
 
-/// Greatest dose on a lattice of σ/2 over a figure's shots.
-fn peak(dose: &Exposure, fracture: &Fracture) -> Dose {
+/// Step of the lattice on which the peak is looked for, σ.
+const PEAK_STEP: f64 = 0.25;
+
+/// Greatest dose over a figure's shots.
+pub(super) fn peak(dose: &Exposure, fracture: &Fracture) -> Dose {
     let rects = fracture.shots.rects().map(|(rect, _)| rect);
     let Some(around) = rects.reduce(Rect::hull) else {
         return Dose(0.0);
     };
     let ([x0, y0], [x1, y1]) = (around.min.to_nm(), around.max.to_nm());
-    let step = 0.5 * dose.blur().sigma().0;
-    #[allow(
-        clippy::cast_possible_truncation,
-        clippy::cast_sign_loss,
-        reason = "a positive length over σ/2; a float to integer cast saturates"
-    )]
-    let count = |length: f64| (length / step) as usize + 2;
-    let mut row = vec![0.0; count(x1 - x0)];
-    let mut peak = 0.0_f64;
-    for j in 0..count(y1 - y0) {
-        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
-        dose.row(y0 + j as f64 * step, x0, step, &mut row);
-        peak = row.iter().copied().fold(peak, f64::max);
-    }
+    let step = PEAK_STEP * dose.blur().sigma().0;
+    let found = peaks(dose, [x0, y0, x1, y1], step, 0.0);
+    let peak = found.iter().map(|&(_, peak)| peak).fold(0.0, f64::max);
     Dose(peak)
 }

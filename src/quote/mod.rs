@@ -10,10 +10,15 @@ mod flags;
 pub mod hours;
 mod kept;
 pub mod made;
+mod remedy;
+mod repair;
 pub mod result;
+pub mod sample;
+mod sampled;
 pub mod shots;
 pub mod summary;
 pub mod sweep;
+mod tally;
 mod uncertain;
 mod verdict;
 pub mod witness;
@@ -23,11 +28,13 @@ use std::sync::Arc;
 pub use hours::Correction;
 pub use kept::Kept;
 pub use made::{Made, MadeMask, Setup};
+pub use remedy::remedies;
 pub use result::Quote;
+pub use sampled::{Sampling, quote_sampled};
 
 use crate::blur::{Blur, BlurError, REACH};
 use crate::expose::{CorrectionError, DensityError};
-use crate::fracture::overlap::Overlap;
+use crate::fracture::overlap::{DoseLevels, Overlap};
 use crate::fracture::tile::{Staircase, Tile};
 use crate::fracture::{Effort, Fracturer};
 use crate::geom::Rect;
@@ -35,11 +42,11 @@ use crate::judge::{Background, Settings};
 use crate::layout::{Layer, Layout};
 use crate::mask::{self, Expose, Mask, MaskError, MaskOptions};
 use crate::profile::{Kind, Profile};
-use crate::units::{Dose, Hours, Nm};
+use crate::units::{Dose, Hours, Nm, Seconds};
 use crate::write_time::{Field, WriteTimeError};
 
 use exposure::{Exposed, LongRange, shot_errors};
-use hours::Written;
+use hours::{Spread, Written};
 use result::{
     ByMethod, CAUTION, DoseCorrection, FigureFracture, FigureResult, FlagKind, Fractures, Method,
     ProfileUsed, ScaledToField, Source, StripeRow,
@@ -120,6 +127,8 @@ pub struct Terms<'a> {
     pub peak_dose: Option<Dose>,
     /// The raster multi-beam writer to compare with.
     pub raster: Option<&'a Profile>,
+    /// Doses that a shot of the overlap fracture may have.
+    pub dose_levels: DoseLevels,
 }
 
 impl Terms<'_> {
@@ -224,21 +233,26 @@ pub struct Clip<'a> {
 }
 
 impl Clip<'_> {
-    /// How many copies of it a field holds, at least one.
-    fn copies(&self, field: Option<Field>) -> u64 {
+    /// How many copies of it a field holds, fractions too; 1 without a field.
+    fn copies_exactly(&self, field: Option<Field>) -> f64 {
         let area = |width: Nm, height: Nm| width.0 * height.0;
         let own = self.mask.extent.map_or(0.0, |extent| {
             area(Nm::from_pm(extent.width()), Nm::from_pm(extent.height()))
         });
         let (Some(field), Some(coverage)) = (field, self.coverage) else {
-            return 1;
+            return 1.0;
         };
+        coverage * area(field.width, field.height) / own.max(1.0)
+    }
+
+    /// How many copies of it a field holds, at least one.
+    fn copies(&self, field: Option<Field>) -> u64 {
         #[allow(
             clippy::cast_possible_truncation,
             clippy::cast_sign_loss,
             reason = "a float to integer cast saturates"
         )]
-        let copies = (coverage * area(field.width, field.height) / own.max(1.0)).round() as u64;
+        let copies = self.copies_exactly(field).round() as u64;
         copies.max(1)
     }
 }
@@ -289,31 +303,85 @@ pub fn quote_again(
     kept: &mut Kept,
     tick: &(dyn Fn() + Sync),
 ) -> Result<Answer, QuoteError> {
-    let setup = terms.setup()?;
     check(clips, terms)?;
-    let correction = Correction::new(clips, terms.profile)?;
-    let background = Background {
-        ratio: correction.ratio,
-        density: correction.density,
-    };
-    let settings = Settings {
-        background,
-        errors: Some(shot_errors(terms.profile, correction.dose)),
-        ..Settings::new(setup.blur, setup.tolerance)
-    };
+    let basis = Basis::new(clips, terms)?;
+    exact(clips, terms, &basis, &mut |clip, method| {
+        let mask = (masks[clip], clips[clip].mask);
+        kept.made(mask, method, (terms, &basis.setup), &basis.settings, tick)
+    })
+}
+
+/// What all figures are fractured, judged and dosed with.
+struct Basis {
+    setup: Setup,
+    correction: Correction,
+    settings: Settings,
+}
+
+impl Basis {
+    fn new(clips: &[Clip<'_>], terms: &Terms<'_>) -> Result<Self, QuoteError> {
+        let setup = terms.setup()?;
+        let correction = Correction::new(clips, terms.profile)?;
+        let background = Background {
+            ratio: correction.ratio,
+            density: correction.density,
+        };
+        Ok(Self {
+            setup,
+            correction,
+            settings: Settings {
+                background,
+                errors: Some(shot_errors(terms.profile, correction.dose)),
+                ..Settings::new(setup.blur, setup.tolerance)
+            },
+        })
+    }
+}
+
+/// What a quote is put together from.
+struct Parts<'a> {
+    /// By clip: the doses of what was made.
+    exposed: ByMethod<Vec<Exposed<'a>>>,
+    fractures: Fractures,
+    stripes: ByMethod<Vec<StripeRow>>,
+    /// By clip and figure.
+    seconds: Vec<ByMethod<Vec<Option<f64>>>>,
+    /// In place of the shots made, where they are a sample.
+    spread: ByMethod<Spread<'a>>,
+    sample: Option<result::SampleUsed>,
+}
+
+impl Parts<'_> {
+    fn empty(clips: usize) -> Self {
+        Self {
+            exposed: ByMethod::default(),
+            fractures: Fractures::default(),
+            stripes: ByMethod::default(),
+            seconds: vec![ByMethod::default(); clips],
+            spread: ByMethod::default(),
+            sample: None,
+        }
+    }
+}
+
+/// The quote of every figure; `made_of` gives the shots of a clip's figures.
+fn exact(
+    clips: &[Clip<'_>],
+    terms: &Terms<'_>,
+    basis: &Basis,
+    made_of: &mut dyn FnMut(usize, Method) -> Arc<MadeMask>,
+) -> Result<Answer, QuoteError> {
+    let Basis {
+        setup, correction, ..
+    } = *basis;
     let mut made: Vec<ByMethod<Arc<MadeMask>>> = vec![ByMethod::default(); clips.len()];
     for method in Method::ALL {
-        for ((clip, &number), made) in clips.iter().zip(masks).zip(&mut made) {
-            let mask = (number, clip.mask);
-            let judged = kept.made(mask, method, (terms, &setup), &settings, tick);
-            *made.slot(method) = Some(judged);
+        for (clip, made) in made.iter_mut().enumerate() {
+            *made.slot(method) = Some(made_of(clip, method));
         }
     }
     let long_range = LongRange::new(terms.profile);
-    let mut exposed: ByMethod<Vec<Exposed<'_>>> = ByMethod::default();
-    let mut fractures = Fractures::default();
-    let mut stripes = ByMethod::default();
-    let mut seconds: Vec<ByMethod<Vec<Option<f64>>>> = vec![ByMethod::default(); clips.len()];
+    let mut parts = Parts::empty(clips.len());
     for method in Method::ALL {
         let lists: Vec<&MadeMask> = made
             .iter()
@@ -321,7 +389,7 @@ pub fn quote_again(
             .map(AsRef::as_ref)
             .collect();
         let doses = long_range.expose_clips(clips, &lists)?;
-        let parts: Vec<summary::Part<'_>> = clips
+        let of_clips: Vec<summary::Part<'_>> = clips
             .iter()
             .zip(lists)
             .zip(&doses)
@@ -336,25 +404,57 @@ pub fn quote_again(
                 },
             })
             .collect();
-        let mut summary = summary::of_parts(&parts, background, setup.limits.sliver);
+        let background = basis.settings.background;
+        let mut summary = summary::of_parts(&of_clips, background, setup.limits.sliver);
         let written = Written::new(clips, &doses, terms.field);
         let timed = written.time(terms.profile)?;
         let even = uncertain::of_map(correction, summary.dose_map)?;
         let hours = uncertain::widened(timed.hours, &written, terms.profile, even)?;
         summary.hours = Some(hours);
-        *fractures.slot(method) = Some(summary);
-        *stripes.slot(method) = Some(hours::rows(&timed.time));
-        for (all, of_clip) in seconds.iter_mut().zip(timed.seconds) {
+        *parts.fractures.slot(method) = Some(summary);
+        *parts.stripes.slot(method) = Some(hours::rows(&timed.time));
+        for (all, of_clip) in parts.seconds.iter_mut().zip(timed.seconds) {
             *all.slot(method) = Some(of_clip);
         }
-        *exposed.slot(method) = Some(doses);
+        *parts.exposed.slot(method) = Some(doses);
     }
+    finish(clips, terms, basis, &made, parts)
+}
+
+/// Verdict, flags and all that follows from what was made and timed.
+fn finish(
+    clips: &[Clip<'_>],
+    terms: &Terms<'_>,
+    basis: &Basis,
+    made: &[ByMethod<Arc<MadeMask>>],
+    parts: Parts<'_>,
+) -> Result<Answer, QuoteError> {
+    let Basis {
+        setup, correction, ..
+    } = *basis;
+    let Parts {
+        exposed,
+        fractures,
+        stripes,
+        seconds,
+        spread,
+        sample,
+    } = parts;
     let figures_distinct = clips.iter().map(|clip| clip.mask.figures.len()).sum();
-    let choice = verdict::choose(&fractures, figures_distinct, terms.slot);
-    let recommended = choice
-        .recommended
-        .and_then(|method| exposed.get(method))
-        .map(|doses| Written::new(clips, doses, terms.field));
+    let mut choice = verdict::choose(&fractures, figures_distinct, terms.slot);
+    if let Some(sample) = sample
+        .as_ref()
+        .filter(|s| s.figures_drawn < s.figures_distinct)
+    {
+        sampled::say(&mut choice.verdict, sample);
+    }
+    let flips = verdict::flips(&fractures, figures_distinct);
+    let recommended = choice.recommended.and_then(|method| {
+        Some(match spread.get(method) {
+            Some(spread) => Written::of_sums(spread.clone()),
+            None => Written::new(clips, exposed.get(method)?, terms.field),
+        })
+    });
     let map = choice
         .recommended
         .and_then(|method| fractures.get(method)?.dose_map);
@@ -371,12 +471,16 @@ pub fn quote_again(
     };
     let flags = flags::find(&flags::Evidence {
         clips,
-        made: &made,
+        made,
         seconds: &seconds,
         field: terms.field,
         recommended: choice.recommended,
         setup: &setup,
         peak_dose: terms.peak_dose,
+        beam: sample.as_ref().and_then(|sample| {
+            let beam = sample.beam_h.get(choice.recommended?)?;
+            Some(Seconds::from_hours(beam.value))
+        }),
     });
     let mut figures = Vec::with_capacity(figures_distinct);
     for (clip, of_clip) in (1..).zip(clips) {
@@ -421,21 +525,25 @@ pub fn quote_again(
             backscatter_ratio: correction.ratio,
             density: correction.density,
         },
-        notes: notes(clips, terms),
+        notes: notes(clips, terms, sample.as_ref(), &fractures),
         fractures,
         verdict: choice.verdict,
         recommended: choice.recommended,
         reason: choice.reason,
+        flips,
         sensitivity,
         raster,
         flags,
+        sample,
+        remedies: Vec::new(),
+        must_change: None,
         caution: CAUTION.to_owned(),
     };
     Ok(Answer {
         quote,
         figures,
         stripes,
-        made,
+        made: made.to_vec(),
     })
 }
 
@@ -471,13 +579,19 @@ pub fn fracturer(method: Method, terms: &Terms<'_>) -> Box<dyn Fracturer> {
             ..Tile::default()
         }),
         Method::Overlap => Box::new(Overlap {
-            effort: terms.effort,
-            bound: false,
+            peak_dose: terms.peak_dose,
+            dose_levels: terms.dose_levels,
+            ..Overlap::with(terms.effort)
         }),
     }
 }
 
-fn notes(clips: &[Clip<'_>], terms: &Terms<'_>) -> Vec<String> {
+fn notes(
+    clips: &[Clip<'_>],
+    terms: &Terms<'_>,
+    sample: Option<&result::SampleUsed>,
+    fractures: &Fractures,
+) -> Vec<String> {
     let mut notes = Vec::new();
     for (number, clip) in (1..).zip(clips) {
         let own = clip.chosen.layout.notes.iter().chain(&clip.mask.notes);
@@ -491,6 +605,7 @@ fn notes(clips: &[Clip<'_>], terms: &Terms<'_>) -> Vec<String> {
         "the plain staircase stays within {} nm of the outline; it is cut without a model of the blur",
         terms.within.0
     ));
+    notes.extend(sample.and_then(|sample| sampled::note(sample, fractures)));
     if terms.field.is_some() {
         notes.push(
             "a clip is the box around its figures; shots on borders of stripes and sub-fields are counted as expected on average"

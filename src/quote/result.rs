@@ -9,6 +9,12 @@ mod sweep;
 use std::collections::BTreeMap;
 use std::fmt;
 
+mod remedy;
+mod sampling;
+
+pub use remedy::{Change, FigureRemedies, MustChange, Remedy, Trial};
+pub use sampling::{Estimate, SampleUsed, Stopped, StratumUsed};
+
 use serde::de::{self, Deserializer, Visitor};
 use serde::{Deserialize, Serialize, Serializer};
 
@@ -92,6 +98,9 @@ pub struct Quote {
     pub recommended: Option<Method>,
     /// Why, in one sentence.
     pub reason: String,
+    /// Slots at which the choice flips, upward; empty if it is the same for every slot.
+    #[serde(default)]
+    pub flips: Vec<Flip>,
     /// What moves the total of the recommended fracture, most first.
     #[serde(default)]
     pub sensitivity: Vec<Sensitivity>,
@@ -100,6 +109,15 @@ pub struct Quote {
     pub raster: Option<RasterLine>,
     /// Figures to look at or to send back, worst first.
     pub flags: Vec<Flag>,
+    /// The sample that counts, hours and scores rest on; `None` if every figure was fractured without drawing.
+    #[serde(default)]
+    pub sample: Option<SampleUsed>,
+    /// What was tried on flagged figures, most seconds first.
+    #[serde(default)]
+    pub remedies: Vec<FigureRemedies>,
+    /// What must change for the mask to fit its slot; `None` if it fits, no slot was given, or it was not worked out.
+    #[serde(default)]
+    pub must_change: Option<MustChange>,
     /// [`CAUTION`].
     pub caution: String,
 }
@@ -265,6 +283,10 @@ pub struct FractureSummary {
     pub figures_out_of_tolerance: Option<u64>,
     /// How far the contour moves for 1 % of dose.
     pub margin_nm_per_pct: Margin,
+    /// Standard deviation of the contour under the profile's errors of shot edges, shot doses and electrons, not exceeded on 95 % of the outline;
+    /// `None` if the profile states no errors.
+    #[serde(default)]
+    pub edge_sd_nm: Option<f64>,
     /// Greatest dose anywhere, multiples of dose-to-size.
     pub peak_dose: Option<f64>,
     /// All scores: corner zones, contours at other doses, error budget, widths, areas, pieces.
@@ -295,6 +317,17 @@ pub struct Margin {
     pub median: Option<f64>,
     /// Greatest.
     pub worst: Option<f64>,
+}
+
+/// A slot at which another fracture becomes the one to order.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Flip {
+    /// The slot.
+    pub slot_h: f64,
+    /// Ordered below it.
+    pub below: Method,
+    /// Ordered from it on.
+    pub from: Method,
 }
 
 /// Hours by cause. `total_h` is the sum of `flash_h`, `settle_h`, `subfield_h`, `stage_h` and `overhead_h`.

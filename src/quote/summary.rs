@@ -1,13 +1,12 @@
 //! From scores of figures to the numbers of the whole mask.
 
-use crate::fracture::FractureError;
 use crate::judge::{self, Background, Fidelity};
 use crate::mask::DistinctFigure;
 use crate::shot::ShotList;
 use crate::units::Nm;
 
 use super::exposure::Exposed;
-use super::made::Made;
+use super::made::{Made, Unmade};
 use super::result::{Count, DoseMap, EdgeError, FractureSummary, Margin};
 
 /// The figures of one mask in one fracture.
@@ -16,7 +15,7 @@ pub struct Part<'a> {
     /// In their order.
     pub figures: &'a [DistinctFigure],
     /// Their shots and scores.
-    pub made: &'a [Result<Made, FractureError>],
+    pub made: &'a [Result<Made, Unmade>],
     /// Their doses.
     pub exposed: &'a Exposed<'a>,
     /// How often the mask counts in the scores against other parts.
@@ -27,7 +26,7 @@ pub struct Part<'a> {
 #[must_use]
 pub fn of_mask(
     figures: &[DistinctFigure],
-    made: &[Result<Made, FractureError>],
+    made: &[Result<Made, Unmade>],
     exposed: &Exposed<'_>,
     background: Background,
     sliver: Nm,
@@ -98,6 +97,7 @@ pub fn of_fidelity(scores: &judge::Summary) -> FractureSummary {
             median: scores.margin_nm_per_pct.median,
             worst: scores.margin_nm_per_pct.worst,
         },
+        edge_sd_nm: scores.edge_sd_nm.p95,
         peak_dose: None,
         scores: Some(*scores),
         dose_map: None,

@@ -3,7 +3,7 @@
 use crate::number::brief as number;
 use crate::units;
 
-use super::result::{Fits, FractureSummary, Fractures, Hours, Method, Verdict};
+use super::result::{Fits, Flip, FractureSummary, Fractures, Hours, Method, Verdict};
 
 /// Beam times nearer than this share of each other do not decide between two fractures.
 const TIE: f64 = 0.01;
@@ -48,6 +48,35 @@ pub(super) fn choose(fractures: &Fractures, figures: usize, slot: Option<units::
         recommended: Some(best.method),
         reason: reason(best, other),
     }
+}
+
+/// The slots at which another fracture becomes the one to order, upward.
+///
+/// What fits changes at the ends of the two intervals and nowhere else, so the choice is looked at there and below them all.
+pub(super) fn flips(fractures: &Fractures, figures: usize) -> Vec<Flip> {
+    let hours = [Method::Tile, Method::Overlap].into_iter();
+    let hours = hours.filter_map(|method| fractures.get(method)?.hours);
+    let mut ends: Vec<f64> = hours
+        .flat_map(|hours| [hours.low_h, hours.high_h])
+        .collect();
+    ends.sort_by(f64::total_cmp);
+    ends.dedup();
+    let choice = |slot_h: f64| choose(fractures, figures, Some(units::Hours(slot_h))).recommended;
+    let Some(mut before) = choice(0.0) else {
+        return Vec::new();
+    };
+    let mut flips = Vec::new();
+    for slot_h in ends {
+        if let Some(from) = choice(slot_h).filter(|from| *from != before) {
+            flips.push(Flip {
+                slot_h,
+                below: before,
+                from,
+            });
+            before = from;
+        }
+    }
+    flips
 }
 
 /// One fracture that could be ordered.
@@ -172,6 +201,14 @@ fn reason(best: &Offer<'_>, other: Option<&Offer<'_>>) -> String {
     let shots = pair(|o| Some(o.summary.shots.0 as f64));
     let error = pair(|o| o.summary.edge_error_nm.p95);
     let margin = pair(|o| o.summary.margin_nm_per_pct.median);
+    let budget = match (best.summary.edge_sd_nm, other.summary.edge_sd_nm) {
+        (Some(a), Some(b)) => format!(
+            ", error budget (1 sd, not exceeded on 95 % of the outline) {} against {} nm",
+            number(a),
+            number(b)
+        ),
+        _ => String::new(),
+    };
     let lead = match (best.prints(), other.prints()) {
         (true, false) => format!(
             "It prints every figure within tolerance where {} fails on {} of the distinct figures",
@@ -189,7 +226,7 @@ fn reason(best: &Offer<'_>, other: Option<&Offer<'_>>) -> String {
         _ => "Both print within tolerance".to_owned(),
     };
     format!(
-        "{lead}: {} of flashing and settling against {} for {}, {} against {} shots, edge error (95 %) {} against {} nm, margin (median) {} against {} nm/%.",
+        "{lead}: {} of flashing and settling against {} for {}, {} against {} shots, edge error (95 %) {} against {} nm, margin (median) {} against {} nm/%{budget}.",
         time(best.beam_h()),
         time(other.beam_h()),
         name(other),
@@ -231,6 +268,7 @@ mod tests {
             prints_within_tolerance: Some(prints),
             figures_out_of_tolerance: Some(u64::from(!prints)),
             margin_nm_per_pct: Margin::default(),
+            edge_sd_nm: None,
             peak_dose: None,
             scores: None,
             dose_map: None,
@@ -293,5 +331,43 @@ mod tests {
             assert_eq!(choice.verdict.fits, expected, "{}", choice.verdict.sentence);
         }
         assert_eq!(choose(&fractures, 10, None).verdict.fits, Fits::CannotSay);
+    }
+
+    #[test]
+    fn the_choice_flips_at_the_slot_from_which_the_better_print_fits_too() {
+        // Neither prints everywhere; overlap is faster and fails on more than the few that do not matter.
+        let with = |total_h: f64, failing: u64| FractureSummary {
+            figures_out_of_tolerance: Some(failing),
+            ..summary(total_h, false, 1.0)
+        };
+        let fractures = Fractures {
+            tile: Some(with(20.0, 2)),
+            overlap: Some(with(10.0, 30)),
+            ..Fractures::default()
+        };
+        let ordered = |slot: f64| choose(&fractures, 100, Some(units::Hours(slot))).recommended;
+        // Ends by hand: overlap 9 and 11 h, tile 18 and 22 h. Where both are over or both within, the fewer failures decide.
+        let flips = flips(&fractures, 100);
+        let found: Vec<_> = flips
+            .iter()
+            .map(|flip| (flip.slot_h, flip.below, flip.from))
+            .collect();
+        assert_eq!(
+            found,
+            [
+                (9.0, Method::Tile, Method::Overlap),
+                (22.0, Method::Overlap, Method::Tile)
+            ]
+        );
+        for flip in flips {
+            assert_eq!(ordered(flip.slot_h), Some(flip.from));
+            assert_eq!(ordered(flip.slot_h - 1e-9), Some(flip.below));
+        }
+        let alike = Fractures {
+            tile: Some(summary(20.0, true, 1.0)),
+            overlap: Some(summary(10.0, true, 1.0)),
+            ..Fractures::default()
+        };
+        assert_eq!(super::flips(&alike, 100), []);
     }
 }

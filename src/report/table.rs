@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 
 use comfy_table::{CellAlignment, ContentArrangement, Table};
 
-use super::fidelity;
+use super::{fidelity, remedy_text, sample_text};
 use crate::number::{self, UNMEASURED, brief};
 use crate::quote::result::{
     Count, Flag, FractureSummary, Hours, Method, Quote, RasterLine, Sensitivity, Source,
@@ -66,9 +66,18 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
         out.line(&first);
     }
     out.blank();
+    if let Some(sample) = &quote.sample {
+        out.paragraph(&sample_text::paragraph(sample), "");
+    }
     out.paragraph(&quote.verdict.sentence, "");
     let order = quote.recommended.map_or("none", Method::name);
     out.paragraph(&format!("Recommended: {order}. {}", quote.reason), "");
+    out.paragraph(&remedy_text::choice(quote), "");
+    if let Some(change) = &quote.must_change {
+        for (line, indent) in remedy_text::must_change(change, options.flags) {
+            out.paragraph(&line, indent);
+        }
+    }
     flags(quote, options.flags, &mut out);
     out.blank();
     for note in &quote.notes {
@@ -558,6 +567,9 @@ fn flags(quote: &Quote, most: usize, out: &mut Text) {
         }
         if !flag.remedy.is_empty() {
             let _ = write!(words, "; {}", flag.remedy);
+        }
+        if let Some(tried) = remedy_text::of_flag(quote, flag) {
+            let _ = write!(words, "; {tried}");
         }
         if let Some(picture) = &flag.picture {
             let _ = write!(words, " [{picture}]");

@@ -80,6 +80,7 @@ impl Load {
             Pattern::Counts { counts, field } => Self::of_counts(profile, &limits, counts, field),
             Pattern::Placed { placed, frame } => Self::of_placed(profile, &limits, placed, frame),
             Pattern::Sample { clips, field } => Self::of_sample(profile, &limits, clips, field),
+            Pattern::Summed { figures, frame } => Self::of_sums(profile, figures, frame),
         }
     }
 
@@ -129,7 +130,7 @@ impl Load {
         })
     }
 
-    fn checked(self) -> Result<Self, WriteTimeError> {
+    pub(super) fn checked(self) -> Result<Self, WriteTimeError> {
         let found = self.flashes().max(self.shots);
         if found > MOST_SHOTS {
             return Err(WriteTimeError::TooMany { found });
@@ -302,7 +303,7 @@ impl Whole {
     }
 }
 
-fn empty_stripes(grid: &Grid) -> Vec<StripeLoad> {
+pub(super) fn empty_stripes(grid: &Grid) -> Vec<StripeLoad> {
     (0..grid.stripes)
         .map(|index| StripeLoad {
             area: grid.area_of(index),

@@ -6,6 +6,7 @@ use crate::units::{Dose, Nm, PM_PER_NM};
 
 use super::WriteTimeError;
 use super::flash::{FlashLimits, Flashing};
+use super::sums::Summed;
 
 /// Shots that stand in one orientation at one place or many.
 #[derive(Clone, Copy, Debug)]
@@ -95,6 +96,14 @@ pub enum Pattern<'a> {
         /// The field.
         field: Field,
     },
+    /// Figures of which only sums are known, each whole in the stripe of its middle. Exact for the profile that the sums were made with, and
+    /// for others that cut and divide shots alike.
+    Summed {
+        /// The figures.
+        figures: &'a [Summed<'a>],
+        /// What the stripes cover.
+        frame: Rect,
+    },
 }
 
 /// A clip with the share of a field that looks like it.
@@ -117,7 +126,7 @@ impl Pattern<'_> {
                 field: Some(field), ..
             }
             | Self::Sample { field, .. } => field.frame(),
-            Self::Placed { frame, .. } => {
+            Self::Placed { frame, .. } | Self::Summed { frame, .. } => {
                 check_frame(frame)?;
                 Ok(frame)
             }

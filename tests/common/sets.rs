@@ -37,6 +37,7 @@ pub(crate) fn job(figure: &Figure, sigma: f64, tolerance: f64) -> Job<'_> {
     Job {
         figure,
         context: &[],
+        flashed: &[],
         blur: Blur::new(Nm(sigma)).expect("an ordinary blur"),
         tolerance: Nm(tolerance),
         limits: limits(),

@@ -5,7 +5,7 @@ use shotwright::fracture::Fracturer;
 use super::sets::{ASSIST, CURVY, figures, job};
 use super::{Faults, OVERLAP, TILE};
 
-const PLANTED: &str = include_str!("../data/sets/planted.wkt");
+pub(super) const PLANTED: &str = include_str!("../data/sets/planted.wkt");
 
 /// Shots of each figure of a set at a blur, within 2 nm; all of them print.
 fn counts(text: &str, sigma: f64, fracturer: &dyn Fracturer) -> Vec<usize> {

@@ -1,6 +1,8 @@
 //! Both fracturers on figures of many kinds, judged by a witness that shares no code with them.
 
 mod bars;
+mod beside;
+mod doses;
 mod hopeless;
 mod kinds;
 mod laws;
@@ -25,10 +27,7 @@ const TILE: Tile = Tile {
     prefer: Prefer::FewTiles,
 };
 
-const OVERLAP: Overlap = Overlap {
-    effort: Effort::Normal,
-    bound: false,
-};
+const OVERLAP: Overlap = Overlap::with(Effort::Normal);
 
 const BOTH: [&dyn Fracturer; 2] = [&TILE, &OVERLAP];
 

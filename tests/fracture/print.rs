@@ -83,6 +83,31 @@ pub(crate) fn wrong_pixels(
     wrong
 }
 
+/// The greatest dose at the centres of pixels of 1 nm.
+pub(crate) fn peak(list: &ShotList, sigma: f64) -> f64 {
+    let flashes: Vec<Flash> = list
+        .rects()
+        .map(|(r, dose)| Flash::new(r.min.to_nm(), r.max.to_nm(), dose.0, sigma))
+        .collect();
+    let bound = |of: fn(f64, f64) -> f64, start: f64, pick: &dyn Fn(&Flash) -> f64| {
+        flashes.iter().map(pick).fold(start, of)
+    };
+    let left = bound(f64::min, f64::INFINITY, &|f| f.low[0]).floor();
+    let low = bound(f64::min, f64::INFINITY, &|f| f.low[1]).floor();
+    let right = bound(f64::max, f64::NEG_INFINITY, &|f| f.high[0]);
+    let high = bound(f64::max, f64::NEG_INFINITY, &|f| f.high[1]);
+    let mut doses = vec![0.0; (right - left).ceil() as usize];
+    let mut peak = 0.0_f64;
+    for row in 0..(high - low).ceil() as usize {
+        doses.fill(0.0);
+        for flash in &flashes {
+            flash.add(low + row as f64 + 0.5, left, sigma, &mut doses);
+        }
+        peak = doses.iter().copied().fold(peak, f64::max);
+    }
+    peak
+}
+
 /// Φ((at − from)/σ) − Φ((at − to)/σ).
 fn share(at: f64, from: f64, to: f64, sigma: f64) -> f64 {
     let root = sigma * std::f64::consts::SQRT_2;

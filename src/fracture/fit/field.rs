@@ -7,12 +7,12 @@ use crate::target::{DoseField, Zone};
 
 use super::kernel::{AddDose, LANES};
 use super::model::{Bins, Flash, Model};
-use super::samples::ContextDose;
+use super::samples::Around;
 
 /// The dose of the model's shots with the context, anywhere.
 pub(super) struct Field<'a> {
     model: &'a Model,
-    context: &'a ContextDose,
+    context: &'a Around,
     phi: PhiTable,
     arch: Arch,
 }
@@ -21,7 +21,7 @@ pub(super) struct Field<'a> {
 const RUN: usize = 128;
 
 impl<'a> Field<'a> {
-    pub(super) fn new(model: &'a Model, context: &'a ContextDose) -> Self {
+    pub(super) fn new(model: &'a Model, context: &'a Around) -> Self {
         Self {
             model,
             context,

@@ -1,6 +1,8 @@
 //! Shots with sides anywhere, the samples they are held to, and the dose at these; all indexed by place.
 
 use crate::blur::PhiTable;
+use crate::geom::Rect;
+use crate::units::Dose;
 
 use super::samples::Sample;
 
@@ -21,6 +23,11 @@ impl Flash {
             dose: 1.0,
             slim: false,
         }
+    }
+
+    /// The same rectangle at another dose.
+    pub(super) fn with(&self, dose: f64) -> Self {
+        Self { dose, ..*self }
     }
 
     /// Mirrored about the diagonal `x = y`.
@@ -106,6 +113,13 @@ impl Flash {
         } else {
             self.dose * gx * share(1)
         }
+    }
+}
+
+impl From<(Rect, Dose)> for Flash {
+    fn from((rect, dose): (Rect, Dose)) -> Self {
+        let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
+        Self::new([x0, y0, x1, y1]).with(dose.0)
     }
 }
 
@@ -364,7 +378,8 @@ impl Model {
             .touched(side)
             .flat_map(|cell| &self.samples_by_place.cells[cell])
             .filter(|&&id| {
-                self.samples[id as usize].sign < 0.0 && inside(&self.samples[id as usize])
+                let sample = &self.samples[id as usize];
+                sample.sign < 0.0 && !sample.cap && inside(sample)
             })
             .count()
     }

@@ -108,9 +108,18 @@ impl Reduction<'_> {
                 let Some(g) = self.model.get(j).filter(|g| f.gap(g) < apart) else {
                     continue;
                 };
-                self.queue(&[i, j], vec![merged(&f, &g)]);
-                if !self.solver.rules.disjoint {
-                    self.queue(&[i, j], vec![f.hull(&g)]);
+                let levels = self.solver.rules.levels;
+                for dose in levels.iter() {
+                    self.queue(&[i, j], vec![merged(&f, &g).with(dose)]);
+                    if !self.solver.rules.disjoint {
+                        self.queue(&[i, j], vec![f.hull(&g).with(dose)]);
+                    }
+                    // One of the two goes, the other takes over at another dose.
+                    for one in [f, g] {
+                        if levels.several() && dose != one.dose {
+                            self.queue(&[i, j], vec![one.with(dose)]);
+                        }
+                    }
                 }
             }
         }
@@ -118,12 +127,14 @@ impl Reduction<'_> {
 
     fn queue(&mut self, removed: &[usize], added: Vec<Flash>) {
         // A sample deeper than 1 σ inside a shot gets at least Φ(1)² = 0.708: 0.2 too much where it must not print.
-        let deep: usize = added
-            .iter()
-            .map(|f| self.model.clear_samples_in(f.grown(-self.model.sigma).side))
-            .sum();
-        #[allow(clippy::cast_precision_loss, reason = "a count of samples")]
-        if 0.04 * deep as f64 > self.budget.hopeless {
+        let deep = |f: &Flash| {
+            let samples = self.model.clear_samples_in(f.grown(-self.model.sigma).side);
+            #[allow(clippy::cast_precision_loss, reason = "a count of samples")]
+            let samples = samples as f64;
+            // Exactly 0.04 at dose 1.
+            samples * 0.04 * (5.0 * (0.7 * f.dose - 0.5)).max(0.0).powi(2)
+        };
+        if added.iter().map(deep).sum::<f64>() > self.budget.hopeless {
             return;
         }
         let score = self.solver.estimate(self.model, removed, &added);

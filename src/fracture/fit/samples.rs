@@ -1,10 +1,9 @@
 //! The places at which a fit is held to the print rule.
 
 use super::model::{Bins, Flash};
-use crate::blur::{Blur, PhiTable, REACH};
-use crate::geom::Figure;
+use crate::blur::{Blur, PhiTable, REACH, THRESHOLD};
+use crate::fracture::Job;
 use crate::target::{Need, Target, Violation};
-use crate::units::Nm;
 
 /// A place with what the rule asks there.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -13,8 +12,10 @@ pub(in crate::fracture) struct Sample {
     pub(super) place: [f64; 2],
     /// +1 where it must print, −1 where it must not.
     pub(super) sign: f32,
-    /// Dose that the context gives.
+    /// Dose that the context gives: the least of it at a place that must print, else the most.
     pub(super) context: f32,
+    /// Whether the dose is held under a peak here: `context` then counts from where that peak stands in for the threshold.
+    pub(super) cap: bool,
 }
 
 /// Distance between samples along the rim, σ. Between two samples the dose may be off by up to `h²/8·max|F''| = 0.0075`; the check
@@ -25,14 +26,20 @@ const RIM_STEP: f64 = 0.5;
 /// Lattice step inside and outside, σ; the check at the end is four times as dense.
 const LATTICE_STEP: f64 = 0.9;
 
+/// Step of the lattice on which a dose is held under its peak, σ.
+const CAP_STEP: f64 = 0.7;
+
 /// How far outside the outline the lattice goes, in σ.
 const LATTICE_REACH: f64 = 2.5;
 
 /// Pairs along the outline and a lattice inside and around the figure.
+///
+/// With a `peak`, the lattice inside is held under it too, on a lattice of [`CAP_STEP`].
 pub(in crate::fracture) fn samples_of(
     target: &Target,
     blur: Blur,
     context: &ContextDose,
+    peak: Option<f64>,
 ) -> Vec<Sample> {
     let sigma = blur.sigma().0;
     let mut samples = Vec::new();
@@ -75,22 +82,67 @@ pub(in crate::fracture) fn samples_of(
         }
         y += step;
     }
+    samples.extend(peak.into_iter().flat_map(|peak| {
+        let places = inside(target, CAP_STEP * sigma);
+        places
+            .into_iter()
+            .map(move |p| Sample::under(p, peak, context))
+    }));
     samples
+}
+
+/// Places of a lattice inside a figure.
+fn inside(target: &Target, step: f64) -> Vec<[f64; 2]> {
+    let [x0, y0, x1, y1] = target.bounds();
+    let (mut places, mut crossings) = (Vec::new(), Vec::new());
+    let mut y = y0 + 0.5 * step;
+    while y < y1 {
+        target.crossings(y, &mut crossings);
+        let mut x = x0 + 0.5 * step;
+        while x < x1 {
+            if crossings.partition_point(|&c| c <= x) % 2 == 1 {
+                places.push([x, y]);
+            }
+            x += step;
+        }
+        y += step;
+    }
+    places
 }
 
 impl Sample {
     /// A place with its need and the context's dose there.
     pub(in crate::fracture) fn new(place: [f64; 2], need: Need, context: &ContextDose) -> Self {
+        let (least, most) = context.range(place);
+        let (sign, dose) = match need {
+            Need::Print => (1.0, least),
+            _ => (-1.0, most),
+        };
         #[allow(
             clippy::cast_possible_truncation,
             reason = "a dose needs no more than single precision here"
         )]
-        let context = context.dose(place) as f32;
         Self {
             place,
-            sign: if need == Need::Print { 1.0 } else { -1.0 },
-            context,
+            sign,
+            context: dose as f32,
+            cap: false,
         }
+    }
+
+    /// A place whose dose must stay under `peak`.
+    ///
+    /// `dose ≤ peak` is `dose − (peak − ½) ≤ ½`: the rule of a place that must not print, with that much less dose.
+    pub(super) fn under(place: [f64; 2], peak: f64, context: &ContextDose) -> Self {
+        let mut sample = Self::new(place, Need::Clear, context);
+        #[allow(
+            clippy::cast_possible_truncation,
+            reason = "a dose needs no more than single precision here"
+        )]
+        let lower = (peak - THRESHOLD) as f32;
+        sample.context -= lower;
+        sample.cap = true;
+        sample
     }
 }
 
@@ -110,99 +162,130 @@ impl Sample {
     }
 }
 
-/// The dose that other figures give, as if they printed ideally: each in bands of exact width.
+/// The dose that other figures give: that of their shots where these are known, else as if they printed ideally, each in bands
+/// of exact width.
 #[derive(Clone, Debug)]
 pub(in crate::fracture) struct ContextDose {
     figures: Vec<Target>,
-    bands: Vec<[f64; 4]>,
-    /// Bands by where their dose reaches, and figures by where they may print; none without context.
-    reach: Option<[Bins; 2]>,
+    /// Figures by where they may print; none without context.
+    printed: Option<Bins>,
+    /// What is flashed around the figure, one entry for each kind of place; at least one.
+    around: Vec<Around>,
+}
+
+/// What is flashed around a figure, by where its dose reaches.
+#[derive(Clone, Debug)]
+pub(super) struct Around {
+    flashes: Vec<Flash>,
+    reached: Option<Bins>,
     sigma: f64,
     phi: PhiTable,
+}
+
+impl Around {
+    fn new(flashes: Vec<Flash>, sigma: f64) -> Self {
+        let boxes: Vec<[f64; 4]> = flashes
+            .iter()
+            .map(|f| f.grown(REACH * sigma).side)
+            .collect();
+        Self {
+            reached: bins(&boxes, sigma),
+            flashes,
+            sigma,
+            phi: PhiTable::get(),
+        }
+    }
+
+    /// The dose at a place.
+    pub(super) fn dose(&self, p: [f64; 2]) -> f64 {
+        let near = self.reached.iter().flat_map(|bins| bins.at(p));
+        let here = Flash::new([p[0], p[1], p[0], p[1]]);
+        near.map(|id| self.flashes[id as usize])
+            .filter(|f| f.gap(&here) <= REACH * self.sigma)
+            .map(|f| f.dose_at(self.phi, 1.0 / self.sigma, p))
+            .sum()
+    }
+}
+
+/// Boxes by place; none without a box.
+fn bins(boxes: &[[f64; 4]], sigma: f64) -> Option<Bins> {
+    let hull = boxes
+        .iter()
+        .map(|&b| Flash::new(b))
+        .reduce(|a, b| a.hull(&b))?;
+    Some(Bins::of(hull.side, 4.0 * sigma, boxes))
 }
 
 /// Height of a context band, in σ: a slanted edge in steps of σ/8 has the dose of the straight one to 1e-3.
 const BAND: f64 = 0.125;
 
 impl ContextDose {
-    /// From the context figures of a job.
-    pub(in crate::fracture) fn of(context: &[Figure], blur: Blur, tolerance: Nm) -> Self {
-        let sigma = blur.sigma().0;
-        let figures: Vec<Target> = context
+    /// From the context of a job.
+    pub(in crate::fracture) fn of(job: &Job<'_>) -> Self {
+        let sigma = job.blur.sigma().0;
+        let figures: Vec<Target> = job
+            .context
             .iter()
-            .map(|f| Target::new(f, blur, tolerance))
-            .collect();
-        let mut bands = Vec::new();
-        let mut crossings = Vec::new();
-        for target in &figures {
-            let [_, y0, _, y1] = target.bounds();
-            #[allow(
-                clippy::cast_possible_truncation,
-                clippy::cast_sign_loss,
-                reason = "positive and clamped"
-            )]
-            let n = ((y1 - y0) / (BAND * sigma)).ceil().clamp(1.0, 1e5) as usize;
-            #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
-            let h = (y1 - y0) / n as f64;
-            for i in 0..n {
-                #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
-                let low = y0 + i as f64 * h;
-                target.crossings(low + 0.5 * h, &mut crossings);
-                bands.extend(
-                    crossings
-                        .chunks_exact(2)
-                        .map(|c| [c[0], low, c[1], low + h]),
-                );
-            }
-        }
-        let reached: Vec<[f64; 4]> = bands
-            .iter()
-            .map(|&b| Flash::new(b).grown(REACH * sigma).side)
+            .map(|f| Target::new(f, job.blur, job.tolerance))
             .collect();
         let printed: Vec<[f64; 4]> = figures
             .iter()
             .map(|f| Flash::new(f.bounds()).grown(f.corner_tolerance()).side)
             .collect();
-        let hull = reached
-            .iter()
-            .chain(&printed)
-            .map(|&b| Flash::new(b))
-            .reduce(|a, b| a.hull(&b));
-        let reach = hull
-            .map(|hull| [&reached, &printed].map(|boxes| Bins::of(hull.side, 4.0 * sigma, boxes)));
+        let around = if job.flashed.is_empty() {
+            let ideal = figures.iter().flat_map(|f| ideal(f, sigma)).collect();
+            vec![Around::new(ideal, sigma)]
+        } else {
+            let lists = job.flashed.iter();
+            let flashes = lists.map(|list| list.iter().copied().map(Flash::from).collect());
+            flashes.map(|list| Around::new(list, sigma)).collect()
+        };
         Self {
+            printed: bins(&printed, sigma),
             figures,
-            bands,
-            reach,
-            sigma,
-            phi: PhiTable::get(),
+            around,
         }
     }
 
     /// Whether another figure may print at a place, so that it need not stay clear.
     pub(in crate::fracture) fn may_print(&self, p: [f64; 2]) -> bool {
-        let Some([_, printed]) = &self.reach else {
-            return false;
-        };
-        printed
-            .at(p)
-            .any(|id| self.figures[id as usize].need(p) != Need::Clear)
+        let near = self.printed.iter().flat_map(|bins| bins.at(p));
+        let mut figures = near.map(|id| &self.figures[id as usize]);
+        figures.any(|figure| figure.need(p) != Need::Clear)
     }
 
-    /// The dose at a place.
-    pub(in crate::fracture) fn dose(&self, p: [f64; 2]) -> f64 {
-        let Some([reached, _]) = &self.reach else {
-            return 0.0;
-        };
-        let share = |at: f64, from: f64, to: f64| {
-            self.phi.cdf((at - from) / self.sigma) - self.phi.cdf((at - to) / self.sigma)
-        };
-        let reach = REACH * self.sigma;
-        let bands = reached.at(p).map(|id| self.bands[id as usize]).filter(|b| {
-            (0..2).all(|axis| b[axis] - reach <= p[axis] && p[axis] <= b[axis + 2] + reach)
-        });
-        bands
-            .map(|b| share(p[0], b[0], b[2]) * share(p[1], b[1], b[3]))
-            .sum()
+    /// What is flashed at each kind of place.
+    pub(super) fn around(&self) -> &[Around] {
+        &self.around
     }
+
+    /// The least and the most dose at a place.
+    pub(in crate::fracture) fn range(&self, p: [f64; 2]) -> (f64, f64) {
+        let doses = self.around.iter().map(|around| around.dose(p));
+        doses.fold((f64::INFINITY, 0.0), |(least, most), d| {
+            (least.min(d), most.max(d))
+        })
+    }
+}
+
+/// A figure that prints ideally, in bands.
+fn ideal(target: &Target, sigma: f64) -> Vec<Flash> {
+    let [_, y0, _, y1] = target.bounds();
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "positive and clamped"
+    )]
+    let n = ((y1 - y0) / (BAND * sigma)).ceil().clamp(1.0, 1e5) as usize;
+    #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
+    let h = (y1 - y0) / n as f64;
+    let (mut bands, mut crossings) = (Vec::new(), Vec::new());
+    for i in 0..n {
+        #[allow(clippy::cast_precision_loss, reason = "n is at most 1e5")]
+        let low = y0 + i as f64 * h;
+        target.crossings(low + 0.5 * h, &mut crossings);
+        let spans = crossings.chunks_exact(2);
+        bands.extend(spans.map(|c| Flash::new([c[0], low, c[1], low + h])));
+    }
+    bands
 }

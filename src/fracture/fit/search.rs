@@ -1,6 +1,7 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
 use crate::blur::{REACH, THRESHOLD};
+use crate::fracture::overlap::DoseLevels;
 use crate::fracture::{Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
@@ -11,7 +12,7 @@ use super::model::{Bins, Flash, Model};
 use super::reduce::{Budget, reduce};
 use super::relax::{mend, offenders, relax, widen};
 use super::samples::{ContextDose, Sample, samples_of};
-use super::snap::{check, shots, snap, unfit};
+use super::snap::{check, piles, shots, snap, unfit};
 use super::solve::{Rules, Solver};
 
 /// A job with all that its fits share.
@@ -20,6 +21,16 @@ pub(in crate::fracture) struct Setting<'a> {
     pub(in crate::fracture) target: Target,
     pub(in crate::fracture) context: ContextDose,
     pub(in crate::fracture) samples: Vec<Sample>,
+    doses: Doses,
+}
+
+/// What is asked of doses besides the print rule.
+#[derive(Clone, Copy, Debug, Default)]
+pub(in crate::fracture) struct Doses {
+    /// Doses that a shot may have.
+    pub(in crate::fracture) levels: DoseLevels,
+    /// No place may get more.
+    pub(in crate::fracture) peak: Option<Dose>,
 }
 
 /// Shots on the address grid and the places where they break the rule.
@@ -31,12 +42,29 @@ pub(in crate::fracture) struct Fit {
     pub(in crate::fracture) unfit: Vec<Flash>,
     /// Shots let be slivers, and that are.
     pub(in crate::fracture) slivers: usize,
+    /// Places of more dose than is allowed anywhere, with it.
+    pub(in crate::fracture) piles: Vec<([f64; 2], f64)>,
 }
 
 impl Fit {
     /// How much is wrong: nothing when it prints and can be written.
     pub(in crate::fracture) fn faults(&self) -> usize {
-        self.violations.len() + self.unfit.len()
+        self.violations.len() + self.unfit.len() + self.piles.len()
+    }
+
+    /// The less the better: fewer faults, then fewer slivers, then fewer shots.
+    fn rank(&self) -> (usize, usize, usize) {
+        (self.faults(), self.slivers, self.shots.len())
+    }
+}
+
+impl Doses {
+    /// What the fit holds the dose under: with something to spare, but no less than half of what the peak leaves over the
+    /// dose 1 of a wide shot.
+    fn cap(&self) -> Option<f64> {
+        let spare = |peak: f64| (0.5 * (peak - 1.0)).clamp(0.0, 2.0 * f64::from(GUARD));
+        self.peak
+            .map(|Dose(peak)| peak - spare(peak) + f64::from(GUARD))
     }
 }
 
@@ -56,14 +84,19 @@ const REPAIRS: (usize, usize) = (10, 50);
 
 impl<'a> Setting<'a> {
     pub(in crate::fracture) fn new(job: &'a Job<'a>) -> Self {
+        Self::with(job, Doses::default())
+    }
+
+    pub(in crate::fracture) fn with(job: &'a Job<'a>, doses: Doses) -> Self {
         let target = Target::new(job.figure, job.blur, job.tolerance);
-        let context = ContextDose::of(job.context, job.blur, job.tolerance);
-        let samples = samples_of(&target, job.blur, &context);
+        let context = ContextDose::of(job);
+        let samples = samples_of(&target, job.blur, &context, doses.cap());
         Self {
             job,
             target,
             context,
             samples,
+            doses,
         }
     }
 
@@ -74,24 +107,39 @@ impl<'a> Setting<'a> {
     /// Shots made elsewhere, with the places where they break the rule.
     pub(in crate::fracture) fn judged(&self, shots: ShotList) -> Fracture {
         let mut model = Model::new(self.target.bounds(), self.sigma(), Vec::new());
-        for (slot, (rect, dose)) in shots.rects().enumerate() {
-            let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
-            model.place(
-                slot,
-                Some(Flash {
-                    dose: dose.0,
-                    ..Flash::new([x0, y0, x1, y1])
-                }),
-            );
+        for (slot, shot) in shots.rects().enumerate() {
+            model.place(slot, Some(Flash::from(shot)));
         }
         let violations = check(&self.target, &model, &self.context, None);
         let unfit = unfit(&model, &self.job.limits, false);
+        let peak = self.doses.peak;
+        let piles = peak.map_or_else(Vec::new, |peak| piles(&model, &self.context, peak.0));
         self.reported(Some(Fit {
             shots,
             violations,
             unfit,
             slivers: 0,
+            piles,
         }))
+    }
+
+    /// Shots found before, moved to where they print; the rest of what was said of them is kept.
+    pub(in crate::fracture) fn refit(
+        &self,
+        shots: &ShotList,
+        disjoint: bool,
+        budget: Budget,
+    ) -> Option<Fracture> {
+        let limits = &self.job.limits;
+        let [sliver, least] = self.least_sides();
+        let least = if shots.slivers(limits.sliver) > 0 {
+            least
+        } else {
+            sliver
+        };
+        let start: Vec<Flash> = shots.rects().map(Flash::from).collect();
+        let attempt = self.attempt(&start, disjoint, [least; 2], budget);
+        best_of(vec![attempt], true).map(|fit| self.reported(Some(fit)))
     }
 
     /// A fit as the result of a fracture; without one, no shots and every sample that must print as a miss.
@@ -101,13 +149,15 @@ impl<'a> Setting<'a> {
             violations: self.samples.iter().filter_map(Sample::unprinted).collect(),
             unfit: Vec::new(),
             slivers: 0,
+            piles: Vec::new(),
         });
         let broken = fit
             .violations
             .iter()
             .map(|v| Miss::of(v, &self.target, self.job.blur));
         let unfit = fit.unfit.iter().map(|f| Miss::unfit(f.side, Dose(f.dose)));
-        let misses = broken.chain(unfit).collect();
+        let piles = fit.piles.iter().map(|&(p, dose)| Miss::pile(p, dose));
+        let misses = broken.chain(unfit).chain(piles).collect();
         Fracture {
             shots: fit.shots,
             misses,
@@ -181,6 +231,7 @@ impl<'a> Setting<'a> {
             greatest_side: limits.greatest_side.0 - limits.address.nm().0,
             disjoint,
             guard: GUARD,
+            levels: self.doses.levels,
         };
         let mut solver = Solver::new(self.sigma(), rules);
         let mut model = Model::new(self.target.bounds(), self.sigma(), self.samples.clone());
@@ -264,6 +315,7 @@ impl Attempt<'_> {
             job,
             target,
             context,
+            doses,
             ..
         } = self.setting;
         let address = job.limits.address;
@@ -273,30 +325,47 @@ impl Attempt<'_> {
         let mut violations = check(target, &snapped, context, None);
         let mut best: Option<Fit> = None;
         let mut stale = 0;
+        // Shots were added that nobody tried to do without.
+        let mut loose = false;
         for _ in 0..REPAIRS.0 + all.len() / REPAIRS.1 {
             let unfit = unfit(&snapped, &job.limits, self.solver.rules.disjoint);
+            let piles = doses
+                .peak
+                .map_or_else(Vec::new, |peak| piles(&snapped, context, peak.0));
+            let mut more: Vec<Sample> = thinned(&violations, APART * self.setting.sigma())
+                .iter()
+                .map(|v| Sample::new(v.place, v.need, context))
+                .collect();
+            if let Some(cap) = doses.cap() {
+                more.extend(piles.iter().map(|&(p, _)| Sample::under(p, cap, context)));
+            }
             let fit = Fit {
                 shots: shots(&snapped, address),
                 violations: violations.clone(),
                 unfit,
                 slivers: self.slivers(),
+                piles,
             };
             let holds = fit.faults() == 0;
             stale += 1;
-            if best.as_ref().is_none_or(|b| fit.faults() < b.faults()) {
+            if best.as_ref().is_none_or(|b| fit.rank() < b.rank()) {
                 best = Some(fit);
                 stale = 0;
             }
-            if holds || stale == STALE_REPAIRS {
+            if (holds && !loose) || stale == STALE_REPAIRS {
                 break;
             }
-            for v in thinned(&violations, APART * self.setting.sigma()) {
-                let sample = Sample::new(v.place, v.need, context);
+            for sample in more {
                 self.model.add_sample(sample);
                 snapped.add_sample(sample);
             }
             let before: Vec<Option<Flash>> = self.model.all().to_vec();
-            self.repair();
+            if holds {
+                self.reduce();
+                loose = false;
+            } else {
+                self.repair(&mut loose);
+            }
             let moved: Vec<usize> = changed(&before, self.model.all());
             let flashed: Vec<Option<Flash>> = snapped.all().to_vec();
             // Out first, so that what comes finds the place free.
@@ -321,8 +390,9 @@ impl Attempt<'_> {
         best.unwrap_or_else(|| unreachable!("at least one round was made"))
     }
 
-    /// Moves shots to where the rule holds at all samples; where that does not do, adds one or two and takes away what they make needless.
-    fn repair(&mut self) {
+    /// Moves shots to where the rule holds at all samples; where that does not do, adds one or two and takes away what they make
+    /// needless. `loose`: some that were added stay without a look at what they make needless.
+    fn repair(&mut self, loose: &mut bool) {
         let Self {
             model,
             solver,
@@ -335,9 +405,14 @@ impl Attempt<'_> {
         let before: Vec<Option<Flash>> = model.all().to_vec();
         let most = 2 + model.flashes().count() / 32;
         let slim = solver.rules.slim_side < solver.rules.least_side;
-        if mend(model, solver, budget.window, most, false)
-            || (slim && mend(model, solver, budget.window, 2 * most, true))
+        if !mend(model, solver, budget.window, most, false)
+            && !(slim && mend(model, solver, budget.window, most, true))
         {
+            *loose = true;
+        } else if *loose {
+            self.reduce();
+            *loose = false;
+        } else {
             let moved = changed(&before, model.all());
             reduce(model, solver, *budget, &moved);
             widen(model, solver, budget.window);
@@ -422,8 +497,7 @@ pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -
             break;
         }
         let fit = attempt.finish();
-        let rank = |f: &Fit| (f.faults(), f.slivers, f.shots.len());
-        if best.as_ref().is_none_or(|b| rank(&fit) < rank(b)) {
+        if best.as_ref().is_none_or(|b| fit.rank() < b.rank()) {
             best = Some(fit);
         }
     }

@@ -2,7 +2,7 @@
 
 use crate::blur::{REACH, THRESHOLD};
 use crate::shot::{AddressUnit, Shot, ShotLimits, ShotList};
-use crate::target::{Mesh, Need, Target, Violation};
+use crate::target::{Mesh, Need, Target, Violation, peaks};
 use crate::units::{Dose, Nm};
 
 use super::field::{Boxes, Field};
@@ -14,6 +14,12 @@ use super::solve::Solver;
 /// it falls with the square of their distance.
 const SPARE: f64 = 0.001;
 
+/// Step of the lattice on which peaks are looked for, σ.
+const PEAK_STEP: f64 = 0.125;
+
+/// A dose so little over the peak allowed is still under it: more than what the lattice hides.
+const PEAK_SPARE: f64 = 5e-4;
+
 /// Every place found where the shots break the rule, or keep it with no dose to spare.
 ///
 /// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared. Looks where dose of the
@@ -24,7 +30,22 @@ pub(super) fn check(
     context: &ContextDose,
     boxes: Option<&[[f64; 4]]>,
 ) -> Vec<Violation> {
-    let field = Field::new(model, context);
+    let mut all = Vec::new();
+    for around in context.around() {
+        let field = Field::new(model, around);
+        all.extend(broken(target, &field, model, context, boxes));
+    }
+    all
+}
+
+/// [`check`] with one list of neighbours' shots.
+fn broken(
+    target: &Target,
+    field: &Field<'_>,
+    model: &Model,
+    context: &ContextDose,
+    boxes: Option<&[[f64; 4]]>,
+) -> Vec<Violation> {
     let sigma = model.sigma;
     let look = |part: &mut Boxes, step: f64, lattice: f64, spare: f64| {
         let mesh = Mesh {
@@ -32,7 +53,7 @@ pub(super) fn check(
             lattice_step: sigma / lattice,
             margin: 3.0 * sigma,
         };
-        let mut found = target.violations_in(part, &field, mesh, spare);
+        let mut found = target.violations_in(part, field, mesh, spare);
         found.retain(|v| v.need == Need::Print || !context.may_print(v.place));
         found
     };
@@ -57,6 +78,28 @@ pub(super) fn check(
         broken.extend(look(&mut part, 0.25, 8.0, SPARE / 16.0));
     }
     broken
+}
+
+/// Places where the dose piles up to more than `peak` allows, with the dose there.
+pub(in crate::fracture) fn piles(
+    model: &Model,
+    context: &ContextDose,
+    peak: f64,
+) -> Vec<([f64; 2], f64)> {
+    let hull = model.flashes().map(|(_, f)| f).reduce(|a, b| a.hull(&b));
+    let Some(hull) = hull else {
+        return Vec::new();
+    };
+    let found = context.around().iter().flat_map(|around| {
+        let field = Field::new(model, around);
+        peaks(
+            &field,
+            hull.side,
+            PEAK_STEP * model.sigma,
+            peak + PEAK_SPARE,
+        )
+    });
+    found.collect()
 }
 
 /// Shots that the writer would refuse: sides outside the limits, or (tiles) on another shot.

@@ -8,6 +8,8 @@ use std::ops::Range;
 
 use pulp::Arch;
 
+use crate::fracture::overlap::DoseLevels;
+
 use super::algebra::{Assemble, Cholesky, Entry};
 use super::kernel::{AddDose, LANES, Missed, Slopes};
 use super::model::{Block, Flash, Model};
@@ -25,6 +27,8 @@ pub(in crate::fracture) struct Rules {
     pub(in crate::fracture) disjoint: bool,
     /// Dose to spare at every sample: covers rounding to the address grid and what lies between samples.
     pub(in crate::fracture) guard: f32,
+    /// Doses that a shot may have.
+    pub(in crate::fracture) levels: DoseLevels,
 }
 
 impl Rules {

@@ -6,9 +6,16 @@
 //! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
 
 mod bound;
+mod levels;
 
-use super::fit::{Budget, Flash, Setting, Slabs, Stage, best_of, cover};
-use super::{Effort, Fracture, FractureError, Fracturer, Job, framed};
+pub use levels::{DoseLevels, DoseLevelsError};
+
+use super::fit::{Budget, Doses, Flash, Setting, Slabs, Stage, best_of, cover};
+use super::{
+    Effort, Fracture, FractureError, Fracturer, Job, Miss, MissReason, framed, misses, refitted,
+};
+use crate::shot::{ShotLimits, ShotList};
+use crate::units::{Dose, Nm};
 
 /// The overlap fracture.
 #[derive(Clone, Copy, Debug, Default)]
@@ -17,6 +24,23 @@ pub struct Overlap {
     pub effort: Effort,
     /// Whether to work out a lower bound too: about half as much work again.
     pub bound: bool,
+    /// No place may get more than this from all shots: 1 or more, since a wide shot alone gives that.
+    pub peak_dose: Option<Dose>,
+    /// The doses that a shot may have.
+    pub dose_levels: DoseLevels,
+}
+
+impl Overlap {
+    /// Any shots of dose 1, with an effort.
+    #[must_use]
+    pub const fn with(effort: Effort) -> Self {
+        Self {
+            effort,
+            bound: false,
+            peak_dose: None,
+            dose_levels: DoseLevels::ONE,
+        }
+    }
 }
 
 /// How far the outline may wander within a first slab, σ; as for tiles.
@@ -24,6 +48,9 @@ const SLACK: f64 = 0.6;
 
 /// How much of both ends of a slab may stick out when it is grown, σ: a shot's corner prints rounded by about as much.
 const INSETS: [f64; 2] = [0.3, 0.6];
+
+/// How many times as much a trial may cost at first when doses are held under a peak: stacks cost much and are soon spread.
+const PILED: f64 = 4.0;
 
 /// Shots in a first cover from which a figure counts as long.
 const LONG: usize = 40;
@@ -42,16 +69,38 @@ impl Fracturer for Overlap {
     }
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
-        framed(job, |job| Ok(self.search(job)))
+        framed(job, |job| Ok(self.explained(job)))
+    }
+
+    fn misses(&self, job: &Job<'_>, shots: &ShotList) -> Vec<Miss> {
+        misses(job, shots, self.doses())
+    }
+
+    fn refit(&self, job: &Job<'_>, found: &Fracture) -> Option<Fracture> {
+        let moved = refitted(job, &found.shots, |job, shots| {
+            let setting = Setting::with(job, self.doses());
+            setting.refit(shots, false, self.budget().0)
+        });
+        // Where moving them does not do, others are looked for.
+        let prints = |fracture: &Fracture| fracture.misses.is_empty();
+        let mut best = match moved {
+            Some(moved) if prints(&moved) && moved.shots.len() <= found.shots.len() => moved,
+            moved => {
+                let anew = self.fracture(job).ok();
+                let all = moved.into_iter().chain(anew);
+                all.min_by_key(|fracture| (fracture.misses.len(), fracture.shots.len()))?
+            }
+        };
+        best.lower_bound = found.lower_bound;
+        Some(best)
     }
 }
 
 impl Overlap {
-    /// The fewest shots found that print within tolerance, or the best found.
-    fn search(&self, job: &Job<'_>) -> Fracture {
-        let setting = Setting::new(job);
+    /// How much work is put in, and from how many starts.
+    fn budget(&self) -> (Budget, usize) {
         // What the efforts cost and gain is measured in benches/fracture.rs.
-        let (budget, starts) = match self.effort {
+        match self.effort {
             Effort::Quick => (
                 Budget {
                     window: 10,
@@ -79,7 +128,52 @@ impl Overlap {
                 },
                 3,
             ),
+        }
+    }
+
+    fn doses(&self) -> Doses {
+        Doses {
+            levels: self.dose_levels,
+            peak: self.peak_dose,
+        }
+    }
+
+    /// [`Overlap::search`], and where it does not print, whether that is for the limits.
+    fn explained(&self, job: &Job<'_>) -> Fracture {
+        let mut found = self.search(job);
+        let unknown = |fracture: &Fracture| {
+            let mut misses = fracture.misses.iter();
+            misses.any(|miss| miss.reason == MissReason::NotFound)
         };
+        if unknown(&found) {
+            let free = Self {
+                peak_dose: None,
+                bound: false,
+                ..*self
+            };
+            let anything = ShotLimits {
+                least_side: job.limits.address.nm(),
+                sliver: job.limits.address.nm(),
+                greatest_side: Nm(f64::INFINITY),
+                ..job.limits
+            };
+            let freely = free.search(&Job {
+                limits: anything,
+                ..*job
+            });
+            if freely.misses.is_empty() {
+                let unknown = |miss: &&mut Miss| miss.reason == MissReason::NotFound;
+                let misses = found.misses.iter_mut().filter(unknown);
+                misses.for_each(|miss| miss.reason = MissReason::Limits);
+            }
+        }
+        found
+    }
+
+    /// The fewest shots found that print within tolerance, or the best found.
+    fn search(&self, job: &Job<'_>) -> Fracture {
+        let setting = Setting::with(job, self.doses());
+        let (budget, starts) = self.budget();
         let slabs = Slabs::of(job, &setting.target);
         let grown = INSETS.map(|inset| slabs.grown(SLACK, inset * setting.sigma()));
         let both = grown.concat();
@@ -94,26 +188,63 @@ impl Overlap {
         if long {
             starts.truncate(1);
         }
+        let mut budget = budget;
+        if self.peak_dose.is_some() {
+            // What is found without it often needs little change; where the limit is low, a cut is nearer.
+            let free = Self {
+                peak_dose: None,
+                bound: false,
+                ..*self
+            };
+            let found = free.search(job).shots;
+            starts = vec![found.rects().map(Flash::from).collect()];
+            starts.extend(slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len));
+            budget.hopeless *= PILED;
+        }
+        let dose = self.dose_levels.nearest_to_one();
+        let level = |starts: &mut [Vec<Flash>]| {
+            for flash in starts.iter_mut().flatten() {
+                if self.dose_levels.iter().all(|level| level != flash.dose) {
+                    flash.dose = dose;
+                }
+            }
+        };
+        level(&mut starts);
+        let mut cut = cut;
+        level(cut.as_mut_slice());
         let stages = setting.least_sides().map(|least| Stage {
             start: 0.0,
             least,
             mend: true,
         });
-        let mut fracture = setting.staged(&stages, |stage| {
-            let tiles = cut.iter().filter(|_| long).map(|cut| {
-                let mut tiles = setting.attempt(cut, true, [stage.least; 2], TILES);
-                tiles.reduce();
-                tiles.flashes()
-            });
-            let attempts = starts
-                .iter()
-                .cloned()
-                .chain(tiles)
-                .map(|start| setting.attempt(&start, false, [stage.least; 2], budget));
-            best_of(attempts.collect(), stage.mend)
-        });
-        fracture.lower_bound = self.bound.then(|| {
-            let context = |p| setting.context.dose(p);
+        let from = |starts: &[Vec<Flash>]| {
+            setting.staged(&stages, |stage| {
+                let tiles = cut.iter().filter(|_| long).map(|cut| {
+                    let mut tiles = setting.attempt(cut, true, [stage.least; 2], TILES);
+                    tiles.reduce();
+                    tiles.flashes()
+                });
+                let attempts = starts
+                    .iter()
+                    .cloned()
+                    .chain(tiles)
+                    .map(|start| setting.attempt(&start, false, [stage.least; 2], budget));
+                best_of(attempts.collect(), stage.mend)
+            })
+        };
+        let mut fracture = from(&starts);
+        // A cover may be too few shots for moving them to lead anywhere; a cut hardly ever is.
+        if !fracture.misses.is_empty() {
+            let mut cuts = slabs.both(SLACK, 0.0);
+            level(&mut cuts);
+            let other = from(&cuts);
+            if other.misses.len() < fracture.misses.len() {
+                fracture = other;
+            }
+        }
+        // The proof is for shots of dose 1.
+        fracture.lower_bound = (self.bound && self.dose_levels.are_one()).then(|| {
+            let context = |p| setting.context.range(p).1;
             bound::lower_bound(&setting.target, job.blur, &job.limits, context)
         });
         fracture

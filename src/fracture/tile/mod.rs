@@ -24,8 +24,8 @@ pub use slivers::GROUP;
 pub use snap::{Snapped, snap};
 pub use staircase::{StaircaseError, StaircaseFracture, fracture_staircase, staircase};
 
-use super::fit::Setting;
-use super::{Effort, Fracture, FractureError, Fracturer, Job, oriented};
+use super::fit::{Budget, Setting};
+use super::{Effort, Fracture, FractureError, Fracturer, Job, oriented, refitted};
 use crate::geom::Rect;
 use crate::shot::{AddressUnit, Shot, ShotList};
 use crate::units::{Dose, Nm};
@@ -48,6 +48,17 @@ impl Fracturer for Tile {
 
     fn fracture(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         oriented(job, |job| self.either(job))
+    }
+
+    fn refit(&self, job: &Job<'_>, found: &Fracture) -> Option<Fracture> {
+        let moved = refitted(job, &found.shots, |job, shots| {
+            Setting::new(job).refit(shots, true, REFIT)
+        })?;
+        Some(Fracture {
+            lower_bound: found.lower_bound,
+            notes: found.notes.clone(),
+            ..moved
+        })
     }
 }
 
@@ -98,6 +109,14 @@ impl Tile {
         Ok(fracture)
     }
 }
+
+/// Work put into a fit beside real neighbours.
+const REFIT: Budget = Budget {
+    window: 8,
+    apart: 0.5,
+    steps: 20,
+    hopeless: 0.5,
+};
 
 /// The plain staircase: geometry alone, no simulation; what a fracture without a model would write.
 #[derive(Clone, Copy, Debug)]

@@ -1,0 +1,270 @@
+//! Whole quotes from a sample, beside the exact ones.
+
+#![allow(
+    clippy::cast_possible_truncation,
+    clippy::cast_sign_loss,
+    reason = "numbers of test figures are small"
+)]
+
+use std::time::Instant;
+
+use shotwright::fracture::Effort;
+use shotwright::geom::{Point, Repetition};
+use shotwright::layout::{Cell, Layer, Layout, Shape};
+use shotwright::mask::{Mask, MaskOptions};
+use shotwright::profile::Profile;
+use shotwright::quote::result::{Method, Stopped};
+use shotwright::quote::{self, Answer, Chosen, Clip, Sampling, Terms};
+use shotwright::shot::AddressUnit;
+use shotwright::units::Nm;
+
+use crate::kinds::between;
+use crate::random::Random;
+
+const LAYER: Layer = Layer {
+    layer: 1,
+    datatype: 0,
+};
+
+fn flat(shapes: Vec<Shape>) -> Layout {
+    let cell = Cell {
+        name: "top".to_owned(),
+        shapes: shapes.into(),
+        placements: Vec::new(),
+    };
+    Layout {
+        unit: Nm(1.0),
+        cells: vec![cell],
+        notes: Vec::new(),
+        open_outlines: 0,
+    }
+}
+
+fn terms(profile: &Profile) -> Terms<'_> {
+    Terms {
+        dose_levels: shotwright::fracture::overlap::DoseLevels::ONE,
+        profile,
+        tolerance: Nm(2.0),
+        within: Nm(2.0),
+        effort: Effort::Quick,
+        field: None,
+        slot: None,
+        peak_dose: None,
+        raster: None,
+    }
+}
+
+fn sampling(within: Option<f64>, most: Option<usize>) -> Sampling<'static> {
+    Sampling {
+        within,
+        most,
+        seed: 1,
+        time_limit: None,
+        out_of_time: &|| false,
+    }
+}
+
+fn with_mask<R>(
+    layout: &Layout,
+    terms: &Terms<'_>,
+    then: impl FnOnce(&[Clip<'_>], &Mask) -> R,
+) -> R {
+    let chosen = Chosen {
+        name: "test",
+        layout,
+        options: &MaskOptions::new(Nm(0.0), AddressUnit::FINEST),
+    };
+    let mask = chosen.mask(&terms.setup().unwrap()).unwrap();
+    let clip = Clip {
+        chosen,
+        mask: &mask,
+        coverage: None,
+    };
+    then(&[clip], &mask)
+}
+
+/// Bars of 60 to 3000 nm, each of its own size, some of them in small arrays; 8 µm apart over several stripes.
+fn bars(n: usize) -> Layout {
+    let mut random = Random(3);
+    let mut side = |low: f64, high: f64| {
+        between(&mut random, f64::ln(low), f64::ln(high))
+            .exp()
+            .round() as i64
+    };
+    let columns = (n as f64).sqrt().ceil() as usize;
+    let shape = |i: usize| {
+        let (w, h) = (side(60.0, 400.0), side(60.0, 3000.0));
+        let (x, y) = ((i % columns) as i64 * 8000, (i / columns) as i64 * 8000);
+        let corners = [(0, 0), (w, 0), (w, h), (0, h)];
+        let points = corners
+            .map(|(dx, dy)| Point {
+                x: x + dx,
+                y: y + dy,
+            })
+            .to_vec();
+        let repetition = if i.is_multiple_of(7) {
+            Repetition::Lattice {
+                columns: 1 + (i % 5) as u64,
+                rows: 2,
+                a: Point { x: 700, y: 0 },
+                b: Point { x: 0, y: 3500 },
+            }
+        } else {
+            Repetition::Once
+        };
+        Shape {
+            layer: LAYER,
+            points,
+            repetition,
+        }
+    };
+    flat((0..n).map(shape).collect())
+}
+
+#[test]
+fn a_sampled_quote_covers_the_exact_one() {
+    let profile = Profile::builtin("shaped-400").unwrap();
+    let terms = terms(&profile);
+    with_mask(&bars(900), &terms, |clips, mask| {
+        assert!(mask.figures.len() > 800);
+        let exact = quote::quote(clips, &terms, &|| ()).unwrap().quote;
+        let run = |most| {
+            quote::quote_sampled(clips, &terms, &sampling(None, Some(most)), &|| ()).unwrap()
+        };
+        let sampled = run(200).quote;
+        let sample = sampled.sample.as_ref().unwrap();
+        assert_eq!(
+            (sample.figures_drawn, sample.stopped),
+            (200, Stopped::AsManyAsAsked)
+        );
+        for method in Method::ALL {
+            let (exact, found) = (
+                exact.fractures.get(method).unwrap(),
+                sampled.fractures.get(method).unwrap(),
+            );
+            let (shots, beam) = (
+                sample.shots.get(method).unwrap(),
+                sample.beam_h.get(method).unwrap(),
+            );
+            let true_shots = exact.shots.0 as f64;
+            assert!(
+                (shots.low..=shots.high).contains(&true_shots),
+                "{method:?}: {shots:?}, exactly {true_shots}"
+            );
+            assert_eq!(found.shots.0, shots.value.round() as u128);
+            let (h, e) = (found.hours.unwrap(), exact.hours.unwrap());
+            assert!(
+                (beam.low..=beam.high).contains(&(e.flash_h + e.settle_h)),
+                "{method:?}: {beam:?}, exactly {e:?}"
+            );
+            // The hours are those of the estimate, but for half a flash at most in each of two passes: flashes are whole.
+            assert!((h.flash_h + h.settle_h - beam.value).abs() <= 60e-9 / 3600.0);
+            assert_eq!(h.stripes, e.stripes);
+            assert!((h.total_h - e.total_h).abs() < 1e-3 * e.total_h);
+            assert!(h.low_h < h.total_h && h.total_h < h.high_h);
+            let (p, q) = (
+                found.edge_error_nm.p95.unwrap(),
+                exact.edge_error_nm.p95.unwrap(),
+            );
+            assert!((p - q).abs() < 0.2, "{p} {q}");
+        }
+        // The same for any number of threads.
+        let threads = |n: usize| {
+            let pool = rayon::ThreadPoolBuilder::new()
+                .num_threads(n)
+                .build()
+                .unwrap();
+            pool.install(|| serde_json::to_string(&run(120).quote).unwrap())
+        };
+        assert_eq!(threads(1), threads(4));
+    });
+}
+
+/// Blobs of 100 to 700 nm across, each its own, `pitch` nm apart.
+fn blobs(n: usize, pitch: f64) -> Layout {
+    let mut random = Random(17);
+    let columns = (n as f64).sqrt().ceil() as usize;
+    let shape = |i: usize| {
+        let mean = 50.0 * between(&mut random, 0.0, 1.6).exp();
+        let waves: Vec<[f64; 3]> = (2..6)
+            .map(|k| {
+                [
+                    f64::from(k),
+                    between(&mut random, 0.0, 0.5) / f64::from(k * k),
+                    between(&mut random, 0.0, 6.28),
+                ]
+            })
+            .collect();
+        let (x, y) = ((i % columns) as f64 * pitch, (i / columns) as f64 * pitch);
+        let vertices = (mean * std::f64::consts::TAU / 6.0) as usize;
+        let point = |v: usize| {
+            let phi = std::f64::consts::TAU * v as f64 / vertices as f64;
+            let r = mean
+                * (1.0
+                    + waves
+                        .iter()
+                        .map(|[k, a, p]| a * (k * phi + p).cos())
+                        .sum::<f64>());
+            Point {
+                x: (x + r * phi.cos()).round() as i64,
+                y: (y + r * phi.sin()).round() as i64,
+            }
+        };
+        let mut points: Vec<Point> = (0..vertices).map(point).collect();
+        points.dedup();
+        Shape {
+            layer: LAYER,
+            points,
+            repetition: Repetition::Once,
+        }
+    };
+    flat((0..n).map(shape).collect())
+}
+
+/// Processor seconds of this process so far.
+fn processor_s() -> f64 {
+    let stat = std::fs::read_to_string("/proc/self/stat").unwrap();
+    let fields: Vec<&str> = stat
+        .rsplit(')')
+        .next()
+        .unwrap()
+        .split_whitespace()
+        .collect();
+    // utime and stime in ticks of 1/100 s (proc(5)).
+    (fields[11].parse::<f64>().unwrap() + fields[12].parse::<f64>().unwrap()) / 100.0
+}
+
+#[test]
+#[ignore = "a hundred thousand curved figures: some minutes"]
+fn a_hundred_thousand_curved_figures_are_quoted_within_two_percent() {
+    let profile = Profile::builtin("shaped-400").unwrap();
+    let terms = Terms {
+        effort: Effort::Normal,
+        ..terms(&profile)
+    };
+    let layout = blobs(100_000, 900.0);
+    let (begun, before) = (Instant::now(), processor_s());
+    with_mask(&layout, &terms, |clips, mask| {
+        println!(
+            "mask: {:.0} s, processor {:.0} s, {} figures",
+            begun.elapsed().as_secs_f64(),
+            processor_s() - before,
+            mask.figures.len()
+        );
+        assert!(mask.figures.len() > 99_000);
+        let Answer { quote, .. } =
+            quote::quote_sampled(clips, &terms, &sampling(Some(0.02), None), &|| ()).unwrap();
+        let sample = quote.sample.unwrap();
+        println!(
+            "quote: {:.0} s, processor {:.0} s; {sample:#?}",
+            begun.elapsed().as_secs_f64(),
+            processor_s() - before
+        );
+        assert_eq!(sample.stopped, Stopped::NarrowEnough);
+        assert!(sample.figures_drawn <= 5000);
+        for method in [Method::Tile, Method::Overlap] {
+            let shots = sample.shots.get(method).unwrap();
+            assert!(shots.high - shots.low <= 0.04 * shots.value);
+        }
+    });
+}
