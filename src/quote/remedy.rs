@@ -19,7 +19,7 @@ use super::exposure::{self, Exposed, LongRange};
 use super::hours::{self, Written};
 use super::made::{self, Made, MadeMask, Scene, Unmade, first_place};
 use super::result::{
-    Change, FigureRemedies, Fits, FractureSummary, Method, MustChange, Remedy, Trial,
+    Change, DoseMap, FigureRemedies, Fits, FractureSummary, Method, MustChange, Remedy, Trial,
 };
 use super::{Answer, Basis, Clip, QuoteError, Terms, fracturer};
 use super::{summary, uncertain};
@@ -489,9 +489,11 @@ impl<'a> Shop<'a> {
 
     fn hours_at(&self, exposed: &[Exposed<'_>]) -> Result<super::result::Hours, QuoteError> {
         let written = Written::new(self.clips, exposed, self.terms.field);
-        let (profile, correction) = (self.terms.profile, self.basis.correction);
+        let profile = self.terms.profile;
+        let map = DoseMap::all(exposed.iter().filter_map(|of_clip| of_clip.map.as_ref()));
+        let even = uncertain::of_map(self.basis.correction, map)?;
         let hours = written.hours(profile)?.0;
-        uncertain::widened(hours, &written, profile, correction)
+        uncertain::widened(hours, &written, profile, even)
     }
 
     /// The mask quoted with the changes made: timed and judged anew.

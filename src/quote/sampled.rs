@@ -451,11 +451,12 @@ fn sampled(
         let spread = |shift| all.spread(units, shift, (frame, terms.field));
         let time = |shift| Written::of_sums(spread(shift)).time(terms.profile);
         let mut timed = time(0.0)?;
+        let map = DoseMap::all(exposed.iter().filter_map(|exposed| exposed.map.as_ref()));
         timed.hours = uncertain::widened(
             timed.hours,
             &Written::of_sums(spread(0.0)),
             terms.profile,
-            basis.correction,
+            uncertain::of_map(basis.correction, map)?,
         )?;
         let low = time(-1.0)?.hours.total_h;
         let high = time(1.0)?.hours.total_h;
@@ -481,7 +482,7 @@ fn sampled(
         }
         *parts.fractures.slot(method) = Some(FractureSummary {
             hours: Some(timed.hours),
-            dose_map: DoseMap::all(exposed.iter().filter_map(|exposed| exposed.map.as_ref())),
+            dose_map: map,
             ..tally.summary()
         });
         *parts.stripes.slot(method) = Some(hours::rows(&timed.time));

@@ -220,13 +220,14 @@ fn bins(boxes: &[[f64; 4]], sigma: f64) -> Option<Bins> {
 const BAND: f64 = 0.125;
 
 impl ContextDose {
-    /// From the context of a job.
-    pub(in crate::fracture) fn of(job: &Job<'_>) -> Self {
+    /// From the context of a job, as far as it lies within reach of what is to be printed.
+    pub(in crate::fracture) fn of(job: &Job<'_>, target: &Target) -> Self {
         let sigma = job.blur.sigma().0;
         let figures: Vec<Target> = job
             .context
             .iter()
             .map(|f| Target::new(f, job.blur, job.tolerance))
+            .filter(|other| within(target, other, REACH * sigma))
             .collect();
         let printed: Vec<[f64; 4]> = figures
             .iter()
@@ -266,6 +267,17 @@ impl ContextDose {
             (least.min(d), most.max(d))
         })
     }
+}
+
+/// Whether two outlines come within `limit` nm of each other, or one lies in the other.
+fn within(a: &Target, b: &Target, limit: f64) -> bool {
+    // Where outlines that do not cross are nearest, one of them has a vertex.
+    let reaches = |a: &Target, b: &Target| {
+        let vertices = a.edges().iter().map(|edge| edge.a);
+        let mut near = vertices.map(|p| b.outline_within(p, limit) || b.inside(p));
+        near.any(|near| near)
+    };
+    reaches(a, b) || reaches(b, a)
 }
 
 /// A figure that prints ideally, in bands.

@@ -89,7 +89,7 @@ impl<'a> Setting<'a> {
 
     pub(in crate::fracture) fn with(job: &'a Job<'a>, doses: Doses) -> Self {
         let target = Target::new(job.figure, job.blur, job.tolerance);
-        let context = ContextDose::of(job);
+        let context = ContextDose::of(job, &target);
         let samples = samples_of(&target, job.blur, &context, doses.cap());
         Self {
             job,
