@@ -35,6 +35,9 @@ pub struct Job<'a> {
 }
 
 /// How hard a fracturer searches.
+///
+/// Measured on the 30 figures of the reference set `assist` (σ 12 nm, tolerance 2 nm), shots and time as a share of normal: quick 295
+/// tiles at 0.8 and 238 overlapping shots at 0.45; normal 295 and 223; thorough 292 at 2.2 and 219 at 2.2.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, PartialOrd, Ord)]
 pub enum Effort {
     /// One start, few trials.
