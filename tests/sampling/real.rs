@@ -161,7 +161,10 @@ fn a_sampled_quote_covers_the_exact_one() {
             assert!((h.flash_h + h.settle_h - beam.value).abs() <= 60e-9 / 3600.0);
             assert_eq!(h.stripes, e.stripes);
             assert!((h.total_h - e.total_h).abs() < 1e-3 * e.total_h);
-            assert!(h.low_h < h.total_h && h.total_h < h.high_h);
+            // Where the stage bounds every stripe, hours do not depend on the beam, and so not on the sample.
+            let spread = h.low_h < h.total_h && h.total_h < h.high_h;
+            let bound = h.stage_bound_stripes == h.stripes && h.low_h == h.high_h;
+            assert!(spread || bound, "{method:?}: {h:?}");
             let (p, q) = (
                 found.edge_error_nm.p95.unwrap(),
                 exact.edge_error_nm.p95.unwrap(),

@@ -125,6 +125,9 @@ mod tests {
         points.push(Point::from_nm(200, 400));
         points.push(Point::from_nm(0, 400));
         let figure = of(points);
-        assert!((figure.rise_nm - 200.0 * 12.0 / 14.0).abs() < 2.0, "{figure:?}");
+        assert!(
+            (figure.rise_nm - 200.0 * 12.0 / 14.0).abs() < 2.0,
+            "{figure:?}"
+        );
     }
 }
