@@ -205,7 +205,7 @@ fn the_edge_of_a_neighbour_is_no_piece_of_its_own() {
     for gap in 30..120 {
         let neighbour = Figure::from_rect(rect(200 + gap, -500, 900, 700));
         let shots = flash(&[rect(0, 0, 200, 200), rect(199 + gap, -500, 900, 700)]);
-        let dose = Exposure::new(s.blur, shots.into_iter());
+        let dose = Exposure::new(s.blur, shots);
         let found = judge(&figure, &[neighbour], &dose, &s);
         assert_eq!(found.pieces, Pieces::default(), "{gap} nm apart");
     }

@@ -405,9 +405,9 @@ impl Attempt<'_> {
         let before: Vec<Option<Flash>> = model.all().to_vec();
         let most = 2 + model.flashes().count() / 32;
         let slim = solver.rules.slim_side < solver.rules.least_side;
-        if !mend(model, solver, budget.window, most, false)
-            && !(slim && mend(model, solver, budget.window, most, true))
-        {
+        let mended = mend(model, solver, budget.window, most, false)
+            || (slim && mend(model, solver, budget.window, most, true));
+        if !mended {
             *loose = true;
         } else if *loose {
             self.reduce();

@@ -51,6 +51,9 @@ pub struct Drawn<C> {
     pub stopped: Stopped,
 }
 
+/// Gives the costs of some figures.
+pub type Measure<'a, C, E> = dyn FnMut(&[usize]) -> Result<Vec<C>, E> + 'a;
+
 /// Draws from the strata; `measure` gives the costs of some figures, `of` the numbers whose totals are asked for.
 ///
 /// # Errors
@@ -58,7 +61,7 @@ pub struct Drawn<C> {
 pub fn draw<C, E>(
     strata: &Strata,
     stop: &Stop<'_>,
-    measure: &mut dyn FnMut(&[usize]) -> Result<Vec<C>, E>,
+    measure: &mut Measure<'_, C, E>,
     of: &[&dyn Fn(&C) -> f64],
 ) -> Result<Drawn<C>, E> {
     let mut drawn = Drawn {
@@ -215,9 +218,9 @@ fn batch(strata: &Strata, taken: &[usize], wanted: &[usize]) -> Vec<(usize, usiz
     let mut batch: Vec<(f64, usize, usize)> = Vec::new();
     for (stratum, members) in strata.members.iter().enumerate() {
         let (from, to) = (taken[stratum], wanted[stratum]);
-        for i in from..to {
-            let turn = (i - from) as f64 / (to - from) as f64;
-            batch.push((turn, stratum, members[i]));
+        let share = to.saturating_sub(from) as f64;
+        for (i, &figure) in members[from..to.max(from)].iter().enumerate() {
+            batch.push((i as f64 / share, stratum, figure));
         }
     }
     batch.sort_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));

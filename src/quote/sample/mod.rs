@@ -9,7 +9,7 @@ mod features;
 mod strata;
 mod student;
 
-pub use draw::{Drawn, LEAST, Stop, Stopped, draw};
+pub use draw::{Drawn, LEAST, Measure, Stop, Stopped, draw};
 pub use estimate::{Total, Weights};
 pub use features::Features;
 pub use strata::{Scale, Strata};

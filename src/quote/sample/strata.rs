@@ -43,7 +43,7 @@ impl Strata {
     #[must_use]
     pub fn new(figures: &[(Features, u64)], scale: Scale) -> Self {
         let terms: Vec<_> = figures.iter().map(|(f, _)| terms(f, scale)).collect();
-        let expected: Vec<f64> = terms.iter().map(|x| expected(x)).collect();
+        let expected: Vec<f64> = terms.iter().map(expected).collect();
         let size: Vec<f64> = expected
             .iter()
             .zip(figures)
