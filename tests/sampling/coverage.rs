@@ -124,7 +124,7 @@ fn the_interval_covers_the_exact_answer_as_often_as_it_says() {
         (1000, Places::Once, 0.05),
     ] {
         let (covered, taken) = coverage(0..300, n, places, share);
-        println!(
+        eprintln!(
             "{n} figures, {places:?}, within {share}: covered {covered:.3?}, drawn {taken:.3}"
         );
         for covered in covered {
@@ -149,7 +149,7 @@ fn a_hundred_thousand_figures_are_known_to_two_percent_from_a_twentieth() {
         let (drawn, totals) = drawn(&mask, &strata(&mask), &within(0.02));
         assert_eq!(drawn.stopped, Stopped::Narrow);
         let most = totals.iter().map(Total::relative).fold(0.0, f64::max);
-        println!(
+        eprintln!(
             "{places:?}: {} figures drawn, interval ±{:.2} %",
             drawn.costs.len(),
             100.0 * most
@@ -236,7 +236,7 @@ fn the_interval_covers_over_many_more_masks() {
         (10_000, Places::Pareto(1.5), 0.005),
     ] {
         let (covered, taken) = coverage(1000..3000, n, places, share);
-        println!(
+        eprintln!(
             "{n} figures, {places:?}, within {share}: covered {covered:.3?}, drawn {taken:.3}"
         );
         for covered in covered {

@@ -6,8 +6,11 @@ mod kinds;
 #[path = "../common/meander.rs"]
 mod meander;
 mod population;
-#[path = "../common/random.rs"]
-mod random;
 mod real;
 #[path = "../common/regions.rs"]
 mod regions;
+
+/// The generator that `regions` brings along, where `kinds` looks for it.
+mod random {
+    pub(crate) use crate::regions::Random;
+}

@@ -194,7 +194,7 @@ fn blobs(n: usize, pitch: f64) -> Layout {
                 [
                     f64::from(k),
                     between(&mut random, 0.0, 0.5) / f64::from(k * k),
-                    between(&mut random, 0.0, 6.28),
+                    between(&mut random, 0.0, std::f64::consts::TAU),
                 ]
             })
             .collect();
@@ -248,7 +248,7 @@ fn a_hundred_thousand_curved_figures_are_quoted_within_two_percent() {
     let layout = blobs(100_000, 900.0);
     let (begun, before) = (Instant::now(), processor_s());
     with_mask(&layout, &terms, |clips, mask| {
-        println!(
+        eprintln!(
             "mask: {:.0} s, processor {:.0} s, {} figures",
             begun.elapsed().as_secs_f64(),
             processor_s() - before,
@@ -258,7 +258,7 @@ fn a_hundred_thousand_curved_figures_are_quoted_within_two_percent() {
         let Answer { quote, .. } =
             quote::quote_sampled(clips, &terms, &sampling(Some(0.02), None), &|| ()).unwrap();
         let sample = quote.sample.unwrap();
-        println!(
+        eprintln!(
             "quote: {:.0} s, processor {:.0} s; {sample:#?}",
             begun.elapsed().as_secs_f64(),
             processor_s() - before
