@@ -63,7 +63,12 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
     }
     let mut fit = best_of(found, true);
     // Shots that still fail somewhere: slivers anywhere, to be made wider where they can.
-    if fit.as_ref().is_none_or(|f| f.faults() > 0) {
+    // Where half as many places fail as there are samples, slivers do not help either.
+    let lost = setting.samples.len() / 2;
+    if fit
+        .as_ref()
+        .is_none_or(|f| f.faults() > 0 && f.faults() < lost)
+    {
         let mut starts: Vec<Vec<Flash>> = SLACKS
             .iter()
             .flat_map(|&s| {
