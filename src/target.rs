@@ -118,6 +118,11 @@ pub trait Zone {
     /// Whether the part may have places in common with a box.
     fn touches(&self, side: [f64; 4]) -> bool;
 
+    /// The least height, `y` or above, at which the part may have a place; asked with `y` rising.
+    fn resumes(&self, y: f64) -> f64 {
+        y
+    }
+
     /// Stretches of the horizontal at `y` that belong to the part, sorted and disjoint; asked with `y` rising. The outline crosses the
     /// horizontal at `crossings` (sorted; inside is between each first and second).
     fn spans(&mut self, y: f64, crossings: &[f64], out: &mut Vec<[f64; 2]>);
@@ -346,6 +351,37 @@ impl Target {
             }
         }
         out.sort_by(f64::total_cmp);
+    }
+
+    /// Stretches of the horizontal at `y` that hold every place of it in the figure or within `reach` (nm) of its outline, sorted and
+    /// disjoint; they hold few others. The outline crosses the horizontal at `crossings`.
+    pub fn spans_near(&self, y: f64, reach: f64, crossings: &[f64], out: &mut Vec<[f64; 2]>) {
+        let (low, high) = (y - reach, y + reach);
+        let mut all: Vec<[f64; 2]> = crossings.chunks_exact(2).map(|c| [c[0], c[1]]).collect();
+        for &e in self.cells.rows_between(low, high) {
+            let edge = self.edges[e as usize];
+            let (below, above) = (edge.a[1].min(edge.b[1]), edge.a[1].max(edge.b[1]));
+            if above < low || below > high {
+                continue;
+            }
+            // The part of the edge that is near enough in y.
+            let dy = edge.b[1] - edge.a[1];
+            let x = |y: f64| edge.at(((y - edge.a[1]) / dy).clamp(0.0, 1.0))[0];
+            let ends = if dy == 0.0 {
+                [edge.a[0], edge.b[0]]
+            } else {
+                [x(low), x(high)]
+            };
+            all.push([ends[0].min(ends[1]) - reach, ends[0].max(ends[1]) + reach]);
+        }
+        all.sort_by(|a, b| a[0].total_cmp(&b[0]));
+        out.clear();
+        for span in all {
+            match out.last_mut() {
+                Some(last) if span[0] <= last[1] => last[1] = last[1].max(span[1]),
+                _ => out.push(span),
+            }
+        }
     }
 
     /// Whether some part of the outline is within `limit` (nm) of the place.
@@ -616,7 +652,13 @@ impl Target {
         #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
         let at = |low: f64, i: usize| low + i as f64 * step;
         let (mut crossings, mut spans) = (Vec::new(), Vec::new());
-        for j in 0..rows {
+        let mut next = 0;
+        while next < rows {
+            let j = next.max(count(part.resumes(at(y0, next)) - y0));
+            next = j + 1;
+            if j >= rows {
+                break;
+            }
             let y = at(y0, j);
             self.crossings(y, &mut crossings);
             part.spans(y, &crossings, &mut spans);
@@ -745,8 +787,14 @@ impl Cells {
     }
 
     fn row(&self, y: f64) -> &[u32] {
-        let [_, j] = self.cell([self.origin[0], y]);
-        &self.row_edges[self.row_starts[j] as usize..self.row_starts[j + 1] as usize]
+        self.rows_between(y, y)
+    }
+
+    /// Edges in the rows of cells that a band touches; an edge may come more than once.
+    fn rows_between(&self, low: f64, high: f64) -> &[u32] {
+        let [_, from] = self.cell([self.origin[0], low]);
+        let [_, to] = self.cell([self.origin[0], high]);
+        &self.row_edges[self.row_starts[from] as usize..self.row_starts[to + 1] as usize]
     }
 
     /// Edges in the cells that a disc touches; an edge may come more than once.

@@ -155,6 +155,14 @@ impl Zone for Boxes {
         })
     }
 
+    fn resumes(&self, y: f64) -> f64 {
+        if self.bins.is_none() || self.open.iter().any(|s| s[3] >= y) {
+            return y;
+        }
+        let next = self.sides.get(self.taken);
+        next.map_or(f64::INFINITY, |s| s[1].max(y))
+    }
+
     fn spans(&mut self, y: f64, crossings: &[f64], out: &mut Vec<[f64; 2]>) {
         while let Some(&next) = self.sides.get(self.taken).filter(|s| s[1] <= y) {
             self.open.push(next);

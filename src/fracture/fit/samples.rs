@@ -55,59 +55,57 @@ pub(in crate::fracture) fn samples_of(
             samples.extend(Sample::asked(p, need, context));
         }
     });
-    let step = LATTICE_STEP * sigma;
     let reach = LATTICE_REACH * sigma;
-    let [x0, y0, x1, y1] = target.bounds();
-    let mut crossings = Vec::new();
-    let mut y = y0 - reach;
-    while y <= y1 + reach {
-        target.crossings(y, &mut crossings);
-        let mut x = x0 - reach;
-        let mut passed = 0;
-        while x <= x1 + reach {
-            while passed < crossings.len() && crossings[passed] <= x {
-                passed += 1;
-            }
-            let inside = passed % 2 == 1;
-            let wanted = !target.outline_within([x, y], 0.5 * sigma)
-                && (inside || target.outline_within([x, y], reach));
-            if wanted {
-                samples.extend(Sample::asked(
-                    [x, y],
-                    if inside { Need::Print } else { Need::Clear },
-                    context,
-                ));
-            }
-            x += step;
+    lattice(target, LATTICE_STEP * sigma, -reach, |p, inside| {
+        let wanted =
+            !target.outline_within(p, 0.5 * sigma) && (inside || target.outline_within(p, reach));
+        if wanted {
+            let need = if inside { Need::Print } else { Need::Clear };
+            samples.extend(Sample::asked(p, need, context));
         }
-        y += step;
+    });
+    if let Some(peak) = peak {
+        let step = CAP_STEP * sigma;
+        lattice(target, step, 0.5 * step, |p, inside| {
+            if inside {
+                samples.push(Sample::under(p, peak, context));
+            }
+        });
     }
-    samples.extend(peak.into_iter().flat_map(|peak| {
-        let places = inside(target, CAP_STEP * sigma);
-        places
-            .into_iter()
-            .map(move |p| Sample::under(p, peak, context))
-    }));
     samples
 }
 
-/// Places of a lattice inside a figure.
-fn inside(target: &Target, step: f64) -> Vec<[f64; 2]> {
+/// Goes over a square lattice that begins `inset` nm within the bounds of a figure, row by row, and says of each place whether it
+/// lies inside the figure. Leaves out places that are neither inside nor within -`inset` of the outline.
+fn lattice(target: &Target, step: f64, inset: f64, mut each: impl FnMut([f64; 2], bool)) {
     let [x0, y0, x1, y1] = target.bounds();
-    let (mut places, mut crossings) = (Vec::new(), Vec::new());
-    let mut y = y0 + 0.5 * step;
-    while y < y1 {
+    let beyond = (-inset).max(0.0);
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "positive; bounds are at most 4.5e12 nm"
+    )]
+    let steps = |length: f64| (length / step).max(0.0) as usize;
+    #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+    let at = |low: f64, i: usize| low + inset + i as f64 * step;
+    let (mut crossings, mut spans) = (Vec::new(), Vec::new());
+    for j in 0..=steps(y1 + beyond - at(y0, 0)) {
+        let y = at(y0, j);
         target.crossings(y, &mut crossings);
-        let mut x = x0 + 0.5 * step;
-        while x < x1 {
-            if crossings.partition_point(|&c| c <= x) % 2 == 1 {
-                places.push([x, y]);
+        target.spans_near(y, beyond, &crossings, &mut spans);
+        let (mut passed, mut next) = (0, 0);
+        for &[from, to] in &spans {
+            let end = steps(to.min(x1 + beyond) - at(x0, 0)) + 1;
+            for i in steps(from - at(x0, 0)).max(next)..end {
+                let x = at(x0, i);
+                while passed < crossings.len() && crossings[passed] <= x {
+                    passed += 1;
+                }
+                each([x, y], passed % 2 == 1);
             }
-            x += step;
+            next = next.max(end);
         }
-        y += step;
     }
-    places
 }
 
 impl Sample {
@@ -144,9 +142,7 @@ impl Sample {
         sample.cap = true;
         sample
     }
-}
 
-impl Sample {
     /// A place with its need, unless it must stay clear only of this figure.
     fn asked(place: [f64; 2], need: Need, context: &ContextDose) -> Option<Self> {
         (need == Need::Print || !context.may_print(place)).then(|| Self::new(place, need, context))
