@@ -44,7 +44,7 @@ fn staircase(layout: &Layout, profile: &Profile, coverage: Option<f64>) -> Fract
         }),
         slot: None,
         peak_dose: None,
-        dose_levels: shotwright::fracture::overlap::DoseLevels::ONE,
+        dose_levels: shotwright::fracture::DoseLevels::ONE,
         raster: None,
     };
     let mask = chosen.mask(&terms.setup().unwrap()).unwrap();

@@ -1,7 +1,7 @@
 //! The join of all stages on small masks whose answers can be worked by hand.
 
+use shotwright::fracture::DoseLevels;
 use shotwright::fracture::Effort;
-use shotwright::fracture::overlap::DoseLevels;
 use shotwright::geom::{Point, Repetition};
 use shotwright::layout::{self, Layout};
 use shotwright::mask::{Mask, MaskOptions, Standings};

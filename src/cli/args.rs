@@ -6,7 +6,7 @@ use clap::{Arg, ArgMatches, Args, Command, FromArgMatches};
 use serde::{Deserialize, Serialize};
 
 use crate::blur::Blur;
-use crate::fracture::overlap::DoseLevels;
+use crate::fracture::DoseLevels;
 use crate::layout::{self, Layout};
 use crate::mask::{Expose, Mask, MaskOptions};
 use crate::profile::{Key, Profile, ProfileErrors};

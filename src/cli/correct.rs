@@ -6,8 +6,8 @@ use clap::Args;
 use serde::Serialize;
 
 use crate::expose::Density;
+use crate::fracture::DoseLevels;
 use crate::fracture::Effort;
-use crate::fracture::overlap::DoseLevels;
 use crate::quote::exposure::{LongRange, Maps};
 use crate::quote::result::Method;
 use crate::quote::{Chosen, Terms, made};

@@ -6,8 +6,8 @@ use std::str::FromStr;
 use clap::ValueEnum;
 use serde::{Deserialize, Serialize};
 
+use crate::fracture::DoseLevels;
 use crate::fracture::Effort;
-use crate::fracture::overlap::DoseLevels;
 use crate::geom::{Point, Rect};
 use crate::layout::Layer;
 use crate::units::{Dose, Nm};

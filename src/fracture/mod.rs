@@ -2,8 +2,11 @@
 
 mod fit;
 mod frame;
+mod levels;
 pub mod overlap;
 pub mod tile;
+
+pub use levels::{DoseLevels, DoseLevelsError};
 
 use fit::{Doses, Setting};
 use std::f64::consts::FRAC_1_SQRT_2 as SLANT;
@@ -122,10 +125,8 @@ pub struct Miss {
 impl Miss {
     /// A shot (sides in nm) outside the limits of the writer, or a tile on another.
     fn unfit([x0, y0, x1, y1]: [f64; 4], dose: Dose) -> Self {
-        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
-        let place = Point::new(pm(0.5 * (x0 + x1)), pm(0.5 * (y0 + y1)));
         Self {
-            place,
+            place: point([0.5 * (x0 + x1), 0.5 * (y0 + y1)]),
             dose,
             must_print: true,
             reason: MissReason::Limits,
@@ -134,9 +135,8 @@ impl Miss {
 
     /// A place (nm) that gets more dose than is allowed anywhere.
     fn pile(place: [f64; 2], dose: f64) -> Self {
-        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
         Self {
-            place: Point::new(pm(place[0]), pm(place[1])),
+            place: point(place),
             dose: Dose(dose),
             must_print: false,
             reason: MissReason::Limits,
@@ -145,7 +145,6 @@ impl Miss {
 
     /// A broken rule as a miss, with the reason as far as the outline tells it.
     fn of(violation: &Violation, target: &Target, blur: Blur) -> Self {
-        let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
         let sigma = blur.sigma().0;
         let must_print = violation.need == Need::Print;
         let near = |limit: f64| target.outline_within(violation.place, limit);
@@ -160,12 +159,18 @@ impl Miss {
             MissReason::NotFound
         };
         Self {
-            place: Point::new(pm(violation.place[0]), pm(violation.place[1])),
+            place: point(violation.place),
             dose: Dose(violation.dose),
             must_print,
             reason,
         }
     }
+}
+
+/// A place in nm, near the origin of a frame, to the nearest picometre.
+fn point([x, y]: [f64; 2]) -> Point {
+    let pm = |v: f64| Nm(v).to_pm().unwrap_or_default();
+    Point::new(pm(x), pm(y))
 }
 
 /// Whether a place of the figure lies in a part narrower than `width` along some of four directions.

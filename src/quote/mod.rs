@@ -34,8 +34,8 @@ pub use sampled::{Sampling, quote_sampled};
 
 use crate::blur::{Blur, BlurError, REACH};
 use crate::expose::{CorrectionError, DensityError};
-use crate::fracture::overlap::{DoseLevels, Overlap};
 use crate::fracture::tile::{Staircase, Tile};
+use crate::fracture::{DoseLevels, overlap::Overlap};
 use crate::fracture::{Effort, Fracturer};
 use crate::geom::Rect;
 use crate::judge::{Background, Settings};

@@ -1,6 +1,6 @@
 //! Limits and choices of dose: a peak that no place may pass, and levels that shots may take.
 
-use shotwright::fracture::overlap::{DoseLevels, Overlap};
+use shotwright::fracture::{DoseLevels, overlap::Overlap};
 use shotwright::fracture::{Effort, Fracturer, Job, MissReason};
 use shotwright::geom::{Figure, Point, Rect};
 use shotwright::shot::ShotLimits;

@@ -42,7 +42,7 @@ fn flat(shapes: Vec<Shape>) -> Layout {
 
 fn terms(profile: &Profile) -> Terms<'_> {
     Terms {
-        dose_levels: shotwright::fracture::overlap::DoseLevels::ONE,
+        dose_levels: shotwright::fracture::DoseLevels::ONE,
         profile,
         tolerance: Nm(2.0),
         within: Nm(2.0),

@@ -20,5 +20,5 @@ mod start;
 
 pub(super) use model::Flash;
 pub(super) use reduce::Budget;
-pub(super) use search::{Doses, Fit, Setting, Stage, best_of};
+pub(super) use search::{Doses, Fit, Setting, best_of};
 pub(super) use start::{Slabs, cover};

@@ -43,6 +43,14 @@ impl Flash {
         self.side[axis + 2] - self.side[axis]
     }
 
+    /// Whether both sides are from `least` to `greatest` nm, give or take `slack`.
+    pub(super) fn fits(&self, least: f64, greatest: f64, slack: f64) -> bool {
+        let sides = [self.length(0), self.length(1)];
+        sides
+            .iter()
+            .all(|s| (least - slack..=greatest + slack).contains(s))
+    }
+
     /// How far apart two are along one axis; negative when they overlap there.
     pub(super) fn gap_along(&self, other: &Self, axis: usize) -> f64 {
         (self.side[axis] - other.side[axis + 2]).max(other.side[axis] - self.side[axis + 2])

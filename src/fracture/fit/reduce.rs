@@ -1,7 +1,7 @@
 //! Drops and merges shots as long as the others can be moved to mend what that breaks.
 
 use std::cmp::Ordering;
-use std::collections::BinaryHeap;
+use std::collections::{BinaryHeap, HashSet};
 
 use super::model::{Flash, Model};
 use super::solve::Solver;
@@ -17,6 +17,16 @@ pub(in crate::fracture) struct Budget {
     pub(in crate::fracture) steps: usize,
     /// Trials whose first cost is over this are not made.
     pub(in crate::fracture) hopeless: f64,
+}
+
+impl Budget {
+    /// What tiles need at normal effort.
+    pub(in crate::fracture) const TILES: Self = Self {
+        window: 8,
+        apart: 0.5,
+        steps: 20,
+        hopeless: 0.5,
+    };
 }
 
 /// A shot whose sides all move by less than this (σ) keeps the moves it has queued, and those that failed stay failed.
@@ -92,7 +102,8 @@ impl Reduction<'_> {
     /// Queues all moves that involve the shots in `slots`.
     fn offer(&mut self, slots: &[usize]) {
         let sigma = self.model.sigma;
-        for (at, &i) in slots.iter().enumerate() {
+        let mut offered = HashSet::with_capacity(slots.len());
+        for &i in slots {
             let Some(f) = self.model.get(i) else { continue };
             self.queue(&[i], Vec::new());
             let apart = if self.solver.rules.disjoint {
@@ -102,7 +113,7 @@ impl Reduction<'_> {
             };
             for j in self.model.near(f.grown(apart).side) {
                 // A pair with a shot offered before is queued already.
-                if j == i || slots[..at].contains(&j) {
+                if j == i || offered.contains(&j) {
                     continue;
                 }
                 let Some(g) = self.model.get(j).filter(|g| f.gap(g) < apart) else {
@@ -122,6 +133,7 @@ impl Reduction<'_> {
                     }
                 }
             }
+            offered.insert(i);
         }
     }
 

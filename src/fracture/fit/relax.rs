@@ -67,7 +67,7 @@ pub(in crate::fracture) fn mend(
         }
         let places = worst(model, left.min(1 + model.flashes().count() / 16));
         if places.is_empty() {
-            return fit(model, solver, window, slim);
+            return drop_unfit(model, solver, window, slim);
         }
         left -= places.len();
         for (place, must_print) in places {
@@ -130,7 +130,7 @@ impl Trial {
 
 /// Takes away shots that are outside the limits or (tiles) on another, where the rule holds without them; with `slim`, lets those
 /// be slivers that do not. Whether that leaves nothing wrong.
-fn fit(model: &mut Model, solver: &mut Solver, window: usize, slim: bool) -> bool {
+fn drop_unfit(model: &mut Model, solver: &mut Solver, window: usize, slim: bool) -> bool {
     for slot in offenders(model, solver) {
         let Some(flash) = model.get(slot) else {
             continue;
@@ -212,14 +212,10 @@ fn options(
 /// ascending.
 pub(super) fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
     let reach = 3.0 * model.sigma;
+    let rules = &solver.rules;
     let unfit = |slot: usize, f: &Flash| {
-        let off = |axis: usize| {
-            f.length(axis) < solver.rules.least(f) - UNFIT
-                || f.length(axis) > solver.rules.greatest_side + UNFIT
-        };
-        off(0)
-            || off(1)
-            || (solver.rules.disjoint && model.overlapped(slot, f, UNFIT).next().is_some())
+        !f.fits(rules.least(f), rules.greatest_side, UNFIT)
+            || (rules.disjoint && model.overlapped(slot, f, UNFIT).next().is_some())
     };
     let mut slots: Vec<usize> = model
         .flashes()

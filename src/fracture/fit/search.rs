@@ -1,8 +1,7 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
 use crate::blur::{REACH, THRESHOLD};
-use crate::fracture::overlap::DoseLevels;
-use crate::fracture::{Fracture, Job, Miss};
+use crate::fracture::{DoseLevels, Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
 use crate::units::Dose;
@@ -139,7 +138,7 @@ impl<'a> Setting<'a> {
         };
         let start: Vec<Flash> = shots.rects().map(Flash::from).collect();
         let attempt = self.attempt(&start, disjoint, [least; 2], budget);
-        best_of(vec![attempt], true).map(|fit| self.reported(Some(fit)))
+        best_of(vec![attempt]).map(|fit| self.reported(Some(fit)))
     }
 
     /// A fit as the result of a fracture; without one, no shots and every sample that must print as a miss.
@@ -166,26 +165,16 @@ impl<'a> Setting<'a> {
         }
     }
 
-    /// What `fit` finds at the first of some stages that prints, else at the one that misses least.
-    ///
-    /// A stage is skipped when it asks for no less than the one before. Slivers left are said in a note.
-    pub(in crate::fracture) fn staged(
-        &self,
-        stages: &[Stage],
-        fit: impl Fn(Stage) -> Option<Fit>,
-    ) -> Fracture {
-        let mut best: Option<Fit> = None;
-        for (i, &stage) in stages.iter().enumerate() {
-            if i > 0 && stages[i - 1] == stage {
-                continue;
-            }
-            let found = fit(stage);
-            let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, Fit::faults);
+    /// What `fit` finds without slivers (it is given the least side, nm); where that does not print and slivers may be written, the
+    /// better of that and of what it finds with them. Slivers left are said in a note.
+    pub(in crate::fracture) fn staged(&self, fit: impl Fn(f64) -> Option<Fit>) -> Fracture {
+        let [sliver, least] = self.least_sides();
+        let missed = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, Fit::faults);
+        let mut best = fit(sliver);
+        if least < sliver && missed(&best) > 0 {
+            let found = fit(least);
             if missed(&found) < missed(&best) {
                 best = found;
-            }
-            if missed(&best) == 0 {
-                break;
             }
         }
         self.said(best)
@@ -311,51 +300,27 @@ impl Attempt<'_> {
     /// Check, repair what the samples did not see, snap, and check again what is then really flashed: all of it once, then what
     /// a repair changed.
     pub(in crate::fracture) fn finish(mut self) -> Fit {
-        let Setting {
-            job,
-            target,
-            context,
-            doses,
-            ..
-        } = self.setting;
-        let address = job.limits.address;
-        let mut snapped = self.model.clone();
+        let setting = self.setting;
         let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
-        snap(&mut snapped, &mut self.solver, address, &all);
-        let mut violations = check(target, &snapped, context, None);
-        let mut best: Option<Fit> = None;
+        let mut snapped = self.model.clone();
+        snap(
+            &mut snapped,
+            &mut self.solver,
+            setting.job.limits.address,
+            &all,
+        );
+        let violations = check(&setting.target, &snapped, &setting.context, None);
+        let mut fit = self.fit(&snapped, violations);
+        let mut best = fit.clone();
         let mut stale = 0;
         // Shots were added that nobody tried to do without.
         let mut loose = false;
-        for _ in 0..REPAIRS.0 + all.len() / REPAIRS.1 {
-            let unfit = unfit(&snapped, &job.limits, self.solver.rules.disjoint);
-            let piles = doses
-                .peak
-                .map_or_else(Vec::new, |peak| piles(&snapped, context, peak.0));
-            let mut more: Vec<Sample> = thinned(&violations, APART * self.setting.sigma())
-                .iter()
-                .map(|v| Sample::new(v.place, v.need, context))
-                .collect();
-            if let Some(cap) = doses.cap() {
-                more.extend(piles.iter().map(|&(p, _)| Sample::under(p, cap, context)));
-            }
-            let fit = Fit {
-                shots: shots(&snapped, address),
-                violations: violations.clone(),
-                unfit,
-                slivers: self.slivers(),
-                piles,
-            };
+        for _ in 1..REPAIRS.0 + all.len() / REPAIRS.1 {
             let holds = fit.faults() == 0;
-            stale += 1;
-            if best.as_ref().is_none_or(|b| fit.rank() < b.rank()) {
-                best = Some(fit);
-                stale = 0;
-            }
             if (holds && !loose) || stale == STALE_REPAIRS {
                 break;
             }
-            for sample in more {
+            for sample in self.asked(&fit) {
                 self.model.add_sample(sample);
                 snapped.add_sample(sample);
             }
@@ -366,28 +331,80 @@ impl Attempt<'_> {
             } else {
                 self.repair(&mut loose);
             }
-            let moved: Vec<usize> = changed(&before, self.model.all());
-            let flashed: Vec<Option<Flash>> = snapped.all().to_vec();
-            // Out first, so that what comes finds the place free.
-            for &slot in &moved {
-                self.solver.set(&mut snapped, slot, None);
-            }
-            for &slot in &moved {
-                self.solver.set(&mut snapped, slot, self.model.get(slot));
-            }
-            snap(&mut snapped, &mut self.solver, address, &moved);
-            let reach = REACH * self.setting.sigma();
-            let boxes: Vec<[f64; 4]> = changed(&flashed, snapped.all())
-                .into_iter()
-                .flat_map(|slot| [flashed.get(slot).copied().flatten(), snapped.get(slot)])
-                .flatten()
-                .map(|f| f.grown(reach).side)
-                .collect();
-            let part = Boxes::only(boxes.clone(), self.setting.sigma());
+            let boxes = self.snap_moved(&before, &mut snapped);
+            let part = Boxes::only(boxes.clone(), setting.sigma());
+            let mut violations = fit.violations;
             violations.retain(|v| !part.holds(v.place));
-            violations.extend(check(target, &snapped, context, Some(&boxes)));
+            violations.extend(check(
+                &setting.target,
+                &snapped,
+                &setting.context,
+                Some(&boxes),
+            ));
+            fit = self.fit(&snapped, violations);
+            stale += 1;
+            if fit.rank() < best.rank() {
+                best = fit.clone();
+                stale = 0;
+            }
         }
-        best.unwrap_or_else(|| unreachable!("at least one round was made"))
+        best
+    }
+
+    /// Shots on the address grid as a fit, with what is wrong besides the `violations` found.
+    fn fit(&self, snapped: &Model, violations: Vec<Violation>) -> Fit {
+        let Setting {
+            job,
+            context,
+            doses,
+            ..
+        } = self.setting;
+        Fit {
+            shots: shots(snapped, job.limits.address),
+            violations,
+            unfit: unfit(snapped, &job.limits, self.solver.rules.disjoint),
+            slivers: self.slivers(),
+            piles: doses
+                .peak
+                .map_or_else(Vec::new, |peak| piles(snapped, context, peak.0)),
+        }
+    }
+
+    /// What is wrong with a fit as samples to hold the shots to.
+    fn asked(&self, fit: &Fit) -> Vec<Sample> {
+        let Setting { context, doses, .. } = self.setting;
+        let broken = thinned(&fit.violations, APART * self.setting.sigma());
+        let mut more: Vec<Sample> = broken
+            .iter()
+            .map(|v| Sample::new(v.place, v.need, context))
+            .collect();
+        if let Some(cap) = doses.cap() {
+            let piles = fit.piles.iter();
+            more.extend(piles.map(|&(p, _)| Sample::under(p, cap, context)));
+        }
+        more
+    }
+
+    /// Brings the shots that are no longer as `before` to the address grid anew; the boxes in which the dose changed by that.
+    fn snap_moved(&mut self, before: &[Option<Flash>], snapped: &mut Model) -> Vec<[f64; 4]> {
+        let moved: Vec<usize> = changed(before, self.model.all());
+        let flashed: Vec<Option<Flash>> = snapped.all().to_vec();
+        // Out first, so that what comes finds the place free.
+        for &slot in &moved {
+            self.solver.set(snapped, slot, None);
+        }
+        for &slot in &moved {
+            self.solver.set(snapped, slot, self.model.get(slot));
+        }
+        let address = self.setting.job.limits.address;
+        snap(snapped, &mut self.solver, address, &moved);
+        let reach = REACH * self.setting.sigma();
+        changed(&flashed, snapped.all())
+            .into_iter()
+            .flat_map(|slot| [flashed.get(slot).copied().flatten(), snapped.get(slot)])
+            .flatten()
+            .map(|f| f.grown(reach).side)
+            .collect()
     }
 
     /// Moves shots to where the rule holds at all samples; where that does not do, adds one or two and takes away what they make
@@ -456,26 +473,12 @@ fn changed(before: &[Option<Flash>], after: &[Option<Flash>]) -> Vec<usize> {
         .collect()
 }
 
-/// What a search asks of its shots; nm.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(in crate::fracture) struct Stage {
-    /// No slab of the start is lower than this.
-    pub(in crate::fracture) start: f64,
-    /// No side is less than this.
-    pub(in crate::fracture) least: f64,
-    /// Whether shots are added where moving them does not do.
-    pub(in crate::fracture) mend: bool,
-}
-
 /// The best of several attempts: reduced, and the one with fewest shots that really prints; else the one that misses least.
 ///
-/// Those that do not hold are mended only when none does, the nearest first and until one holds; `None` if that is not wanted.
-pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>, mend: bool) -> Option<Fit> {
+/// Those that do not hold are mended only when none does, the nearest first and until one holds. `None` without an attempt.
+pub(in crate::fracture) fn best_of(mut attempts: Vec<Attempt<'_>>) -> Option<Fit> {
     attempts.sort_by_cached_key(|a| (!a.holds, a.wrong()));
     if attempts.first().is_some_and(|a| !a.holds) {
-        if !mend {
-            return None;
-        }
         for attempt in &mut attempts {
             attempt.mend();
             if attempt.holds && attempt.slivers() == 0 {

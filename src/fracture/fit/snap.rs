@@ -20,6 +20,9 @@ const PEAK_STEP: f64 = 0.125;
 /// A dose so little over the peak allowed is still under it: more than what the lattice hides.
 const PEAK_SPARE: f64 = 5e-4;
 
+/// What sums of coordinates that lie on the address grid may be off by, nm.
+const ROUNDED: f64 = 1e-6;
+
 /// Every place found where the shots break the rule, or keep it with no dose to spare.
 ///
 /// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared. Looks where dose of the
@@ -104,15 +107,12 @@ pub(in crate::fracture) fn piles(
 
 /// Shots that the writer would refuse: sides outside the limits, or (tiles) on another shot.
 pub(in crate::fracture) fn unfit(model: &Model, limits: &ShotLimits, disjoint: bool) -> Vec<Flash> {
-    let off = |f: &Flash, axis: usize| {
-        f.length(axis) < limits.least_side.0 - 1e-6
-            || f.length(axis) > limits.greatest_side.0 + 1e-6
-    };
+    let (least, greatest) = (limits.least_side.0, limits.greatest_side.0);
     let clashes =
-        |slot: usize, f: &Flash| disjoint && model.overlapped(slot, f, 1e-6).next().is_some();
+        |slot: usize, f: &Flash| disjoint && model.overlapped(slot, f, ROUNDED).next().is_some();
     model
         .flashes()
-        .filter(|(slot, f)| off(f, 0) || off(f, 1) || clashes(*slot, f))
+        .filter(|(slot, f)| !f.fits(least, greatest, ROUNDED) || clashes(*slot, f))
         .map(|(_, f)| f)
         .collect()
 }
@@ -206,19 +206,11 @@ fn nudge(model: &mut Model, solver: &mut Solver, slot: usize, unit: f64) -> bool
         for by in [-unit, unit] {
             let mut moved = flash;
             moved.side[side] += by;
-            let fits = (0..2).all(|axis| {
-                let length = moved.length(axis);
-                length >= solver.rules.least(&moved) - 1e-6
-                    && length <= solver.rules.greatest_side + 1e-6
-            });
-            let apart = !solver.rules.disjoint
-                || model
-                    .near(moved.side)
-                    .into_iter()
-                    .filter(|&s| s != slot)
-                    .filter_map(|s| model.get(s))
-                    .all(|g| moved.gap(&g) > -1e-6);
-            if fits && apart {
+            let rules = &solver.rules;
+            let fits = moved.fits(rules.least(&moved), rules.greatest_side, ROUNDED);
+            let clashes =
+                rules.disjoint && model.overlapped(slot, &moved, ROUNDED).next().is_some();
+            if fits && !clashes {
                 let cost = solver.score(model, &[slot], &[moved]);
                 if cost < best.0 {
                     best = (cost, moved);

@@ -8,7 +8,7 @@ use std::ops::Range;
 
 use pulp::Arch;
 
-use crate::fracture::overlap::DoseLevels;
+use crate::fracture::DoseLevels;
 
 use super::algebra::{Assemble, Cholesky, Entry};
 use super::kernel::{AddDose, LANES, Missed, Slopes};
@@ -86,8 +86,6 @@ pub(in crate::fracture) struct Solver {
     /// Inequalities that a step is found for, and those of the round before.
     active: Vec<u32>,
     last: Vec<u32>,
-    /// Doses computed so far, for measuring.
-    pub(in crate::fracture) evaluations: u64,
 }
 
 /// Linearised inequalities `r0 + a·Δ ≤ 0`; each row touches the four sides of the shots in reach.
@@ -169,7 +167,6 @@ impl Solver {
             step: Vec::new(),
             active: Vec::new(),
             last: Vec::new(),
-            evaluations: 0,
         }
     }
 
@@ -268,9 +265,7 @@ impl Solver {
         window: &[Flash],
     ) -> Vec<usize> {
         self.evaluate(false);
-        for (&id, &value) in self.ids.iter().zip(&self.value) {
-            model.doses_mut()[id as usize] = value;
-        }
+        self.hand_over(model);
         for &slot in removed {
             model.place(slot, None);
         }
@@ -290,10 +285,15 @@ impl Solver {
     /// Puts a shot in a slot of the model, or takes it out.
     pub(super) fn set(&mut self, model: &mut Model, slot: usize, flash: Option<Flash>) {
         self.score(model, &[slot], flash.as_slice());
+        self.hand_over(model);
+        model.place(slot, flash);
+    }
+
+    /// Gives the model the doses last computed.
+    fn hand_over(&self, model: &mut Model) {
         for (&id, &value) in self.ids.iter().zip(&self.value) {
             model.doses_mut()[id as usize] = value;
         }
-        model.place(slot, flash);
     }
 
     /// Gathers the samples within reach of `removed` and `window`, with the dose of all other shots there.
@@ -303,9 +303,13 @@ impl Solver {
         let reach = TOUCH * self.sigma;
         let gone: Vec<Flash> = removed.iter().filter_map(|&s| model.get(s)).collect();
         let all = || gone.iter().chain(window);
+        for list in [&mut self.x, &mut self.y, &mut self.sign, &mut self.base] {
+            list.clear();
+        }
+        self.ids.clear();
+        self.local.clear();
+        self.fixed.clear();
         let Some(hull) = all().copied().reduce(|a, b| a.hull(&b)) else {
-            self.ids.clear();
-            self.local.clear();
             return;
         };
         self.origin = [hull.side[0], hull.side[1]];
@@ -325,9 +329,6 @@ impl Solver {
         }
         let (samples, doses) = (model.samples(), model.doses());
         let inverse = 1.0 / self.sigma;
-        for list in [&mut self.x, &mut self.y, &mut self.sign, &mut self.base] {
-            list.clear();
-        }
         #[allow(
             clippy::cast_possible_truncation,
             reason = "a place in σ about a near origin needs no more than single precision"
@@ -361,12 +362,10 @@ impl Solver {
                 &mut self.base,
             );
         }
-        self.local.clear();
         for flash in window {
             let local = self.localise(flash);
             self.local.push(local);
         }
-        self.fixed.clear();
         if self.rules.disjoint {
             let around = hull.grown(self.sigma);
             let near = model
@@ -402,7 +401,6 @@ impl Solver {
 
     /// Dose of the window (or of the trial step) on top of the base, and the cost of what is missed.
     fn evaluate(&mut self, trial: bool) -> f64 {
-        self.evaluations += 1;
         let window = if trial { &self.trial } else { &self.local };
         self.value.clear();
         self.value.extend_from_slice(&self.base);

@@ -6,13 +6,11 @@
 //! 11 (2007). We depart from them by fitting all neighbours of a dropped or merged shot at once on the closed-form dose.
 
 mod bound;
-mod levels;
 
-pub use levels::{DoseLevels, DoseLevelsError};
-
-use super::fit::{Budget, Doses, Flash, Setting, Slabs, Stage, best_of, cover};
+use super::fit::{Budget, Doses, Flash, Setting, Slabs, best_of, cover};
 use super::{
-    Effort, Fracture, FractureError, Fracturer, Job, Miss, MissReason, framed, misses, refitted,
+    DoseLevels, Effort, Fracture, FractureError, Fracturer, Job, Miss, MissReason, framed, misses,
+    refitted,
 };
 use crate::shot::{ShotLimits, ShotList};
 use crate::units::{Dose, Nm};
@@ -54,14 +52,6 @@ const PILED: f64 = 4.0;
 
 /// Shots in a first cover from which a figure counts as long.
 const LONG: usize = 40;
-
-/// How tiles are searched for that a long figure starts from.
-const TILES: Budget = Budget {
-    window: 8,
-    apart: 0.5,
-    steps: 20,
-    hopeless: 0.5,
-};
 
 impl Fracturer for Overlap {
     fn name(&self) -> &'static str {
@@ -146,18 +136,13 @@ impl Overlap {
             misses.any(|miss| miss.reason == MissReason::NotFound)
         };
         if unknown(&found) {
-            let free = Self {
-                peak_dose: None,
-                bound: false,
-                ..*self
-            };
             let anything = ShotLimits {
                 least_side: job.limits.address.nm(),
                 sliver: job.limits.address.nm(),
                 greatest_side: Nm(f64::INFINITY),
                 ..job.limits
             };
-            let freely = free.search(&Job {
+            let freely = self.free().search(&Job {
                 limits: anything,
                 ..*job
             });
@@ -170,73 +155,54 @@ impl Overlap {
         found
     }
 
+    /// The same search with the peak of the dose left free, without a bound.
+    fn free(&self) -> Self {
+        Self {
+            peak_dose: None,
+            bound: false,
+            ..*self
+        }
+    }
+
     /// The fewest shots found that print within tolerance, or the best found.
     fn search(&self, job: &Job<'_>) -> Fracture {
         let setting = Setting::with(job, self.doses());
-        let (budget, starts) = self.budget();
         let slabs = Slabs::of(job, &setting.target);
-        let grown = INSETS.map(|inset| slabs.grown(SLACK, inset * setting.sigma()));
-        let both = grown.concat();
-        let [slim, wide] = &grown;
-        let mut starts: Vec<Vec<Flash>> = [&both, wide, slim][..starts]
-            .iter()
-            .map(|candidates| cover(candidates, &setting.samples, setting.sigma()))
-            .collect();
+        let cuts = slabs.both(SLACK, 0.0).map(|cut| self.levelled(cut));
+        let [first, second] = &cuts;
+        let cut = if second.len() < first.len() {
+            second
+        } else {
+            first
+        };
+        let (mut budget, count) = self.budget();
+        let mut starts = self.covers(&setting, &slabs, count);
         // Where one shot's width is all that a figure has, a cover needs as many as a cut, and tiles are the better start.
         let long = starts[0].len() > LONG;
-        let cut = slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len);
         if long {
             starts.truncate(1);
         }
-        let mut budget = budget;
         if self.peak_dose.is_some() {
             // What is found without it often needs little change; where the limit is low, a cut is nearer.
-            let free = Self {
-                peak_dose: None,
-                bound: false,
-                ..*self
-            };
-            let found = free.search(job).shots;
-            starts = vec![found.rects().map(Flash::from).collect()];
-            starts.extend(slabs.both(SLACK, 0.0).into_iter().min_by_key(Vec::len));
+            let found = self.free().search(job).shots;
+            starts = vec![found.rects().map(Flash::from).collect(), cut.clone()];
             budget.hopeless *= PILED;
         }
-        let dose = self.dose_levels.nearest_to_one();
-        let level = |starts: &mut [Vec<Flash>]| {
-            for flash in starts.iter_mut().flatten() {
-                if self.dose_levels.iter().all(|level| level != flash.dose) {
-                    flash.dose = dose;
-                }
-            }
-        };
-        level(&mut starts);
-        let mut cut = cut;
-        level(cut.as_mut_slice());
-        let stages = setting.least_sides().map(|least| Stage {
-            start: 0.0,
-            least,
-            mend: true,
-        });
         let from = |starts: &[Vec<Flash>]| {
-            setting.staged(&stages, |stage| {
-                let tiles = cut.iter().filter(|_| long).map(|cut| {
-                    let mut tiles = setting.attempt(cut, true, [stage.least; 2], TILES);
+            setting.staged(|least| {
+                let tiles = long.then(|| {
+                    let mut tiles = setting.attempt(cut, true, [least; 2], Budget::TILES);
                     tiles.reduce();
                     tiles.flashes()
                 });
-                let attempts = starts
-                    .iter()
-                    .cloned()
-                    .chain(tiles)
-                    .map(|start| setting.attempt(&start, false, [stage.least; 2], budget));
-                best_of(attempts.collect(), stage.mend)
+                let starts = starts.iter().chain(&tiles);
+                let attempts = starts.map(|s| setting.attempt(s, false, [least; 2], budget));
+                best_of(attempts.collect())
             })
         };
         let mut fracture = from(&starts);
         // A cover may be too few shots for moving them to lead anywhere; a cut hardly ever is.
         if !fracture.misses.is_empty() {
-            let mut cuts = slabs.both(SLACK, 0.0);
-            level(&mut cuts);
             let other = from(&cuts);
             if other.misses.len() < fracture.misses.len() {
                 fracture = other;
@@ -248,5 +214,28 @@ impl Overlap {
             bound::lower_bound(&setting.target, job.blur, &job.limits, context)
         });
         fracture
+    }
+
+    /// First shots: up to three covers of a figure by slabs that stick out more or less.
+    fn covers(&self, setting: &Setting<'_>, slabs: &Slabs, count: usize) -> Vec<Vec<Flash>> {
+        let sigma = setting.sigma();
+        let grown = INSETS.map(|inset| slabs.grown(SLACK, inset * sigma));
+        let both = grown.concat();
+        let [slim, wide] = &grown;
+        let candidates = [&both, wide, slim].into_iter().take(count);
+        candidates
+            .map(|from| self.levelled(cover(from, &setting.samples, sigma)))
+            .collect()
+    }
+
+    /// Shots whose dose is none of the levels at the one nearest to dose 1.
+    fn levelled(&self, mut shots: Vec<Flash>) -> Vec<Flash> {
+        let dose = self.dose_levels.nearest_to_one();
+        for shot in &mut shots {
+            if self.dose_levels.iter().all(|level| level != shot.dose) {
+                shot.dose = dose;
+            }
+        }
+        shots
     }
 }

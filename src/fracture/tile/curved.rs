@@ -25,15 +25,7 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
             },
             1,
         ),
-        Effort::Normal => (
-            Budget {
-                window: 8,
-                apart: 0.5,
-                steps: 20,
-                hopeless: 0.5,
-            },
-            1,
-        ),
+        Effort::Normal => (Budget::TILES, 1),
         Effort::Thorough => (
             Budget {
                 window: 12,
@@ -61,7 +53,7 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
                 .collect(),
         ));
     }
-    let mut fit = best_of(found, true);
+    let mut fit = best_of(found);
     // Shots that still fail somewhere: slivers anywhere, to be made wider where they can.
     // Where half as many places fail as there are samples, slivers do not help either.
     let lost = setting.samples.len() / 2;
@@ -79,7 +71,7 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
             })
             .collect();
         starts.iter_mut().flatten().for_each(|f| f.slim = true);
-        let slim = best_of(attempts(starts), true);
+        let slim = best_of(attempts(starts));
         let faults = |f: &Option<Fit>| f.as_ref().map_or(usize::MAX, Fit::faults);
         if faults(&slim) < faults(&fit) {
             fit = slim;

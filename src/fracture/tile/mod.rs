@@ -52,7 +52,7 @@ impl Fracturer for Tile {
 
     fn refit(&self, job: &Job<'_>, found: &Fracture) -> Option<Fracture> {
         let moved = refitted(job, &found.shots, |job, shots| {
-            Setting::new(job).refit(shots, true, REFIT)
+            Setting::new(job).refit(shots, true, Budget::TILES)
         })?;
         Some(Fracture {
             lower_bound: found.lower_bound,
@@ -109,14 +109,6 @@ impl Tile {
         Ok(fracture)
     }
 }
-
-/// Work put into a fit beside real neighbours.
-const REFIT: Budget = Budget {
-    window: 8,
-    apart: 0.5,
-    steps: 20,
-    hopeless: 0.5,
-};
 
 /// The plain staircase: geometry alone, no simulation; what a fracture without a model would write.
 #[derive(Clone, Copy, Debug)]

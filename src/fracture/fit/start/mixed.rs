@@ -127,15 +127,17 @@ impl Rows {
         let rest = |(crossings, mut covered): (&Vec<f64>, Vec<[f64; 2]>)| {
             covered.sort_by(|a, b| a[0].total_cmp(&b[0]));
             let mut left = Vec::new();
+            let mut next = 0;
             for span in crossings.chunks_exact(2) {
                 let mut from = span[0];
-                for c in &covered {
-                    if c[1] > from && c[0] < span[1] {
-                        if c[0] - from > self.pitch {
-                            left.extend([from, c[0]]);
-                        }
-                        from = c[1];
+                while next < covered.len() && covered[next][1] <= from {
+                    next += 1;
+                }
+                for c in covered[next..].iter().take_while(|c| c[0] < span[1]) {
+                    if c[0] - from > self.pitch {
+                        left.extend([from, c[0]]);
                     }
+                    from = from.max(c[1]);
                 }
                 if span[1] - from > self.pitch {
                     left.extend([from, span[1]]);
