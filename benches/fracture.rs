@@ -1,7 +1,7 @@
 //! What does a fracture cost, how does that grow with the figure, and how do counts fall with tolerance and blur?
 //!
 //! `assist/*` and `curvy/*` fracture a whole reference set (30 and 18 figures) on one core with each fracturer and effort, and print its shots;
-//! `serpentine/*/N` a curved band of N µm outline, as throughput per µm. Before timing, two tables are printed: shots of the
+//! `serpentine/*/N` a curved band of N µm outline, as throughput per µm; `disc/*/N` a disc of N µm radius, likewise. Before timing, two tables are printed: shots of the
 //! set `curvy` against tolerance and against σ, with the number of figures that do not print.
 
 use std::hint::black_box;
@@ -14,10 +14,13 @@ use shotwright::fracture::tile::Tile;
 use shotwright::fracture::{Effort, Fracturer};
 use shotwright::geom::Figure;
 
+#[path = "../tests/common/annulus.rs"]
+mod annulus;
 #[path = "../tests/common/meander.rs"]
 mod meander;
 #[path = "../tests/common/sets.rs"]
 mod sets;
+use annulus::annulus;
 use meander::meander;
 use sets::{ASSIST, CURVY, figures, job};
 
@@ -112,5 +115,31 @@ fn cost_against_length(c: &mut Criterion) {
     group.finish();
 }
 
-criterion_group!(benches, print_tables, effort_on_sets, cost_against_length);
+/// Discs wider than the greatest shot: the cost goes with the outline, not with the area.
+fn cost_against_width(c: &mut Criterion) {
+    let mut group = c.benchmark_group("disc");
+    group
+        .sample_size(10)
+        .warm_up_time(Duration::from_millis(100));
+    for radius in [1_u32, 2, 4, 8] {
+        let figure = annulus(1e3 * f64::from(radius), 0.0);
+        group.throughput(Throughput::Elements(u64::from(radius)));
+        for fracturer in fracturers(Effort::Normal) {
+            let (shots, _) = count(fracturer.as_ref(), &figure, 14.0, 2.0);
+            eprintln!("disc/{}/{radius}: {shots}", fracturer.name());
+            group.bench_function(BenchmarkId::new(fracturer.name(), radius), |b| {
+                b.iter(|| count(fracturer.as_ref(), black_box(&figure), 14.0, 2.0));
+            });
+        }
+    }
+    group.finish();
+}
+
+criterion_group!(
+    benches,
+    print_tables,
+    effort_on_sets,
+    cost_against_length,
+    cost_against_width
+);
 criterion_main!(benches);

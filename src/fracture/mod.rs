@@ -79,7 +79,7 @@ pub trait Fracturer: Sync {
 /// The places that shots do not print, and where they pile up too much dose.
 fn misses(job: &Job<'_>, shots: &ShotList, doses: Doses) -> Vec<Miss> {
     let judged = refitted(job, shots, |job, shots| {
-        Some(Setting::with(job, doses).judged(shots.clone()))
+        Some(Setting::of_shots(job, doses, shots).judged(shots.clone()))
     });
     judged.map_or_else(Vec::new, |fracture| fracture.misses)
 }

@@ -1,5 +1,7 @@
 //! Both fracturers on figures of many kinds, judged by a witness that shares no code with them.
 
+#[path = "../common/annulus.rs"]
+mod annulus;
 mod bars;
 mod beside;
 mod doses;
@@ -15,6 +17,7 @@ mod rectilinear;
 mod seeds;
 #[path = "../common/sets.rs"]
 mod sets;
+mod wide;
 
 use shotwright::fracture::overlap::Overlap;
 use shotwright::fracture::tile::{Prefer, Tile};

@@ -5,6 +5,7 @@ use pulp::Arch;
 use crate::blur::{PhiTable, REACH};
 use crate::target::{DoseField, Zone};
 
+use super::core::{Core, without};
 use super::kernel::{AddDose, LANES};
 use super::model::{Bins, Flash, Model};
 use super::samples::Around;
@@ -103,7 +104,7 @@ impl DoseField for Field<'_> {
 }
 
 /// Boxes of a plane.
-pub(super) struct Boxes {
+pub(super) struct Boxes<'a> {
     /// By their lower side.
     sides: Vec<[f64; 4]>,
     /// How many the sweep has taken up, and which of those it has not left.
@@ -111,9 +112,11 @@ pub(super) struct Boxes {
     open: Vec<[f64; 4]>,
     /// Which boxes are where; `None` where the whole figure belongs to the part too.
     bins: Option<Bins>,
+    /// Places deep in it are left out.
+    core: Option<&'a Core>,
 }
 
-impl Boxes {
+impl<'a> Boxes<'a> {
     /// The boxes alone.
     pub(super) fn only(sides: Vec<[f64; 4]>, sigma: f64) -> Self {
         let mut boxes = Self::sorted(sides);
@@ -137,7 +140,13 @@ impl Boxes {
             taken: 0,
             open: Vec::new(),
             bins: None,
+            core: None,
         }
+    }
+
+    /// Without what prints for sure deep in a core.
+    pub(super) fn but(self, core: Option<&'a Core>) -> Self {
+        Self { core, ..self }
     }
 
     /// Whether a place lies in one of the boxes.
@@ -146,7 +155,7 @@ impl Boxes {
     }
 }
 
-impl Zone for Boxes {
+impl Zone for Boxes<'_> {
     fn touches(&self, side: [f64; 4]) -> bool {
         let asked = Flash::new(side);
         self.bins.as_ref().is_none_or(|bins| {
@@ -182,6 +191,12 @@ impl Zone for Boxes {
                 Some(last) if span[0] <= last[1] => last[1] = last[1].max(span[1]),
                 _ => out.push(span),
             }
+        }
+        if let Some(core) = self.core {
+            let (mut sure, mut rest) = (Vec::new(), Vec::new());
+            core.sure_spans(y, &mut sure);
+            without(out, &sure, &mut rest);
+            *out = rest;
         }
     }
 }

@@ -4,9 +4,10 @@
 //! below it, or under an allowed peak), least and greatest sides, and for tiles that no two overlap. [`solve`] moves the sides of a few shots at
 //! once until all inequalities hold (damped least squares on those that do not, with the closed-form derivatives);
 //! [`reduce`] drops and merges shots as long as [`solve`] can mend what that breaks; [`snap`] brings the sides to the address grid
-//! and checks the whole neighbourhood. Everything is local: a shot touches only samples within 4.5 σ of it.
+//! and checks the whole neighbourhood; [`core`](mod@core) fills what lies deep inside a wide figure once for all. Everything is local: a shot touches only samples within 4.5 σ of it.
 
 mod algebra;
+mod core;
 mod field;
 mod kernel;
 mod model;

@@ -254,6 +254,8 @@ fn narrow(i: usize) -> u32 {
 #[derive(Clone, Debug)]
 pub(in crate::fracture) struct Model {
     slots: Vec<Option<Flash>>,
+    /// The shots in the first so many slots stay as they are.
+    fixed: usize,
     by_place: Bins,
     samples: Vec<Sample>,
     samples_by_place: Bins,
@@ -273,6 +275,7 @@ impl Model {
         ];
         let mut model = Self {
             slots: Vec::new(),
+            fixed: 0,
             by_place: Bins::new(around, 8.0 * sigma),
             samples: Vec::new(),
             samples_by_place: Bins::new(around, 2.0 * sigma),
@@ -398,6 +401,21 @@ impl Model {
             .iter()
             .enumerate()
             .filter_map(|(i, f)| f.map(|f| (i, f)))
+    }
+
+    /// The shots that may be moved, in slot order.
+    pub(super) fn movable(&self) -> impl Iterator<Item = (usize, Flash)> + '_ {
+        self.flashes().skip_while(|(slot, _)| *slot < self.fixed)
+    }
+
+    /// Whether a slot's shot may be moved.
+    pub(super) fn is_movable(&self, slot: usize) -> bool {
+        slot >= self.fixed
+    }
+
+    /// Leaves the shots that there are now as they are.
+    pub(super) fn fix(&mut self) {
+        self.fixed = self.slots.len();
     }
 
     /// What every slot holds.

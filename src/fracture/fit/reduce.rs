@@ -113,7 +113,7 @@ impl Reduction<'_> {
             };
             for j in self.model.near(f.grown(apart).side) {
                 // A pair with a shot offered before is queued already.
-                if j == i || offered.contains(&j) {
+                if j == i || !self.model.is_movable(j) || offered.contains(&j) {
                     continue;
                 }
                 let Some(g) = self.model.get(j).filter(|g| f.gap(g) < apart) else {
@@ -232,7 +232,7 @@ pub(super) fn neighbours(
     let mut near: Vec<(f64, usize)> = model
         .near(hull.grown(6.0 * model.sigma).side)
         .into_iter()
-        .filter(|s| !removed.contains(s))
+        .filter(|&s| model.is_movable(s) && !removed.contains(&s))
         .filter_map(|s| {
             model.get(s).map(|f| {
                 (

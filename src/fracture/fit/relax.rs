@@ -65,7 +65,7 @@ pub(in crate::fracture) fn mend(
         if hopeless(model) {
             return false;
         }
-        let places = worst(model, left.min(1 + model.flashes().count() / 16));
+        let places = worst(model, left.min(1 + model.movable().count() / 16));
         if places.is_empty() {
             return drop_unfit(model, solver, window, slim);
         }
@@ -184,6 +184,7 @@ fn options(
     let mut near: Vec<(f64, usize)> = model
         .near(here.grown(3.0 * sigma).side)
         .into_iter()
+        .filter(|&s| model.is_movable(s))
         .filter_map(|s| model.get(s).map(|f| (f.gap(&here), s)))
         .collect();
     near.sort_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
@@ -218,7 +219,7 @@ pub(super) fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
             || (rules.disjoint && model.overlapped(slot, f, UNFIT).next().is_some())
     };
     let mut slots: Vec<usize> = model
-        .flashes()
+        .movable()
         .filter(|(slot, f)| unfit(*slot, f))
         .map(|(s, _)| s)
         .collect();
@@ -231,12 +232,13 @@ pub(super) fn offenders(model: &Model, solver: &Solver) -> Vec<usize> {
         let near = model
             .near(here.grown(reach).side)
             .into_iter()
+            .filter(|&s| model.is_movable(s))
             .filter_map(|s| model.get(s).map(|f| (f.gap(&here), s)));
         if let Some((_, slot)) = near.min_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1))) {
             slots.push(slot);
         } else if sample.sign > 0.0 {
             // Nothing near: any shot will do to say that the rule is broken; mending adds one here.
-            slots.extend(model.flashes().next().map(|(s, _)| s));
+            slots.extend(model.movable().next().map(|(s, _)| s));
         }
     }
     slots.sort_unstable();

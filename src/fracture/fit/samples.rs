@@ -1,5 +1,6 @@
 //! The places at which a fit is held to the print rule.
 
+use super::core::{Core, without};
 use super::model::{Bins, Flash};
 use crate::blur::{Blur, PhiTable, REACH, THRESHOLD};
 use crate::fracture::Job;
@@ -34,11 +35,12 @@ const LATTICE_REACH: f64 = 2.5;
 
 /// Pairs along the outline and a lattice inside and around the figure.
 ///
-/// With a `peak`, the lattice inside is held under it too, on a lattice of [`CAP_STEP`].
+/// None lie so deep in the core that they print for sure. With a `peak`, the lattice inside is held under it too, on a lattice of [`CAP_STEP`].
 pub(in crate::fracture) fn samples_of(
     target: &Target,
     blur: Blur,
     context: &ContextDose,
+    core: Option<&Core>,
     peak: Option<f64>,
 ) -> Vec<Sample> {
     let sigma = blur.sigma().0;
@@ -56,7 +58,7 @@ pub(in crate::fracture) fn samples_of(
         }
     });
     let reach = LATTICE_REACH * sigma;
-    lattice(target, LATTICE_STEP * sigma, -reach, |p, inside| {
+    lattice(target, core, LATTICE_STEP * sigma, -reach, |p, inside| {
         let wanted =
             !target.outline_within(p, 0.5 * sigma) && (inside || target.outline_within(p, reach));
         if wanted {
@@ -66,7 +68,7 @@ pub(in crate::fracture) fn samples_of(
     });
     if let Some(peak) = peak {
         let step = CAP_STEP * sigma;
-        lattice(target, step, 0.5 * step, |p, inside| {
+        lattice(target, core, step, 0.5 * step, |p, inside| {
             if inside {
                 samples.push(Sample::under(p, peak, context));
             }
@@ -76,8 +78,15 @@ pub(in crate::fracture) fn samples_of(
 }
 
 /// Goes over a square lattice that begins `inset` nm within the bounds of a figure, row by row, and says of each place whether it
-/// lies inside the figure. Leaves out places that are neither inside nor within -`inset` of the outline.
-fn lattice(target: &Target, step: f64, inset: f64, mut each: impl FnMut([f64; 2], bool)) {
+/// lies inside the figure. Leaves out places that are neither inside nor within -`inset` of the outline, and those so deep in the
+/// core that they print for sure.
+fn lattice(
+    target: &Target,
+    core: Option<&Core>,
+    step: f64,
+    inset: f64,
+    mut each: impl FnMut([f64; 2], bool),
+) {
     let [x0, y0, x1, y1] = target.bounds();
     let beyond = (-inset).max(0.0);
     #[allow(
@@ -89,10 +98,16 @@ fn lattice(target: &Target, step: f64, inset: f64, mut each: impl FnMut([f64; 2]
     #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
     let at = |low: f64, i: usize| low + inset + i as f64 * step;
     let (mut crossings, mut spans) = (Vec::new(), Vec::new());
+    let (mut sure, mut rest) = (Vec::new(), Vec::new());
     for j in 0..=steps(y1 + beyond - at(y0, 0)) {
         let y = at(y0, j);
         target.crossings(y, &mut crossings);
         target.spans_near(y, beyond, &crossings, &mut spans);
+        if let Some(core) = core {
+            core.sure_spans(y, &mut sure);
+            without(&spans, &sure, &mut rest);
+            std::mem::swap(&mut spans, &mut rest);
+        }
         let (mut passed, mut next) = (0, 0);
         for &[from, to] in &spans {
             let end = steps(to.min(x1 + beyond) - at(x0, 0)) + 1;

@@ -1,11 +1,14 @@
 //! From a first guess to shots that print: relax, reduce, check, repair, snap.
 
+use std::rc::Rc;
+
 use crate::blur::{REACH, THRESHOLD};
 use crate::fracture::{DoseLevels, Fracture, Job, Miss};
 use crate::shot::ShotList;
 use crate::target::{Target, Violation};
 use crate::units::Dose;
 
+use super::core::Core;
 use super::field::Boxes;
 use super::model::{Bins, Flash, Model};
 use super::reduce::{Budget, reduce};
@@ -20,6 +23,8 @@ pub(in crate::fracture) struct Setting<'a> {
     pub(in crate::fracture) target: Target,
     pub(in crate::fracture) context: ContextDose,
     pub(in crate::fracture) samples: Vec<Sample>,
+    /// What fills a wide figure deep inside.
+    pub(in crate::fracture) core: Option<Rc<Core>>,
     doses: Doses,
 }
 
@@ -87,14 +92,25 @@ impl<'a> Setting<'a> {
     }
 
     pub(in crate::fracture) fn with(job: &'a Job<'a>, doses: Doses) -> Self {
+        Self::about(job, doses, |_| true)
+    }
+
+    /// For shots made before: without a core that they do not have.
+    pub(in crate::fracture) fn of_shots(job: &'a Job<'a>, doses: Doses, shots: &ShotList) -> Self {
+        Self::about(job, doses, |core| core.is_among(shots))
+    }
+
+    fn about(job: &'a Job<'a>, doses: Doses, wanted: impl FnOnce(&Core) -> bool) -> Self {
         let target = Target::new(job.figure, job.blur, job.tolerance);
         let context = ContextDose::of(job, &target);
-        let samples = samples_of(&target, job.blur, &context, doses.cap());
+        let core = Core::of(&target, job.blur.sigma().0, &job.limits).filter(wanted);
+        let samples = samples_of(&target, job.blur, &context, core.as_ref(), doses.cap());
         Self {
             job,
             target,
             context,
             samples,
+            core: core.map(Rc::new),
             doses,
         }
     }
@@ -109,7 +125,7 @@ impl<'a> Setting<'a> {
         for (slot, shot) in shots.rects().enumerate() {
             model.place(slot, Some(Flash::from(shot)));
         }
-        let violations = check(&self.target, &model, &self.context, None);
+        let violations = self.broken(&model, None);
         let unfit = unfit(&model, &self.job.limits, false);
         let peak = self.doses.peak;
         let piles = peak.map_or_else(Vec::new, |peak| piles(&model, &self.context, peak.0));
@@ -120,6 +136,17 @@ impl<'a> Setting<'a> {
             slivers: 0,
             piles,
         }))
+    }
+
+    /// Where the shots of a model break the rule; only in some boxes if there are any.
+    fn broken(&self, model: &Model, boxes: Option<&[[f64; 4]]>) -> Vec<Violation> {
+        check(
+            &self.target,
+            model,
+            &self.context,
+            self.core.as_deref(),
+            boxes,
+        )
     }
 
     /// Shots found before, moved to where they print; the rest of what was said of them is kept.
@@ -136,7 +163,10 @@ impl<'a> Setting<'a> {
         } else {
             sliver
         };
-        let start: Vec<Flash> = shots.rects().map(Flash::from).collect();
+        let start = shots.rects().map(Flash::from);
+        let start: Vec<Flash> = start
+            .filter(|f| self.core.as_ref().is_none_or(|core| !core.holds(f)))
+            .collect();
         let attempt = self.attempt(&start, disjoint, [least; 2], budget);
         best_of(vec![attempt]).map(|fit| self.reported(Some(fit)))
     }
@@ -225,8 +255,13 @@ impl<'a> Setting<'a> {
         let mut solver = Solver::new(self.sigma(), rules);
         let mut model = Model::new(self.target.bounds(), self.sigma(), self.samples.clone());
         // One by one: each then costs only what is near it.
-        let start = start.iter().flat_map(|f| f.parts(rules.greatest_side));
-        for (slot, flash) in start.enumerate() {
+        for &shot in self.core.iter().flat_map(|core| core.shots()) {
+            let slot = model.slots();
+            solver.set(&mut model, slot, Some(shot));
+        }
+        model.fix();
+        for flash in start.iter().flat_map(|f| f.parts(rules.greatest_side)) {
+            let slot = model.slots();
             solver.set(&mut model, slot, Some(flash));
         }
         let holds = relax(&mut model, &mut solver, budget.window);
@@ -251,9 +286,9 @@ pub(in crate::fracture) struct Attempt<'s> {
 }
 
 impl Attempt<'_> {
-    /// The shots as they are now.
+    /// The shots as they are now, those of the core left out.
     pub(in crate::fracture) fn flashes(&self) -> Vec<Flash> {
-        self.model.flashes().map(|(_, flash)| flash).collect()
+        self.model.movable().map(|(_, flash)| flash).collect()
     }
 
     /// How many shots there are.
@@ -284,7 +319,7 @@ impl Attempt<'_> {
             budget,
             ..
         } = self;
-        let most = 4 + model.flashes().count() / 4;
+        let most = 4 + model.movable().count() / 4;
         let slim = solver.rules.slim_side < solver.rules.least_side;
         self.holds = mend(model, solver, budget.window, most, false)
             || (slim && mend(model, solver, budget.window, most, true));
@@ -292,7 +327,7 @@ impl Attempt<'_> {
 
     /// Takes shots away where the rule holds around them, and makes slivers wider where it does.
     pub(in crate::fracture) fn reduce(&mut self) {
-        let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
+        let all: Vec<usize> = self.model.movable().map(|(slot, _)| slot).collect();
         reduce(&mut self.model, &mut self.solver, self.budget, &all);
         widen(&mut self.model, &mut self.solver, self.budget.window);
     }
@@ -301,7 +336,7 @@ impl Attempt<'_> {
     /// a repair changed.
     pub(in crate::fracture) fn finish(mut self) -> Fit {
         let setting = self.setting;
-        let all: Vec<usize> = self.model.flashes().map(|(slot, _)| slot).collect();
+        let all: Vec<usize> = self.model.movable().map(|(slot, _)| slot).collect();
         let mut snapped = self.model.clone();
         snap(
             &mut snapped,
@@ -309,7 +344,7 @@ impl Attempt<'_> {
             setting.job.limits.address,
             &all,
         );
-        let violations = check(&setting.target, &snapped, &setting.context, None);
+        let violations = setting.broken(&snapped, None);
         let mut fit = self.fit(&snapped, violations);
         let mut best = fit.clone();
         let mut stale = 0;
@@ -335,12 +370,7 @@ impl Attempt<'_> {
             let part = Boxes::only(boxes.clone(), setting.sigma());
             let mut violations = fit.violations;
             violations.retain(|v| !part.holds(v.place));
-            violations.extend(check(
-                &setting.target,
-                &snapped,
-                &setting.context,
-                Some(&boxes),
-            ));
+            violations.extend(setting.broken(&snapped, Some(&boxes)));
             fit = self.fit(&snapped, violations);
             stale += 1;
             if fit.rank() < best.rank() {
@@ -420,7 +450,7 @@ impl Attempt<'_> {
             return;
         }
         let before: Vec<Option<Flash>> = model.all().to_vec();
-        let most = 2 + model.flashes().count() / 32;
+        let most = 2 + model.movable().count() / 32;
         let slim = solver.rules.slim_side < solver.rules.least_side;
         let mended = mend(model, solver, budget.window, most, false)
             || (slim && mend(model, solver, budget.window, most, true));

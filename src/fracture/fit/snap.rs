@@ -5,6 +5,7 @@ use crate::shot::{AddressUnit, Shot, ShotLimits, ShotList};
 use crate::target::{Mesh, Need, Target, Violation, peaks};
 use crate::units::{Dose, Nm};
 
+use super::core::Core;
 use super::field::{Boxes, Field};
 use super::model::{Flash, Model};
 use super::samples::ContextDose;
@@ -26,17 +27,18 @@ const ROUNDED: f64 = 1e-6;
 /// Every place found where the shots break the rule, or keep it with no dose to spare.
 ///
 /// What only lacks dose to spare is looked at again on a mesh so fine that next to nothing need be spared. Looks where dose of the
-/// shots comes and in the figure, or only in some boxes.
+/// shots comes and in the figure, or only in some boxes; not so deep in the core that it prints for sure.
 pub(super) fn check(
     target: &Target,
     model: &Model,
     context: &ContextDose,
+    core: Option<&Core>,
     boxes: Option<&[[f64; 4]]>,
 ) -> Vec<Violation> {
     let mut all = Vec::new();
     for around in context.around() {
         let field = Field::new(model, around);
-        all.extend(broken(target, &field, model, context, boxes));
+        all.extend(broken(target, &field, model, context, core, boxes));
     }
     all
 }
@@ -47,6 +49,7 @@ fn broken(
     field: &Field<'_>,
     model: &Model,
     context: &ContextDose,
+    core: Option<&Core>,
     boxes: Option<&[[f64; 4]]>,
 ) -> Vec<Violation> {
     let sigma = model.sigma;
@@ -61,13 +64,14 @@ fn broken(
         found
     };
     let mut part = match boxes {
-        Some(boxes) => Boxes::only(boxes.to_vec(), sigma),
+        Some(boxes) => Boxes::only(boxes.to_vec(), sigma).but(core),
         None => Boxes::and_figure(
             model
                 .flashes()
                 .map(|(_, f)| f.grown(REACH * sigma).side)
                 .collect(),
-        ),
+        )
+        .but(core),
     };
     let (mut broken, bare): (Vec<Violation>, Vec<Violation>) = look(&mut part, 1.0, 4.0, SPARE)
         .into_iter()
@@ -77,7 +81,7 @@ fn broken(
             let [x, y] = v.place;
             Flash::new([x, y, x, y]).grown(0.5 * sigma).side
         };
-        let mut part = Boxes::only(bare.iter().map(about).collect(), sigma);
+        let mut part = Boxes::only(bare.iter().map(about).collect(), sigma).but(core);
         broken.extend(look(&mut part, 0.25, 8.0, SPARE / 16.0));
     }
     broken
@@ -154,7 +158,8 @@ fn near_broken(model: &Model) -> Vec<usize> {
             let [x, y] = sample.place;
             let here = Flash::new([x, y, x, y]).grown(3.0 * model.sigma);
             let near = model.near(here.side).into_iter();
-            slots.extend(near.filter(|&s| model.get(s).is_some_and(|f| f.gap(&here) < 0.0)));
+            let reaches = |s: usize| model.get(s).is_some_and(|f| f.gap(&here) < 0.0);
+            slots.extend(near.filter(|&s| model.is_movable(s) && reaches(s)));
         }
     }
     slots.sort_unstable();

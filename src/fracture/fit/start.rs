@@ -1,15 +1,17 @@
 //! Where a fit starts from: slabs of the figure.
 
-use crate::fracture::Job;
 use crate::geom::{Orientation, Point, Transform};
 use crate::target::Target;
 
 use std::cmp::Reverse;
 use std::collections::BinaryHeap;
 use std::ops::Range;
+use std::rc::Rc;
 
+use super::core::{Core, without};
 use super::model::{Bins, Flash};
 use super::samples::Sample;
+use super::search::Setting;
 
 mod mixed;
 
@@ -18,8 +20,9 @@ struct Rows {
     low: f64,
     pitch: f64,
     sigma: f64,
-    /// Crossings with the outline along each line; inside is between each first and second.
+    /// Crossings with the outline along each line; inside is between each first and second. What lies in the core is left out.
     crossings: Vec<Vec<f64>>,
+    core: Option<Rc<Core>>,
 }
 
 /// A part of a figure that the scan lines cross in one span each, from line `line` on.
@@ -55,6 +58,11 @@ fn meeting(spans: &[[f64; 2]], others: &[[f64; 2]]) -> Vec<Meeting> {
         .collect()
 }
 
+/// The stretches between each first and second crossing.
+fn spans_of(crossings: &[f64]) -> impl Iterator<Item = [f64; 2]> + '_ {
+    crossings.chunks_exact(2).map(|c| [c[0], c[1]])
+}
+
 /// A slab smaller than this (σ²) prints nothing.
 const LEAST_AREA: f64 = 0.4;
 
@@ -62,8 +70,8 @@ const LEAST_AREA: f64 = 0.4;
 const PITCH: f64 = 0.12;
 
 impl Rows {
-    /// The lines of a target.
-    fn of(target: &Target, sigma: f64) -> Self {
+    /// The lines of a target without its core.
+    fn of(target: &Target, sigma: f64, core: Option<Rc<Core>>) -> Self {
         let [_, low, _, high] = target.bounds();
         let height = high - low;
         #[allow(
@@ -79,12 +87,29 @@ impl Rows {
             pitch,
             sigma,
             crossings: vec![Vec::new(); n],
+            core,
         };
+        let (mut taken, mut rest) = (Vec::new(), Vec::new());
         for i in 0..n {
             let y = rows.level(i) + 0.5 * pitch;
-            target.crossings(y, &mut rows.crossings[i]);
+            let crossings = &mut rows.crossings[i];
+            target.crossings(y, crossings);
+            if let Some(core) = &rows.core {
+                core.spans(y, &mut taken);
+                let spans: Vec<[f64; 2]> = spans_of(crossings).collect();
+                without(&spans, &taken, &mut rest);
+                *crossings = rest.concat();
+            }
         }
         rows
+    }
+
+    /// Whether the side of the core beside a span begins, ends or jumps between it and the next one: slabs part there.
+    fn parted(&self, span: [f64; 2], next: [f64; 2]) -> bool {
+        self.core.as_ref().is_some_and(|core| {
+            let border = |v: f64| core.is_border(v);
+            (0..2).any(|k| span[k] != next[k] && (border(span[k]) || border(next[k])))
+        })
     }
 
     /// Lower border of the band about line `i`; `i` may be the number of lines.
@@ -169,14 +194,18 @@ impl Rows {
         let mut done = Vec::new();
         let mut open: Vec<Branch> = Vec::new();
         for (line, crossings) in self.crossings.iter().enumerate() {
-            let spans: Vec<[f64; 2]> = crossings.chunks_exact(2).map(|c| [c[0], c[1]]).collect();
+            let spans: Vec<[f64; 2]> = spans_of(crossings).collect();
             let last: Vec<[f64; 2]> = open.iter().map(|b| b.spans[b.spans.len() - 1]).collect();
             let (up, down) = (meeting(&last, &spans), meeting(&spans, &last));
             let mut next = Vec::with_capacity(spans.len());
             let mut running: Vec<Option<Branch>> = open.into_iter().map(Some).collect();
             for (i, span) in spans.into_iter().enumerate() {
                 let follows = match down[i] {
-                    Meeting::One(j) if matches!(up[j], Meeting::One(_)) => running[j].take(),
+                    Meeting::One(j)
+                        if matches!(up[j], Meeting::One(_)) && !self.parted(last[j], span) =>
+                    {
+                        running[j].take()
+                    }
                     _ => None,
                 };
                 let mut branch = follows.unwrap_or(Branch {
@@ -234,22 +263,27 @@ pub(in crate::fracture) struct Slabs {
 }
 
 impl Slabs {
-    /// Of a figure.
-    pub(in crate::fracture) fn of(job: &Job<'_>, target: &Target) -> Self {
-        let sigma = job.blur.sigma().0;
+    /// Of a figure, around its core.
+    pub(in crate::fracture) fn of(setting: &Setting<'_>) -> Self {
+        let job = setting.job;
+        let sigma = setting.sigma();
         let turned = job.figure.transformed(Transform {
             orientation: Orientation::DIAGONAL,
             shift: Point::default(),
         });
-        let columns = Rows::of(&Target::new(&turned, job.blur, job.tolerance), sigma);
+        let flipped = setting.core.as_ref().map(|core| Rc::new(core.flipped()));
+        let turned = Target::new(&turned, job.blur, job.tolerance);
         Self {
-            rows: Rows::of(target, sigma),
-            columns,
+            rows: Rows::of(&setting.target, sigma, setting.core.clone()),
+            columns: Rows::of(&turned, sigma, flipped),
         }
     }
 
-    /// The figure as horizontal and as vertical slabs; see [`Rows::slabs`].
+    /// The figure as horizontal and as vertical slabs (see [`Rows::slabs`]); the rim of a core has both in each, see [`Slabs::mixed`].
     pub(in crate::fracture) fn both(&self, slack: f64, least: f64) -> [Vec<Flash>; 2] {
+        if self.rows.core.is_some() {
+            return self.mixed(slack, least);
+        }
         [
             self.rows.slabs(slack, least),
             self.columns
@@ -267,7 +301,7 @@ impl Slabs {
         for flash in &mut upright {
             *flash = flash.flipped();
         }
-        [self.rows.mixed(&self.columns, slack, least), upright]
+        [self.rows.mixed(&self.columns, slack, least), upright].map(|slabs| self.abutted(slabs))
     }
 
     /// The slabs of both directions, each grown across as far as the figure allows; see [`Rows::grown`].
@@ -282,7 +316,18 @@ impl Slabs {
             .slabs(slack, 0.0)
             .into_iter()
             .map(|f| self.columns.grown(&f, inset).flipped());
-        horizontal.chain(vertical).collect()
+        self.abutted(horizontal.chain(vertical).collect())
+    }
+
+    /// Slabs moved to the core where a scan line between them kept them off it, or brought them onto it.
+    fn abutted(&self, mut slabs: Vec<Flash>) -> Vec<Flash> {
+        if let Some(core) = &self.rows.core {
+            let reach = 1.5 * self.rows.pitch.max(self.columns.pitch);
+            for slab in &mut slabs {
+                *slab = core.abutted(slab, reach);
+            }
+        }
+        slabs
     }
 }
 

@@ -68,7 +68,7 @@ impl Fracturer for Overlap {
 
     fn refit(&self, job: &Job<'_>, found: &Fracture) -> Option<Fracture> {
         let moved = refitted(job, &found.shots, |job, shots| {
-            let setting = Setting::with(job, self.doses());
+            let setting = Setting::of_shots(job, self.doses(), shots);
             setting.refit(shots, false, self.budget().0)
         });
         // Where moving them does not do, others are looked for.
@@ -167,7 +167,7 @@ impl Overlap {
     /// The fewest shots found that print within tolerance, or the best found.
     fn search(&self, job: &Job<'_>) -> Fracture {
         let setting = Setting::with(job, self.doses());
-        let slabs = Slabs::of(job, &setting.target);
+        let slabs = Slabs::of(&setting);
         let cuts = slabs.both(SLACK, 0.0).map(|cut| self.levelled(cut));
         let [first, second] = &cuts;
         let cut = if second.len() < first.len() {

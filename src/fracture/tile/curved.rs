@@ -36,7 +36,7 @@ pub(super) fn fracture(job: &Job<'_>, effort: Effort) -> Fracture {
             2,
         ),
     };
-    let slabs = Slabs::of(job, &setting.target);
+    let slabs = Slabs::of(&setting);
     let [sliver, least] = setting.least_sides();
     let slacks = &SLACKS[..starts];
     let attempts = |starts: Vec<Vec<Flash>>| -> Vec<_> {

@@ -24,7 +24,7 @@ pub use slivers::GROUP;
 pub use snap::{Snapped, snap};
 pub use staircase::{StaircaseError, StaircaseFracture, fracture_staircase, staircase};
 
-use super::fit::{Budget, Setting};
+use super::fit::{Budget, Doses, Setting};
 use super::{Effort, Fracture, FractureError, Fracturer, Job, oriented, refitted};
 use crate::geom::Rect;
 use crate::shot::{AddressUnit, Shot, ShotList};
@@ -52,7 +52,7 @@ impl Fracturer for Tile {
 
     fn refit(&self, job: &Job<'_>, found: &Fracture) -> Option<Fracture> {
         let moved = refitted(job, &found.shots, |job, shots| {
-            Setting::new(job).refit(shots, true, Budget::TILES)
+            Setting::of_shots(job, Doses::default(), shots).refit(shots, true, Budget::TILES)
         })?;
         Some(Fracture {
             lower_bound: found.lower_bound,
@@ -103,7 +103,8 @@ impl Tile {
             ));
         }
         let least = shots.len() - price;
-        let mut fracture = Setting::new(job).judged(ShotList::new(job.limits.address, shots));
+        let shots = ShotList::new(job.limits.address, shots);
+        let mut fracture = Setting::of_shots(job, Doses::default(), &shots).judged(shots);
         fracture.lower_bound = Some(least);
         fracture.notes = notes;
         Ok(fracture)
@@ -130,7 +131,8 @@ impl Fracturer for Staircase {
 impl Staircase {
     fn walk(&self, job: &Job<'_>) -> Result<Fracture, FractureError> {
         let plain = fracture_staircase(job.figure, self.within, &job.limits)?;
-        let mut fracture = Setting::new(job).judged(plain.shots);
+        let setting = Setting::of_shots(job, Doses::default(), &plain.shots);
+        let mut fracture = setting.judged(plain.shots);
         if plain.under_least_side > 0 {
             fracture.notes.push(format!(
                 "{} shots under the least side",

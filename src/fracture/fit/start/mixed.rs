@@ -147,6 +147,7 @@ impl Rows {
         };
         Self {
             crossings: self.crossings.iter().zip(covered).map(rest).collect(),
+            core: self.core.clone(),
             ..*self
         }
     }
