@@ -214,10 +214,10 @@ fn picture(name: &str, maps: &Maps) -> Picture {
         let to = (steepest + AROUND_STEP + 1).min(columns);
         (
             from..to,
-            "along the middle, around its steepest step: x, µm",
+            "along the middle, around its steepest step",
         )
     } else {
-        (0..columns, "along the middle from left to right: x, µm")
+        (0..columns, "along the middle from left to right")
     };
     let along = |map: &Density| -> Vec<(f64, f64)> {
         let row = row(map);
