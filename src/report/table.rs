@@ -19,7 +19,7 @@ const WIDEST: usize = 120;
 pub struct TextOptions {
     /// Characters to a line; more than 120 are not used.
     pub width: usize,
-    /// Flagged figures listed before the rest is only counted.
+    /// Flagged figures listed before the rest is only counted; with 0 all are counted, none listed.
     pub flags: usize,
 }
 
@@ -556,14 +556,8 @@ fn flags(quote: &Quote, most: usize, out: &mut Text) {
             trimmed(flag.place_nm[1]),
             flag.kind.name().replace('_', " ")
         );
-        if let Some(number) = flag.number {
-            // A dose that misses one half by little must not read as one half.
-            let number = if flag.unit.starts_with("dose") {
-                format!("{number:.4}")
-            } else {
-                significant(number)
-            };
-            let _ = write!(words, ", {number} {}", flag.unit);
+        if let Some(found) = found(flag) {
+            let _ = write!(words, ", {found}");
         }
         if !flag.remedy.is_empty() {
             let _ = write!(words, "; {}", flag.remedy);
@@ -576,10 +570,22 @@ fn flags(quote: &Quote, most: usize, out: &mut Text) {
         }
         out.paragraph(&words, "     ");
     }
-    if flags.len() > most {
+    if most > 0 && flags.len() > most {
         let rest = grouped(Count::from((flags.len() - most) as u64));
         out.line(&format!("     and {rest} more"));
     }
+}
+
+/// The number of a flag with its unit.
+pub(super) fn found(flag: &Flag) -> Option<String> {
+    let number = flag.number?;
+    // A dose that misses one half by little must not read as one half.
+    let number = if flag.unit.starts_with("dose") {
+        format!("{number:.4}")
+    } else {
+        significant(number)
+    };
+    Some(format!("{number} {}", flag.unit))
 }
 
 struct Text {
