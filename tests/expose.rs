@@ -423,6 +423,37 @@ fn the_raster_witness_agrees_with_the_closed_form() {
     assert!(Raster::new(blur(20.0), Nm(f64::NAN), []).is_err());
 }
 
+/// The bound of the raster (scipy.ndimage.gaussian_filter against the closed form, derived) for sides anywhere between pixels of any size.
+#[test]
+fn the_raster_keeps_sides_that_lie_between_pixels() {
+    // Pixels begin at the lower-left shot, so that the other one can lie anywhere on them.
+    let anchor = (rect(-300.0, -300.0, -290.0, -290.0), 1.0);
+    for pixel in [0.5, 1.0, 2.0, 5.0, 10.0] {
+        let bound = Raster::bound_for_each_dose(blur(20.0), Nm(pixel));
+        for part in 0..8 {
+            let off = pixel * f64::from(part) / 8.0;
+            let shots = [
+                anchor,
+                (rect(off - 50.0, -40.0 - off, 50.0, 40.0 + 0.5 * off), 1.0),
+            ];
+            let doses = shots.map(|(r, d)| (r, Dose(d)));
+            let raster = Raster::new(blur(20.0), Nm(pixel), doses).unwrap();
+            let exact = expose(20.0, &shots);
+            for k in 0..60 * 60 {
+                let p = [
+                    f64::from(k % 60) * 3.7 - 110.0,
+                    f64::from(k / 60) * 3.3 - 100.0,
+                ];
+                let (found, expected) = (raster.dose(p), exact.dose_exact(p));
+                assert!(
+                    (found - expected).abs() <= bound,
+                    "pixel {pixel}, side off by {off}, {p:?}: {found}, expected {expected} ± {bound:e}"
+                );
+            }
+        }
+    }
+}
+
 /// Source: Chang, J. Vac. Sci. Technol. 12 (1975) 1271; algebra derived.
 #[test]
 fn uniform_correction_follows_chang() {
