@@ -13,7 +13,8 @@ use shotwright::report::figures_csv;
 use shotwright::report::overview_plot::{self, Mark, Overview, OverviewFigure};
 use shotwright::report::progress::Progress;
 use shotwright::report::shots_csv::{self, Rows, ShotWriter};
-use shotwright::report::table::{self, TextOptions};
+use shotwright::report::table;
+use shotwright::report::text::{TextOptions, text};
 use shotwright::shot::{AddressUnit, Shot, ShotList};
 use shotwright::target::Target;
 use shotwright::units::{Dose, Nm};
@@ -449,14 +450,14 @@ fn plain(text: &str) -> String {
 
 #[test]
 fn wide_text() {
-    let text = table::text(&quote(), TextOptions::default());
+    let text = text(&quote(), TextOptions::default());
     assert_eq!(plain(&text), include_str!("report/quote-120.txt"));
     assert!(text.lines().all(|l| l.chars().count() <= 120));
 }
 
 #[test]
 fn narrow_text() {
-    let text = table::text(
+    let text = text(
         &quote(),
         TextOptions {
             width: 72,
@@ -469,7 +470,7 @@ fn narrow_text() {
 
 #[test]
 fn unmeasured_is_never_zero() {
-    let text = table::text(&quote(), TextOptions::default());
+    let text = text(&quote(), TextOptions::default());
     let row = text.lines().find(|l| l.starts_with("staircase ")).unwrap();
     let cells: Vec<&str> = row.split_whitespace().collect();
     assert_eq!(cells[2], "–", "{row}");

@@ -7,8 +7,8 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, Dash, FONT, MARGIN_RIGHT, palette};
-use super::table::trimmed;
 use crate::geom::{Figure, Ring};
+use crate::number::trimmed;
 use crate::shot::ShotList;
 use crate::target::Target;
 

@@ -3,7 +3,8 @@
 use crate::number::given;
 use crate::quote::result::{Method, Quote};
 
-use super::table::{self, TextOptions};
+use super::table::significant;
+use super::text::{TextOptions, found, text};
 
 /// A file beside the page.
 #[derive(Clone, Copy, Debug)]
@@ -36,7 +37,7 @@ pub fn page(quote: &Quote, pictures: &[Beside<'_>], files: &[Beside<'_>], most: 
         quote.recommended.map_or("none", Method::name),
         escaped(&quote.reason),
         escaped(&quote.caution),
-        escaped(&table::text(quote, options)),
+        escaped(&text(quote, options)),
     );
     out += &sensitivity(quote);
     out += &flags(quote, most);
@@ -63,8 +64,8 @@ fn sensitivity(quote: &Quote) -> String {
             "<tr><td>{}</td><td>{}</td><td>{}</td><td>{}</td></tr>\n",
             escaped(&s.key),
             given(s.value),
-            table::significant(s.at_lower_h),
-            table::significant(s.at_upper_h)
+            significant(s.at_lower_h),
+            significant(s.at_upper_h)
         );
     }
     out + "</table>\n"
@@ -80,7 +81,7 @@ fn flags(quote: &Quote, most: usize) -> String {
         flags.len()
     );
     for (number, flag) in (1..).zip(flags).take(most) {
-        let what = table::found(flag).map_or_else(String::new, |found| format!(": {found}"));
+        let what = found(flag).map_or_else(String::new, |found| format!(": {found}"));
         let figure = if quote.sources.len() > 1 {
             format!("clip {}, {}", flag.clip, flag.figure)
         } else {

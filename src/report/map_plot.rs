@@ -7,7 +7,7 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, Dash, FONT, MARGIN_RIGHT, palette};
-use super::table::trimmed;
+use crate::number::trimmed;
 
 /// Size of the picture, pixels.
 pub const SIZE: (u32, u32) = (1280, 1000);

@@ -12,9 +12,9 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, FONT, palette};
-use super::table::{grouped, length};
+use super::table::grouped;
 use crate::geom::{Figure, Point, Rect, Repetition, Ring, Transform};
-use crate::number::brief;
+use crate::number::{brief, length};
 use crate::quote::result::Count;
 
 /// Size of the picture, pixels.
