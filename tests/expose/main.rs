@@ -5,6 +5,7 @@
 mod budget;
 mod contour;
 mod correction;
+mod cost;
 mod dose;
 mod raster;
 
