@@ -78,6 +78,23 @@ pub fn given(x: f64) -> String {
     if same { text } else { brief(x) }
 }
 
+/// A length in the unit that suits it: `1.2 µm`.
+#[must_use]
+pub fn length(nm: f64) -> String {
+    let (unit, name) = length_unit(nm);
+    format!("{} {name}", trimmed(nm / unit))
+}
+
+/// The unit (nm, and its name) that suits a length.
+#[must_use]
+pub fn length_unit(nm: f64) -> (f64, &'static str) {
+    match nm {
+        1e6.. => (1e6, "mm"),
+        1e3.. => (1e3, "µm"),
+        _ => (1.0, "nm"),
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

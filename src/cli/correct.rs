@@ -55,6 +55,8 @@ pub(super) struct CorrectArgs {
 struct Answer {
     backscatter_ratio: f64,
     mesh_nm: f64,
+    /// A quarter of the least radius; the mesh is coarser where the mask has too many of such cells.
+    wanted_mesh_nm: f64,
     columns: usize,
     rows: usize,
     surroundings: f64,
@@ -124,6 +126,7 @@ pub(super) fn run(args: &CorrectArgs) -> Result<Outcome, CliError> {
     let answer = Answer {
         backscatter_ratio: long_range.ratio(),
         mesh_nm: maps.coverage.mesh().0,
+        wanted_mesh_nm: long_range.wanted_mesh().map_or(0.0, |mesh| mesh.0),
         columns,
         rows,
         surroundings: maps.coverage.around(),
@@ -150,6 +153,18 @@ pub(super) fn run(args: &CorrectArgs) -> Result<Outcome, CliError> {
     Ok(Outcome::Done)
 }
 
+impl Answer {
+    /// What a mesh coarser than wanted means: within it the doses are right on average only.
+    fn coarse(&self) -> Option<String> {
+        (self.mesh_nm > 1.001 * self.wanted_mesh_nm).then(|| {
+            format!(
+                ", coarser than the {} nm of a quarter of the least radius, for the size of the mask: a step of coverage is smeared over a cell",
+                significant(self.wanted_mesh_nm)
+            )
+        })
+    }
+}
+
 fn lines(a: &Answer) -> Vec<(&'static str, String)> {
     let [low, high] = a.uncorrected_level;
     vec![
@@ -160,10 +175,11 @@ fn lines(a: &Answer) -> Vec<(&'static str, String)> {
         (
             "mesh",
             format!(
-                "{} nm, {} × {} cells",
+                "{} nm, {} × {} cells{}",
                 significant(a.mesh_nm),
                 a.columns,
-                a.rows
+                a.rows,
+                a.coarse().unwrap_or_default()
             ),
         ),
         ("coverage, mean", significant(a.mean_coverage)),
@@ -212,12 +228,9 @@ fn picture(name: &str, maps: &Maps) -> Picture {
             .map_or(0, |(i, _)| i);
         let from = steepest.saturating_sub(AROUND_STEP);
         let to = (steepest + AROUND_STEP + 1).min(columns);
-        (
-            from..to,
-            "along the middle, around its steepest step: x, µm",
-        )
+        (from..to, "along the middle, around its steepest step")
     } else {
-        (0..columns, "along the middle from left to right: x, µm")
+        (0..columns, "along the middle from left to right")
     };
     let along = |map: &Density| -> Vec<(f64, f64)> {
         let row = row(map);

@@ -12,7 +12,7 @@ use crate::report::html::{self, Beside};
 use crate::report::progress::Progress;
 use crate::report::remedies_csv;
 use crate::report::stripes_csv;
-use crate::report::table::{self, TextOptions};
+use crate::report::text::{TextOptions, text};
 
 use super::args::mask;
 use super::files::{Output, Sink};
@@ -130,7 +130,7 @@ pub(super) fn run(args: &QuoteArgs, threads: Option<u16>) -> Result<Outcome, Cli
             flags: plan.flags,
             ..TextOptions::default()
         };
-        print(&table::text(&answer.quote, options))?;
+        print(&text(&answer.quote, options))?;
     }
     let late = terms.slot.is_some() && answer.quote.verdict.fits != Fits::Yes;
     let peak = answer

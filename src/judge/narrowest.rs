@@ -54,7 +54,8 @@ struct Chord {
     width: f64,
 }
 
-/// Looks inward from the outline every σ/2 at most, away from drawn corners (from everywhere where all is near a corner).
+/// Looks inward from the outline every σ/2 at most, across to the edge that faces it, both ends away from drawn corners (from everywhere
+/// where all is near a corner).
 ///
 /// Where several places are equally narrow the one that prints worst counts. `None` where no edge faces another.
 pub(super) fn find(target: &Target, print: &impl Printed, blur: Blur) -> Option<Narrowest> {
@@ -86,6 +87,10 @@ fn narrowest(target: &Target, blur: Blur, everywhere: bool) -> Vec<Chord> {
                 continue;
             }
             if let Some(width) = target.way_out(from, inward, least + SAME) {
+                let to = [0, 1].map(|axis| from[axis] + width * inward[axis]);
+                if !everywhere && target.in_corner_zone(to) {
+                    continue;
+                }
                 least = least.min(width);
                 chords.push(Chord {
                     from,

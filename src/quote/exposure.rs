@@ -98,10 +98,16 @@ impl LongRange {
         self.terms.iter().map(|term| term.ratio).sum()
     }
 
-    /// A quarter of the least radius, or what [`MOST_CELLS`] allow over the frame.
+    /// A quarter of the least radius: the mesh that resolves every term. `None` without a term.
+    #[must_use]
+    pub fn wanted_mesh(&self) -> Option<Nm> {
+        let radii = self.terms.iter().map(|term| term.radius.0);
+        Some(Nm(0.25 * radii.reduce(f64::min)?))
+    }
+
+    /// The mesh wanted, or what [`MOST_CELLS`] allow over the frame.
     fn mesh(&self, frame: Rect) -> Option<Nm> {
-        let least = self.terms.iter().map(|term| term.radius.0);
-        let fine = 0.25 * least.reduce(f64::min)?;
+        let fine = self.wanted_mesh()?.0;
         let [w, h] = [frame.width(), frame.height()].map(|side| Nm::from_pm(side).0);
         // Cells (w/m + 1)·(h/m + 1) at most: a quadratic in 1/m.
         let (a, b, c) = (w * h, w + h, 1.0 - MOST_CELLS);
@@ -297,12 +303,7 @@ impl LongRange {
         let [low, high] = found.uncorrected_where_written(coverage);
         Ok(DoseMap {
             mesh_nm: coverage.mesh().0,
-            wanted_mesh_nm: 0.25
-                * self
-                    .terms
-                    .iter()
-                    .map(|t| t.radius.0)
-                    .fold(f64::INFINITY, f64::min),
+            wanted_mesh_nm: self.wanted_mesh().map_or(f64::INFINITY, |mesh| mesh.0),
             surroundings: coverage.around(),
             least_dose: least,
             greatest_dose: greatest,

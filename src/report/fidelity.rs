@@ -2,9 +2,10 @@
 
 use comfy_table::Table;
 
+use crate::number::{UNMEASURED, significant, trimmed};
 use crate::quote::result::{CHANGES, DoseMap, Quote, Scores};
 
-use super::table::{finished, significant, trimmed};
+use super::table::finished;
 
 /// One measure: up to three header lines, its value.
 struct Measure {
@@ -12,61 +13,28 @@ struct Measure {
     value: fn(&Scores) -> Option<String>,
 }
 
-const UNMEASURED: &str = "–";
+const fn measure(header: &'static str, value: fn(&Scores) -> Option<String>) -> Measure {
+    Measure { header, value }
+}
 
 const MEASURES: [Measure; 11] = [
-    Measure {
-        header: "corner\n95 %\nnm",
-        value: |s| two(s.corner_error_nm.p95),
-    },
-    Measure {
-        header: "zones\nworst\nnm",
-        value: |s| two(s.corner_error_nm.worst),
-    },
-    Measure {
-        header: "edge error\nat -10 %\nnm",
-        value: |s| through(s, -0.10),
-    },
-    Measure {
-        header: "95 % when\nat -5 %\nnm",
-        value: |s| through(s, -0.05),
-    },
-    Measure {
-        header: "dose is\nat +5 %\nnm",
-        value: |s| through(s, 0.05),
-    },
-    Measure {
-        header: "\nat +10 %\nnm",
-        value: |s| through(s, 0.10),
-    },
-    Measure {
-        header: "margin\nworst 5 %\nnm/%",
-        value: |s| two(s.margin_nm_per_pct.p95),
-    },
-    Measure {
-        header: "budget\nmedian\nnm, 1 sd",
-        value: |s| two(s.edge_sd_nm.median),
-    },
-    Measure {
-        header: "\nworst 5 %\nnm, 1 sd",
-        value: |s| two(s.edge_sd_nm.p95),
-    },
-    Measure {
-        header: "narrowest\ndrawn, printed\nnm",
-        value: |s| {
-            let narrowest = s.narrowest?;
-            let printed = narrowest
-                .printed_nm
-                .map_or_else(|| UNMEASURED.to_owned(), trimmed);
-            Some(format!("{} {printed}", trimmed(narrowest.drawn_nm)))
-        },
-    },
-    Measure {
-        header: "area\nprinted\n%",
-        value: |s| {
-            two(Some(100.0 * s.printed_area_nm2 / s.drawn_area_nm2).filter(|p| p.is_finite()))
-        },
-    },
+    measure("corner\n95 %\nnm", |s| two(s.corner_error_nm.p95)),
+    measure("zones\nworst\nnm", |s| two(s.corner_error_nm.worst)),
+    measure("edge error\nat -10 %\nnm", |s| through(s, -0.10)),
+    measure("95 % when\nat -5 %\nnm", |s| through(s, -0.05)),
+    measure("dose is\nat +5 %\nnm", |s| through(s, 0.05)),
+    measure("\nat +10 %\nnm", |s| through(s, 0.10)),
+    measure("margin\nworst 5 %\nnm/%", |s| two(s.margin_nm_per_pct.p95)),
+    measure("budget\nmedian\nnm, 1 sd", |s| two(s.edge_sd_nm.median)),
+    measure("\nworst 5 %\nnm, 1 sd", |s| two(s.edge_sd_nm.p95)),
+    measure("narrowest\ndrawn, printed\nnm", |s| {
+        let narrowest = s.narrowest?;
+        let printed = two(narrowest.printed_nm).unwrap_or_else(|| UNMEASURED.to_owned());
+        Some(format!("{:.2} {printed}", narrowest.drawn_nm))
+    }),
+    measure("area\nprinted\n%", |s| {
+        two(Some(100.0 * s.printed_area_nm2 / s.drawn_area_nm2).filter(|p| p.is_finite()))
+    }),
 ];
 
 /// Columns that begin a group.
@@ -104,13 +72,13 @@ pub(super) fn doses(quote: &Quote) -> Vec<String> {
             String::new()
         };
         format!(
-            "doses times {:.3} to {:.3} by place, {:.3} on average; edge levels {:.3} to {:.3} of the threshold before, within {:.1e} of it after; mesh {} µm{coarse}, coverage {} beyond the layout",
+            "doses times {:.3} to {:.3} by place, {:.3} on average; edge levels {:.3} to {:.3} of the threshold before, within {} of it after; mesh {} µm{coarse}, coverage {} beyond the layout",
             map.least_dose,
             map.greatest_dose,
             map.mean_dose,
             low,
             high,
-            map.level_error,
+            significant(map.level_error),
             trimmed(1e-3 * map.mesh_nm),
             significant(map.surroundings),
         )

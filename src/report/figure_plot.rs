@@ -7,8 +7,8 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, Dash, FONT, MARGIN_RIGHT, palette};
-use super::table::trimmed;
 use crate::geom::{Figure, Ring};
+use crate::number::trimmed;
 use crate::shot::ShotList;
 use crate::target::Target;
 
@@ -120,8 +120,8 @@ impl FigurePicture<'_> {
         chart
             .configure_mesh()
             .disable_mesh()
-            .x_desc("x, nm")
-            .y_desc("y, nm")
+            .x_desc("x in the figure's own frame, nm")
+            .y_desc("y in the figure's own frame, nm")
             .x_labels(8)
             .y_labels(8)
             .x_label_formatter(&tick)
@@ -408,8 +408,7 @@ where
     }
 
     fn text(&mut self, label: &str) -> Result<(), PlotError> {
-        self.area
-            .draw(&Text::new(label.to_owned(), (48, self.y - 8), TEXT))?;
+        plot::label(self.area, label, (48, self.y), TEXT.1)?;
         self.y += 27;
         Ok(())
     }

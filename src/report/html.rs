@@ -1,9 +1,10 @@
 //! `report.html`: the quote as one page, with its pictures beside it and links to its files.
 
 use crate::number::given;
-use crate::quote::result::{Flag, Quote};
+use crate::quote::result::{Method, Quote};
 
-use super::table::{self, TextOptions};
+use super::table::significant;
+use super::text::{TextOptions, found, text};
 
 /// A file beside the page.
 #[derive(Clone, Copy, Debug)]
@@ -17,7 +18,7 @@ pub struct Beside<'a> {
 const STYLE: &str = "body{font:16px/1.45 sans-serif;max-width:76em;margin:2em auto;padding:0 1em;color:#111}\
 pre{font:14px/1.35 monospace;overflow-x:auto;background:#f5f5f5;padding:1em}\
 img{max-width:100%;border:1px solid #ccc}table{border-collapse:collapse}\
-td,th{padding:.25em .8em;text-align:left;border-bottom:1px solid #ddd;vertical-align:top}\
+td,th{padding:.25em .8em;text-align:left;border-bottom:1px solid #ddd;vertical-align:top}.n{white-space:nowrap}\
 .verdict{font-size:1.25em;font-weight:bold}";
 
 /// The whole page. `pictures` are shown, `files` linked; both stand beside the page. No script, nothing from elsewhere.
@@ -30,15 +31,16 @@ pub fn page(quote: &Quote, pictures: &[Beside<'_>], files: &[Beside<'_>], most: 
         ..TextOptions::default()
     };
     let mut out = format!(
-        "<!doctype html>\n<html lang=\"en\"><head><meta charset=\"utf-8\"><title>{title}</title><style>{STYLE}</style></head><body>\n\
-         <h1>{title}</h1>\n<p class=\"verdict\">{}</p>\n<p>{}</p>\n<p><em>{}</em></p>\n<pre>{}</pre>\n",
+        "<!doctype html>\n<html lang=\"en\"><head><meta charset=\"utf-8\"><meta name=\"viewport\" content=\"width=device-width,initial-scale=1\"><title>{title}</title><style>{STYLE}</style></head><body>\n\
+         <h1>{title}</h1>\n<p class=\"verdict\">{}</p>\n<p>Recommended: {}. {}</p>\n<p><em>{}</em></p>\n<pre>{}</pre>\n",
         escaped(&quote.verdict.sentence),
+        quote.recommended.map_or("none", Method::name),
         escaped(&quote.reason),
         escaped(&quote.caution),
-        escaped(&table::text(quote, options)),
+        escaped(&text(quote, options)),
     );
     out += &sensitivity(quote);
-    out += &flags(&quote.flags, most);
+    out += &flags(quote, most);
     for picture in pictures {
         let (name, about) = (escaped(picture.name), escaped(picture.about));
         out += &format!("<h2>{about}</h2>\n<p><img src=\"{name}\" alt=\"{about}\"></p>\n");
@@ -62,14 +64,15 @@ fn sensitivity(quote: &Quote) -> String {
             "<tr><td>{}</td><td>{}</td><td>{}</td><td>{}</td></tr>\n",
             escaped(&s.key),
             given(s.value),
-            table::significant(s.at_lower_h),
-            table::significant(s.at_upper_h)
+            significant(s.at_lower_h),
+            significant(s.at_upper_h)
         );
     }
     out + "</table>\n"
 }
 
-fn flags(flags: &[Flag], most: usize) -> String {
+fn flags(quote: &Quote, most: usize) -> String {
+    let flags = &quote.flags;
     if flags.is_empty() {
         return "<h2>Flags</h2>\n<p>No figure is flagged.</p>\n".to_owned();
     }
@@ -78,22 +81,18 @@ fn flags(flags: &[Flag], most: usize) -> String {
         flags.len()
     );
     for (number, flag) in (1..).zip(flags).take(most) {
-        let what = flag.number.map_or_else(String::new, |n| {
-            // A dose that misses one half by little must not read as one half.
-            let n = if flag.unit.starts_with("dose") {
-                format!("{n:.4}")
-            } else {
-                table::significant(n)
-            };
-            format!(": {n} {}", flag.unit)
-        });
-        let figure = format!("clip {}, {}", flag.clip, flag.figure);
+        let what = found(flag).map_or_else(String::new, |found| format!(": {found}"));
+        let figure = if quote.sources.len() > 1 {
+            format!("clip {}, {}", flag.clip, flag.figure)
+        } else {
+            flag.figure.to_string()
+        };
         let figure = flag.picture.as_ref().map_or_else(
             || figure.clone(),
             |name| format!("<a href=\"{}\">{figure}</a>", escaped(name)),
         );
         out += &format!(
-            "<tr><td>{number}</td><td>{figure}</td><td>({}, {})</td><td>{}</td><td>{}</td></tr>\n",
+            "<tr><td>{number}</td><td class=\"n\">{figure}</td><td class=\"n\">({}, {})</td><td>{}</td><td>{}</td></tr>\n",
             crate::number::trimmed(flag.place_nm[0]),
             crate::number::trimmed(flag.place_nm[1]),
             escaped(&format!("{}{what}", flag.kind.name().replace('_', " "))),

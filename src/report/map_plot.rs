@@ -7,13 +7,15 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, Dash, FONT, MARGIN_RIGHT, palette};
-use super::table::trimmed;
+use crate::number::trimmed;
 
 /// Size of the picture, pixels.
 pub const SIZE: (u32, u32) = (1280, 1000);
 
 const TITLE_PX: u32 = 40;
-const CURVE_PX: u32 = 400;
+const CURVE_PX: u32 = 420;
+const CURVE_LEFT_PX: i32 = 72;
+const LEGEND_PX: u32 = 34;
 const BAR_PX: u32 = 92;
 const LABELS_PX: u32 = 52;
 /// Patches of a map in one direction at most; a patch shows the mean of its cells.
@@ -51,7 +53,7 @@ pub struct CorrectionPicture<'a> {
     pub mesh_um: f64,
     /// Left and right.
     pub maps: [MapValues<'a>; 2],
-    /// What the curves run along.
+    /// What the curves run along, a line in x.
     pub along: &'a str,
     /// Drawn dashed, solid, dotted in turn.
     pub curves: &'a [Curve<'a>],
@@ -77,16 +79,40 @@ impl CorrectionPicture<'_> {
     fn draw(&self, area: &Area<'_>) -> Result<(), PlotError> {
         let (title, rest) = area.split_vertically(TITLE_PX);
         title.draw(&Text::new(self.title.to_owned(), (16, 12), (FONT, 19)))?;
-        let (maps, curve) = rest.split_vertically(SIZE.1 - TITLE_PX - CURVE_PX);
+        let (maps, lower) = rest.split_vertically(SIZE.1 - TITLE_PX - CURVE_PX);
         let (left, right) = maps.split_horizontally(SIZE.0 / 2);
         self.map(&left, &self.maps[0])?;
         self.map(&right, &self.maps[1])?;
+        let (legend, curve) = lower.split_vertically(LEGEND_PX);
+        self.legend(&legend)?;
         self.curve(&curve)
+    }
+
+    /// Unit of places and its length in µm: mm where one of a map's sides is 10 mm or more.
+    fn unit(&self) -> (&'static str, f64) {
+        let sides = self.maps.iter().flat_map(|map| map.size);
+        let longest = sides.max().unwrap_or(0) as f64 * self.mesh_um;
+        if longest < 1e4 {
+            ("µm", 1.0)
+        } else {
+            ("mm", 1e3)
+        }
+    }
+
+    /// Above the curves, where none can run through it.
+    fn legend(&self, area: &Area<'_>) -> Result<(), PlotError> {
+        let mut x = CURVE_LEFT_PX + 14;
+        for (curve, &(color, dash)) in self.curves.iter().zip(STYLES.iter().cycle()) {
+            plot::polyline(area, &[(x, 18), (x + 36, 18)], dash, plot::line(color, 2))?;
+            x = 36 + plot::label(area, curve.label, (x + 46, 18), TEXT.1)?;
+        }
+        Ok(())
     }
 
     fn map(&self, area: &Area<'_>, map: &MapValues<'_>) -> Result<(), PlotError> {
         let (w, h) = area.dim_in_pixel();
         let (plan, bar) = area.split_horizontally(w - BAR_PX);
+        let (unit, um) = self.unit();
         let [columns, rows] = map.size;
         let [x0, y0] = self.origin_um;
         let length = |n: usize| n as f64 * self.mesh_um;
@@ -103,12 +129,12 @@ impl CorrectionPicture<'_> {
         chart
             .configure_mesh()
             .disable_mesh()
-            .x_desc("x, µm")
-            .y_desc("y, µm")
+            .x_desc(format!("x, {unit}"))
+            .y_desc(format!("y, {unit}"))
             .x_labels(6)
             .y_labels(6)
-            .x_label_formatter(&|v| trimmed(*v))
-            .y_label_formatter(&|v| trimmed(*v))
+            .x_label_formatter(&|v| trimmed(*v / um))
+            .y_label_formatter(&|v| trimmed(*v / um))
             .label_style(TEXT)
             .draw()?;
         let shades = Shades::of(map.cells);
@@ -130,6 +156,7 @@ impl CorrectionPicture<'_> {
     }
 
     fn curve(&self, area: &Area<'_>) -> Result<(), PlotError> {
+        let (unit, um) = self.unit();
         let all = || self.curves.iter().flat_map(|c| c.points);
         let (from, to) = all().fold((f64::INFINITY, f64::NEG_INFINITY), |(a, b), (x, _)| {
             (a.min(*x), b.max(*x))
@@ -142,17 +169,17 @@ impl CorrectionPicture<'_> {
             .margin_right(MARGIN_RIGHT)
             .margin_bottom(6)
             .x_label_area_size(LABELS_PX - 6)
-            .y_label_area_size(72)
+            .y_label_area_size(CURVE_LEFT_PX)
             .build_cartesian_2d(from..to, low - pad..high + pad)?;
         chart
             .configure_mesh()
             .light_line_style(TRANSPARENT)
             .bold_line_style(plot::line(RGBColor(225, 225, 225), 1))
-            .x_desc(self.along)
+            .x_desc(format!("{}: x, {unit}", self.along))
             .y_desc("relative to the threshold; dose")
             .x_labels(12)
             .y_labels(8)
-            .x_label_formatter(&|v| trimmed(*v))
+            .x_label_formatter(&|v| trimmed(*v / um))
             .y_label_formatter(&|v| format!("{v:.2}"))
             .label_style(TEXT)
             .draw()?;
@@ -163,18 +190,6 @@ impl CorrectionPicture<'_> {
                 dash,
                 plot::line(color, 2),
             )?;
-        }
-        let (left, _) = chart.plotting_area().get_pixel_range();
-        let (offset, top) = (
-            area.get_pixel_range().0.start,
-            area.get_pixel_range().1.start,
-        );
-        let mut y = chart.plotting_area().get_pixel_range().1.start - top + 16;
-        let x = left.start - offset + 16;
-        for (curve, &(color, dash)) in self.curves.iter().zip(STYLES.iter().cycle()) {
-            plot::polyline(area, &[(x, y), (x + 36, y)], dash, plot::line(color, 2))?;
-            area.draw(&Text::new(curve.label.to_owned(), (x + 46, y - 8), TEXT))?;
-            y += 24;
         }
         Ok(())
     }
@@ -218,7 +233,7 @@ impl Shades {
             #[allow(clippy::cast_possible_truncation, reason = "pixels of the picture")]
             let y = bottom - (share * height) as i32;
             let text = format!("{:.3}", self.least + share * self.span);
-            area.draw(&Text::new(text, (30, y - 8), TEXT))?;
+            plot::label(area, &text, (30, y), TEXT.1)?;
         }
         Ok(())
     }

@@ -21,3 +21,4 @@ pub mod sweep_csv;
 pub mod sweep_plot;
 pub mod sweep_text;
 pub mod table;
+pub mod text;

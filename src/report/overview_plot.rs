@@ -12,9 +12,9 @@ use plotters::prelude::*;
 
 pub use super::plot::PlotError;
 use super::plot::{self, FONT, palette};
-use super::table::{grouped, length};
+use super::table::grouped;
 use crate::geom::{Figure, Point, Rect, Repetition, Ring, Transform};
-use crate::number::brief;
+use crate::number::{brief, length};
 use crate::quote::result::Count;
 
 /// Size of the picture, pixels.
@@ -29,6 +29,8 @@ const LEGEND_PX: u32 = 190;
 const NOTE_PX: u32 = 62;
 /// Figures of less than this many pixels in both directions are dots.
 const DOT_PX: f64 = 3.0;
+/// Text in the legend, pixels.
+const TEXT: u32 = 16;
 /// Fill where a figure has no value.
 const NO_VALUE: RGBColor = RGBColor(190, 190, 190);
 
@@ -142,8 +144,7 @@ impl Overview<'_> {
     }
 
     fn legend(&self, area: &Area<'_>, shade: &Shade) -> Result<(), PlotError> {
-        let text = (FONT, 16);
-        area.draw(&Text::new(self.value_label.to_owned(), (4, 6), text))?;
+        plot::label(area, self.value_label, (4, 12), TEXT)?;
         let mut y = 34;
         if shade.range.is_some() {
             const STEPS: i32 = 160;
@@ -164,13 +165,13 @@ impl Overview<'_> {
                     [(30, at), (35, at)],
                     plot::line(palette::INK, 1),
                 ))?;
-                area.draw(&Text::new(brief(value), (40, at - 9), text))?;
+                plot::label(area, &brief(value), (40, at), TEXT)?;
             }
             y = bottom + 28;
         }
         if self.figures.iter().any(|f| f.value.is_none()) {
             area.draw(&Rectangle::new([(4, y), (30, y + 16)], NO_VALUE.filled()))?;
-            area.draw(&Text::new("not known", (40, y), text))?;
+            plot::label(area, "not known", (40, y + 8), TEXT)?;
             y += 30;
         }
         if !self.marks.is_empty() {
@@ -179,8 +180,8 @@ impl Overview<'_> {
                 10,
                 plot::line(palette::VERMILLION, 3),
             ))?;
-            area.draw(&Text::new("flagged, with its", (40, y - 2), text))?;
-            area.draw(&Text::new("number in the list", (40, y + 17), text))?;
+            plot::label(area, "flagged, with its", (40, y), TEXT)?;
+            plot::label(area, "number in the list", (40, y + 19), TEXT)?;
         }
         Ok(())
     }
@@ -197,7 +198,7 @@ impl Overview<'_> {
         let pixels = (bar / per_pixel).round() as i32;
         let bar_corners = [(16, 10), (16 + pixels, 16)];
         area.draw(&Rectangle::new(bar_corners, palette::INK.filled()))?;
-        area.draw(&Text::new(length(bar), (24 + pixels, 4), (FONT, 16)))?;
+        plot::label(area, &length(bar), (24 + pixels, 13), TEXT)?;
         let mut notes = Vec::new();
         if dotted > 0 {
             notes.push(format!(

@@ -6,6 +6,7 @@ use std::sync::LazyLock;
 use plotters::coord::Shift;
 use plotters::drawing::DrawingAreaErrorKind;
 use plotters::prelude::*;
+use plotters::style::text_anchor::{HPos, Pos, VPos};
 use plotters::style::{FontStyle, RGBColor, register_font};
 
 /// Why a picture was not made.
@@ -79,6 +80,24 @@ fn font() -> Result<(), PlotError> {
 
 pub(super) fn line(color: RGBColor, width: u32) -> ShapeStyle {
     color.stroke_width(width)
+}
+
+/// Text of `size` pixels that begins at `x`, its middle at the height `y`. Returns where it ends (pixels).
+pub(super) fn label<DB: DrawingBackend>(
+    area: &DrawingArea<DB, Shift>,
+    text: &str,
+    (x, y): (i32, i32),
+    size: u32,
+) -> Result<i32, PlotError>
+where
+    DB::ErrorType: 'static,
+{
+    let style = TextStyle::from((FONT, size)).pos(Pos::new(HPos::Left, VPos::Center));
+    let (width, _) = area.estimate_text_size(text, &style)?;
+    // The library takes the box of a text for its letters, which hang in the upper part of it: an eighth too high.
+    let down = i32::try_from(size / 8).unwrap_or(0);
+    area.draw(&Text::new(text.to_owned(), (x, y + down), style))?;
+    Ok(x + i32::try_from(width).unwrap_or(0))
 }
 
 /// Dash and gap in pixels; `None` is a solid line.

@@ -62,8 +62,7 @@ impl StripesPicture<'_> {
         let mut x = 90;
         for (cause, color) in CAUSES {
             legend.draw(&Rectangle::new([(x, 8), (x + 26, 24)], color.filled()))?;
-            legend.draw(&Text::new(cause, (x + 34, 7), TEXT))?;
-            x += 60 + 10 * i32::try_from(cause.len()).unwrap_or(0);
+            x = 32 + plot::label(&legend, cause, (x + 34, 16), TEXT.1)?;
         }
         let all: Vec<(Method, Vec<Run>)> = [Method::Tile, Method::Overlap]
             .into_iter()

@@ -67,8 +67,7 @@ where
             plot::line(color, 2),
         )?;
         legend.draw(&Circle::new((x + 18, 16), 4, color.filled()))?;
-        legend.draw(&Text::new(method.name(), (x + 44, 7), TEXT))?;
-        x += 150;
+        x = 32 + plot::label(&legend, method.name(), (x + 44, 16), TEXT.1)?;
     }
     let dash = Some((10, 6));
     if sweep.slot_h.is_some() {
@@ -78,11 +77,10 @@ where
             dash,
             plot::line(palette::INK, 2),
         )?;
-        legend.draw(&Text::new("slot", (x + 44, 7), TEXT))?;
-        x += 110;
+        x = 32 + plot::label(&legend, "slot", (x + 44, 16), TEXT.1)?;
     }
     let labels = format!("numbers: {}", sweep.parameters.join(", "));
-    legend.draw(&Text::new(labels, (x, 7), TEXT))?;
+    plot::label(&legend, &labels, (x, 16), TEXT.1)?;
 
     let all = || lines.iter().flat_map(|line| &line.points);
     let errors = around(all().map(|p| p.0));
