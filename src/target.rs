@@ -9,7 +9,7 @@ mod peak;
 pub use peak::peaks;
 
 use crate::blur::{Blur, CORNER_PULL_BACK, THRESHOLD};
-use crate::geom::Figure;
+use crate::geom::{Figure, spans};
 use crate::units::{BaseDose, Nm};
 
 /// What the rule asks of a place.
@@ -374,14 +374,7 @@ impl Target {
             };
             all.push([ends[0].min(ends[1]) - reach, ends[0].max(ends[1]) + reach]);
         }
-        all.sort_by(|a, b| a[0].total_cmp(&b[0]));
-        out.clear();
-        for span in all {
-            match out.last_mut() {
-                Some(last) if span[0] <= last[1] => last[1] = last[1].max(span[1]),
-                _ => out.push(span),
-            }
-        }
+        spans::union(all, out);
     }
 
     /// Whether some part of the outline is within `limit` (nm) of the place.
@@ -910,6 +903,31 @@ mod tests {
             }
         }
         assert!(found > 100);
+    }
+
+    #[test]
+    fn stretches_near_a_slanted_figure_hold_all_that_is_near_and_little_else() {
+        let t = target(&[(0, 0), (3000, 900), (3000, 960), (0, 60)], 5.0, 2.0);
+        let (mut crossings, mut near) = (Vec::new(), Vec::new());
+        let (mut wanted, mut given) = (0, 0);
+        for row in -10..102 {
+            let y = 10.0 * f64::from(row) + 0.5;
+            t.crossings(y, &mut crossings);
+            t.spans_near(y, 30.0, &crossings, &mut near);
+            assert!(near.windows(2).all(|s| s[0][1] < s[1][0]));
+            for column in -20..320 {
+                let x = 10.0 * f64::from(column) + 0.5;
+                let held = near.iter().any(|s| s[0] <= x && x <= s[1]);
+                let asked = t.inside([x, y]) || t.outline_within([x, y], 30.0);
+                assert!(held || !asked, "({x}, {y}) is left out");
+                wanted += u32::from(asked);
+                given += u32::from(held);
+            }
+        }
+        assert!(
+            wanted > 2000 && given < 3 * wanted,
+            "{given} given for {wanted}"
+        );
     }
 
     #[test]

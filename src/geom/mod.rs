@@ -10,6 +10,7 @@ mod point;
 mod rect;
 mod repetition;
 mod ring;
+pub(crate) mod spans;
 mod transform;
 
 pub use boolean::{intersect, merge, subtract, unite, wound};

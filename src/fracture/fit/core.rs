@@ -326,23 +326,3 @@ impl Core {
         i
     }
 }
-
-/// Takes stretches out of others; all sorted and disjoint.
-pub(super) fn without(spans: &[[f64; 2]], taken: &[[f64; 2]], out: &mut Vec<[f64; 2]>) {
-    out.clear();
-    let mut next = 0;
-    for &[mut from, to] in spans {
-        while next < taken.len() && taken[next][1] <= from {
-            next += 1;
-        }
-        for t in taken[next..].iter().take_while(|t| t[0] < to) {
-            if t[0] > from {
-                out.push([from, t[0]]);
-            }
-            from = from.max(t[1]);
-        }
-        if to > from {
-            out.push([from, to]);
-        }
-    }
-}

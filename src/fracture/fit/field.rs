@@ -3,9 +3,10 @@
 use pulp::Arch;
 
 use crate::blur::{PhiTable, REACH};
+use crate::geom::spans;
 use crate::target::{DoseField, Zone};
 
-use super::core::{Core, without};
+use super::core::Core;
 use super::kernel::{AddDose, LANES};
 use super::model::{Bins, Flash, Model};
 use super::samples::Around;
@@ -178,24 +179,16 @@ impl Zone for Boxes<'_> {
             self.taken += 1;
         }
         self.open.retain(|s| s[3] >= y);
-        self.open.sort_by(|a, b| a[0].total_cmp(&b[0]));
         let figure = crossings.chunks_exact(2).map(|c| [c[0], c[1]]);
         let mut all: Vec<[f64; 2]> = self.open.iter().map(|s| [s[0], s[2]]).collect();
         if self.bins.is_none() {
             all.extend(figure);
-            all.sort_by(|a, b| a[0].total_cmp(&b[0]));
         }
-        out.clear();
-        for span in all {
-            match out.last_mut() {
-                Some(last) if span[0] <= last[1] => last[1] = last[1].max(span[1]),
-                _ => out.push(span),
-            }
-        }
+        spans::union(all, out);
         if let Some(core) = self.core {
             let (mut sure, mut rest) = (Vec::new(), Vec::new());
             core.sure_spans(y, &mut sure);
-            without(out, &sure, &mut rest);
+            spans::without(out, &sure, &mut rest);
             *out = rest;
         }
     }

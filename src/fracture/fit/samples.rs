@@ -1,9 +1,10 @@
 //! The places at which a fit is held to the print rule.
 
-use super::core::{Core, without};
+use super::core::Core;
 use super::model::{Bins, Flash};
 use crate::blur::{Blur, PhiTable, REACH, THRESHOLD};
 use crate::fracture::Job;
+use crate::geom::spans;
 use crate::target::{Need, Target, Violation};
 
 /// A place with what the rule asks there.
@@ -97,19 +98,19 @@ fn lattice(
     let steps = |length: f64| (length / step).max(0.0) as usize;
     #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
     let at = |low: f64, i: usize| low + inset + i as f64 * step;
-    let (mut crossings, mut spans) = (Vec::new(), Vec::new());
+    let (mut crossings, mut wanted) = (Vec::new(), Vec::new());
     let (mut sure, mut rest) = (Vec::new(), Vec::new());
     for j in 0..=steps(y1 + beyond - at(y0, 0)) {
         let y = at(y0, j);
         target.crossings(y, &mut crossings);
-        target.spans_near(y, beyond, &crossings, &mut spans);
+        target.spans_near(y, beyond, &crossings, &mut wanted);
         if let Some(core) = core {
             core.sure_spans(y, &mut sure);
-            without(&spans, &sure, &mut rest);
-            std::mem::swap(&mut spans, &mut rest);
+            spans::without(&wanted, &sure, &mut rest);
+            std::mem::swap(&mut wanted, &mut rest);
         }
         let (mut passed, mut next) = (0, 0);
-        for &[from, to] in &spans {
+        for &[from, to] in &wanted {
             let end = steps(to.min(x1 + beyond) - at(x0, 0)) + 1;
             for i in steps(from - at(x0, 0)).max(next)..end {
                 let x = at(x0, i);

@@ -1,6 +1,6 @@
 //! Where a fit starts from: slabs of the figure.
 
-use crate::geom::{Orientation, Point, Transform};
+use crate::geom::{Orientation, Point, Transform, spans};
 use crate::target::Target;
 
 use std::cmp::Reverse;
@@ -8,7 +8,7 @@ use std::collections::BinaryHeap;
 use std::ops::Range;
 use std::rc::Rc;
 
-use super::core::{Core, without};
+use super::core::Core;
 use super::model::{Bins, Flash};
 use super::samples::Sample;
 use super::search::Setting;
@@ -96,8 +96,8 @@ impl Rows {
             target.crossings(y, crossings);
             if let Some(core) = &rows.core {
                 core.spans(y, &mut taken);
-                let spans: Vec<[f64; 2]> = spans_of(crossings).collect();
-                without(&spans, &taken, &mut rest);
+                let whole: Vec<[f64; 2]> = spans_of(crossings).collect();
+                spans::without(&whole, &taken, &mut rest);
                 *crossings = rest.concat();
             }
         }

@@ -1,7 +1,8 @@
 //! Slabs of both directions in one start: each part of a figure is cut across the way its outline runs.
 
 use super::super::model::Flash;
-use super::{Branch, Rows};
+use super::{Branch, Rows, spans_of};
+use crate::geom::spans;
 
 /// A side that wanders by less than this share of the height of a window is steep enough to be followed by slabs: 45°.
 const STEEP: f64 = 1.2;
@@ -126,24 +127,11 @@ impl Rows {
     fn without(&self, covered: Vec<Vec<[f64; 2]>>) -> Self {
         let rest = |(crossings, mut covered): (&Vec<f64>, Vec<[f64; 2]>)| {
             covered.sort_by(|a, b| a[0].total_cmp(&b[0]));
+            let whole: Vec<[f64; 2]> = spans_of(crossings).collect();
             let mut left = Vec::new();
-            let mut next = 0;
-            for span in crossings.chunks_exact(2) {
-                let mut from = span[0];
-                while next < covered.len() && covered[next][1] <= from {
-                    next += 1;
-                }
-                for c in covered[next..].iter().take_while(|c| c[0] < span[1]) {
-                    if c[0] - from > self.pitch {
-                        left.extend([from, c[0]]);
-                    }
-                    from = from.max(c[1]);
-                }
-                if span[1] - from > self.pitch {
-                    left.extend([from, span[1]]);
-                }
-            }
-            left
+            spans::without(&whole, &covered, &mut left);
+            left.retain(|s| s[1] - s[0] > self.pitch);
+            left.concat()
         };
         Self {
             crossings: self.crossings.iter().zip(covered).map(rest).collect(),
