@@ -39,8 +39,8 @@ pub struct Job<'a> {
 
 /// How hard a fracturer searches.
 ///
-/// Measured on the 30 figures of the reference set `assist` (σ 12 nm, tolerance 2 nm), shots and time as a share of normal: quick 295
-/// tiles at 0.8 and 238 overlapping shots at 0.45; normal 295 and 223; thorough 292 at 2.2 and 219 at 2.2.
+/// Measured on the 30 figures of the reference set `assist` (σ 12 nm, tolerance 2 nm, sides and slivers from 8 nm), shots and time as a
+/// share of normal: quick 296 tiles at 0.8 and 241 overlapping shots at 0.55; normal 295 and 226; thorough 290 at 2.5 and 219 at 2.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, PartialOrd, Ord)]
 pub enum Effort {
     /// One start, few trials.
