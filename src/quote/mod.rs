@@ -21,6 +21,7 @@ pub mod sweep;
 mod tally;
 mod uncertain;
 mod verdict;
+mod width;
 pub mod witness;
 
 use std::sync::Arc;
