@@ -17,13 +17,14 @@ use crate::shot::{AddressUnit, Shot, ShotList};
 use crate::units::{Dose, Nm, Seconds};
 use crate::write_time::{Borders, Field, Summed, Sums, WriteTimeError};
 
+use super::exposure::Exposed;
 use super::exposure::{self, LongRange};
 use super::hours::{self, Correction, Spread, Written};
 use super::made::{self, Made, MadeMask, Scene, Setup, Unmade};
 use super::result::{
     self, ByMethod, Count, DoseMap, Estimate, FractureSummary, Method, SampleUsed, StratumUsed,
 };
-use super::sample::{Drawn, Features, Scale, Stop, Strata, Total, Weights, draw};
+use super::sample::{self, Drawn, Features, Scale, Stop, Strata, Total, Weights, draw};
 use super::tally::Tally;
 use super::uncertain;
 use super::{Answer, Basis, Clip, Parts, QuoteError, Terms, check, exact, finish, fracturer};
@@ -80,16 +81,6 @@ pub fn quote_sampled(
     let units = units(clips, terms);
     let strata = strata(&units, &basis.setup, sampling.seed);
     let drawing = Drawing::new(clips, terms, &basis, tick);
-    let stop = Stop {
-        within: sampling.within,
-        most: sampling.most,
-        out_of_time: sampling.out_of_time,
-        at_once: if sampling.time_limit.is_some() {
-            AT_ONCE
-        } else {
-            usize::MAX
-        },
-    };
     let beam = |measured: &Measured, method| {
         measured
             .sums
@@ -98,50 +89,70 @@ pub fn quote_sampled(
     };
     let shots =
         |measured: &Measured, method| measured.sums.get(method).map_or(0.0, |sums| sums.shots);
-    let drawn = draw(
-        &strata,
-        &stop,
-        &mut |figures| drawing.measure(&units, figures),
-        &[
-            &|m| shots(m, Method::Tile),
-            &|m| shots(m, Method::Overlap),
-            &|m| beam(m, Method::Tile),
-            &|m| beam(m, Method::Overlap),
-        ],
-    )?;
-    let used = SampleUsed {
-        figures_distinct: units.len() as u64,
+    let draw_on = |drawn: Drawn<Measured>| {
+        let stop = Stop {
+            within: sampling.within,
+            more_than: drawn.costs.len(),
+            most: sampling.most,
+            out_of_time: sampling.out_of_time,
+            at_once: if sampling.time_limit.is_some() {
+                AT_ONCE
+            } else {
+                usize::MAX
+            },
+        };
+        draw(
+            &strata,
+            &stop,
+            &mut |figures| drawing.measure(&units, figures),
+            &[
+                &|m| shots(m, Method::Tile),
+                &|m| shots(m, Method::Overlap),
+                &|m| beam(m, Method::Tile),
+                &|m| beam(m, Method::Overlap),
+            ],
+            drawn,
+        )
+    };
+    let mut drawn = Drawn::none(&strata);
+    loop {
+        drawn = draw_on(drawn)?;
+        let used = used(&strata, &drawn, sampling);
+        if drawn.costs.len() == units.len() {
+            return whole(clips, terms, &basis, &units, drawn, used);
+        }
+        let known = Known::new(clips, &units, &strata, &drawn, &basis);
+        let placed = Method::ALL
+            .into_iter()
+            .map(|method| known.placed(clips, terms, &basis, method))
+            .collect::<Result<Vec<_>, _>>()?;
+        // The doses of places are known only now, and with them what is asked for: the drawing went by those of the mean coverage.
+        let asked = sampling
+            .within
+            .filter(|_| drawn.stopped == sample::Stopped::Narrow);
+        if asked.is_none_or(|within| placed.iter().all(|placed| placed.is_within(within))) {
+            return sampled(clips, terms, &basis, &known, placed, used);
+        }
+    }
+}
+
+fn used(strata: &Strata, drawn: &Drawn<Measured>, sampling: &Sampling<'_>) -> SampleUsed {
+    let sizes = strata.sizes();
+    let of_stratum = |(&figures, &n): (&usize, &usize)| StratumUsed {
+        figures: figures as u64,
+        drawn: n as u64,
+    };
+    SampleUsed {
+        figures_distinct: strata.len() as u64,
         figures_drawn: drawn.costs.len() as u64,
         seed: sampling.seed,
         within: sampling.within,
         time_limit_s: sampling.time_limit.map(|limit| limit.0),
         stopped: drawn.stopped.into(),
-        strata: strata
-            .sizes()
-            .iter()
-            .zip(&drawn.taken)
-            .map(|(&figures, &n)| StratumUsed {
-                figures: figures as u64,
-                drawn: n as u64,
-            })
-            .collect(),
+        strata: sizes.iter().zip(&drawn.taken).map(of_stratum).collect(),
         shots: ByMethod::default(),
         beam_h: ByMethod::default(),
-    };
-    if drawn.costs.len() == units.len() {
-        return whole(clips, terms, &basis, &units, drawn, used);
     }
-    sampled(
-        clips,
-        terms,
-        &basis,
-        &Sampled {
-            units: &units,
-            strata: &strata,
-            drawn: &drawn,
-        },
-        used,
-    )
 }
 
 /// What the sample says of all figures.
@@ -379,49 +390,71 @@ fn exact_totals(answer: &Answer, of: fn(&FractureSummary) -> f64) -> ByMethod<Es
     all
 }
 
-/// The drawing done.
-struct Sampled<'a> {
+/// What the figures drawn say.
+struct Known<'a> {
     units: &'a [Unit<'a>],
-    strata: &'a Strata,
-    drawn: &'a Drawn<Measured>,
+    weights: Weights<'a>,
+    /// By figure, those drawn.
+    by_unit: Vec<Option<&'a Measured>>,
+    /// By clip.
+    made: Vec<ByMethod<Arc<MadeMask>>>,
+    /// By figure, those not drawn.
+    stand_ins: ByMethod<Vec<Option<ShotList>>>,
 }
 
-fn sampled(
-    clips: &[Clip<'_>],
-    terms: &Terms<'_>,
-    basis: &Basis,
-    sampled: &Sampled<'_>,
-    used: SampleUsed,
-) -> Result<Answer, QuoteError> {
-    let Sampled {
-        units,
-        strata,
-        drawn,
-    } = *sampled;
-    let weights = Weights::new(strata, &drawn.taken);
-    let mut by_unit: Vec<Option<&Measured>> = vec![None; units.len()];
-    for (unit, measured) in &drawn.costs {
-        by_unit[*unit] = Some(measured);
+impl<'a> Known<'a> {
+    fn new(
+        clips: &[Clip<'_>],
+        units: &'a [Unit<'a>],
+        strata: &'a Strata,
+        drawn: &'a Drawn<Measured>,
+        basis: &Basis,
+    ) -> Self {
+        let weights = Weights::new(strata, &drawn.taken);
+        let mut by_unit: Vec<Option<&Measured>> = vec![None; units.len()];
+        for (unit, measured) in &drawn.costs {
+            by_unit[*unit] = Some(measured);
+        }
+        let mut stand_ins = ByMethod::default();
+        for method in Method::ALL {
+            let found = stood_in(units, &weights, &by_unit, method, basis.setup.blur);
+            *stand_ins.slot(method) = Some(found);
+        }
+        Self {
+            made: made_of(clips, units, &by_unit),
+            units,
+            weights,
+            by_unit,
+            stand_ins,
+        }
     }
-    let made = made_of(clips, units, &by_unit);
-    let mut stand_ins = ByMethod::default();
-    for method in Method::ALL {
-        let found = stood_in(units, &weights, &by_unit, method, basis.setup.blur);
-        *stand_ins.slot(method) = Some(found);
-    }
-    let mut parts = Parts::empty(clips.len());
-    let mut totals = ByMethod::default();
-    for method in Method::ALL {
-        let mut lists: Vec<Vec<Option<&ShotList>>> = vec![Vec::new(); clips.len()];
-        for (i, unit) in units.iter().enumerate() {
-            let own = made[unit.clip].get(method).map(|all| &all[unit.figure]);
-            let stand_in = || stand_ins.get(method).and_then(|all| all[i].as_ref());
+
+    /// By clip: the shots of figures drawn, what stands for those of the others.
+    fn lists(&self, clips: usize, method: Method) -> Vec<Vec<Option<&ShotList>>> {
+        let mut lists: Vec<Vec<Option<&ShotList>>> = vec![Vec::new(); clips];
+        for (i, unit) in self.units.iter().enumerate() {
+            let own = self.made[unit.clip]
+                .get(method)
+                .map(|all| &all[unit.figure]);
+            let stand_in = || self.stand_ins.get(method).and_then(|all| all[i].as_ref());
             lists[unit.clip].push(match own {
                 Some(Ok(made)) => Some(&made.fracture.shots),
                 Some(Err(Unmade::Fracture(_))) => None,
                 Some(Err(Unmade::NotDrawn)) | None => stand_in(),
             });
         }
+        lists
+    }
+
+    /// The totals of a fracture at the doses of places.
+    fn placed<'k>(
+        &'k self,
+        clips: &[Clip<'k>],
+        terms: &Terms<'_>,
+        basis: &Basis,
+        method: Method,
+    ) -> Result<PlacedSums<'k>, QuoteError> {
+        let lists = self.lists(clips.len(), method);
         let exposed = LongRange::new(terms.profile).expose_shot_clips(clips, &lists)?;
         let borders: Vec<(Borders, Nm)> = clips
             .iter()
@@ -438,20 +471,99 @@ fn sampled(
                 None => Ok(Sums::default()),
             }
         };
-        let all_sums: Vec<Sums> = units
-            .par_iter()
-            .zip(&by_unit)
-            .map(timed)
-            .collect::<Result<_, WriteTimeError>>()?;
+        let all = self.units.par_iter().zip(&self.by_unit).map(timed);
+        let sums = all.collect::<Result<Vec<Sums>, WriteTimeError>>()?;
+        let map = DoseMap::all(exposed.iter().filter_map(|exposed| exposed.map.as_ref()));
+        Ok(PlacedSums {
+            method,
+            shots: self.weights.total(&|i| sums[i].shots),
+            beam: self.beam(terms, basis, method, &sums, map),
+            exposed,
+            map,
+            sums,
+        })
+    }
+
+    /// Flashing and settling of all figures. Half its width holds what the charge of the figures not drawn, estimated from the same sample,
+    /// does to every dose.
+    ///
+    /// Taylor linearisation (Särndal, Swensson and Wretman, *Model Assisted Survey Sampling* (1992), section 5.5): doses fall with the
+    /// charge `C` of the mask as `d ln D = −κ·d ln C`, where `D = (1 + η)/(1 + 2ηU)` gives `κ = 2ηU/(1 + 2ηU) = 1 − D/(1 + η)`; so with
+    /// `F` seconds of flashing in all a figure of charge `c` and time `t` scatters as `t − κ·F·c/C`.
+    fn beam(
+        &self,
+        terms: &Terms<'_>,
+        basis: &Basis,
+        method: Method,
+        sums: &[Sums],
+        map: Option<DoseMap>,
+    ) -> Total {
+        let profile = terms.profile;
+        let beam = self.weights.total(&|i| sums[i].time(profile).0);
+        let charge = |i: usize| charge_of(&self.units[i], self.by_unit[i], method);
+        let all_charge = self.weights.total(&charge).value;
+        let Some(map) = map.filter(|_| all_charge > 0.0) else {
+            return beam;
+        };
+        let settling = |sums: Sums| Sums { dose: 0.0, ..sums }.time(profile).0;
+        let flashing = |i: usize| sums[i].time(profile).0 - settling(sums[i]);
+        let by_charge = (1.0 - map.mean_dose / (1.0 + basis.correction.ratio)).clamp(0.0, 1.0)
+            * self.weights.total(&flashing).value
+            / all_charge;
+        let linear = |i: usize| sums[i].time(profile).0 - by_charge * charge(i);
+        Total {
+            half_width: self.weights.total(&linear).half_width,
+            ..beam
+        }
+    }
+}
+
+/// One fracture at the doses of places, known from those drawn.
+struct PlacedSums<'a> {
+    method: Method,
+    /// By clip.
+    exposed: Vec<Exposed<'a>>,
+    map: Option<DoseMap>,
+    /// By figure, on the field; of those not drawn 0.
+    sums: Vec<Sums>,
+    shots: Total,
+    beam: Total,
+}
+
+impl PlacedSums<'_> {
+    /// Whether its totals are as sure as asked; those of the plain staircase are not asked for.
+    fn is_within(&self, share: f64) -> bool {
+        let sure = |total: Total| total.relative() <= share;
+        self.method == Method::Staircase || (sure(self.shots) && sure(self.beam))
+    }
+}
+
+fn sampled(
+    clips: &[Clip<'_>],
+    terms: &Terms<'_>,
+    basis: &Basis,
+    known: &Known<'_>,
+    placed: Vec<PlacedSums<'_>>,
+    used: SampleUsed,
+) -> Result<Answer, QuoteError> {
+    let (units, weights, by_unit) = (known.units, &known.weights, &known.by_unit);
+    let mut parts = Parts::empty(clips.len());
+    let mut totals = ByMethod::default();
+    for placed in placed {
+        let PlacedSums {
+            method,
+            exposed,
+            map,
+            sums: all_sums,
+            shots,
+            beam,
+        } = placed;
         let sums = |i: usize| all_sums[i];
-        let beam = weights.total(&|i| sums(i).time(terms.profile).0);
-        let shots = weights.total(&|i| sums(i).shots);
-        let all = All::new(&weights, units, &sums, &beam, terms);
+        let all = All::new(weights, units, &sums, &beam, terms);
         let frame = hours::frame(clips);
         let spread = |shift| all.spread(units, shift, (frame, terms.field));
         let time = |shift| Written::of_sums(spread(shift)).time(terms.profile);
         let mut timed = time(0.0)?;
-        let map = DoseMap::all(exposed.iter().filter_map(|exposed| exposed.map.as_ref()));
         timed.hours = uncertain::widened(
             timed.hours,
             &Written::of_sums(spread(0.0)),
@@ -503,7 +615,7 @@ fn sampled(
         beam_h: each(&totals, |e| e.beam_h),
         ..used
     });
-    finish(clips, terms, basis, &made, parts)
+    finish(clips, terms, basis, &known.made, parts)
 }
 
 /// Shots and scores by clip and figure, of those drawn.
@@ -538,11 +650,7 @@ fn stood_in(
     blur: Blur,
 ) -> Vec<Option<ShotList>> {
     let places = |i: usize| units[i].places * units[i].copies;
-    let charge = |i: usize| {
-        let made = by_unit[i].and_then(|measured| measured.made.get(method));
-        let shots = made.and_then(|made| Some(&made.as_ref().ok()?.fracture.shots));
-        shots.map_or(0.0, |shots| places(i) * exposure::charge(shots))
-    };
+    let charge = |i: usize| charge_of(&units[i], by_unit[i], method);
     let outlines: Vec<f64> = units
         .par_iter()
         .map(|u| u.distinct.figure.area_nm2())
@@ -568,6 +676,14 @@ fn stood_in(
         (covered > 0.0).then(|| ShotList::new(AddressUnit::FINEST, shots))
     };
     units.par_iter().enumerate().map(one).collect()
+}
+
+/// Dose times area of a figure drawn at all its places, nm²; of one that was not drawn 0.
+fn charge_of(unit: &Unit<'_>, measured: Option<&Measured>, method: Method) -> f64 {
+    let made = measured.and_then(|measured| measured.made.get(method));
+    let shots = made.and_then(|made| Some(&made.as_ref().ok()?.fracture.shots));
+    let places = unit.places * unit.copies;
+    shots.map_or(0.0, |shots| places * exposure::charge(shots))
 }
 
 fn estimate(total: &Total, unit: f64) -> Estimate {

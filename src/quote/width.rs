@@ -88,6 +88,9 @@ mod tests {
         let found = widest_under(&frame(12), 16.0, blur()).unwrap();
         // The widest disc of a frame lies in its corners: 2r with w√2 = r + r√2.
         let expected = 2.0 * 12.0 * 2.0_f64.sqrt() / (1.0 + 2.0_f64.sqrt());
-        assert!((found - expected).abs() < 0.2, "{found}, expected {expected}");
+        assert!(
+            (found - expected).abs() < 0.2,
+            "{found}, expected {expected}"
+        );
     }
 }
