@@ -344,6 +344,7 @@ fn quote() -> Quote {
         sample: None,
         remedies: Vec::new(),
         must_change: None,
+        must_change_unknown: None,
         caution: CAUTION.to_owned(),
     }
 }

@@ -538,6 +538,7 @@ fn finish(
         sample,
         remedies: Vec::new(),
         must_change: None,
+        must_change_unknown: None,
         caution: CAUTION.to_owned(),
     };
     Ok(Answer {

@@ -93,13 +93,17 @@ pub fn remedies(
             distinct.len()
         ));
     }
-    if late && terms.slot.is_some() && sampled {
-        quote.notes.push(
-            "what must change is worked out where every figure is fractured, not from a sample"
-                .to_owned(),
-        );
-    }
     quote.must_change = change;
+    if let Some(slot) = terms.slot.filter(|_| late && sampled) {
+        let beamless = hours::beamless(clips, terms)?;
+        quote.must_change_unknown = Some(if beamless > slot {
+            out_of_reach(slot, beamless)
+        } else {
+            "not worked out from a sample, since the figures of the most seconds may not be among those drawn; quoted without \
+             --within, --sample and --time-limit-min it is."
+                .to_owned()
+        });
+    }
     Ok(())
 }
 
@@ -571,12 +575,7 @@ fn sentence(
         Reach::All | Reach::Beamless(_) => String::new(),
     };
     match (missing, reach) {
-        (_, Reach::Beamless(hours)) => format!(
-            "No change of figures brings it into the slot of {} h: without a single flash it takes {} h, {} h too many.",
-            number(slot.0),
-            number(hours.0),
-            number(hours.0 - slot.0)
-        ),
+        (_, Reach::Beamless(hours)) => out_of_reach(slot, hours),
         (None, _) => format!(
             "To fit the slot of {} h {} must change: {with}{tried}.",
             number(slot.0),
@@ -588,6 +587,16 @@ fn sentence(
             number(missing)
         ),
     }
+}
+
+/// That the writer is too slow whatever it writes.
+fn out_of_reach(slot: Hours, beamless: Hours) -> String {
+    format!(
+        "No change of figures brings it into the slot of {} h: without a single flash it takes {} h, {} h too many.",
+        number(slot.0),
+        number(beamless.0),
+        number(beamless.0 - slot.0)
+    )
 }
 
 /// The best remedy of each figure, most seconds saved first.

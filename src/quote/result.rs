@@ -118,6 +118,9 @@ pub struct Quote {
     /// What must change for the mask to fit its slot; `None` if it fits, no slot was given, or it was not worked out.
     #[serde(default)]
     pub must_change: Option<MustChange>,
+    /// In a sentence, why that is not known although the mask misses its slot; `None` if it is, or fits, or there is no slot.
+    #[serde(default)]
+    pub must_change_unknown: Option<String>,
     /// [`CAUTION`].
     pub caution: String,
 }
