@@ -10,7 +10,7 @@ use std::time::Instant;
 
 use shotwright::fracture::Effort;
 use shotwright::geom::{Point, Repetition};
-use shotwright::layout::{Cell, Layer, Layout, Shape};
+use shotwright::layout::{Layout, Shape};
 use shotwright::mask::{Mask, MaskOptions};
 use shotwright::profile::Profile;
 use shotwright::quote::result::{Method, Stopped};
@@ -18,27 +18,9 @@ use shotwright::quote::{self, Answer, Chosen, Clip, Sampling, Terms};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
 
+use crate::flat::{LAYER, flat};
 use crate::kinds::between;
 use crate::random::Random;
-
-const LAYER: Layer = Layer {
-    layer: 1,
-    datatype: 0,
-};
-
-fn flat(shapes: Vec<Shape>) -> Layout {
-    let cell = Cell {
-        name: "top".to_owned(),
-        shapes: shapes.into(),
-        placements: Vec::new(),
-    };
-    Layout {
-        unit: Nm(1.0),
-        cells: vec![cell],
-        notes: Vec::new(),
-        open_outlines: 0,
-    }
-}
 
 fn terms(profile: &Profile) -> Terms<'_> {
     Terms {
