@@ -17,9 +17,12 @@ use crate::units::Seconds;
 
 use super::hours::{self, Correction, Spread, Timed, Written};
 use super::made::{self, Unmade};
+use super::repair::repair;
 use super::result::{ByMethod, Count, Estimate, FractureSummary, Method, SampleUsed, StratumUsed};
 use super::sample::{self, Drawn, Stop, Strata, Total, draw};
-use super::{Answer, Basis, Clip, Parts, QuoteError, Terms, check, exact, finish, uncertain};
+use super::{
+    Answer, Basis, Clip, Parts, QuoteError, Terms, check, exact, finish, fracturer, uncertain,
+};
 
 use all::All;
 use drawing::{Drawing, Measured};
@@ -135,7 +138,7 @@ fn used(strata: &Strata, drawn: &Drawn<Measured>, sampling: &Sampling<'_>) -> Sa
     }
 }
 
-/// Every figure was drawn: the exact quote from the same fractures, each judged with its neighbours' own shots.
+/// Every figure was drawn: the exact quote from the same fractures, each fitted anew where its neighbours' shots undo it.
 fn whole(
     clips: &[Clip<'_>],
     terms: &Terms<'_>,
@@ -162,8 +165,15 @@ fn whole(
         }
     }
     let mut answer = exact(clips, terms, basis, &mut |clip, method| {
-        let own = fractures[clip].slot(method).take().unwrap_or_default();
-        Arc::new(made::judge(clips[clip].mask, own, &basis.settings, &|| ()))
+        let mut own = fractures[clip].slot(method).take().unwrap_or_default();
+        let mask = clips[clip].mask;
+        repair(
+            mask,
+            &mut own,
+            fracturer(method, terms).as_ref(),
+            &basis.setup,
+        );
+        Arc::new(made::judge(mask, own, &basis.settings, &|| ()))
     })?;
     answer.quote.sample = Some(SampleUsed {
         shots: exact_totals(&answer, |f| {
