@@ -3,15 +3,15 @@
 use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
 
 use shotwright::geom::{Point, Repetition};
-use shotwright::layout::{self, Cell, CellId, Layer, Layout, Placement, Shape, Shapes};
+use shotwright::layout::{self, Cell, CellId, Layout, Placement, Shape, Shapes};
 use shotwright::mask::{self, MaskOptions};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
 
-const LAYER: Layer = Layer {
-    layer: 1,
-    datatype: 0,
-};
+#[path = "../tests/common/flat.rs"]
+mod flat;
+
+use flat::{LAYER, flat};
 
 fn options() -> MaskOptions {
     MaskOptions {
@@ -36,20 +36,6 @@ fn rect(x: i64, y: i64, w: i64, h: i64) -> Shape {
         Point::new(x, y + h),
     ];
     shape(points, Repetition::Once)
-}
-
-fn flat(shapes: Vec<Shape>) -> Layout {
-    let cell = Cell {
-        name: "top".to_owned(),
-        shapes: shapes.into(),
-        placements: Vec::new(),
-    };
-    Layout {
-        unit: Nm(1.0),
-        cells: vec![cell],
-        open_outlines: 0,
-        notes: Vec::new(),
-    }
 }
 
 /// Rectangles of 40 to 140 nm at random, about a third of them overlapping another; xorshift64, seed fixed.

@@ -418,6 +418,30 @@ fn a_sweep_fractures_only_what_a_number_touches() {
             6.0 * points as f64
         );
     }
+    // A file says it too; the resolved job asks for the same sweep again; a flag stands in place of it.
+    let over = "over = [\"tolerance_nm=2:3:2\", \"current_a_cm2=200,400\"]\n";
+    let swept = sweep(&["tolerance_nm=2,3", "current_a_cm2=200,400"]);
+    let of_file = place.write("over.toml", &format!("{over}{text}"));
+    let json =
+        |arguments: &[&str]| -> Value { serde_json::from_str(&run(arguments, 0).0).unwrap() };
+    let out = place.at("swept");
+    assert_eq!(json(&["sweep", &of_file, "--json", "--out", &out]), swept);
+    assert_eq!(
+        json(&["sweep", &format!("{out}/job.toml"), "--json"]),
+        swept
+    );
+    let other = json(&["sweep", &of_file, "--json", "--over", "settle_ns=50,100"]);
+    assert_eq!(other["parameters"], serde_json::json!(["settle_ns"]));
+    let (_, error) = run(&["quote", &of_file], 2);
+    assert!(error.contains("`over`, which is for sweep"), "{error}");
+    let (_, error) = run(&["sweep", &job], 2);
+    assert!(error.contains("no --over"), "{error}");
+    let wrong = place.write("wrong.toml", &format!("over = [\"nobody=1\"]\n{text}"));
+    let (_, error) = run(&["sweep", &wrong], 2);
+    assert!(
+        error.contains("wrong.toml:1") && error.contains("is no number"),
+        "{error}"
+    );
     // A point is the quote of its numbers.
     let swept = sweep(&["current_a_cm2=200,400", "tolerance_nm=2,3"]);
     let point = &swept["points"][1];

@@ -133,6 +133,24 @@ fn an_array_costs_each_copy_and_is_fractured_once() {
     assert!((seconds - 3600.0 * expected).abs() < 1e-9 * seconds);
 }
 
+/// A writer of 62.5 ns a flash at dose 1 and 60 ns of settling, two passes, with this η at β = 10 µm.
+fn scatter(eta: &str) -> Profile {
+    let text = format!(
+        "name = \"scatter\"
+[writer]
+kind = \"shaped\"
+current_a_cm2 = 400
+settle_ns = 60
+passes = 2
+[process]
+sigma_nm = 12
+base_dose_uc_cm2 = 25
+backscatter = [{{ eta = {eta}, beta_nm = 10000 }}]
+"
+    );
+    Profile::parse(&text, "scatter").unwrap()
+}
+
 /// Mean density that ten by ten 200 nm squares at a pitch of 400 nm see of themselves at β = 10 µm with bare mask around: along each axis
 /// the mean over 3.8 µm of ½(erf(x/β) + erf((L − x)/β)) is erf(t) − (1 − e^(−t²))/(t·√π), t = L/β = 0.38.
 fn density_alone() -> f64 {
@@ -144,18 +162,7 @@ fn density_alone() -> f64 {
 
 #[test]
 fn backscatter_is_met_by_a_dose_that_shows_in_hours_and_margin() {
-    let text = "
-kind = \"shaped\"
-current_a_cm2 = 400
-settle_ns = 60
-passes = 2
-[process]
-sigma_nm = 12
-base_dose_uc_cm2 = 25
-backscatter = [{ eta = 0.6, beta_nm = 10000 }]
-";
-    let text = format!("name = \"scatter\"\nabout = \"test\"\n[writer]{text}");
-    let profile = Profile::parse(&text, "scatter").unwrap();
+    let profile = scatter("0.6");
     // 200 nm squares at a pitch of 400 nm: the extent is 3800 nm wide and 100 squares fill 0.27701 of it.
     let layout = squares(10, 10, [400.0, 0.0], [0.0, 400.0]);
     let (_, answer) = quoted(&layout, &terms(&profile));
@@ -399,19 +406,7 @@ fn stripes_are_beam_bound_or_stage_bound_by_what_lies_in_them() {
 /// D = (1 + η)/(1 + 2ηU) multiplies every flash (DESIGN 4.3): a ± on η is in the interval, and η is among what moves the total.
 #[test]
 fn a_backscatter_that_is_not_sure_makes_the_hours_unsure() {
-    let text = "
-name = \"scatter\"
-[writer]
-kind = \"shaped\"
-current_a_cm2 = 400
-settle_ns = 60
-passes = 2
-[process]
-sigma_nm = 12
-base_dose_uc_cm2 = 25
-backscatter = [{ eta = { value = 0.6, plus_minus = 0.1 }, beta_nm = 10000 }]
-";
-    let profile = Profile::parse(text, "scatter").unwrap();
+    let profile = scatter("{ value = 0.6, plus_minus = 0.1 }");
     let layout = squares(10, 10, [400.0, 0.0], [0.0, 400.0]);
     let (_, answer) = quoted(&layout, &terms(&profile));
     let hours = answer.quote.fractures.tile.as_ref().unwrap().hours.unwrap();

@@ -17,11 +17,13 @@ use crate::mask::MaskOptions;
 use crate::profile::{Number, Profile};
 use crate::quote::Terms;
 use crate::quote::result::{SampleUsed, Stopped};
+use crate::quote::sweep::Axis;
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::Field;
 
 use super::CliError;
 use super::args::{LayoutArgs, Overrides, open_profile};
+use super::axis::AxisArg;
 use super::output::file_error;
 use super::sampling::{Percent, SamplePlan};
 use super::values::{EffortArg, FieldMm, Levels, PeakDose, Positive, Share, Stray};
@@ -79,6 +81,10 @@ pub(super) struct JobArgs {
     #[arg(skip)]
     #[serde(skip_serializing)]
     threads: Option<u16>,
+    /// Numbers that a sweep changes, in job files; the flag is one of `sweep`.
+    #[arg(skip)]
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    over: Vec<AxisArg>,
     #[arg(skip)]
     #[serde(default)]
     clip: Vec<LayoutArgs>,
@@ -277,6 +283,7 @@ impl JobArgs {
             out: own.out.or(file.out),
             json: own.json.or(file.json),
             threads: file.threads,
+            over: file.over,
             clip: Vec::new(),
             numbers: None,
             profile: own.profile.or(file.profile),
@@ -385,6 +392,36 @@ impl Plan {
         }
     }
 
+    /// The numbers that a sweep changes: the flags, or where there are none what the file says.
+    pub(super) fn sweep_over(&mut self, flags: &[AxisArg]) -> Result<Vec<Axis>, CliError> {
+        if !flags.is_empty() {
+            self.job.over = flags.to_vec();
+        }
+        if self.job.over.is_empty() {
+            return Err(CliError::Arguments(
+                "no --over, expected a number and its values, as --over tolerance_nm=1.5,2,3, or `over` in the job file"
+                    .to_owned(),
+            ));
+        }
+        Ok(self
+            .job
+            .over
+            .iter()
+            .map(|AxisArg(axis)| axis.clone())
+            .collect())
+    }
+
+    /// Refuses a job that is a sweep.
+    pub(super) fn no_sweep(&self) -> Result<(), CliError> {
+        if self.job.over.is_empty() {
+            return Ok(());
+        }
+        Err(CliError::Arguments(
+            "the job file says `over`, which is for sweep: a quote has one value for every number"
+                .to_owned(),
+        ))
+    }
+
     /// The sample asked for; `None` to fracture every figure.
     pub(super) fn sampling(&self) -> Option<SamplePlan> {
         let job = &self.job;
@@ -432,8 +469,13 @@ impl Plan {
             place: "the resolved job".to_owned(),
             message: cause.to_string(),
         })?;
+        let command = if self.job.over.is_empty() {
+            "quote"
+        } else {
+            "sweep"
+        };
         Ok(format!(
-            "# A quote with every value spelled out: `shotwright quote job.toml --out DIR` gives the same bytes again.\n{text}"
+            "# A {command} with every value spelled out: `shotwright {command} job.toml --out DIR` gives the same bytes again.\n{text}"
         ))
     }
 }
@@ -492,31 +534,48 @@ fn seen_from(directory: &Path, path: &Path) -> PathBuf {
 mod tests {
     use std::collections::BTreeSet;
 
-    use clap::{Args as _, Command};
+    use clap::CommandFactory as _;
 
     use super::*;
 
-    /// Every flag of the quote is a key of the file, of a clip or of the numbers; nothing can be said in one way only.
+    /// What no key says, with the reason.
+    const NO_KEY: [(&str, &str); 2] = [
+        ("help", "asks for no result"),
+        ("version", "asks for no result"),
+    ];
+
+    /// Every flag of `quote` and `sweep`, those of all commands among them, is a key of the file, of a clip or of the numbers; nothing can
+    /// be said in one way only.
     #[test]
     fn all_that_a_flag_can_say_the_file_can_say() {
-        let keys = |error: toml::de::Error| -> BTreeSet<String> {
+        let keys = |text: &str| -> BTreeSet<String> {
+            let error = toml::from_str::<JobArgs>(text).unwrap_err();
             let message = error.message().to_owned();
             let expected = message.split_once("expected one of ").unwrap().1.to_owned();
             let names = expected.split(", ").map(|name| name.trim_matches('`'));
             names.map(str::to_owned).collect()
         };
-        let root = keys(toml::from_str::<JobArgs>("nothing = 1").unwrap_err());
-        let clip = "[[clip]]\nlayout = \"a\"\nnothing = 1";
-        let clip = keys(toml::from_str::<JobArgs>(clip).unwrap_err());
-        let flags = RequestArgs::augment_args(Command::new("quote"));
-        let mut seen = 0;
-        for flag in flags.get_arguments() {
-            let key = flag.get_id().as_str();
-            let number = crate::profile::Key::named(key).is_some();
-            assert!(root.contains(key) || clip.contains(key) || number, "{key}");
-            seen += 1;
+        let root = keys("nothing = 1");
+        let clip = keys("[[clip]]\nlayout = \"a\"\nnothing = 1");
+        let mut program = crate::cli::Cli::command();
+        program.build();
+        for command in ["quote", "sweep"] {
+            let command = program.find_subcommand(command).unwrap();
+            let mut seen = 0;
+            for flag in command.get_arguments() {
+                let id = flag.get_id().as_str();
+                if NO_KEY.iter().any(|(name, _)| *name == id) {
+                    continue;
+                }
+                // A key is the long flag itself, not what the code calls it.
+                let key = flag.get_long().unwrap_or(id).replace('-', "_");
+                let number = crate::profile::Key::named(&key).is_some();
+                let known = root.contains(&key) || clip.contains(&key) || number;
+                assert!(known, "{}: --{key}", command.get_name());
+                seen += 1;
+            }
+            assert!(seen > 40, "{seen}");
         }
-        assert!(seen > 40, "{seen}");
     }
 
     #[test]

@@ -1,6 +1,7 @@
 //! The command line: arguments checked into plans before any work, results on stdout, talk on stderr.
 
 mod args;
+mod axis;
 mod compare;
 mod correct;
 mod drawn;

@@ -59,6 +59,7 @@ const MOST_LINES: u128 = 1_000_000_000;
 
 pub(super) fn run(args: &QuoteArgs, threads: Option<u16>) -> Result<Outcome, CliError> {
     let plan = args.request.plan()?;
+    plan.no_sweep()?;
     start_threads(threads.or(plan.threads))?;
     let terms = plan.terms();
     let of_profile = |cause| CliError::Quote {

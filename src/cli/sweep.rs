@@ -1,21 +1,20 @@
 //! `shotwright sweep`: quotes under changed numbers.
 
 use std::io::Write;
-use std::str::FromStr;
 
 use clap::Args;
 
 use crate::quote::Chosen;
 use crate::quote::result::Method;
-use crate::quote::sweep::{self, Axis, Parameter};
+use crate::quote::sweep;
 use crate::report::progress::Progress;
 use crate::report::{sweep_csv, sweep_plot, sweep_text};
 
 use super::args::mask;
+use super::axis::AxisArg;
 use super::files::{Output, Sink};
 use super::job::RequestArgs;
 use super::output::{print, print_json};
-use super::values::Finite;
 use super::{CliError, Outcome, start_threads};
 
 /// Quote under changed numbers: hours against edge error.
@@ -34,65 +33,17 @@ It is an estimate. The mask shop's own calibrated model and its written acceptan
 pub(super) struct SweepArgs {
     #[command(flatten)]
     request: RequestArgs,
-    /// A number and its values, as KEY=V1,V2 or KEY=FROM:TO:HOW-MANY; repeat for several numbers.
-    #[arg(
-        long,
-        value_name = "KEY=VALUES",
-        required = true,
-        allow_negative_numbers = true
-    )]
+    /// A number and its values, as KEY=V1,V2 or KEY=FROM:TO:HOW-MANY; repeat for several numbers. In place of `over` of a job file.
+    #[arg(long, value_name = "KEY=VALUES", allow_negative_numbers = true)]
     over: Vec<AxisArg>,
 }
 
 /// More points are a slip of the hand.
 const MOST_POINTS: usize = 10_000;
 
-/// `tolerance_nm=1,2,3` or `tolerance_nm=1:3:3`.
-#[derive(Clone, Debug, PartialEq)]
-struct AxisArg(Axis);
-
-impl FromStr for AxisArg {
-    type Err = String;
-
-    fn from_str(text: &str) -> Result<Self, String> {
-        let form = "expected KEY=V1,V2 or KEY=FROM:TO:HOW-MANY, as tolerance_nm=1.5,2,3";
-        let (name, values) = text.split_once('=').ok_or(form)?;
-        let name = name.replace('-', "_");
-        let parameter = Parameter::named(&name)
-            .ok_or_else(|| format!("`{name}` is no number of a profile, nor tolerance_nm"))?;
-        let number = |text: &str| {
-            let number = text.trim().parse::<Finite>().map(|Finite(x)| x);
-            number.map_err(|_| form.to_owned())
-        };
-        let ends: Vec<&str> = values.split(':').collect();
-        let values = match ends[..] {
-            [from, to, many] => {
-                let (from, to) = (number(from)?, number(to)?);
-                let many: u16 = many.trim().parse().map_err(|_| form.to_owned())?;
-                if many < 2 {
-                    return Err(form.to_owned());
-                }
-                let share = |i: u16| f64::from(i) / f64::from(many - 1);
-                (0..many)
-                    .map(|i| from + (to - from) * share(i))
-                    .collect::<Vec<f64>>()
-            }
-            [_] => values.split(',').map(number).collect::<Result<_, _>>()?,
-            _ => return Err(form.to_owned()),
-        };
-        if parameter == Parameter::Tolerance
-            && let Some(wrong) = values.iter().find(|x| !(**x > 0.0 && **x <= 1000.0))
-        {
-            return Err(format!(
-                "`{name}` is {wrong}, expected a number over 0, up to 1000"
-            ));
-        }
-        Ok(Self(Axis { parameter, values }))
-    }
-}
-
 pub(super) fn run(args: &SweepArgs, threads: Option<u16>) -> Result<Outcome, CliError> {
-    let plan = args.request.plan()?;
+    let mut plan = args.request.plan()?;
+    let axes = plan.sweep_over(&args.over)?;
     if plan.sampling().is_some() {
         return Err(CliError::Arguments(
             "--within, --sample and --time-limit-min are for quote: a sweep fractures every figure"
@@ -100,7 +51,6 @@ pub(super) fn run(args: &SweepArgs, threads: Option<u16>) -> Result<Outcome, Cli
         ));
     }
     start_threads(threads.or(plan.threads))?;
-    let axes: Vec<Axis> = args.over.iter().map(|AxisArg(axis)| axis.clone()).collect();
     for (i, axis) in axes.iter().enumerate() {
         if axes[..i]
             .iter()
@@ -207,28 +157,5 @@ impl Files {
             json: output.sink("sweep.json")?,
             output,
         })
-    }
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn values_are_a_list_or_a_range() {
-        let values = |text: &str| AxisArg::from_str(text).map(|AxisArg(axis)| axis.values);
-        assert_eq!(values("tolerance-nm=1,2.5").unwrap(), [1.0, 2.5]);
-        assert_eq!(values("sigma_nm=10:20:3").unwrap(), [10.0, 15.0, 20.0]);
-        for wrong in [
-            "sigma_nm",
-            "sigma_nm=",
-            "sigma_nm=1:2",
-            "sigma_nm=1:2:1",
-            "sigma_nm=a",
-            "nobody=1",
-            "tolerance_nm=0",
-        ] {
-            assert!(values(wrong).is_err(), "{wrong}");
-        }
     }
 }

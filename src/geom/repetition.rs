@@ -86,6 +86,36 @@ impl Repetition {
         }
     }
 
+    /// Displacements no further than `deep` elements from either end of every array, each once; all of a list.
+    #[must_use]
+    pub fn ends(&self, deep: u64) -> Vec<Point> {
+        match self {
+            Self::Lattice {
+                columns,
+                rows,
+                a,
+                b,
+            } => {
+                let near = |count: u64| {
+                    let last = count.saturating_sub(deep).max(deep)..count;
+                    let ends = (0..count.min(deep)).chain(last);
+                    ends.map(|i| i64::try_from(i).unwrap_or(i64::MAX))
+                };
+                let times =
+                    |p: &Point, n: i64| Point::new(p.x.saturating_mul(n), p.y.saturating_mul(n));
+                let row = |j: i64| near(*columns).map(move |i| times(a, i) + times(b, j));
+                near(*rows).flat_map(row).collect()
+            }
+            Self::Nested(parts) => parts.iter().fold(vec![Point::default()], |sums, part| {
+                let ends = part.ends(deep);
+                sums.iter()
+                    .flat_map(|&sum| ends.iter().map(move |&by| sum + by))
+                    .collect()
+            }),
+            Self::Once | Self::List(_) => self.displacements().collect(),
+        }
+    }
+
     /// The least rectangle around all displacements; what lies beyond ±2⁶⁰ is put there.
     #[must_use]
     pub fn span(&self) -> Rect {
@@ -141,6 +171,8 @@ impl Repetition {
 
 #[cfg(test)]
 mod tests {
+    use std::collections::BTreeSet;
+
     use super::*;
 
     #[test]
@@ -164,6 +196,35 @@ mod tests {
                 Rect::around(repetition.displacements())
             );
         }
+    }
+
+    #[test]
+    fn the_ends_of_an_array_are_as_deep_as_asked_and_come_once() {
+        let lattice = |columns, rows| Repetition::Lattice {
+            columns,
+            rows,
+            a: Point::new(10, 0),
+            b: Point::new(0, 7),
+        };
+        for (columns, rows, deep, expected) in [
+            (1, 1, 3, 1),
+            (4, 1, 3, 4),
+            (7, 5, 3, 30),
+            (1000, 1000, 3, 36),
+            (1, 1, 1, 1),
+            (9, 1, 1, 2),
+            (9, 5, 1, 4),
+        ] {
+            let ends = lattice(columns, rows).ends(deep);
+            let distinct: BTreeSet<Point> = ends.iter().copied().collect();
+            assert_eq!((ends.len(), distinct.len()), (expected, expected));
+        }
+        let nested = Repetition::nested(vec![lattice(9, 1), lattice(1, 2)]);
+        assert_eq!(nested.ends(3).len(), 12);
+        assert_eq!(
+            lattice(9, 5).ends(1),
+            [(0, 0), (80, 0), (0, 28), (80, 28)].map(|(x, y)| Point::new(x, y))
+        );
     }
 
     #[test]

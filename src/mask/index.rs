@@ -8,6 +8,7 @@ use crate::geom::Rect;
 const FAN: usize = 16;
 
 /// A static tree over rectangles, packed by strips of x, then y (sort-tile-recursive: Leutenegger et al., ICDE 1997).
+#[derive(Clone, Debug)]
 pub(super) struct BoxIndex {
     /// Which rectangle each leaf is.
     order: Vec<usize>,

@@ -2,6 +2,7 @@
 
 use crate::geom::{Orientation, Point, Rect, Repetition, Transform};
 
+use super::index::BoxIndex;
 use super::repeat::{IndexRange, indices_in};
 use super::{Mask, Place};
 
@@ -9,6 +10,8 @@ use super::{Mask, Place};
 #[derive(Clone, Debug)]
 pub struct Standings<'a> {
     standings: Vec<Standing<'a>>,
+    /// Over their hulls.
+    index: BoxIndex,
 }
 
 #[derive(Clone, Debug)]
@@ -17,41 +20,43 @@ struct Standing<'a> {
     place: &'a Place,
     /// Of the figure without displacement, mask axes.
     bounds: Rect,
-    /// Around all displacements of it.
-    hull: Rect,
 }
 
 impl<'a> Standings<'a> {
     /// Of every figure of the mask.
     #[must_use]
     pub fn new(mask: &'a Mask) -> Self {
-        let mut standings = Vec::new();
+        let (mut standings, mut hulls) = (Vec::new(), Vec::new());
         for (figure, distinct) in mask.figures.iter().enumerate() {
             let own = distinct.figure.bounds();
-            standings.extend(distinct.places.iter().map(|place| {
+            for place in &distinct.places {
                 let (bounds, span) = (place.transform.apply_rect(own), place.repetition.span());
-                let hull = Rect {
+                hulls.push(Rect {
                     min: bounds.min + span.min,
                     max: bounds.max + span.max,
-                };
-                Standing {
+                });
+                standings.push(Standing {
                     figure,
                     place,
                     bounds,
-                    hull,
-                }
-            }));
+                });
+            }
         }
-        Self { standings }
+        let index = BoxIndex::new(&hulls);
+        Self { standings, index }
     }
 
     /// Every figure whose bounds touch the window, as its index and own frame → mask, in the order of the mask.
     ///
-    /// Cost: the places of the mask, and of arrays in arrays the elements of all but the innermost.
+    /// Cost: the repetitions whose hulls touch the window; of each list its length, of arrays in arrays the elements of all but the
+    /// innermost.
     #[must_use]
     pub fn touching(&self, window: Rect) -> Vec<(usize, Transform)> {
+        let mut near: Vec<usize> = Vec::new();
+        self.index.touching(window, |i| near.push(i));
+        near.sort_unstable();
         let mut found = Vec::new();
-        for standing in self.standings.iter().filter(|s| s.hull.touches(window)) {
+        for standing in near.into_iter().map(|i| &self.standings[i]) {
             let near = Rect {
                 min: window.min - standing.bounds.max,
                 max: window.max - standing.bounds.min,

@@ -2,9 +2,11 @@
 
 use std::sync::Arc;
 
+use rayon::prelude::*;
+
 use crate::blur::{CORNER_PULL_BACK, NARROWEST_LINE, NARROWEST_SQUARE, THRESHOLD};
 use crate::fracture::MissReason;
-use crate::geom::{Figure, Point, offset};
+use crate::geom::Point;
 use crate::mask::DistinctFigure;
 use crate::number::brief as number;
 use crate::target::Need;
@@ -15,6 +17,7 @@ use super::Clip;
 use super::made::{Made, MadeMask, Setup, Unmade, first_place};
 use super::result::{ByMethod, Flag, FlagKind, Method};
 use super::summary::beyond_limits;
+use super::width::widest_under;
 
 /// A figure costs more than its share if it takes over this many times the mask's median time per outline …
 const TIMES_MEDIAN: f64 = 3.0;
@@ -42,15 +45,9 @@ pub(super) struct Evidence<'a> {
 /// All flags: what cannot print first, what only costs last; within a kind the gravest first.
 pub(super) fn find(evidence: &Evidence<'_>) -> Vec<Flag> {
     let mut flags = costly(evidence);
-    for figure in subjects(evidence) {
-        flags.extend(figure.broken(evidence));
-        match figure.not_printable(evidence.setup) {
-            Some(flag) => flags.push(flag),
-            None => flags.extend(figure.tolerance(evidence)),
-        }
-        flags.extend(figure.limits(evidence));
-        flags.extend(figure.peak(evidence));
-    }
+    let subjects: Vec<Subject<'_>> = subjects(evidence).collect();
+    let found: Vec<Vec<Flag>> = subjects.par_iter().map(|s| s.all(evidence)).collect();
+    flags.extend(found.into_iter().flatten());
     let rank = |kind| match kind {
         FlagKind::BrokenOutline => 0,
         FlagKind::NotPrintableAtThisBlur => 1,
@@ -95,6 +92,19 @@ fn subjects<'a>(evidence: &Evidence<'a>) -> impl Iterator<Item = Subject<'a>> + 
 }
 
 impl Subject<'_> {
+    /// All but what needs the times of all figures.
+    fn all(&self, evidence: &Evidence<'_>) -> Vec<Flag> {
+        let narrow = self.not_printable(evidence.setup);
+        let print = narrow.or_else(|| self.tolerance(evidence));
+        let flags = [
+            self.broken(evidence),
+            print,
+            self.limits(evidence),
+            self.peak(evidence),
+        ];
+        flags.into_iter().flatten().collect()
+    }
+
     /// A flag at a place of the mask.
     fn flag(
         &self,
@@ -161,7 +171,7 @@ impl Subject<'_> {
             let unit = "nm greatest side";
             return Some(self.flag(self.corner(), kind, Some(longest), unit, remedy(square)));
         }
-        let width = widest_under(&self.distinct.figure, line)?;
+        let width = widest_under(&self.distinct.figure, line, setup.blur)?;
         Some(self.flag(
             self.corner(),
             kind,
@@ -290,27 +300,6 @@ fn off(dose: f64) -> f64 {
     (dose - THRESHOLD).abs()
 }
 
-/// Width of the widest part of a figure (twice its inner radius), if that is under `limit` nm; to 0.1 nm.
-fn widest_under(figure: &Figure, limit: f64) -> Option<f64> {
-    let vanishes = |width: f64| {
-        let half = (Nm(0.5 * width)).to_pm().unwrap_or_default();
-        offset(std::slice::from_ref(figure), -half).is_empty()
-    };
-    if !vanishes(limit) {
-        return None;
-    }
-    let (mut low, mut high) = (0.0, limit);
-    while high - low > 0.1 {
-        let middle = 0.5 * (low + high);
-        if vanishes(middle) {
-            high = middle;
-        } else {
-            low = middle;
-        }
-    }
-    Some(high)
-}
-
 /// Figures that take much more time per length of outline than the mask's median, in the recommended fracture.
 fn costly(evidence: &Evidence<'_>) -> Vec<Flag> {
     let Some(method) = evidence.recommended else {
@@ -362,18 +351,4 @@ fn costly(evidence: &Evidence<'_>) -> Vec<Flag> {
         )
     };
     rates.iter().filter(too_much).map(flag).collect()
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-    use crate::geom::Rect;
-
-    #[test]
-    fn the_widest_part_of_a_bar_is_its_width() {
-        let bar = |w| Figure::from_rect(Rect::new(Point::default(), Point::from_nm(300, w)));
-        let width = widest_under(&bar(12), 16.0).unwrap();
-        assert!((width - 12.0).abs() < 0.2, "{width}");
-        assert_eq!(widest_under(&bar(20), 16.0), None);
-    }
 }

@@ -92,15 +92,9 @@ impl Spread<'_> {
             });
         };
         let mean = |sum: f64| sum / self.total.flashes.max(1.0);
-        #[allow(
-            clippy::cast_possible_truncation,
-            clippy::cast_sign_loss,
-            reason = "a float to integer cast saturates, and sums are not negative"
-        )]
-        let shots = self.total.flashes.round() as u128;
         with(&Pattern::Counts {
             counts: Counts {
-                shots,
+                shots: Count::rounded(self.total.flashes).0,
                 mean_dose: Dose(mean(self.total.dose)),
                 mean_jump: Nm(mean(self.total.jump.0)),
                 mean_side: Nm(mean(self.total.side.0)),

@@ -3,8 +3,11 @@
 //! The only module that knows the order of the stages: a mask's distinct figures are fractured in three ways, each is judged
 //! on the dose that its shots and its neighbours' give, the shots are timed where they stand, and all is put side by side.
 
+mod clip;
 pub mod compare;
+mod error;
 pub mod exposure;
+mod figures;
 mod fingerprint;
 mod flags;
 pub mod hours;
@@ -19,243 +22,34 @@ pub mod shots;
 pub mod summary;
 pub mod sweep;
 mod tally;
+mod terms;
 mod uncertain;
 mod verdict;
+mod width;
 pub mod witness;
 
 use std::sync::Arc;
 
+pub use clip::{Chosen, Clip};
+pub use error::QuoteError;
 pub use hours::Correction;
 pub use kept::Kept;
 pub use made::{Made, MadeMask, Setup};
 pub use remedy::remedies;
 pub use result::Quote;
 pub use sampled::{Sampling, quote_sampled};
+pub use terms::{Terms, fracturer};
 
-use crate::blur::{Blur, BlurError, REACH};
-use crate::expose::{CorrectionError, DensityError};
-use crate::fracture::tile::{Staircase, Tile};
-use crate::fracture::{DoseLevels, overlap::Overlap};
-use crate::fracture::{Effort, Fracturer};
-use crate::geom::Rect;
 use crate::judge::{Background, Settings};
-use crate::layout::{Layer, Layout};
-use crate::mask::{self, Expose, Mask, MaskError, MaskOptions};
-use crate::profile::{Kind, Profile};
-use crate::units::{Dose, Hours, Nm, Seconds};
-use crate::write_time::{Field, WriteTimeError};
+use crate::mask::Mask;
+use crate::units::{Nm, Seconds};
 
 use exposure::{Exposed, LongRange, shot_errors};
 use hours::{Spread, Written};
 use result::{
-    ByMethod, CAUTION, DoseCorrection, FigureFracture, FigureResult, FlagKind, Fractures, Method,
-    ProfileUsed, ScaledToField, Source, StripeRow,
+    ByMethod, CAUTION, DoseCorrection, FigureResult, Fractures, Method, ProfileUsed, ScaledToField,
+    StripeRow,
 };
-
-/// Why there is no quote.
-#[derive(Clone, Debug, PartialEq, thiserror::Error)]
-pub enum QuoteError {
-    /// The writer flashes no shots.
-    #[error(
-        "profile {profile}: a raster writer flashes no shots, expected the profile of a shaped-beam writer"
-    )]
-    NoShots {
-        /// Its name.
-        profile: String,
-    },
-    /// Nothing is known of the blur.
-    #[error("profile {profile}: states no `sigma_nm`, expected the standard deviation of the blur")]
-    NoSigma {
-        /// Its name.
-        profile: String,
-    },
-    /// The blur is none.
-    #[error(transparent)]
-    Blur(#[from] BlurError),
-    /// No mask could be made of the layout.
-    #[error(transparent)]
-    Mask(#[from] MaskError),
-    /// Clips that neither stand for a field nor for themselves.
-    #[error(
-        "{clips} layouts, {shares} of them with a share, {}, expected one layout alone, or a field and a share of it for each",
-        if *.field { "a field" } else { "no field" }
-    )]
-    Shares {
-        /// How many there are.
-        clips: usize,
-        /// Of them, those with a share.
-        shares: usize,
-        /// Whether there is a field.
-        field: bool,
-    },
-    /// A raster line was asked for from the profile of another writer.
-    #[error("profile {profile}: flashes shots, expected the profile of a raster writer")]
-    NoRaster {
-        /// Its name.
-        profile: String,
-    },
-    /// The chosen layers hold no figure.
-    #[error("no figure of any area on the chosen layers, or none in the window")]
-    NoFigure,
-    /// The dose cannot be corrected.
-    #[error(transparent)]
-    Correction(#[from] CorrectionError),
-    /// No density map can be made.
-    #[error(transparent)]
-    Density(#[from] DensityError),
-    /// The writer model refuses the pattern.
-    #[error(transparent)]
-    WriteTime(#[from] WriteTimeError),
-}
-
-/// What is asked.
-#[derive(Clone, Copy, Debug)]
-pub struct Terms<'a> {
-    /// Writer and process.
-    pub profile: &'a Profile,
-    /// How far the contour may stray from the outline.
-    pub tolerance: Nm,
-    /// How far the plain staircase may stray from it.
-    pub within: Nm,
-    /// How hard to search.
-    pub effort: Effort,
-    /// The field that the clips stand for; `None` for one layout alone.
-    pub field: Option<Field>,
-    /// Hours the writer is booked for.
-    pub slot: Option<Hours>,
-    /// Greatest dose that may pile up anywhere, a multiple of dose-to-size.
-    pub peak_dose: Option<Dose>,
-    /// The raster multi-beam writer to compare with.
-    pub raster: Option<&'a Profile>,
-    /// Doses that a shot of the overlap fracture may have.
-    pub dose_levels: DoseLevels,
-}
-
-impl Terms<'_> {
-    /// What figures are fractured for under the profile.
-    ///
-    /// # Errors
-    /// When the profile is that of a raster writer, or states no blur or an impossible one.
-    pub fn setup(&self) -> Result<Setup, QuoteError> {
-        let profile = || self.profile.name().to_owned();
-        let limits = match self.profile.kind() {
-            Kind::Shaped => self.profile.shot_limits(),
-            Kind::Raster => None,
-        };
-        Ok(Setup {
-            limits: limits.ok_or_else(|| QuoteError::NoShots { profile: profile() })?,
-            blur: Blur::new(
-                self.profile
-                    .sigma()
-                    .ok_or_else(|| QuoteError::NoSigma { profile: profile() })?,
-            )?,
-            tolerance: self.tolerance,
-        })
-    }
-}
-
-/// Which part of which layout.
-#[derive(Clone, Copy, Debug)]
-pub struct Chosen<'a> {
-    /// File name as given.
-    pub name: &'a str,
-    /// What it holds.
-    pub layout: &'a Layout,
-    /// What of it is taken, and how it goes onto the mask; reach and address unit are those of the setup instead.
-    pub options: &'a MaskOptions,
-}
-
-impl Chosen<'_> {
-    /// The mask, with contexts as far as the blur reaches.
-    ///
-    /// # Errors
-    /// As [`mask::build`].
-    pub fn mask(&self, setup: &Setup) -> Result<Mask, MaskError> {
-        let mask = mask::build(
-            self.layout,
-            &MaskOptions {
-                reach: setup.blur.sigma() * REACH,
-                address: setup.limits.address,
-                ..self.options.clone()
-            },
-        )?;
-        mask.check_size()?;
-        Ok(mask)
-    }
-
-    fn source(&self, mask: &Mask, coverage: Option<f64>) -> Source {
-        let name = |layer: &Layer| format!("{}/{}", layer.layer, layer.datatype);
-        let options = self.options;
-        let layers = if options.layers.is_empty() {
-            let present = mask::layer_counts(self.layout).0;
-            let present = present.iter().map(|(layer, _)| layer);
-            let taken = present.filter(|layer| !options.minus.contains(layer));
-            taken.map(name).collect()
-        } else {
-            options.layers.iter().map(name).collect()
-        };
-        let corners = |rect: Rect| {
-            let ([x0, y0], [x1, y1]) = (rect.min.to_nm(), rect.max.to_nm());
-            [x0, y0, x1, y1]
-        };
-        Source {
-            name: self.name.to_owned(),
-            layers,
-            minus: options.minus.iter().map(name).collect(),
-            scale: options.scale,
-            mirror: options.mirror,
-            shift_nm: options.shift.to_nm(),
-            bias_nm: options.bias.0,
-            background_of_nm: match options.expose {
-                Expose::Figures => None,
-                Expose::Background { frame } => Some(corners(frame)),
-            },
-            window_nm: options.window.map(corners),
-            extent_nm: mask
-                .extent
-                .map(|extent| [extent.width(), extent.height()].map(|side| Nm::from_pm(side).0)),
-            coverage,
-            figures_distinct: mask.figures.len() as u64,
-            figures_placed: result::Count(mask.place_count()),
-        }
-    }
-}
-
-/// A layout of a quote with its mask.
-#[derive(Clone, Copy, Debug)]
-pub struct Clip<'a> {
-    /// What was taken of which layout.
-    pub chosen: Chosen<'a>,
-    /// Its mask.
-    pub mask: &'a Mask,
-    /// The share of the field that copies of it fill, over 0, up to 1; `None` if it stands for itself.
-    pub coverage: Option<f64>,
-}
-
-impl Clip<'_> {
-    /// How many copies of it a field holds, fractions too; 1 without a field.
-    fn copies_exactly(&self, field: Option<Field>) -> f64 {
-        let area = |width: Nm, height: Nm| width.0 * height.0;
-        let own = self.mask.extent.map_or(0.0, |extent| {
-            area(Nm::from_pm(extent.width()), Nm::from_pm(extent.height()))
-        });
-        let (Some(field), Some(coverage)) = (field, self.coverage) else {
-            return 1.0;
-        };
-        coverage * area(field.width, field.height) / own.max(1.0)
-    }
-
-    /// How many copies of it a field holds, at least one.
-    fn copies(&self, field: Option<Field>) -> u64 {
-        #[allow(
-            clippy::cast_possible_truncation,
-            clippy::cast_sign_loss,
-            reason = "a float to integer cast saturates"
-        )]
-        let copies = self.copies_exactly(field).round() as u64;
-        copies.max(1)
-    }
-}
 
 /// A quote with what it rests on.
 #[derive(Clone, Debug)]
@@ -389,21 +183,7 @@ fn exact(
             .map(AsRef::as_ref)
             .collect();
         let doses = long_range.expose_clips(clips, &lists)?;
-        let of_clips: Vec<summary::Part<'_>> = clips
-            .iter()
-            .zip(lists)
-            .zip(&doses)
-            .map(|((clip, made), exposed)| summary::Part {
-                figures: &clip.mask.figures,
-                made,
-                exposed,
-                weight: if clips.len() > 1 {
-                    clip.copies(terms.field)
-                } else {
-                    1
-                },
-            })
-            .collect();
+        let of_clips = summary::parts(clips, &lists, &doses, terms.field);
         let background = basis.settings.background;
         let mut summary = summary::of_parts(&of_clips, background, setup.limits.sliver);
         let written = Written::new(clips, &doses, terms.field);
@@ -482,24 +262,13 @@ fn finish(
             Some(Seconds::from_hours(beam.value))
         }),
     });
-    let mut figures = Vec::with_capacity(figures_distinct);
-    for (clip, of_clip) in (1..).zip(clips) {
-        let raised = |figure: usize| {
-            let here = |flag: &&result::Flag| flag.clip == clip && flag.figure == figure as u64;
-            flags.iter().filter(here).map(|flag| flag.kind).collect()
-        };
-        let numbers = 0..of_clip.mask.figures.len();
-        let at = usize::try_from(clip - 1).unwrap_or(usize::MAX);
-        figures.extend(numbers.map(|figure| {
-            let dose = |method| exposed.get(method)?.get(at)?.mean_dose(figure);
-            let found = (
-                &made[at],
-                &seconds[at],
-                &dose as &dyn Fn(Method) -> Option<Dose>,
-            );
-            figure_result((clip, of_clip.mask), figure, found, raised(figure))
-        }));
-    }
+    let figures = figures::results(&figures::Evidence {
+        clips,
+        made,
+        seconds: &seconds,
+        exposed: &exposed,
+        flags: &flags,
+    });
     let quote = Quote {
         sources: clips
             .iter()
@@ -537,6 +306,7 @@ fn finish(
         sample,
         remedies: Vec::new(),
         must_change: None,
+        must_change_unknown: None,
         caution: CAUTION.to_owned(),
     };
     Ok(Answer {
@@ -567,25 +337,6 @@ fn check(clips: &[Clip<'_>], terms: &Terms<'_>) -> Result<(), QuoteError> {
     Ok(())
 }
 
-/// The fracturer of a method.
-#[must_use]
-pub fn fracturer(method: Method, terms: &Terms<'_>) -> Box<dyn Fracturer> {
-    match method {
-        Method::Staircase => Box::new(Staircase {
-            within: terms.within,
-        }),
-        Method::Tile => Box::new(Tile {
-            effort: terms.effort,
-            ..Tile::default()
-        }),
-        Method::Overlap => Box::new(Overlap {
-            peak_dose: terms.peak_dose,
-            dose_levels: terms.dose_levels,
-            ..Overlap::with(terms.effort)
-        }),
-    }
-}
-
 fn notes(
     clips: &[Clip<'_>],
     terms: &Terms<'_>,
@@ -613,51 +364,4 @@ fn notes(
         );
     }
     notes
-}
-
-/// By method: the masks, the seconds of their figures, and the mean dose of the figure.
-type Evidence<'a> = (
-    &'a ByMethod<Arc<MadeMask>>,
-    &'a ByMethod<Vec<Option<f64>>>,
-    &'a dyn Fn(Method) -> Option<Dose>,
-);
-
-fn figure_result(
-    (clip, mask): (u64, &Mask),
-    figure: usize,
-    (made, seconds, dose): Evidence<'_>,
-    flags: Vec<FlagKind>,
-) -> FigureResult {
-    let distinct = &mask.figures[figure];
-    let mut fractures = ByMethod::default();
-    for method in Method::ALL {
-        let made = made.get(method).and_then(|all| all.get(figure));
-        let Some(Ok(made)) = made else { continue };
-        let scores = made.fidelity.summary();
-        *fractures.slot(method) = Some(FigureFracture {
-            shots: made.fracture.shots.len() as u64,
-            edge_error_nm: summary::edge_error(&scores),
-            prints_within_tolerance: Some(scores.prints_within_tolerance),
-            scores: Some(scores),
-            mean_dose: dose(method).map(|dose| dose.0),
-            seconds: seconds
-                .get(method)
-                .and_then(|all| all.get(figure).copied().flatten()),
-        });
-    }
-    let corner = made::first_place(distinct)
-        .apply_rect(distinct.figure.bounds())
-        .min;
-    FigureResult {
-        clip,
-        figure: figure as u64,
-        place_nm: corner.to_nm(),
-        fingerprint: fingerprint::of(&distinct.figure),
-        places: result::Count(distinct.place_count()),
-        outline_nm: distinct.figure.outline_nm(),
-        vertices: distinct.figure.vertices() as u64,
-        rectilinear: distinct.figure.is_rectilinear(),
-        fractures,
-        flags,
-    }
 }

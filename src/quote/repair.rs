@@ -228,56 +228,5 @@ fn elements(place: &Place) -> Vec<Transform> {
         shift: transform.shift + by,
         ..transform
     };
-    ends(&place.repetition).into_iter().map(moved).collect()
-}
-
-/// Displacements of a repetition, of arrays those near the ends.
-fn ends(repetition: &Repetition) -> Vec<Point> {
-    match repetition {
-        Repetition::Lattice {
-            columns,
-            rows,
-            a,
-            b,
-        } => {
-            let near = |count: u64| {
-                let ends = (0..count.min(RING)).chain(count.saturating_sub(RING).max(RING)..count);
-                ends.filter_map(|i| i64::try_from(i).ok())
-            };
-            near(*rows)
-                .flat_map(|j| {
-                    near(*columns).map(move |i| Point::new(i * a.x + j * b.x, i * a.y + j * b.y))
-                })
-                .collect()
-        }
-        Repetition::Nested(parts) => parts.iter().fold(vec![Point::default()], |sums, part| {
-            let ends = ends(part);
-            sums.iter()
-                .flat_map(|&sum| ends.iter().map(move |&by| sum + by))
-                .collect()
-        }),
-        Repetition::Once | Repetition::List(_) => repetition.displacements().collect(),
-    }
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn the_ends_of_an_array_are_three_deep_and_come_once() {
-        let lattice = |columns, rows| Repetition::Lattice {
-            columns,
-            rows,
-            a: Point::new(10, 0),
-            b: Point::new(0, 7),
-        };
-        for (columns, rows, expected) in [(1, 1, 1), (4, 1, 4), (7, 5, 30), (1000, 1000, 36)] {
-            let ends = ends(&lattice(columns, rows));
-            let distinct: BTreeSet<Point> = ends.iter().copied().collect();
-            assert_eq!((ends.len(), distinct.len()), (expected, expected));
-        }
-        let nested = Repetition::nested(vec![lattice(9, 1), lattice(1, 2)]);
-        assert_eq!(ends(&nested).len(), 12);
-    }
+    place.repetition.ends(RING).into_iter().map(moved).collect()
 }

@@ -4,9 +4,11 @@ use crate::judge::{self, Background, Fidelity};
 use crate::mask::DistinctFigure;
 use crate::shot::ShotList;
 use crate::units::Nm;
+use crate::write_time::Field;
 
+use super::Clip;
 use super::exposure::Exposed;
-use super::made::{Made, Unmade};
+use super::made::{Made, MadeMask, Unmade};
 use super::result::{Count, DoseMap, EdgeError, FractureSummary, Margin};
 
 /// The figures of one mask in one fracture.
@@ -20,6 +22,27 @@ pub struct Part<'a> {
     pub exposed: &'a Exposed<'a>,
     /// How often the mask counts in the scores against other parts.
     pub weight: u64,
+}
+
+/// The clips of one fracture; where there are several each counts in the scores as often as it stands in the field.
+pub(super) fn parts<'a>(
+    clips: &[Clip<'a>],
+    made: &[&'a MadeMask],
+    exposed: &'a [Exposed<'a>],
+    field: Option<Field>,
+) -> Vec<Part<'a>> {
+    let all = clips.iter().zip(made).zip(exposed);
+    all.map(|((clip, &made), exposed)| Part {
+        figures: &clip.mask.figures,
+        made,
+        exposed,
+        weight: if clips.len() > 1 {
+            clip.copies(field)
+        } else {
+            1
+        },
+    })
+    .collect()
 }
 
 /// Adds up the figures of one mask, each at all its places. Hours are left to be filled in.

@@ -73,14 +73,13 @@ impl Tally {
             reason = "a float to integer cast saturates"
         )]
         let whole = |sum: f64| sum.round() as u64;
-        let count = |sum: f64| Count(super::sampled::whole_count(sum));
         // A figure that fails is not rounded away.
         let failing = whole(self.failing.ceil());
         FractureSummary {
-            shots: count(self.shots),
+            shots: Count::rounded(self.shots),
             shots_distinct: whole(self.distinct),
             smallest_side_nm: self.smallest.map(|side| side.0),
-            slivers: count(self.slivers),
+            slivers: Count::rounded(self.slivers),
             prints_within_tolerance: Some(failing == 0),
             figures_out_of_tolerance: Some(failing),
             peak_dose: (self.shots > 0.0).then_some(self.peak),

@@ -76,6 +76,9 @@ pub fn text(quote: &Quote, options: TextOptions) -> String {
             out.paragraph(&line, indent);
         }
     }
+    if let Some(why) = &quote.must_change_unknown {
+        out.paragraph(&format!("What must change: {why}"), "");
+    }
     flags(quote, options.flags, &mut out);
     out.blank();
     for note in &quote.notes {

@@ -138,6 +138,7 @@ fn quote() -> Quote {
         sample: None,
         remedies: Vec::new(),
         must_change: None,
+        must_change_unknown: None,
         caution: CAUTION.to_owned(),
     }
 }

@@ -79,7 +79,7 @@ pub(crate) fn drawn(
 ) -> (Drawn<Member>, Vec<Total>) {
     let mut measure =
         |figures: &[usize]| Ok::<_, Infallible>(figures.iter().map(|&i| mask[i].0).collect());
-    let Ok(drawn) = draw(strata, stop, &mut measure, &COSTS);
+    let Ok(drawn) = draw(strata, stop, &mut measure, &COSTS, Drawn::none(strata));
     let weights = Weights::new(strata, &drawn.taken);
     let totals = COSTS
         .iter()
@@ -91,6 +91,7 @@ pub(crate) fn drawn(
 pub(crate) fn within(share: f64) -> Stop<'static> {
     Stop {
         within: Some(share),
+        more_than: 0,
         most: None,
         out_of_time: &|| false,
         at_once: 1000,
@@ -170,6 +171,7 @@ fn a_sample_is_repeated_by_its_number_whatever_stopped_it() {
     let (first, totals) = drawn(&mask, &strata, &within(0.03));
     let stop = |most, at_once| Stop {
         within: None,
+        more_than: 0,
         most: Some(most),
         out_of_time: &|| false,
         at_once,
@@ -183,6 +185,7 @@ fn a_sample_is_repeated_by_its_number_whatever_stopped_it() {
     let asked = std::cell::Cell::new(0);
     let late = Stop {
         within: None,
+        more_than: 0,
         most: None,
         out_of_time: &|| {
             asked.set(asked.get() + 1);
@@ -197,12 +200,48 @@ fn a_sample_is_repeated_by_its_number_whatever_stopped_it() {
     assert_eq!(known, same);
 }
 
+/// Drawing on beyond a first end goes the way of a drawing that never stopped there.
+#[test]
+fn a_drawing_is_taken_up_where_it_ended() {
+    let all = population();
+    let mask = mask(&all, 12, 4000, Places::Once);
+    let strata = strata(&mask);
+    let (first, totals) = drawn(&mask, &strata, &within(0.04));
+    let mut measure =
+        |figures: &[usize]| Ok::<_, Infallible>(figures.iter().map(|&i| mask[i].0).collect());
+    let stop = Stop {
+        more_than: first.costs.len(),
+        ..within(0.04)
+    };
+    let few = first.costs.len();
+    let Ok(on) = draw(&strata, &stop, &mut measure, &COSTS, first);
+    assert!(on.costs.len() > few && on.stopped == Stopped::Narrow);
+    let (direct, same) = drawn(
+        &mask,
+        &strata,
+        &Stop {
+            within: None,
+            most: Some(on.costs.len()),
+            ..within(0.04)
+        },
+    );
+    let numbers = |drawn: &Drawn<Member>| drawn.costs.iter().map(|(i, _)| *i).collect::<Vec<_>>();
+    assert_eq!(numbers(&on), numbers(&direct));
+    assert!(
+        totals
+            .iter()
+            .zip(&same)
+            .all(|(a, b)| b.half_width < a.half_width)
+    );
+}
+
 #[test]
 fn all_figures_give_the_exact_answer() {
     let all = population();
     let mask = mask(&all, 5, 500, Places::Pareto(1.0));
     let stop = Stop {
         within: Some(0.0),
+        more_than: 0,
         most: None,
         out_of_time: &|| false,
         at_once: 7,

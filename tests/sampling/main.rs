@@ -1,6 +1,8 @@
 //! The cost of many figures from the fracture of some: how often the interval covers the exact answer, and how soon it is narrow.
 
 mod coverage;
+#[path = "../common/flat.rs"]
+mod flat;
 #[path = "../fracture/kinds.rs"]
 mod kinds;
 #[path = "../common/meander.rs"]

@@ -10,7 +10,7 @@ use std::time::Instant;
 
 use shotwright::fracture::Effort;
 use shotwright::geom::{Point, Repetition};
-use shotwright::layout::{Cell, Layer, Layout, Shape};
+use shotwright::layout::{Layout, Shape};
 use shotwright::mask::{Mask, MaskOptions};
 use shotwright::profile::Profile;
 use shotwright::quote::result::{Method, Stopped};
@@ -18,27 +18,9 @@ use shotwright::quote::{self, Answer, Chosen, Clip, Sampling, Terms};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
 
+use crate::flat::{LAYER, flat};
 use crate::kinds::between;
 use crate::random::Random;
-
-const LAYER: Layer = Layer {
-    layer: 1,
-    datatype: 0,
-};
-
-fn flat(shapes: Vec<Shape>) -> Layout {
-    let cell = Cell {
-        name: "top".to_owned(),
-        shapes: shapes.into(),
-        placements: Vec::new(),
-    };
-    Layout {
-        unit: Nm(1.0),
-        cells: vec![cell],
-        notes: Vec::new(),
-        open_outlines: 0,
-    }
-}
 
 fn terms(profile: &Profile) -> Terms<'_> {
     Terms {
@@ -182,6 +164,81 @@ fn a_sampled_quote_covers_the_exact_one() {
         assert_eq!(threads(1), threads(4));
     });
 }
+
+/// Bars of 60 to 300 nm by 60 to 900 nm, each of its own size: one half of them close together, the other far apart.
+fn uneven(n: usize) -> Layout {
+    let mut random = Random(5);
+    let mut side = |low: f64, high: f64| between(&mut random, low, high).round() as i64;
+    let half = n / 2;
+    let columns = (half as f64).sqrt().ceil() as usize;
+    let shape = |i: usize| {
+        let (w, h) = (side(60.0, 300.0), side(60.0, 900.0));
+        let (column, row) = ((i % half % columns) as i64, (i % half / columns) as i64);
+        let (x, y) = if i < half {
+            (column * 400, row * 1000)
+        } else {
+            (60_000 + column * 4000, row * 5000)
+        };
+        let corners = [(0, 0), (w, 0), (w, h), (0, h)];
+        Shape {
+            layer: LAYER,
+            points: corners
+                .map(|(dx, dy)| Point {
+                    x: x + dx,
+                    y: y + dy,
+                })
+                .to_vec(),
+            repetition: Repetition::Once,
+        }
+    };
+    flat((0..2 * half).map(shape).collect())
+}
+
+/// The drawing goes by the dose of the mean coverage; what is said goes by the doses of places, a quarter apart here. It is as narrow as
+/// asked all the same, and covers the exact quote.
+#[test]
+fn the_interval_at_the_doses_of_places_is_as_narrow_as_asked_and_covers() {
+    let profile = Profile::builtin("shaped-400").unwrap();
+    let terms = terms(&profile);
+    with_mask(&uneven(300), &terms, |clips, _| {
+        let exact = quote::quote(clips, &terms, &|| ()).unwrap().quote;
+        let map = exact.fractures.tile.as_ref().unwrap().dose_map.unwrap();
+        assert!(map.greatest_dose > 1.15 * map.least_dose, "{map:?}");
+        let (mut covered, mut asked, mut drawn) = (0, 0, 0);
+        for seed in 0..SEEDS {
+            let sampling = Sampling {
+                seed,
+                ..sampling(Some(0.05), None)
+            };
+            let found = quote::quote_sampled(clips, &terms, &sampling, &|| ()).unwrap();
+            let sample = found.quote.sample.unwrap();
+            assert_eq!(sample.stopped, Stopped::NarrowEnough, "seed {seed}");
+            drawn += sample.figures_drawn;
+            for method in [Method::Tile, Method::Overlap] {
+                let exactly = exact.fractures.get(method).unwrap();
+                let hours = exactly.hours.unwrap();
+                for (estimate, exactly) in [
+                    (sample.shots.get(method).unwrap(), exactly.shots.0 as f64),
+                    (
+                        sample.beam_h.get(method).unwrap(),
+                        hours.flash_h + hours.settle_h,
+                    ),
+                ] {
+                    let half = 0.5 * (estimate.high - estimate.low) / estimate.value;
+                    assert!(half <= 0.05 + 1e-12, "seed {seed}, {method:?}: {half}");
+                    asked += 1;
+                    covered += u32::from((estimate.low..=estimate.high).contains(&exactly));
+                }
+            }
+        }
+        eprintln!("{covered} of {asked} intervals cover; {drawn} figures drawn in {SEEDS} samples");
+        // Of 40 independent intervals of 95 % at least 34 cover with a probability of 0.99; these go together in fours.
+        assert!(covered >= 34 && asked == 40, "{covered} of {asked}");
+    });
+}
+
+/// Samples of one mask: four intervals each, of which the two of a method go together.
+const SEEDS: u64 = 10;
 
 /// Blobs of 100 to 700 nm across, each its own, `pitch` nm apart.
 fn blobs(n: usize, pitch: f64) -> Layout {

@@ -19,6 +19,8 @@ const GROWTH: f64 = 0.25;
 pub struct Stop<'a> {
     /// Half width of every interval, as a share of the value.
     pub within: Option<f64>,
+    /// Figures that are known to be too few for that, whatever the intervals say.
+    pub more_than: usize,
     /// Figures at most; [`LEAST`] are drawn anyway.
     pub most: Option<usize>,
     /// Asked before each figure or few; true ends the drawing once a first number was drawn.
@@ -51,10 +53,22 @@ pub struct Drawn<C> {
     pub stopped: Stopped,
 }
 
+impl<C> Drawn<C> {
+    /// No figure yet.
+    #[must_use]
+    pub fn none(strata: &Strata) -> Self {
+        Self {
+            costs: Vec::new(),
+            taken: vec![0; strata.members.len()],
+            stopped: Stopped::All,
+        }
+    }
+}
+
 /// Gives the costs of some figures.
 pub type Measure<'a, C, E> = dyn FnMut(&[usize]) -> Result<Vec<C>, E> + 'a;
 
-/// Draws from the strata; `measure` gives the costs of some figures, `of` the numbers whose totals are asked for.
+/// Draws on from the strata; `measure` gives the costs of some figures, `of` the numbers whose totals are asked for.
 ///
 /// # Errors
 /// Those of `measure`.
@@ -63,12 +77,8 @@ pub fn draw<C, E>(
     stop: &Stop<'_>,
     measure: &mut Measure<'_, C, E>,
     of: &[&dyn Fn(&C) -> f64],
+    mut drawn: Drawn<C>,
 ) -> Result<Drawn<C>, E> {
-    let mut drawn = Drawn {
-        costs: Vec::new(),
-        taken: vec![0; strata.members.len()],
-        stopped: Stopped::All,
-    };
     let most = stop.most.unwrap_or(usize::MAX).max(LEAST).min(strata.len());
     let mut wanted: Vec<usize> = strata.members.iter().map(|m| m.len().min(FIRST)).collect();
     loop {
@@ -102,10 +112,8 @@ pub fn draw<C, E>(
             .iter()
             .map(|of| weights.total(&|i| costs.get(i).map_or(0.0, of)))
             .collect();
-        if stop
-            .within
-            .is_some_and(|within| totals.iter().all(|total| total.relative() <= within))
-        {
+        let narrow = |within| totals.iter().all(|total| total.relative() <= within);
+        if stop.within.is_some_and(narrow) && drawn.costs.len() > stop.more_than {
             drawn.stopped = Stopped::Narrow;
             return Ok(drawn);
         }
