@@ -1,6 +1,6 @@
 //! Density, its spread and the dose correction, against copies counted one by one, closed forms and a linear solve by numpy.
 
-use shotwright::expose::{Backscatter, Density, correct};
+use shotwright::expose::{Backscatter, Density, Folding, correct};
 use shotwright::geom::{Point, Rect, Repetition};
 use shotwright::units::{Dose, Nm};
 
@@ -246,4 +246,90 @@ fn threads_change_no_bit() {
         })
     };
     assert_eq!(run(1), run(3));
+}
+
+/// Long arrays beside short ones and single shots: where stretches are folded, coverage and dose are those of the map with all its cells. Steps that divide
+/// the mesh, as others beat with it in the whole map; the worst ratio that is taken, with and without coverage around.
+#[test]
+fn folded_stretches_have_the_dose_of_the_whole_map() {
+    let frame = rect(0, 0, 1_010_000, 853_000);
+    let figures = [
+        (
+            rect(0, 0, 900, 800),
+            lattice(400, 380, (1250, 0), (0, 1250)),
+        ),
+        (rect(0, 0, 40_000, 21_000), Repetition::Once),
+        (
+            rect(0, 0, 200, 300),
+            Repetition::nested(vec![
+                lattice(100, 7, (500, 0), (0, 500)),
+                lattice(6, 1, (50_000, 0), (0, 0)),
+            ]),
+        ),
+        (rect(0, 0, 300, 700), lattice(1, 600, (0, 0), (0, -1250))),
+    ];
+    let at = [
+        (100_000, 110_000),
+        (700_000, 640_000),
+        (440_000, 700_000),
+        (985_000, 800_000),
+    ];
+    let placed: Vec<_> = figures
+        .iter()
+        .zip(at)
+        .map(|((shot, repetition), (x, y))| (shot.translated(Point::from_nm(x, y)), repetition))
+        .collect();
+    for (terms, around) in [
+        (vec![term(0.6, 10_000.0)], 0.0),
+        (vec![term(0.5, 10_000.0), term(0.3, 3000.0)], 0.3),
+        (vec![term(3.0, 6000.0)], 0.0),
+    ] {
+        let greatest = terms.iter().map(|t| t.radius.0).fold(0.0, f64::max);
+        let mesh = Nm(2500.0);
+        let folding = Folding::new(frame, mesh, Nm(greatest), placed.iter().copied());
+        let mut whole = Density::new(frame, mesh, around).unwrap();
+        let mut folded = Density::folded(frame, mesh, around, folding).unwrap();
+        let ([columns, rows], all) = (folded.size(), whole.size());
+        assert!(
+            columns < all[0] && rows < all[1],
+            "{columns} × {rows} of {all:?}"
+        );
+        for (shot, repetition) in &placed {
+            for map in [&mut whole, &mut folded] {
+                map.add_repeated(&[(*shot, Dose(1.0))], repetition);
+            }
+        }
+        assert!((folded.mean() - whole.mean()).abs() < 1e-12);
+        let found = correct(&folded, &terms).unwrap();
+        let expected = correct(&whole, &terms).unwrap();
+        let mut worst = 0.0_f64;
+        for x in (0..=1010).step_by(7) {
+            for y in (0..=853).step_by(3) {
+                let p = [f64::from(x) * 1000.0, f64::from(y) * 1000.0];
+                worst = worst.max((found.dose.at(p) - expected.dose.at(p)).abs());
+            }
+        }
+        assert!(worst < 1e-6, "{terms:?}: doses differ by {worst:.2e}");
+        let window = rect(250_000, 250_000, 450_000, 400_000);
+        let even = [&found, &expected].map(|c| c.dose.even_in(window, 1e-3).unwrap());
+        assert!((even[0] - even[1]).abs() < 1e-6);
+    }
+}
+
+/// A mask whose arrays leave no stretch of one kind keeps all its cells, and steps beyond the radius are no array.
+#[test]
+fn only_long_even_stretches_are_folded() {
+    let frame = rect(0, 0, 2_000_000, 2_000_000);
+    let folding = |repetition: &Repetition| {
+        let shot = (rect(0, 0, 900, 900), repetition);
+        Folding::new(frame, Nm(2500.0), Nm(10_000.0), [shot].into_iter()).size()
+    };
+    assert_eq!(
+        folding(&lattice(150, 150, (13_000, 0), (0, 13_000))),
+        [800, 800]
+    );
+    let scattered = (0..2000).map(|i| Point::from_nm(i * 1000, (i * 7919) % 2000 * 1000));
+    assert_eq!(folding(&Repetition::List(scattered.collect())), [800, 800]);
+    let [columns, rows] = folding(&lattice(1999, 1, (1000, 0), (0, 0)));
+    assert!(columns < 200 && rows < 200);
 }

@@ -97,23 +97,21 @@ impl Density {
         let ((left, right), (low, high)) = (span(across), span(up));
         let from = group.bounds.min + at + Point::new(left, low) - self.origin;
         let to = group.bounds.max + at + Point::new(right, high) - self.origin;
-        let cell = |from: i64, to: i64, cells: usize| {
+        let cell = |from: i64, to: i64, axis: usize| {
             let (first, end) = (self.cells_along(from), self.cells_along(to));
-            let k = count(first);
-            (first >= 0.0 && k < cells && end <= first.floor() + 1.0).then_some(k)
+            let (k, next) = self.folds[axis].kept(count(first));
+            let within = first >= 0.0 && k < self.size()[axis] && end <= first.floor() + 1.0;
+            (within && next == k + 1).then_some(k)
         };
-        if let (Some(i), Some(j)) = (
-            cell(from.x, to.x, self.columns),
-            cell(from.y, to.y, self.rows),
-        ) {
+        if let (Some(i), Some(j)) = (cell(from.x, to.x, 0), cell(from.y, to.y, 1)) {
             let copies = |steps: &[Steps]| steps.iter().map(|s| s.0 as f64).product::<f64>();
             self.cells[j * self.columns + i] += group.share * copies(across) * copies(up);
             return;
         }
         for (rect, dose) in group.shots {
             let rect = rect.translated(at - self.origin);
-            let (i, widths) = self.profile(rect.min.x, rect.max.x, across, self.columns);
-            let (j, heights) = self.profile(rect.min.y, rect.max.y, up, self.rows);
+            let (i, widths) = self.profile(rect.min.x, rect.max.x, across, 0);
+            let (j, heights) = self.profile(rect.min.y, rect.max.y, up, 1);
             for (row, height) in (j..).zip(&heights) {
                 let height = dose.0 * height;
                 let cells = &mut self.cells[row * self.columns + i..];
@@ -130,7 +128,7 @@ impl Density {
     }
 
     /// How much of each cell all copies of `[from, to]` (pm from the origin) cover along one axis.
-    fn profile(&self, from: i64, to: i64, steps: &[Steps], cells: usize) -> Profile {
+    fn profile(&self, from: i64, to: i64, steps: &[Steps], axis: usize) -> Profile {
         let mut steps = steps.to_vec();
         steps.retain(|s| s.0 > 1);
         steps.sort_unstable();
@@ -158,19 +156,33 @@ impl Density {
             .collect();
         let low = runs.iter().map(|r| r.first).fold(f64::INFINITY, f64::min);
         let high = runs.iter().map(Run::end).fold(f64::NEG_INFINITY, f64::max);
-        let first = count(low).min(cells);
-        let end = count(high.ceil()).min(cells).max(first);
+        let (folds, cells) = (&self.folds[axis], self.size()[axis]);
+        let first_of = |at: f64| folds.kept(count(at)).0;
+        let end_of = |at: f64| {
+            count(at.ceil())
+                .checked_sub(1)
+                .map_or(0, |k| folds.kept(k).1)
+        };
+        let first = first_of(low).min(cells);
+        let end = end_of(high).min(cells).max(first);
         let mut widths = vec![0.0; end - first];
         for run in &runs {
-            let mut border = run.upto(first as f64);
-            let own = count(run.first).clamp(first, end)..count(run.end().ceil()).clamp(first, end);
-            if own.start > first {
-                border = Passed::default();
-            }
-            for k in own {
-                let next = run.upto(k as f64 + 1.0);
-                widths[k - first] +=
-                    (next.whole - border.whole) * run.width + (next.part - border.part);
+            let own = first_of(run.first).clamp(first, end)..end_of(run.end()).clamp(first, end);
+            let mut border = if own.start > first {
+                Passed::default()
+            } else {
+                run.upto(folds.stretch(first).0 as f64)
+            };
+            let mut k = own.start;
+            while k < own.end {
+                // All cells of a fold get the mean of what it covers.
+                let (start, whole) = folds.stretch(k);
+                let next = run.upto((start + whole) as f64);
+                let covered = (next.whole - border.whole) * run.width + (next.part - border.part);
+                for _ in 0..folds.kept(start).1 - k {
+                    widths[k - first] += covered / whole as f64;
+                    k += 1;
+                }
                 border = next;
             }
         }

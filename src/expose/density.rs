@@ -3,6 +3,7 @@
 use crate::geom::{Point, Rect};
 use crate::units::Nm;
 
+use super::fold::{Folding, Folds};
 use super::spread;
 
 /// Cells that a map may have: 2²⁸, 2 GiB.
@@ -48,6 +49,10 @@ pub struct Density {
     pub(super) rows: usize,
     pub(super) cells: Vec<f64>,
     pub(super) around: f64,
+    /// Width and height of the frame, in cells.
+    pub(super) extent: [f64; 2],
+    /// Across and up; none where every cell stands for itself.
+    pub(super) folds: [Folds; 2],
 }
 
 impl Density {
@@ -59,6 +64,20 @@ impl Density {
     /// # Errors
     /// A mesh or coverage that is none, or more than 2²⁸ cells.
     pub fn new(frame: Rect, mesh: Nm, around: f64) -> Result<Self, DensityError> {
+        Self::folded(frame, mesh, around, Folding::none(frame, mesh))
+    }
+
+    /// As [`Density::new`], with stretches folded: what is added there is spread evenly over their cells, and [`Density::at`] gives the value of the
+    /// middle of a fold anywhere deep inside it.
+    ///
+    /// # Errors
+    /// As [`Density::new`], of the cells that are left.
+    pub fn folded(
+        frame: Rect,
+        mesh: Nm,
+        around: f64,
+        folding: Folding,
+    ) -> Result<Self, DensityError> {
         if !(mesh.0 > 0.0 && mesh.0.is_finite()) {
             return Err(DensityError::Mesh { found: mesh });
         }
@@ -66,38 +85,52 @@ impl Density {
             return Err(DensityError::Surroundings { found: around });
         }
         let (width, height) = (Nm::from_pm(frame.width()), Nm::from_pm(frame.height()));
-        let (columns, rows) = (
-            (width / mesh).ceil().max(1.0),
-            (height / mesh).ceil().max(1.0),
-        );
-        if columns * rows > MOST_CELLS {
+        let [columns, rows] = folding.size;
+        #[allow(clippy::cast_precision_loss, reason = "far below 2^53")]
+        if columns as f64 * rows as f64 > MOST_CELLS {
             return Err(DensityError::TooLarge {
                 mesh,
                 width,
                 height,
             });
         }
-        let (columns, rows) = (super::dose::count(columns), super::dose::count(rows));
-        let mut cells = vec![0.0; columns * rows];
-        if around > 0.0 {
-            #[allow(
-                clippy::cast_precision_loss,
-                reason = "an index of memory is below 2^53"
-            )]
-            let within = |k: usize, length: Nm| (length / mesh - k as f64).clamp(0.0, 1.0);
-            for (k, cell) in cells.iter_mut().enumerate() {
-                let inside = within(k % columns, width) * within(k / columns, height);
-                *cell = around * (1.0 - inside);
-            }
-        }
-        Ok(Self {
+        let empty = Self {
             origin: frame.min,
             mesh: mesh.0,
             columns,
             rows,
-            cells,
+            cells: Vec::new(),
             around,
-        })
+            folds: folding.folds,
+            extent: [width / mesh, height / mesh],
+        };
+        Ok(empty.emptied())
+    }
+
+    /// The same mesh with nothing written within the frame.
+    #[must_use]
+    pub fn emptied(&self) -> Self {
+        let mut cells = vec![0.0; self.columns * self.rows];
+        if self.around > 0.0 {
+            let within = |axis: usize, kept: usize| {
+                // Folded cells lie within the frame whole.
+                let (start, whole) = self.folds[axis].stretch(kept);
+                #[allow(
+                    clippy::cast_precision_loss,
+                    reason = "an index of memory is below 2^53"
+                )]
+                let reach = self.extent[axis] - (start + whole - 1) as f64;
+                reach.clamp(0.0, 1.0)
+            };
+            for (k, cell) in cells.iter_mut().enumerate() {
+                let inside = within(0, k % self.columns) * within(1, k / self.columns);
+                *cell = self.around * (1.0 - inside);
+            }
+        }
+        Self {
+            cells,
+            ..self.bare()
+        }
     }
 
     /// Columns and rows.
@@ -112,14 +145,17 @@ impl Density {
         Nm(self.mesh)
     }
 
-    /// Middle of a cell, nm.
+    /// Middle of a cell, nm; of the stretch that it stands for in a fold.
     #[must_use]
     pub fn middle(&self, column: usize, row: usize) -> [f64; 2] {
         #[allow(
             clippy::cast_precision_loss,
             reason = "an index of memory is below 2^53"
         )]
-        let at = |k: usize, axis: usize| self.origin.to_nm()[axis] + (k as f64 + 0.5) * self.mesh;
+        let at = |k: usize, axis: usize| {
+            let (start, whole) = self.folds[axis].stretch(k);
+            self.origin.to_nm()[axis] + (start as f64 + 0.5 * whole as f64) * self.mesh
+        };
         [at(column, 0), at(row, 1)]
     }
 
@@ -135,12 +171,20 @@ impl Density {
         self.around
     }
 
-    /// Mean over all cells.
+    /// Mean over the mesh.
     #[must_use]
     pub fn mean(&self) -> f64 {
-        #[allow(clippy::cast_precision_loss, reason = "at most 2^28 cells")]
-        let cells = self.cells.len() as f64;
-        self.cells.iter().sum::<f64>() / cells
+        let [across, up] = &self.folds;
+        let weights: Vec<f64> = (0..self.columns).map(|k| across.weight(k)).collect();
+        let (mut sum, mut all) = (0.0, 0.0);
+        for (row, cells) in self.cells.chunks(self.columns).enumerate() {
+            let weight = up.weight(row);
+            for (cell, across) in cells.iter().zip(&weights) {
+                sum += cell * (weight * across);
+                all += weight * across;
+            }
+        }
+        sum / all
     }
 
     /// The value at a place (nm): linear between the middles of cells, constant beyond the outermost middles.
@@ -157,12 +201,21 @@ impl Density {
     }
 
     fn between(&self, from_origin: [f64; 2]) -> f64 {
+        self.among_cells([0, 1].map(|axis| self.place(from_origin, axis)))
+    }
+
+    /// A place (nm from the origin) along an axis, in kept cells.
+    fn place(&self, from_origin: [f64; 2], axis: usize) -> f64 {
+        self.folds[axis].place(from_origin[axis] / self.mesh)
+    }
+
+    fn among_cells(&self, at: [f64; 2]) -> f64 {
         let span = |axis: usize, cells: usize| {
             #[allow(
                 clippy::cast_precision_loss,
                 reason = "an index of memory is below 2^53"
             )]
-            let t = (from_origin[axis] / self.mesh - 0.5).clamp(0.0, (cells - 1) as f64);
+            let t = (at[axis] - 0.5).clamp(0.0, (cells - 1) as f64);
             let i = super::dose::count(t).min(cells.saturating_sub(2));
             #[allow(
                 clippy::cast_precision_loss,
@@ -185,21 +238,20 @@ impl Density {
     pub fn even_in(&self, window: Rect, share: f64) -> Option<f64> {
         let [from, to] = [window.min, window.max].map(|p| (p - self.origin).to_nm());
         let stops = |axis: usize, cells: usize| {
-            let index = |at: f64| super::dose::count((at / self.mesh - 0.5).ceil()).min(cells);
+            let ends = [from, to].map(|corner| self.place(corner, axis));
+            let index = |at: f64| super::dose::count((at - 0.5).ceil()).min(cells);
             #[allow(
                 clippy::cast_precision_loss,
                 reason = "an index of memory is below 2^53"
             )]
-            let middles =
-                (index(from[axis])..index(to[axis])).map(|k| (k as f64 + 0.5) * self.mesh);
-            let ends = [from[axis], to[axis]];
+            let middles = (index(ends[0])..index(ends[1])).map(|k| k as f64 + 0.5);
             ends.into_iter().chain(middles).collect::<Vec<f64>>()
         };
         let (across, up) = (stops(0, self.columns), stops(1, self.rows));
         let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
         for y in &up {
             for x in &across {
-                let value = self.between([*x, *y]);
+                let value = self.among_cells([*x, *y]);
                 (low, high) = (low.min(value), high.max(value));
                 if high - low > share * low {
                     return None;
@@ -267,6 +319,7 @@ impl Density {
     pub(super) fn bare(&self) -> Self {
         Self {
             cells: Vec::new(),
+            folds: self.folds.clone(),
             ..*self
         }
     }

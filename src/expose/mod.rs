@@ -6,6 +6,7 @@ mod correction;
 mod coverage;
 mod density;
 mod dose;
+mod fold;
 mod raster;
 mod spread;
 
@@ -16,4 +17,5 @@ pub use correction::{
 };
 pub use density::{Density, DensityError};
 pub use dose::Exposure;
+pub use fold::Folding;
 pub use raster::{Raster, RasterError};

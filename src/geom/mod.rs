@@ -4,6 +4,7 @@
 //! use (1 nm, 0.5, 0.25, 0.1, 0.05 nm …) is exact. No foreign point type leaves this module.
 
 mod boolean;
+mod copies;
 mod figure;
 mod offset;
 mod point;
@@ -14,6 +15,7 @@ pub(crate) mod spans;
 mod transform;
 
 pub use boolean::{intersect, merge, subtract, unite, wound};
+pub(crate) use copies::{Copies, Line};
 pub use figure::Figure;
 pub use offset::{offset, offset_mitred};
 pub use point::Point;

@@ -4,7 +4,7 @@
 //! other shot is flashed whole from the side that holds most of it, since neighbouring fields overlap by that much. So with a
 //! reach of the sliver limit no cut leaves a sliver; with less, the slivers that cuts leave are counted.
 
-use crate::geom::{Point, Rect, Repetition};
+use crate::geom::{Copies, Line, Rect};
 use crate::profile::{Key, Profile};
 use crate::units::{Area, Nm};
 
@@ -25,14 +25,6 @@ pub(super) struct Grid {
     pub(super) stripes: i64,
 }
 
-/// Copies at equal height: the first at `start`, the others `step` further right, `count` in all.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub(super) struct Run {
-    pub(super) start: Point,
-    pub(super) step: i64,
-    pub(super) count: u64,
-}
-
 /// What borders make of a shot: pieces, and how many of them are slivers though the shot is none.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub(super) struct Pieces<T> {
@@ -46,6 +38,40 @@ impl Pieces<f64> {
         all: 1.0,
         slivers: 0.0,
     };
+}
+
+/// The rows of sub-fields over which borders cut a side.
+struct Rows {
+    /// From where to where it reaches, pm.
+    side: (i64, i64),
+    /// Where the part of it ends within which borders cut, pm.
+    top: i64,
+    first: i64,
+    last: i64,
+}
+
+/// Rows gathered for one stripe before they are given to it.
+#[derive(Default)]
+struct Filled {
+    stripe: usize,
+    rows: u128,
+}
+
+impl Filled {
+    fn add(&mut self, stripe: usize, rows: u128, give: &mut impl FnMut(usize, u128)) {
+        if stripe != self.stripe {
+            self.flush(give);
+            self.stripe = stripe;
+        }
+        self.rows += rows;
+    }
+
+    fn flush(&mut self, give: &mut impl FnMut(usize, u128)) {
+        if self.rows > 0 {
+            give(self.stripe, self.rows);
+        }
+        self.rows = 0;
+    }
 }
 
 impl Grid {
@@ -108,14 +134,78 @@ impl Grid {
         u128::from(rows.unsigned_abs()) * u128::from(columns.unsigned_abs())
     }
 
-    /// Stripes that `rect` lies in, with its rows of sub-fields in each. What overhangs the frame is written in
-    /// the nearest stripe.
-    pub(super) fn rows(&self, rect: Rect) -> impl Iterator<Item = (i64, u128)> + use<> {
+    /// Pieces of all copies of `rect`. `give` gets each stripe with the pieces in it, a stripe more than once where copies come back to it;
+    /// what overhangs the frame is written in the nearest stripe.
+    pub(super) fn spread(
+        &self,
+        rect: Rect,
+        copies: &Copies<'_>,
+        mut give: impl FnMut(usize, u128),
+    ) -> Pieces<u128> {
+        let wide = rect.width().min(rect.height()) >= self.sliver;
+        let mut pieces: Pieces<u128> = Pieces::default();
+        for by in copies.rest() {
+            let rect = rect.translated(by);
+            // Copies above one another are cut by the same columns.
+            let columns = self.columns(rect, copies);
+            let mut filled = Filled::default();
+            copies.up(|start, line| {
+                let (mut low, mut left) = (rect.min.y + start, line.count);
+                while left > 0 {
+                    let rows = self.rows(low, low + rect.height());
+                    let alike = self.alike(&rows, line.step).min(left);
+                    let times = u128::from(alike);
+                    for (stripe, n) in self.by_stripe(&rows) {
+                        filled.add(stripe, times * n, &mut |stripe, rows| {
+                            give(stripe, rows * columns.all);
+                        });
+                        let all = columns.all.saturating_mul(times * n);
+                        pieces.all = pieces.all.saturating_add(all);
+                    }
+                    if wide {
+                        pieces.slivers += times * self.slivers(&rows, columns);
+                    }
+                    left -= alike;
+                    low += i64::try_from(alike)
+                        .unwrap_or(i64::MAX)
+                        .saturating_mul(line.step);
+                }
+            });
+            filled.flush(&mut |stripe, rows| give(stripe, rows * columns.all));
+        }
+        pieces
+    }
+
+    fn rows(&self, low: i64, high: i64) -> Rows {
+        let uncut = self.uncut(low, high);
+        let (first, last) = self.row_span(uncut.0, uncut.1);
+        Rows {
+            side: (low, high),
+            top: uncut.1,
+            first,
+            last,
+        }
+    }
+
+    /// How many copies of a side, each `step` above the one before, lie in the one row that the first lies in; 1 where a border cuts it.
+    fn alike(&self, rows: &Rows, step: i64) -> u64 {
         let per = self.rows_per_stripe;
-        let (low, high) = self.uncut(rect.min.y, rect.max.y);
-        let (first, last) = self.row_span(low, high);
+        if step == 0 || (rows.first == rows.last && rows.last == self.stripes * per - 1) {
+            return u64::MAX;
+        }
+        if rows.first != rows.last {
+            return 1;
+        }
+        let border = self.bottom + ((rows.last + 1) * self.stripe).div_euclid(per);
+        1 + ((border - rows.top) / step).unsigned_abs()
+    }
+
+    /// Stripes with the rows of sub-fields in each.
+    fn by_stripe(&self, rows: &Rows) -> impl Iterator<Item = (usize, u128)> + use<> {
+        let (per, first, last) = (self.rows_per_stripe, rows.first, rows.last);
         (first / per..=last / per).map(move |stripe| {
             let rows = last.min(stripe * per + per - 1) - first.max(stripe * per) + 1;
+            let stripe = usize::try_from(stripe).unwrap_or_default();
             (stripe, u128::from(rows.unsigned_abs()))
         })
     }
@@ -149,43 +239,48 @@ impl Grid {
         ]
     }
 
-    /// Columns of sub-fields over which all copies of `rect` in a run are cut, summed.
-    pub(super) fn columns(&self, rect: Rect, run: Run) -> Pieces<u128> {
+    /// Columns of sub-fields over which copies of `rect` are cut, summed over the lines across.
+    fn columns(&self, rect: Rect, copies: &Copies<'_>) -> Pieces<u128> {
         let (low, high) = self.uncut(rect.min.x, rect.max.x);
         let slim = self.slim(rect.min.x, rect.max.x);
-        Pieces {
-            all: self.borders(low, high, run) + u128::from(run.count),
-            slivers: slim.iter().map(|s| self.borders(s.0, s.1, run)).sum(),
-        }
+        let mut columns: Pieces<u128> = Pieces::default();
+        copies.across(|start, line| {
+            let borders = |low, high| self.borders(low + start, high + start, line);
+            columns.all += borders(low, high) + u128::from(line.count);
+            columns.slivers += slim.iter().map(|s| borders(s.0, s.1)).sum::<u128>();
+        });
+        columns
     }
 
-    /// Borders of columns strictly between two places, over all copies in a run.
-    fn borders(&self, low: i64, high: i64, run: Run) -> u128 {
+    /// Borders of columns strictly between two places, over all copies in a line.
+    fn borders(&self, low: i64, high: i64, line: Line) -> u128 {
         let Some(side) = self.column.filter(|_| high > low) else {
             return 0;
         };
-        let from = low + run.start.x - self.left;
-        let to = high + run.start.x - self.left - 1;
-        if run.count == 1 {
+        let from = low - self.left;
+        let to = high - self.left - 1;
+        if line.count == 1 {
             return u128::from((to.div_euclid(side) - from.div_euclid(side)).unsigned_abs());
         }
-        let cells = |x: i64| floor_sum(run.count, side, run.step, x);
+        let cells = |x: i64| floor_sum(line.count, side, line.step, x);
         (cells(to) - cells(from)).unsigned_abs()
     }
 
-    /// Slivers that borders make of all copies of `rect` in a run, which `columns` cut it into so many columns.
-    pub(super) fn slivers(&self, rect: Rect, run: Run, columns: Pieces<u128>) -> u128 {
-        if rect.width().min(rect.height()) < self.sliver {
-            return 0;
+    /// Slivers that borders make of the copies of a shot in these rows, which `columns` cut it into so many columns.
+    fn slivers(&self, rows: &Rows, columns: Pieces<u128>) -> u128 {
+        let cut = (rows.last - rows.first).unsigned_abs();
+        if cut == 0 {
+            return columns.slivers;
         }
-        let (bottom, top) = (rect.min.y + run.start.y, rect.max.y + run.start.y);
-        let borders = |(low, high): (i64, i64)| {
-            let (first, last) = self.row_span(low, high);
-            u128::from(if high > low { last - first } else { 0 }.unsigned_abs())
-        };
-        let rows = borders(self.uncut(bottom, top)) + 1;
-        let slim: u128 = self.slim(bottom, top).into_iter().map(borders).sum();
-        rows * columns.all - (rows - slim) * (columns.all - columns.slivers)
+        let slim = self.slim(rows.side.0, rows.side.1);
+        let slim: u64 = slim
+            .into_iter()
+            .filter(|(low, high)| high > low)
+            .map(|(low, high)| self.row_span(low, high))
+            .map(|(first, last)| (last - first).unsigned_abs())
+            .sum();
+        u128::from(cut + 1) * columns.all
+            - u128::from(cut + 1 - slim) * (columns.all - columns.slivers)
     }
 
     /// Cells that a rectangle of this size is cut into on average over all its positions.
@@ -213,54 +308,6 @@ impl Grid {
                 0.0
             },
         }
-    }
-}
-
-/// The copies of a repetition by rows of equal height. A lattice with neither side along x is taken copy by copy; of arrays in
-/// arrays, the innermost is taken by rows and the others copy by copy.
-pub(super) fn runs(repetition: &Repetition) -> Box<dyn Iterator<Item = Run> + '_> {
-    let alone = |start| Run {
-        start,
-        step: 0,
-        count: 1,
-    };
-    let rows = |along: Point, count: u64, across: Point, rows: u64| {
-        (0..rows).map(move |row| {
-            let row = i64::try_from(row).unwrap_or(i64::MAX);
-            Run {
-                start: Point::new(across.x.saturating_mul(row), across.y.saturating_mul(row)),
-                step: along.x,
-                count,
-            }
-        })
-    };
-    match *repetition {
-        Repetition::Nested(ref parts) => {
-            let Some((innermost, outer)) = parts.split_first() else {
-                return Box::new(std::iter::once(alone(Point::default())));
-            };
-            outer.iter().fold(runs(innermost), |runs, part| {
-                Box::new(runs.flat_map(move |run| {
-                    part.displacements().map(move |by| Run {
-                        start: run.start + by,
-                        ..run
-                    })
-                }))
-            })
-        }
-        Repetition::Lattice {
-            columns,
-            rows: count,
-            a,
-            b,
-        } if a.y == 0 || columns == 1 => Box::new(rows(a, columns, b, count)),
-        Repetition::Lattice {
-            columns,
-            rows: count,
-            a,
-            b,
-        } if b.y == 0 || count == 1 => Box::new(rows(b, count, a, columns)),
-        _ => Box::new(repetition.displacements().map(alone)),
     }
 }
 

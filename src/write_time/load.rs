@@ -1,12 +1,12 @@
 //! A pattern over the stripes of every pass: what each gets.
 
-use crate::geom::{Rect, Repetition};
+use crate::geom::{Copies, Rect};
 use crate::profile::{Key, Kind, Profile};
 use crate::units::{Area, Dose, Nm};
 
 use super::WriteTimeError;
 use super::flash::{Cuts, FlashLimits, Flashing, count};
-use super::grid::{Grid, Pieces, runs};
+use super::grid::{Grid, Pieces};
 use super::pattern::{Clip, Counts, Field, Pattern, Placed, check_frame, spacing};
 
 /// Most shots and flashes: beyond any mask, and exact in `u128` when multiplied by heights.
@@ -224,8 +224,13 @@ impl Load {
         for (times, grid) in Grid::of_passes(profile, frame) {
             let mut stripes = empty_stripes(&grid);
             for placed in placed {
+                let copies = Copies::new(placed.repetition);
                 for (rect, flashing) in placed.flashings(limits, spacing) {
-                    let pieces = spread(&grid, rect, placed.repetition, &flashing, &mut stripes);
+                    let pieces = grid.spread(rect, &copies, |stripe, pieces| {
+                        if let Some(stripe) = stripes.get_mut(stripe) {
+                            stripe.add(pieces, &flashing);
+                        }
+                    });
                     load.cuts
                         .add(times, placed.repetition.count(), pieces.all, &flashing);
                     let slivers = pieces.slivers.saturating_mul(u128::from(times));
@@ -310,35 +315,4 @@ pub(super) fn empty_stripes(grid: &Grid) -> Vec<StripeLoad> {
             ..StripeLoad::default()
         })
         .collect()
-}
-
-/// Gives every copy of a shot to the stripes it lies in, cut at sub-field borders; returns the pieces.
-fn spread(
-    grid: &Grid,
-    rect: Rect,
-    repetition: &Repetition,
-    flashing: &Flashing,
-    stripes: &mut [StripeLoad],
-) -> Pieces<u128> {
-    let mut pieces = Pieces::default();
-    // Rows of an upright lattice start at the same x, so their cuts are counted once.
-    let mut counted = None;
-    for run in runs(repetition) {
-        let columns = match counted {
-            Some((x, columns)) if x == run.start.x => columns,
-            _ => grid.columns(rect, run),
-        };
-        counted = Some((run.start.x, columns));
-        for (stripe, rows) in grid.rows(rect.translated(run.start)) {
-            if let Some(stripe) = usize::try_from(stripe)
-                .ok()
-                .and_then(|i| stripes.get_mut(i))
-            {
-                stripe.add(rows * columns.all, flashing);
-                pieces.all += rows * columns.all;
-            }
-        }
-        pieces.slivers += grid.slivers(rect, run, columns);
-    }
-    pieces
 }

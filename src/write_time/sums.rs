@@ -2,12 +2,12 @@
 
 use std::ops::{Add, Mul};
 
-use crate::geom::{Point, Rect, Repetition};
+use crate::geom::{Copies, Point, Rect, Repetition};
 use crate::profile::Profile;
 use crate::units::{Area, Nm, Seconds};
 
 use super::flash::{Cuts, FlashLimits, count};
-use super::grid::{Grid, runs};
+use super::grid::Grid;
 use super::load::{Load, PassLoad, StripeLoad, empty_stripes};
 use super::pattern::{Field, Placed, check_frame};
 use super::{Rates, WriteTimeError};
@@ -96,12 +96,13 @@ impl Sums {
         for placed in placed {
             placed.check()?;
             let places = placed.repetition.count() as f64;
+            let copies = Copies::new(placed.repetition);
             sums.shots += places * placed.shots.len() as f64;
             for (rect, flashing) in placed.flashings(&limits, spacing) {
                 let pieces = match borders {
                     Borders::Of(_) => {
                         let of = |(times, grid): &(u32, Grid)| {
-                            f64::from(*times) * pieces(grid, rect, placed.repetition) as f64
+                            f64::from(*times) * grid.spread(rect, &copies, |_, _| {}).all as f64
                         };
                         grids.iter().map(of).sum::<f64>() / passes
                     }
@@ -141,20 +142,6 @@ impl Sums {
     }
 }
 
-/// Pieces that all copies of a shot are cut into.
-fn pieces(grid: &Grid, rect: Rect, repetition: &Repetition) -> u128 {
-    runs(repetition)
-        .map(|run| {
-            let columns = grid.columns(rect, run);
-            let rows: u128 = grid
-                .rows(rect.translated(run.start))
-                .map(|(_, rows)| rows)
-                .sum();
-            rows.saturating_mul(columns.all)
-        })
-        .fold(0, u128::saturating_add)
-}
-
 impl Load {
     /// Every figure goes whole to the stripe that its middle lies in.
     pub(super) fn of_sums(
@@ -176,20 +163,16 @@ impl Load {
         for (times, grid) in Grid::of_passes(profile, frame) {
             let mut sums = vec![Sums::default(); usize::try_from(grid.stripes).unwrap_or_default()];
             for figure in figures {
-                for run in runs(figure.repetition) {
-                    let at = figure.at + run.start;
-                    let middle = Rect {
-                        min: at,
-                        max: Point::new(at.x + 1, at.y + 1),
-                    };
-                    let stripe = grid
-                        .rows(middle)
-                        .next()
-                        .map(|(stripe, _)| usize::try_from(stripe));
-                    if let Some(sum) = stripe.and_then(|i| sums.get_mut(i.ok()?)) {
-                        *sum = *sum + figure.sums * run.count as f64;
+                // A picometre of it, which no border cuts.
+                let middle = Rect {
+                    min: figure.at,
+                    max: Point::new(figure.at.x + 1, figure.at.y + 1),
+                };
+                grid.spread(middle, &Copies::new(figure.repetition), |stripe, copies| {
+                    if let Some(sum) = sums.get_mut(stripe) {
+                        *sum = *sum + figure.sums * copies as f64;
                     }
-                }
+                });
             }
             let mut stripes = empty_stripes(&grid);
             // Rounded so that the rounding of all stripes together stays under one flash.

@@ -182,6 +182,113 @@ impl Scene {
     }
 }
 
+/// What looking at copies one by one finds.
+#[derive(Debug, PartialEq)]
+struct Counted {
+    flashes: u128,
+    slivers: u128,
+    dose: f64,
+    /// Flashes of stripes that have any, in order of size.
+    by_stripe: Vec<u128>,
+}
+
+impl Scene {
+    fn counted(&self, copies: &[Point]) -> Counted {
+        let (mut flashes, mut slivers, mut dose) = (0, 0, 0.0);
+        let mut by_stripe = std::collections::BTreeMap::new();
+        for pass in 0..self.passes {
+            for (rect, shot_dose) in self.shots().rects() {
+                for &copy in copies {
+                    let rect = self.transform().apply_rect(rect).translated(copy);
+                    for (stripe, pieces, slim) in self.pieces(rect, pass) {
+                        slivers += slim;
+                        flashes += pieces;
+                        dose += pieces as f64 * shot_dose.0 * self.dose;
+                        *by_stripe.entry((pass, stripe)).or_insert(0) += pieces;
+                    }
+                }
+            }
+        }
+        let mut by_stripe: Vec<u128> = by_stripe.into_values().collect();
+        by_stripe.sort_unstable();
+        Counted {
+            flashes,
+            slivers,
+            dose,
+            by_stripe,
+        }
+    }
+}
+
+fn filled_stripes(time: &WriteTime) -> Vec<u128> {
+    let mut filled: Vec<u128> = time
+        .stripes
+        .iter()
+        .flat_map(|s| std::iter::repeat_n(s.flashes, s.count * usize::try_from(s.passes).unwrap()))
+        .filter(|&f| f > 0)
+        .collect();
+    filled.sort_unstable();
+    filled
+}
+
+/// Many copies to a sub-field, arrays in arrays, steps downward, copies beyond the frame: as looking at each copy finds.
+#[test]
+fn large_arrays_are_spread_as_their_copies_would_be() {
+    let lattice = |columns, rows, a: (i64, i64), b: (i64, i64)| Repetition::Lattice {
+        columns,
+        rows,
+        a: Point::from_nm(a.0, a.1),
+        b: Point::from_nm(b.0, b.1),
+    };
+    let arrays = [
+        lattice(7, 1500, (130, 0), (0, 29)),
+        lattice(900, 9, (0, -31), (170, 0)),
+        Repetition::nested(vec![
+            lattice(3, 40, (210, 0), (0, 17)),
+            lattice(2, 30, (2000, 0), (0, -701)),
+        ]),
+        lattice(6, 800, (110, 0), (3, 23)),
+        lattice(5, 700, (90, 4), (0, 27)),
+    ];
+    let (mut borders, mut slivers) = (0, 0);
+    for lattice in arrays {
+        for (reach, sliver) in [(0, 0), (0, 25), (20, 25), (400, 30)] {
+            let scene = Scene {
+                rects: vec![
+                    (0, 0, 40, 35, 1.0),
+                    (35, 20, 300, 90, 1.5),
+                    (0, 900, 45, 1100, 0.75),
+                ],
+                lattice: lattice.clone(),
+                orientation: 0,
+                dose: 1.0,
+                stripe: 9 * PM * PM,
+                rows: 3,
+                passes: 2,
+                shift: 0.25,
+                reach,
+                sliver,
+            };
+            let copies: Vec<_> = scene.lattice.displacements().collect();
+            let counted = scene.counted(&copies);
+            let time = scene.time(&scene.profile(), &scene.lattice);
+            let found = Counted {
+                flashes: time.flashes,
+                slivers: time.cuts.border_slivers,
+                by_stripe: filled_stripes(&time),
+                ..counted
+            };
+            assert_eq!(
+                found, counted,
+                "{lattice:?}, reach {reach}, sliver {sliver}"
+            );
+            borders += time.cuts.border;
+            slivers += time.cuts.border_slivers;
+        }
+    }
+    assert!(borders > 0 && slivers > 0);
+}
+
 fn near(a: f64, b: f64) -> bool {
     (a - b).abs() <= 1e-9 * a.abs().max(b.abs()).max(1e-12)
 }
@@ -195,21 +302,7 @@ proptest! {
         let copies: Vec<_> = scene.lattice.displacements().collect();
         let shots = scene.shots();
         let stripes: usize = time.stripes.iter().map(|s| s.count * usize::try_from(s.passes).unwrap()).sum();
-        let (mut flashes, mut slivers, mut dose) = (0, 0, 0.0);
-        let mut by_stripe = std::collections::BTreeMap::new();
-        for pass in 0..scene.passes {
-            for (rect, shot_dose) in shots.rects() {
-                for &copy in &copies {
-                    let rect = scene.transform().apply_rect(rect).translated(copy);
-                    for (stripe, pieces, slim) in scene.pieces(rect, pass) {
-                        slivers += slim;
-                        flashes += pieces;
-                        dose += pieces as f64 * shot_dose.0 * scene.dose;
-                        *by_stripe.entry((pass, stripe)).or_insert(0) += pieces;
-                    }
-                }
-            }
-        }
+        let Counted { flashes, slivers, dose, by_stripe } = scene.counted(&copies);
         prop_assert_eq!(time.flashes, flashes);
         // 25 µC/cm² at 400 A/cm²: 62.5 ns (CHECKS 5), shared among the passes.
         prop_assert!(near(time.flash_h.0 * 3600.0, dose * 62.5e-9 / f64::from(scene.passes)));
@@ -220,15 +313,7 @@ proptest! {
             prop_assert_eq!(slivers, 0);
         }
 
-        // Stripe by stripe: the multiset of non-empty stripes is the same.
-        let mut found: Vec<u128> = time.stripes.iter()
-            .flat_map(|s| std::iter::repeat_n(s.flashes, s.count * usize::try_from(s.passes).unwrap()))
-            .filter(|&f| f > 0)
-            .collect();
-        let mut counted: Vec<u128> = by_stripe.into_values().collect();
-        found.sort_unstable();
-        counted.sort_unstable();
-        prop_assert_eq!(found, counted);
+        prop_assert_eq!(filled_stripes(&time), by_stripe);
 
         // And one by one through the crate: the same hours.
         let listed = scene.time(&profile, &Repetition::List(copies));

@@ -4,7 +4,6 @@ use std::borrow::Cow;
 
 use crate::expose::{self, Density};
 use crate::geom::Rect;
-use crate::quote::QuoteError;
 use crate::quote::result::DoseMap;
 use crate::units::Dose;
 
@@ -57,19 +56,14 @@ impl Seen<'_> {
 
 impl LongRange {
     /// Of placed shots at the doses they were given; `coverage` and `found` are what these came from.
-    ///
-    /// # Errors
-    /// When no map can be made.
     pub(super) fn summary(
         &self,
-        frame: Rect,
         coverage: &Density,
         found: &expose::Correction,
         portions: &[Option<Vec<Portion<'_>>>],
-    ) -> Result<DoseMap, QuoteError> {
+    ) -> DoseMap {
         // Beyond the frame, and in what cells reach beyond it, stands what the correction took there.
-        let mut written =
-            Density::new(frame, coverage.mesh(), coverage.around())?.times(&found.dose);
+        let mut written = coverage.emptied().times(&found.dose);
         let all = || portions.iter().flatten().flatten();
         for portion in all() {
             let placed: Vec<(Rect, Dose)> = portion
@@ -96,7 +90,7 @@ impl LongRange {
             plain += copies * area * portion.dose.0 / portion.mean.0;
         }
         let [low, high] = found.uncorrected_where_written(coverage);
-        Ok(DoseMap {
+        DoseMap {
             mesh_nm: coverage.mesh().0,
             wanted_mesh_nm: self.wanted_mesh().map_or(f64::INFINITY, |mesh| mesh.0),
             surroundings: coverage.around(),
@@ -106,6 +100,6 @@ impl LongRange {
             uncorrected_level: [low, high],
             level_error: seen.error,
             rounds: found.rounds,
-        })
+        }
     }
 }

@@ -10,7 +10,7 @@ use std::borrow::Cow;
 
 use rayon::prelude::*;
 
-use crate::expose::{self, Backscatter, Density};
+use crate::expose::{self, Backscatter, Density, Folding};
 use crate::geom::{Point, Rect, Repetition, Transform};
 use crate::judge::{Background, Fidelity};
 use crate::mask::{DistinctFigure, Mask, Place};
@@ -57,12 +57,6 @@ pub struct Maps {
     /// The correction.
     pub found: expose::Correction,
 }
-
-/// An empty mask.
-const NOWHERE: Rect = Rect {
-    min: Point { x: 0, y: 0 },
-    max: Point { x: 0, y: 0 },
-};
 
 /// The doses of one fracture of a mask.
 #[derive(Clone, Debug)]
@@ -111,6 +105,35 @@ impl LongRange {
         let (a, b, c) = (w * h, w + h, 1.0 - MOST_CELLS);
         let inverse = (-b + (b * b - 4.0 * a * c).sqrt()) / (2.0 * a);
         Some(Nm(fine.max(1.0 / inverse)))
+    }
+
+    /// An empty map of a mask, with long stretches of arrays folded: with the wanted mesh if it then has few enough cells.
+    fn folded_map(&self, mask: &Mask, around: f64) -> Result<Option<Density>, QuoteError> {
+        let meshes = mask
+            .extent
+            .and_then(|frame| Some((frame, self.wanted_mesh()?, self.mesh(frame)?)));
+        let Some((frame, wanted, affordable)) = meshes else {
+            return Ok(None);
+        };
+        let reach = self
+            .terms
+            .iter()
+            .map(|term| term.radius.0)
+            .fold(0.0, f64::max);
+        let places = mask.figures.iter().flat_map(|figure| {
+            let bounds = figure.figure.bounds();
+            let places = figure.places.iter();
+            places.map(move |p| (p.transform.apply_rect(bounds), &p.repetition))
+        });
+        let folding = |mesh| Folding::new(frame, mesh, Nm(reach), places.clone());
+        let fine = folding(wanted);
+        let [columns, rows] = fine.size().map(|n| n as f64);
+        let (mesh, folding) = if columns * rows <= MOST_CELLS {
+            (wanted, fine)
+        } else {
+            (affordable, folding(affordable))
+        };
+        Ok(Some(Density::folded(frame, mesh, around, folding)?))
     }
 
     /// The doses of one fracture of all clips. Around a clip that stands for part of a field lies the mean of the field, around a
@@ -170,7 +193,9 @@ impl LongRange {
         shots: &[Option<&'a ShotList>],
         surroundings: f64,
     ) -> Result<Exposed<'a>, QuoteError> {
-        let Some(Maps { coverage, found }) = self.maps(mask, shots, surroundings)? else {
+        let around = surroundings.clamp(0.0, 1.0);
+        let map = self.folded_map(mask, around)?;
+        let Some(Maps { coverage, found }) = self.maps_on(map, mask, shots)? else {
             return Ok(Exposed::of_shots(mask, shots));
         };
         let split = |(figure, shots): (&'a DistinctFigure, &Option<&'a ShotList>)| {
@@ -184,8 +209,7 @@ impl LongRange {
         };
         let portions: Vec<Option<Vec<Portion<'a>>>> =
             mask.figures.par_iter().zip(shots).map(split).collect();
-        let frame = mask.extent.unwrap_or(NOWHERE);
-        let map = self.summary(frame, &coverage, &found, &portions)?;
+        let map = self.summary(&coverage, &found, &portions);
         Ok(Exposed {
             portions,
             map: Some(map),
@@ -206,10 +230,20 @@ impl LongRange {
         let mesh = mask
             .extent
             .and_then(|frame| Some((frame, self.mesh(frame)?)));
-        let Some((frame, mesh)) = mesh else {
+        let around = surroundings.clamp(0.0, 1.0);
+        let map = mesh.map(|(frame, mesh)| Density::new(frame, mesh, around));
+        self.maps_on(map.transpose()?, mask, shots)
+    }
+
+    fn maps_on(
+        &self,
+        map: Option<Density>,
+        mask: &Mask,
+        shots: &[Option<&ShotList>],
+    ) -> Result<Option<Maps>, QuoteError> {
+        let Some(mut coverage) = map else {
             return Ok(None);
         };
-        let mut coverage = Density::new(frame, mesh, surroundings.clamp(0.0, 1.0))?;
         for (figure, shots) in mask.figures.iter().zip(shots) {
             let Some(shots) = shots else { continue };
             for place in &figure.places {
