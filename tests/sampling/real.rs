@@ -198,7 +198,21 @@ fn uneven(n: usize) -> Layout {
 /// asked all the same, and covers the exact quote.
 #[test]
 fn the_interval_at_the_doses_of_places_is_as_narrow_as_asked_and_covers() {
-    let profile = Profile::builtin("shaped-400").unwrap();
+    // A backscatter that reaches no further than a few figures: their doses differ by how close they stand.
+    let text = "
+name = \"near\"
+[writer]
+kind = \"shaped\"
+current_a_cm2 = 400
+settle_ns = 60
+passes = 2
+greatest_side_nm = 300
+[process]
+sigma_nm = 14
+base_dose_uc_cm2 = 25
+backscatter = [{ eta = 0.6, beta_nm = 1500 }]
+";
+    let profile = Profile::parse(text, "near").unwrap();
     let terms = terms(&profile);
     with_mask(&uneven(300), &terms, |clips, _| {
         let exact = quote::quote(clips, &terms, &|| ()).unwrap().quote;
@@ -208,7 +222,7 @@ fn the_interval_at_the_doses_of_places_is_as_narrow_as_asked_and_covers() {
         for seed in 0..SEEDS {
             let sampling = Sampling {
                 seed,
-                ..sampling(Some(0.05), None)
+                ..sampling(Some(0.015), None)
             };
             let found = quote::quote_sampled(clips, &terms, &sampling, &|| ()).unwrap();
             let sample = found.quote.sample.unwrap();
@@ -225,7 +239,7 @@ fn the_interval_at_the_doses_of_places_is_as_narrow_as_asked_and_covers() {
                     ),
                 ] {
                     let half = 0.5 * (estimate.high - estimate.low) / estimate.value;
-                    assert!(half <= 0.05 + 1e-12, "seed {seed}, {method:?}: {half}");
+                    assert!(half <= 0.015 + 1e-12, "seed {seed}, {method:?}: {half}");
                     asked += 1;
                     covered += u32::from((estimate.low..=estimate.high).contains(&exactly));
                 }
