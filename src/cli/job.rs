@@ -15,9 +15,9 @@ use serde::{Deserialize, Serialize, Serializer};
 use crate::layout::Layout;
 use crate::mask::MaskOptions;
 use crate::profile::{Number, Profile};
-use crate::quote::Terms;
 use crate::quote::result::{SampleUsed, Stopped};
 use crate::quote::sweep::Axis;
+use crate::quote::{Chosen, Terms};
 use crate::units::{Dose, Hours, Nm};
 use crate::write_time::Field;
 
@@ -481,6 +481,15 @@ impl Plan {
 }
 
 impl PlannedClip {
+    /// Of what was read from it, the part that is wanted.
+    pub(super) fn chosen<'a>(&'a self, layout: &'a Layout) -> Chosen<'a> {
+        Chosen {
+            name: &self.name,
+            layout,
+            options: &self.options,
+        }
+    }
+
     /// Reads it, if its bytes are those that were sealed.
     pub(super) fn open(&self) -> Result<Layout, CliError> {
         if let Some(sealed) = self.args.crc32 {

@@ -80,11 +80,7 @@ pub(super) fn run(args: &QuoteArgs, threads: Option<u16>) -> Result<Outcome, Cli
         .clips
         .iter()
         .zip(&layouts)
-        .map(|(clip, layout)| Chosen {
-            name: &clip.name,
-            layout,
-            options: &clip.options,
-        })
+        .map(|(clip, layout)| clip.chosen(layout))
         .collect();
     let masks = chosen
         .iter()

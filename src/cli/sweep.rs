@@ -89,14 +89,7 @@ pub(super) fn run(args: &SweepArgs, threads: Option<u16>) -> Result<Outcome, Cli
         .clips
         .iter()
         .zip(&layouts)
-        .map(|(clip, layout)| {
-            let chosen = Chosen {
-                name: &clip.name,
-                layout,
-                options: &clip.options,
-            };
-            (chosen, clip.coverage)
-        })
+        .map(|(clip, layout)| (clip.chosen(layout), clip.coverage))
         .collect();
     let mut figures = 0;
     for (chosen, _) in &chosen {

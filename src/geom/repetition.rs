@@ -42,6 +42,32 @@ impl Repetition {
         }
     }
 
+    /// `i·a + j·b` for `0 ≤ i < columns`, `0 ≤ j < rows`, written the shortest way: counts of one are dropped with their steps.
+    #[must_use]
+    pub fn lattice(columns: u64, rows: u64, a: Point, b: Point) -> Self {
+        match (columns, rows) {
+            (0 | 1, 0 | 1) => Self::Once,
+            (_, 0 | 1) => Self::Lattice {
+                columns,
+                rows: 1,
+                a,
+                b: Point::default(),
+            },
+            (0 | 1, _) => Self::Lattice {
+                columns: rows,
+                rows: 1,
+                a: b,
+                b: Point::default(),
+            },
+            _ => Self::Lattice {
+                columns,
+                rows,
+                a,
+                b,
+            },
+        }
+    }
+
     /// At how many places; `u128::MAX` stands for that many or more.
     #[must_use]
     pub fn count(&self) -> u128 {

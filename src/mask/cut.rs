@@ -4,7 +4,7 @@ use crate::geom::{Point, Rect, Repetition, Transform};
 
 use super::cells::Item;
 use super::index::BoxIndex;
-use super::repeat::{IndexRange, add_spans, indices_in, lattice, span, window};
+use super::repeat::{IndexRange, add_spans, indices_in, span, window};
 use super::{MAX_PARTS, MaskError};
 
 pub(super) fn last(n: u64) -> i64 {
@@ -127,7 +127,7 @@ pub(super) fn cut(
         blocks = kept;
     }
     for block in blocks {
-        let outer = lattice(size(block.columns), size(block.rows), a, b);
+        let outer = Repetition::lattice(size(block.columns), size(block.rows), a, b);
         parts.push(shifted(
             item,
             displacement(block.columns.0, block.rows.0),

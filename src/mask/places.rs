@@ -4,7 +4,6 @@ use std::collections::BTreeMap;
 
 use crate::geom::{Orientation, Point, Repetition, Transform};
 
-use super::repeat::lattice;
 use super::resolve::Resolved;
 use super::{MAX_PARTS, MaskError, Place};
 
@@ -161,7 +160,7 @@ fn split(repetition: &Repetition, address: i64) -> Vec<(Point, Repetition)> {
             starts(every_b, rows)
                 .flat_map(|j| starts(every_a, columns).map(move |i| (i, j)))
                 .map(|(i, j)| {
-                    let part = lattice(
+                    let part = Repetition::lattice(
                         count(columns, i, every_a),
                         count(rows, j, every_b),
                         Point::new(a.x * every_a, a.y * every_a),

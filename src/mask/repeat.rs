@@ -175,28 +175,3 @@ pub(super) fn interacts_with_itself(part: Rect, repetition: &Repetition, reach: 
         Repetition::Nested(_) => true,
     }
 }
-
-/// A lattice of displacements, written the shortest way: counts of one are dropped.
-pub(super) fn lattice(columns: u64, rows: u64, a: Point, b: Point) -> Repetition {
-    match (columns, rows) {
-        (0 | 1, 0 | 1) => Repetition::Once,
-        (_, 0 | 1) => Repetition::Lattice {
-            columns,
-            rows: 1,
-            a,
-            b: Point::default(),
-        },
-        (0 | 1, _) => Repetition::Lattice {
-            columns: rows,
-            rows: 1,
-            a: b,
-            b: Point::default(),
-        },
-        _ => Repetition::Lattice {
-            columns,
-            rows,
-            a,
-            b,
-        },
-    }
-}

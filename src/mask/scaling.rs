@@ -9,7 +9,7 @@
 use crate::geom::{Orientation, Point, Repetition};
 use crate::layout::Placement;
 
-use super::repeat::{RANGE, lattice, span};
+use super::repeat::{RANGE, span};
 use super::{MAX_PARTS, MaskError};
 
 /// A linear map that is not one of the eight orientations: turn by less than 90°, magnify. `NONE` is exact.
@@ -172,7 +172,7 @@ impl Scaling {
                     dx.abs().max(dy.abs()) * n
                 };
                 if self.exact.is_some() || drift(*a, pa, columns) + drift(*b, pb, rows) < 0.5 {
-                    return Ok(lattice(columns, rows, pa, pb));
+                    return Ok(Repetition::lattice(columns, rows, pa, pb));
                 }
                 let written_out = Repetition::Lattice {
                     columns,

@@ -270,24 +270,8 @@ fn plain(repetition: &Repetition, cell: &str) -> Result<(Point, Repetition), Wri
             a,
             b,
         } => {
-            let only = |n: u64| n == 1;
-            let lattice = match (only(columns), only(rows)) {
-                (true, true) => Repetition::Once,
-                // A step that is never taken is not written.
-                (true, false) => Repetition::Lattice {
-                    columns: rows,
-                    rows: 1,
-                    a: b,
-                    b: Point::default(),
-                },
-                _ => Repetition::Lattice {
-                    columns,
-                    rows,
-                    a,
-                    b,
-                },
-            };
-            (Point::default(), lattice)
+            // A step that is never taken is not written.
+            (Point::default(), Repetition::lattice(columns, rows, a, b))
         }
         other => {
             let list = listed(other, cell)?;
