@@ -79,8 +79,9 @@ const GUARD: f32 = 0.004;
 /// Least distance of the places that one check adds to the samples, σ: many next to one another weigh no more than the worst of them.
 const APART: f64 = 0.2;
 
-/// Rounds of check and repair without less that is wrong after them.
-const STALE_REPAIRS: usize = 6;
+/// Rounds of check and repair without less that is wrong after them; and where most shots are off the limits, as in a comb finer than
+/// the blur, which would go on for long.
+const STALE_REPAIRS: [usize; 2] = [6, 1];
 
 /// Rounds of check and repair of a figure of one shot, and for how many shots there is one more: the longer a figure, the more
 /// rounds until its last place holds.
@@ -348,11 +349,13 @@ impl Attempt<'_> {
         let mut fit = self.fit(&snapped, violations);
         let mut best = fit.clone();
         let mut stale = 0;
+        let lost = 2 * fit.unfit.len() > fit.shots.len();
+        let patience = STALE_REPAIRS[usize::from(lost)];
         // Shots were added that nobody tried to do without.
         let mut loose = false;
         for _ in 1..REPAIRS.0 + all.len() / REPAIRS.1 {
             let holds = fit.faults() == 0;
-            if (holds && !loose) || stale == STALE_REPAIRS {
+            if (holds && !loose) || stale == patience {
                 break;
             }
             for sample in self.asked(&fit) {
