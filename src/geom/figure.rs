@@ -28,14 +28,8 @@ impl Figure {
     /// The rectangle as a figure.
     #[must_use]
     pub fn from_rect(r: Rect) -> Self {
-        let points = vec![
-            r.min,
-            Point::new(r.max.x, r.min.y),
-            r.max,
-            Point::new(r.min.x, r.max.y),
-        ];
         Self {
-            outer: Ring::new(points).unwrap_or_else(|| unreachable!("four points make a ring")),
+            outer: Ring::from_rect(r),
             holes: Vec::new(),
         }
     }

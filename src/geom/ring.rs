@@ -20,6 +20,18 @@ impl Ring {
         (points.len() >= 3).then_some(Self { points })
     }
 
+    /// The corners of a rectangle, counter-clockwise from the lower left one; four of them even where it has no area.
+    #[must_use]
+    pub fn from_rect(r: Rect) -> Self {
+        let points = vec![
+            r.min,
+            Point::new(r.max.x, r.min.y),
+            r.max,
+            Point::new(r.min.x, r.max.y),
+        ];
+        Self { points }
+    }
+
     /// The points in order.
     #[must_use]
     pub fn points(&self) -> &[Point] {
@@ -102,5 +114,27 @@ impl Ring {
             points.reverse();
         }
         Self { points }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_rectangle_without_area_is_a_ring_all_the_same() {
+        let [a, b] = [Point::new(3, 4), Point::new(3, 9)];
+        for r in [Rect::new(a, a), Rect::new(a, b)] {
+            let ring = Ring::from_rect(r);
+            assert_eq!(
+                ring.points(),
+                [
+                    r.min,
+                    Point::new(r.max.x, r.min.y),
+                    r.max,
+                    Point::new(r.min.x, r.max.y)
+                ]
+            );
+        }
     }
 }
