@@ -5,22 +5,23 @@
 
 use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
 
-use shotwright::fracture::DoseLevels;
-use shotwright::fracture::Effort;
 use shotwright::geom::{Point, Repetition};
 use shotwright::judge::Settings;
 use shotwright::layout::{Layout, Shape};
 use shotwright::mask::{Mask, MaskOptions, Standings};
 use shotwright::profile::Profile;
 use shotwright::quote::result::Method;
-use shotwright::quote::{self, Chosen, Clip, Terms, exposure, fracturer, made};
+use shotwright::quote::{self, Chosen, Clip, exposure, fracturer, made};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
 
 #[path = "../tests/common/flat.rs"]
 mod flat;
+#[path = "../tests/common/terms.rs"]
+mod terms;
 
 use flat::{LAYER, flat};
+use terms::terms;
 
 const SIZES: [i64; 3] = [256, 1024, 4096];
 
@@ -38,20 +39,6 @@ fn rectangles(count: i64) -> Layout {
         }
     };
     flat((0..count).map(shape).collect())
-}
-
-fn terms(profile: &Profile) -> Terms<'_> {
-    Terms {
-        profile,
-        tolerance: Nm(2.0),
-        within: Nm(2.0),
-        effort: Effort::Quick,
-        field: None,
-        slot: None,
-        peak_dose: None,
-        raster: None,
-        dose_levels: DoseLevels::ONE,
-    }
 }
 
 fn stages(c: &mut Criterion) {

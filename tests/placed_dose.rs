@@ -1,6 +1,5 @@
 //! The dose of every place in a quote, on masks whose densities can be worked by hand.
 
-use shotwright::fracture::Effort;
 use shotwright::geom::{Point, Repetition};
 use shotwright::layout::{self, Layout};
 use shotwright::mask::MaskOptions;
@@ -10,6 +9,9 @@ use shotwright::quote::{self, Chosen, Clip, Terms};
 use shotwright::shot::AddressUnit;
 use shotwright::units::Nm;
 use shotwright::write_time::Field;
+
+#[path = "common/terms.rs"]
+mod terms;
 
 const ETA: f64 = 0.6;
 
@@ -34,18 +36,11 @@ fn staircase(layout: &Layout, profile: &Profile, coverage: Option<f64>) -> Fract
         options: &options,
     };
     let terms = Terms {
-        profile,
-        tolerance: Nm(2.0),
-        within: Nm(2.0),
-        effort: Effort::Quick,
         field: coverage.map(|_| Field {
             width: Nm::from_mm(10.0),
             height: Nm::from_mm(10.0),
         }),
-        slot: None,
-        peak_dose: None,
-        dose_levels: shotwright::fracture::DoseLevels::ONE,
-        raster: None,
+        ..terms::terms(profile)
     };
     let mask = chosen.mask(&terms.setup().unwrap()).unwrap();
     let clip = Clip {

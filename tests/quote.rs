@@ -1,7 +1,5 @@
 //! The join of all stages on small masks whose answers can be worked by hand.
 
-use shotwright::fracture::DoseLevels;
-use shotwright::fracture::Effort;
 use shotwright::geom::{Point, Repetition};
 use shotwright::layout::{self, Layout};
 use shotwright::mask::{Mask, MaskOptions, Standings};
@@ -11,6 +9,9 @@ use shotwright::quote::{self, Answer, Chosen, Clip, Terms};
 use shotwright::shot::AddressUnit;
 use shotwright::units::{Dose, Hours, Nm};
 use shotwright::write_time::Field;
+
+#[path = "common/terms.rs"]
+mod terms;
 
 /// No backscatter, no stage, no fixed parts: hours are flashes and settling alone.
 fn plain() -> Profile {
@@ -26,15 +27,8 @@ fn plain() -> Profile {
 
 fn terms(profile: &Profile) -> Terms<'_> {
     Terms {
-        profile,
-        tolerance: Nm(2.0),
-        within: Nm(2.0),
-        effort: Effort::Quick,
-        field: None,
         slot: Some(Hours(24.0)),
-        peak_dose: None,
-        raster: None,
-        dose_levels: DoseLevels::ONE,
+        ..terms::terms(profile)
     }
 }
 

@@ -11,6 +11,8 @@ mod population;
 mod real;
 #[path = "../common/regions.rs"]
 mod regions;
+#[path = "../common/terms.rs"]
+mod terms;
 
 /// The generator that `regions` brings along, where `kinds` looks for it.
 mod random {

@@ -21,20 +21,7 @@ use shotwright::units::Nm;
 use crate::flat::{LAYER, flat};
 use crate::kinds::between;
 use crate::random::Random;
-
-fn terms(profile: &Profile) -> Terms<'_> {
-    Terms {
-        dose_levels: shotwright::fracture::DoseLevels::ONE,
-        profile,
-        tolerance: Nm(2.0),
-        within: Nm(2.0),
-        effort: Effort::Quick,
-        field: None,
-        slot: None,
-        peak_dose: None,
-        raster: None,
-    }
-}
+use crate::terms::terms;
 
 fn sampling(within: Option<f64>, most: Option<usize>) -> Sampling<'static> {
     Sampling {
