@@ -77,7 +77,8 @@ impl Edge {
             .then_some((t, facing))
     }
 
-    fn distance_squared(&self, p: [f64; 2]) -> f64 {
+    /// Square of the distance of a place, nm².
+    pub(crate) fn distance_squared(&self, p: [f64; 2]) -> f64 {
         let (dx, dy) = (self.b[0] - self.a[0], self.b[1] - self.a[1]);
         let (px, py) = (p[0] - self.a[0], p[1] - self.a[1]);
         let l2 = dx * dx + dy * dy;

@@ -1,7 +1,8 @@
 //! Whether a figure is anywhere as wide as a line must be to print.
 
 use crate::blur::Blur;
-use crate::geom::{Figure, Point, Rect, offset};
+use crate::geom::{Figure, Rect, offset};
+use crate::target::Edge;
 use crate::units::Nm;
 
 use super::made;
@@ -43,26 +44,20 @@ fn holds_disc(figure: &Figure, width: f64, blur: Blur) -> bool {
     };
     let clear = |at: [f64; 2]| {
         let mut edges = figure.rings().flat_map(|ring| ring.edges());
-        edges.all(|edge| distance(at, edge) > half)
+        edges.all(|(a, b)| {
+            let (a, b) = (a.to_nm(), b.to_nm());
+            Edge { a, b }.distance_squared(at) > half * half
+        })
     };
     made::slabs(figure, blur)
         .into_iter()
         .any(|slab| clear(middle(slab)))
 }
 
-/// From a place to an edge, nm.
-fn distance(at: [f64; 2], (a, b): (Point, Point)) -> f64 {
-    let ([ax, ay], [bx, by]) = (a.to_nm(), b.to_nm());
-    let (dx, dy) = (bx - ax, by - ay);
-    let along = ((at[0] - ax) * dx + (at[1] - ay) * dy) / (dx * dx + dy * dy);
-    let t = along.clamp(0.0, 1.0);
-    (at[0] - ax - t * dx).hypot(at[1] - ay - t * dy)
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::geom::Ring;
+    use crate::geom::{Point, Ring};
 
     fn blur() -> Blur {
         Blur::new(Nm(12.0)).unwrap()
