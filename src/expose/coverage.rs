@@ -28,10 +28,9 @@ impl Density {
         let Some(bounds) = shots.iter().map(|(rect, _)| *rect).reduce(Rect::hull) else {
             return;
         };
-        let area = |r: Rect| Nm::from_pm(r.width()).0 * Nm::from_pm(r.height()).0;
         let charge = shots
             .iter()
-            .map(|(rect, dose)| dose.0 * area(*rect))
+            .map(|(rect, dose)| dose.0 * rect.area_nm2())
             .sum::<f64>();
         let group = Group {
             shots,

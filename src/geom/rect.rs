@@ -1,6 +1,7 @@
 //! An axis-parallel rectangle.
 
 use super::Point;
+use crate::units::Nm;
 
 /// A closed axis-parallel rectangle, picometres; `min` is the lower-left corner.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
@@ -67,6 +68,12 @@ impl Rect {
     #[must_use]
     pub fn height(self) -> i64 {
         self.max.y - self.min.y
+    }
+
+    /// Area, nm².
+    #[must_use]
+    pub fn area_nm2(self) -> f64 {
+        Nm::from_pm(self.width()).0 * Nm::from_pm(self.height()).0
     }
 
     /// Whether the two share at least a point.

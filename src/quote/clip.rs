@@ -91,14 +91,11 @@ pub struct Clip<'a> {
 impl Clip<'_> {
     /// How many copies of it a field holds, fractions too; 1 without a field.
     pub(super) fn copies_exactly(&self, field: Option<Field>) -> f64 {
-        let area = |width: Nm, height: Nm| width.0 * height.0;
-        let own = self.mask.extent.map_or(0.0, |extent| {
-            area(Nm::from_pm(extent.width()), Nm::from_pm(extent.height()))
-        });
+        let own = self.mask.extent.map_or(0.0, Rect::area_nm2);
         let (Some(field), Some(coverage)) = (field, self.coverage) else {
             return 1.0;
         };
-        coverage * area(field.width, field.height) / own.max(1.0)
+        coverage * (field.width.0 * field.height.0) / own.max(1.0)
     }
 
     /// How many copies of it a field holds, at least one.

@@ -35,9 +35,7 @@ impl Correction {
         let terms = profile.backscatter().iter().map(|term| term.eta.value);
         let ratio = terms.sum::<f64>() + profile.fogging().map_or(0.0, |fogging| fogging.eta);
         let of_clip = |clip: &Clip<'_>| {
-            let extent = clip.mask.extent.map_or(0.0, |extent| {
-                Nm::from_pm(extent.width()).0 * Nm::from_pm(extent.height()).0
-            });
+            let extent = clip.mask.extent.map_or(0.0, Rect::area_nm2);
             let of_extent = if extent > 0.0 {
                 (clip.mask.area_nm2() / extent).clamp(0.0, 1.0)
             } else {
@@ -113,8 +111,7 @@ pub(super) fn frame(clips: &[Clip<'_>]) -> Rect {
 /// Where the shots of a clip are cut, and the jump to the first shot of a figure: as far as figures stand apart if they stand evenly.
 pub(super) fn borders(clip: &Clip<'_>, field: Option<Field>) -> (Borders, Nm) {
     let extent = clip.mask.extent.unwrap_or(NOWHERE);
-    let area = Nm::from_pm(extent.width()).0 * Nm::from_pm(extent.height()).0;
-    let spacing = Nm((area / clip.mask.place_count().max(1) as f64).sqrt());
+    let spacing = Nm((extent.area_nm2() / clip.mask.place_count().max(1) as f64).sqrt());
     let borders = field.map_or(Borders::Of(extent), Borders::Somewhere);
     (borders, spacing)
 }

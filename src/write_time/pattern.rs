@@ -227,8 +227,7 @@ pub(super) fn spacing(placed: &[Placed<'_>], frame: Rect) -> Nm {
     let figures = placed
         .iter()
         .fold(0, |n: u128, p| n.saturating_add(p.repetition.count()));
-    let area = Nm::from_pm(frame.width()).0 * Nm::from_pm(frame.height()).0;
-    Nm((area / (figures.max(1) as f64)).sqrt())
+    Nm((frame.area_nm2() / (figures.max(1) as f64)).sqrt())
 }
 
 pub(super) fn check_frame(frame: Rect) -> Result<(), WriteTimeError> {

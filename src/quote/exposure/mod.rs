@@ -354,16 +354,14 @@ pub fn mean_coverage(mask: &Mask, made: &[Result<Made, Unmade>]) -> f64 {
 
 /// Dose times area of shots, nm².
 pub(super) fn charge(shots: &ShotList) -> f64 {
-    shots.rects().map(|(rect, dose)| dose.0 * area(rect)).sum()
-}
-
-/// Area of a rectangle, nm².
-fn area(rect: Rect) -> f64 {
-    Nm::from_pm(rect.width()).0 * Nm::from_pm(rect.height()).0
+    shots
+        .rects()
+        .map(|(rect, dose)| dose.0 * rect.area_nm2())
+        .sum()
 }
 
 fn coverage_of(mask: &Mask, shots: &[Option<&ShotList>]) -> f64 {
-    let extent = mask.extent.map_or(0.0, area);
+    let extent = mask.extent.map_or(0.0, Rect::area_nm2);
     if extent == 0.0 {
         return 0.0;
     }

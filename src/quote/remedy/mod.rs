@@ -16,6 +16,7 @@ use super::{Answer, Basis, Clip, QuoteError, Terms, hours};
 
 /// Flagged figures on which remedies are tried, most seconds first.
 const MOST_FLAGGED: usize = 32;
+
 /// Tries remedies on the flagged figures, and finds what must change if the mask misses its slot; writes both into the answer.
 ///
 /// # Errors

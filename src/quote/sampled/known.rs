@@ -237,8 +237,7 @@ fn stood_in(
             return None;
         }
         let rects = made::slabs(&unit.distinct.figure, blur);
-        let area = |r: &Rect| Nm::from_pm(r.width()).0 * Nm::from_pm(r.height()).0;
-        let covered: f64 = rects.iter().map(area).sum();
+        let covered: f64 = rects.iter().copied().map(Rect::area_nm2).sum();
         let dose = Dose(ratio * outlines[i] / covered);
         let shot = |r: &Rect| Shot {
             x0: r.min.x,
